@@ -1,0 +1,1 @@
+"""The operation table: every operation of the spec language, one row each."""

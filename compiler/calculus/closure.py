@@ -1,0 +1,222 @@
+"""Model to Closure: everything a module computes, as one Program with an entry for each kernel.
+
+Kernels, and their results in order:
+
+    bracket    lower, upper, lower_rounding, upper_rounding
+    residual   g, slope                       g and its derivative with respect to the unknown
+    rounding   rounding, slope_rounding, curvature       bounds of the rounding errors of g and slope, and the second derivative of g
+    outside    outside                        condition: a parameter outside its range, or a `require` that fails
+    kink       kink                           condition: the root lies on a switch (needs the input `error_bound`)
+    start      start                          the author's start
+    outputs    one a output
+    jacobian   M*N partial derivatives of the results, row-major
+"""
+
+import struct
+from dataclasses import dataclass
+from fractions import Fraction
+
+from rootwright.calculus.constants import NotReal, nearest
+from rootwright.calculus.differentiate import gated, partials, sweep
+from rootwright.calculus.lower import COMPARISONS, Lowering
+from rootwright.calculus.magnitude import Magnitudes
+from rootwright.calculus.program import Graph, Program
+from rootwright.calculus.rounding import Rounding
+from rootwright.spec.model import Model
+
+
+@dataclass(frozen=True)
+class Closure:
+    """A Model with all it computes. `kernels` maps a kernel to its results, which are results of the Program."""
+    model: Model
+    program: Program
+    kernels: dict[str, tuple[str, ...]]
+    ranges: tuple[tuple[float, float], ...]     # nearest doubles of the parameters' ranges
+    limit: int                                  # evaluations that always suffice
+    constants: dict[int, tuple[float, float]]   # constant instruction -> nearest double, relative rounding in 2^-53
+
+
+def close(model):
+    """Closure of a checked Model. Raises NotReal where a constant is not a finite real number."""
+    return _Closing(model).closure()
+
+
+class _Closing:
+    def __init__(self, model):
+        self.model = model
+        self.graph = graph = Graph()
+        self.lowering = Lowering(graph)
+        for constant in model.constants:
+            node = graph.named(constant.name, self.lowering.lower(constant.expression))
+            nearest(graph, node)
+            self.lowering.declare(constant.name, node)
+        self.parameters = {}
+        self.ranges = {}
+        for parameter in model.parameters:
+            self.parameters[parameter.name] = graph.input(parameter.name)
+            self.lowering.declare(parameter.name, self.parameters[parameter.name])
+            ends = (self.lowering.lower(parameter.low), self.lowering.lower(parameter.high))
+            self.ranges[parameter.name] = tuple(nearest(graph, end) for end in ends)
+        self.unknown = graph.input(model.unknown.name)
+        self.lowering.declare(model.unknown.name, self.unknown)
+        for definition in model.definitions:
+            self._declare(definition.name, self.lowering.lower(definition.expression))
+        self.kernels = {}
+        self.results = {}
+
+    def _declare(self, name, node):
+        self.lowering.declare(name, node)
+        self._label(node, name)
+
+    def _label(self, node, name):
+        """Name an instruction, unless it has a name or needs none."""
+        if self.graph.instructions[node].op not in ("input", "number", "named", "pi", "nan"):
+            self.graph.labels.setdefault(node, name)
+
+    def _kernel(self, kernel, **results):
+        self.kernels[kernel] = tuple(results)
+        self.results.update(results)
+
+    def closure(self):
+        graph, lower, model = self.graph, self.lowering.lower, self.model
+        g = lower(model.residual)
+        ends = [lower(model.unknown.lower), lower(model.unknown.upper)]
+        outputs = {}
+        for output in model.outputs:
+            outputs[output.name] = lower(output.expression)
+            self._declare(output.name, outputs[output.name])
+        require = [lower(condition) for condition in model.require]
+        start = None if model.unknown.start is None else lower(model.unknown.start)
+
+        self.authored = len(graph.instructions)
+        slope = self._derivatives("g", g)
+        (curvature,) = partials(graph, slope, [self.unknown])
+        jacobian = self._jacobian(g, slope, outputs)
+
+        parameters = Magnitudes(graph, self.ranges)
+        hull = [parameters.of(end) for end in ends]
+        box = self.ranges | {model.unknown.name: (hull[0][0], hull[1][1])}
+        rounding = Rounding(graph, Magnitudes(graph, box))
+
+        self._kernel("bracket", lower=ends[0], upper=ends[1],
+                     lower_rounding=rounding.bound(ends[0]), upper_rounding=rounding.bound(ends[1]))
+        self._kernel("residual", g=g, slope=slope)
+        self._kernel("rounding", rounding=rounding.bound(g), slope_rounding=rounding.bound(slope), curvature=curvature)
+        self._kernel("outside", outside=self._outside(require))
+        kink = self._kink([g, *outputs.values()], rounding)
+        if kink is not None:
+            self._kernel("kink", kink=kink)
+        if start is not None:
+            self._kernel("start", start=start)
+        if outputs:
+            self._kernel("outputs", **outputs)
+        self._kernel("jacobian", **jacobian)
+
+        for node in range(len(graph.instructions)):
+            if graph.is_constant(node):
+                _touch(graph, node)
+        program = Program(tuple(graph.instructions), dict(graph.labels), self.results)
+        return Closure(model, program, self.kernels, tuple(self.ranges.values()), limit(*hull),
+                       dict(graph.constants))
+
+    def _derivatives(self, prefix, result):
+        """Derivative with respect to the unknown; the adjoints of definitions and parameters get names."""
+        adjoints = sweep(self.graph, result)
+        for name, node in self.lowering.names.items():
+            if node in adjoints and node != result and adjoints[node][0] >= self.authored:
+                self._label(gated(self.graph, *adjoints[node]), f"{prefix}_{name}")
+        if self.unknown not in adjoints:
+            return self.graph.number(0)
+        return gated(self.graph, *adjoints[self.unknown])
+
+    def _jacobian(self, g, slope, outputs):
+        """dY/dP of every result: -g_P/g_x for the unknown, f_P + f_x*dx/dP for an output f; 0 where not differentiated."""
+        graph, unknown = self.graph, self.model.unknown.name
+        wanted = [parameter.differentiate for parameter in self.model.parameters]
+        nodes = list(self.parameters.values())
+        entries = {}
+        roots = [graph.neg(graph.div(g_p, slope)) if want else graph.number(0)
+                 for g_p, want in zip(partials(graph, g, nodes), wanted)]
+        for name, root in zip(self.parameters, roots):
+            self._label(root, f"{unknown}_{name}")
+        entries[unknown] = roots
+        for name, node in outputs.items():
+            self._derivatives(name, node)
+            along, *direct = partials(graph, node, [self.unknown, *nodes])
+            entries[name] = [graph.add(f_p, graph.mul(along, root)) if want else graph.number(0)
+                             for f_p, root, want in zip(direct, roots, wanted)]
+        return {f"d{result}/d{parameter}": entry for result, row in entries.items()
+                for parameter, entry in zip(self.parameters, row)}
+
+    def _outside(self, require):
+        graph = self.graph
+        outside = None
+        for name, (low, high) in self.ranges.items():
+            node = self.parameters[name]
+            for test, end in (("lt", low), ("gt", high)):
+                beyond = graph.apply(test, node, graph.number(Fraction(end)))
+                outside = beyond if outside is None else graph.or_(outside, beyond)
+        for condition in require:
+            outside = graph.or_(outside, graph.not_(condition))
+        return outside
+
+    def _switches(self, results):
+        """Every switch that the results pass: (guard, left, right), a switch where left = right while the guard holds."""
+        graph, switches = self.graph, {}
+        for result in results:
+            for node, (_, guard) in sorted(sweep(graph, result).items()):
+                instruction = graph.instructions[node]
+                if instruction.op in ("min", "max"):
+                    switches[(guard, *instruction.args)] = None
+                elif instruction.op in ("abs", "sign"):
+                    switches[(guard, instruction.args[0], graph.number(0))] = None
+                elif instruction.op == "where" and graph.instructions[instruction.args[2]].op != "nan":
+                    for left, right in self._comparisons(instruction.args[0]):
+                        switches[(guard, left, right)] = None
+        return list(switches)
+
+    def _comparisons(self, condition):
+        instruction = self.graph.instructions[condition]
+        if instruction.op in COMPARISONS:
+            return [instruction.args]
+        return [pair for arg in instruction.args for pair in self._comparisons(arg)]
+
+    def _kink(self, results, rounding):
+        """Condition: at some switch, |left - right| is within its rounding error and what the root's error bound moves it by."""
+        graph = self.graph
+        kink = None
+        for guard, left, right in self._switches(results):
+            if graph.is_constant(left) and graph.is_constant(right):
+                continue
+            distance = graph.sub(left, right)
+            (rate,) = partials(graph, distance, [self.unknown])
+            reach = graph.add(rounding.sign_bound(distance),
+                              graph.mul(graph.abs_(rate), graph.input("error_bound")))
+            near = graph.le(graph.abs_(distance), reach)
+            near = near if guard is None else graph.and_(guard, near)
+            kink = near if kink is None else graph.or_(kink, near)
+        return kink
+
+
+def _touch(graph, node):
+    try:
+        nearest(graph, node)
+    except NotReal:
+        graph.constants.pop(node, None)
+
+
+def limit(lower, upper):
+    """Evaluations that always suffice: three a halving of the number of doubles in the bracket, both ends, and the closing ones.
+
+    Only a bracket that does not depend on the parameters gives fewer than the general 200.
+    """
+    if lower[0] != lower[1] or upper[0] != upper[1]:
+        return 200
+    doubles = _ordinal(upper[1]) - _ordinal(lower[0])
+    return min(200, 3 * max(1, doubles.bit_length()) + 5)
+
+
+def _ordinal(value):
+    """Position of a double in the ordered list of all doubles."""
+    (bits,) = struct.unpack("<q", struct.pack("<d", value))
+    return bits if bits >= 0 else -(bits & (2 ** 63 - 1))

@@ -1,0 +1,67 @@
+"""Values of constant instructions: the double nearest to the exact value, and how far off it is."""
+
+import math
+from fractions import Fraction
+
+import flint
+
+from rootwright.calculus.balls import Balls, precision
+from rootwright.calculus.program import evaluate
+
+_PRECISIONS = (160, 640, 2560)      # bits; the last also resolves the smallest subnormals
+
+
+class NotReal(ValueError):
+    """A constant that is not a finite real number."""
+
+
+def nearest(graph, node):
+    """The double nearest to a constant instruction. Raises NotReal where it is undefined or overflows."""
+    return _nearest(graph, node)[0]
+
+
+def nearest_rounding(graph, node):
+    """Relative distance of the nearest double from the exact constant, in units of 2^-53, rounded up (0: exact)."""
+    return _nearest(graph, node)[1]
+
+
+def _nearest(graph, node):
+    if node not in graph.constants:
+        graph.constants[node] = _evaluate(graph, node)
+    return graph.constants[node]
+
+
+def _evaluate(graph, node):
+    exact = graph.rational(node)
+    if exact is not None:
+        return _of_fraction(exact)
+    for bits in _PRECISIONS:
+        with precision(bits):
+            value = evaluate(graph.instructions, [node], Balls(), {})[node]
+            if not value.is_finite():
+                continue
+            low, high = (_fraction(end) for end in (value.lower(), value.upper()))
+            try:
+                if float(low) == float(high):
+                    return _of_fraction((low + high) / 2)
+            except OverflowError:
+                continue
+    if value.is_finite() and value.contains(0) and value.rad() < flint.arb(2) ** -1080:
+        return 0.0, 0.0
+    raise NotReal
+
+
+def _of_fraction(exact):
+    try:
+        value = float(exact)
+    except OverflowError:
+        raise NotReal from None
+    if exact == 0 or value == 0.0:
+        return value, 0.0 if exact == 0 else math.inf
+    return value, float(abs(Fraction(value) - exact) / abs(Fraction(value)) * 2 ** 53) * (1 + 2.0 ** -40)
+
+
+def _fraction(point):
+    """An exact arb (no radius) as a Fraction."""
+    mantissa, exponent = point.mid().man_exp()
+    return Fraction(int(mantissa)) * Fraction(2) ** int(exponent)

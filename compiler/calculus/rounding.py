@@ -1,0 +1,287 @@
+"""Running error analysis: instructions that bound the rounding error of other instructions.
+
+For every operation v = op(a, b) the error of v is at most the errors of a and b carried through op, plus the rounding of op itself
+(J. H. Wilkinson, Rounding Errors in Algebraic Processes, 1963; N. J. Higham, Accuracy and Stability of Numerical Algorithms,
+2nd ed. 2002, section 3.3). All errors are counted in units of u = 2^-53, and what is known when the module is generated is
+added up there: the error of v is at most
+
+    u * (relative*|v| + absolute + running)
+
+with two numbers and one instruction, so that a product of ten factors costs the emitted code nothing and a sum costs one line.
+Decimal constants count with the rounding to the nearest double. Where a product or quotient can underflow inside
+the operating range, half the smallest subnormal is counted as well. Terms of second order are kept where a divisor or the argument of a root or
+a logarithm is itself uncertain; the rest is covered by `UNIT`, which is 8 % above 2^-53.
+"""
+
+import math
+from dataclasses import dataclass
+from fractions import Fraction
+
+from rootwright.calculus.constants import nearest, nearest_rounding
+from rootwright.calculus.magnitude import largest, smallest
+from rootwright.calculus.program import CONDITIONS, Node, needed
+from rootwright.operations import OPERATIONS
+
+UNIT = Fraction("1.2e-16")
+_SUBNORMAL = 2.0 ** -1022          # half the smallest subnormal, 2^-1075, in units of u
+_SMALL = 2.0 ** -900               # results above this are far from underflow
+_TINIEST = Fraction(1, 2 ** 1022)  # smallest normal double: keeps a quotient of zeros from being NaN
+
+
+@dataclass(frozen=True, slots=True)
+class Error:
+    relative: float = 0.0
+    absolute: float = 0.0
+    running: int | None = None
+
+
+class Rounding:
+    """Builds rounding bounds into a graph. `magnitudes` tells how large its values are over the operating range."""
+
+    def __init__(self, graph, magnitudes):
+        self.graph = graph
+        self.magnitudes = magnitudes
+        self.errors = {}
+
+    def bound(self, node):
+        """Instruction that bounds the absolute rounding error of `node`."""
+        return self.graph.mul(self.graph.number(UNIT), self._units(node))
+
+    def sign_bound(self, node):
+        """Bound on `node` below which its sign is not certain: the part of its error that is not relative to itself."""
+        error = self.error(node)
+        return self.graph.mul(self.graph.number(UNIT), self._total(Error(0.0, error.absolute, error.running), node))
+
+    def error(self, node):
+        for step in needed(self.graph.instructions, [node], self.errors):
+            if self.graph.instructions[step].op not in CONDITIONS:
+                self.errors[step] = self._tidy(self._operation(Node(step)), step)
+        return self.errors[node]
+
+    # -- sums of the parts
+
+    def _units(self, node):
+        return self._total(self.error(node), node)
+
+    def _total(self, error, node):
+        """relative*|v| + absolute + running, as an instruction, in units of u."""
+        graph = self.graph
+        total = graph.number(0) if error.running is None else error.running
+        if error.relative:
+            total = self._plus(total, self._scaled(error.relative, self._magnitude(node)))
+        if error.absolute:
+            total = graph.add(total, graph.number(Fraction(error.absolute)))
+        return total
+
+    def _plus(self, total, part):
+        """Sum of two bounds, regrouped from left to right."""
+        instruction = self.graph.instructions[part]
+        if instruction.op == "add":
+            return self._plus(self._plus(total, instruction.args[0]), instruction.args[1])
+        return self.graph.add(total, part)
+
+    def _parts(self, node):
+        """The running part of an operand's error with its relative part made explicit, and its absolute part."""
+        error = self.error(node)
+        if self.graph.is_constant(node):
+            return None, error.absolute + error.relative * abs(nearest(self.graph, node))
+        return self._total(Error(error.relative, 0.0, error.running), node) if error.relative or error.running is not None \
+            else None, error.absolute
+
+    def _magnitude(self, node):
+        """|v|, without fabs where the sign is known over the operating range (a wrong sign outside would not be safe: keep it)."""
+        if self.graph.is_constant(node):
+            return self.graph.number(abs(Fraction(nearest(self.graph, node))))
+        instruction = self.graph.instructions[node]
+        if instruction.op in ("exp", "sqrt", "cosh", "abs", "hypot", "erfc"):
+            return node
+        if instruction.op == "neg":
+            return self._magnitude(instruction.args[0])
+        return self.graph.abs_(node)
+
+    def _scaled(self, factor, node):
+        return self.graph.mul(self.graph.number(_upper(factor)), node)
+
+    def _tidy(self, error, node):
+        """Drop an absolute part that is negligible against |v| over the whole operating range."""
+        if error.absolute and error.absolute <= 1e-20 * smallest(self.magnitudes.of(node)):
+            return Error(error.relative + 1e-20, 0.0, error.running)
+        return error
+
+    # -- one rule an operation
+
+    def _operation(self, node):
+        instruction = self.graph.instructions[node]
+        if self.graph.is_constant(node):
+            return Error(relative=nearest_rounding(self.graph, node))
+        if instruction.op == "input":
+            return Error()
+        rule = getattr(self, "_" + instruction.op, None)
+        error = rule(node, *instruction.args) if rule else self._general(node, instruction)
+        return error
+
+    def _underflow(self, node):
+        return 0.0 if smallest(self.magnitudes.of(node)) > _SMALL else _SUBNORMAL
+
+    def _sum(self, *parts):
+        parts = [part for part in parts if part is not None]
+        total = parts[0] if parts else None
+        for part in parts[1:]:
+            total = self._plus(total, part)
+        return total
+
+    def _add(self, node, a, b):
+        (run_a, abs_a), (run_b, abs_b) = self._parts(a), self._parts(b)
+        return Error(1.0, abs_a + abs_b, self._sum(run_a, run_b))
+
+    _sub = _add
+
+    def _neg(self, node, a):
+        return self.error(a)
+
+    def _abs(self, node, a):
+        return self.error(a)
+
+    def _mul(self, node, a, b):
+        one, other = self.error(a), self.error(b)
+        for factor, rest in ((a, other), (b, one)):
+            if self.graph.is_constant(factor) and _power_of_two(nearest(self.graph, factor)):
+                scale = abs(nearest(self.graph, factor))
+                return Error(rest.relative, rest.absolute * scale + self._underflow(node),
+                             None if rest.running is None else self._scaled(scale, rest.running))
+        carried = self._sum(self._carried(one, b), self._carried(other, a))
+        if one.running is not None and other.running is not None:       # the product of the two errors
+            carried = self._plus(carried, self.graph.mul(self.graph.number(UNIT),
+                                                             self.graph.mul(one.running, other.running)))
+        return Error(one.relative + other.relative + 1.0, self._underflow(node), carried)
+
+    def _carried(self, error, factor):
+        """The non-relative error of one factor times the other factor."""
+        part = self._total(Error(0.0, error.absolute, error.running), factor)
+        return None if self.graph.literal(part) == 0 else self.graph.mul(part, self._magnitude(factor))
+
+    def _div(self, node, a, b):
+        one, other = self.error(a), self.error(b)
+        above = self._total(Error(0.0, one.absolute, one.running), a)
+        below = self._total(Error(0.0, other.absolute, other.running), b)
+        if self.graph.literal(below) != 0:
+            above = self._plus(above, self.graph.mul(self._magnitude(node), below))
+        running = None if self.graph.literal(above) == 0 else self.graph.div(above, self._certain(b, below))
+        return Error(one.relative + other.relative + 1.0, self._underflow(node), running)
+
+    def _certain(self, node, units):
+        """|a| less its error, but never 0 or less: what is left of a divisor in the worst case.
+
+        Just |a| where its error is of no account over the whole operating range.
+        """
+        graph = self.graph
+        if largest(self.magnitudes.of(units)) <= 2.0 ** 43 * smallest(self.magnitudes.of(node)):
+            return self._magnitude(node)
+        return graph.max_(graph.sub(self._magnitude(node), graph.mul(graph.number(UNIT), units)), graph.number(_TINIEST))
+
+    def _where(self, node, condition, a, b):
+        if self.graph.instructions[b].op == "nan":
+            return self.error(a)
+        one, other = self.error(a), self.error(b)
+        if one.running is None and other.running is None and one.absolute == other.absolute == 0.0:
+            return Error(max(one.relative, other.relative))
+        return Error(running=self.graph.where(condition, self._units(a), self._units(b)))
+
+    def _min(self, node, a, b):
+        return self._where(node, self.graph.le(a, b), a, b)
+
+    def _max(self, node, a, b):
+        return self._where(node, self.graph.ge(a, b), a, b)
+
+    def _sign(self, node, a):
+        return Error()
+
+    def _sqrt(self, node, a):
+        """|sqrt(a) - sqrt(b)| <= e/sqrt(max(a, e)) for |a - b| <= e."""
+        graph, error = self.graph, self.error(a)
+        units = self._total(Error(0.0, error.absolute, error.running), a)
+        running = None
+        if graph.literal(units) != 0:
+            floor = graph.max_(graph.mul(graph.number(UNIT), units), graph.number(_TINIEST))
+            running = graph.div(units, graph.sqrt(graph.max_(a, floor)))
+        return Error(error.relative / 2.0 + 1.0, 0.0, running)
+
+    def _exp(self, node, a):
+        run, absolute = self._parts(a)
+        return Error(2.0 * OPERATIONS["exp"].ulps + absolute, self._underflow(node),
+                     None if run is None else self.graph.mul(node, run))
+
+    def _logarithm(self, node, a, scale, op):
+        error = self.error(a)
+        units = self._total(Error(0.0, error.absolute, error.running), a)
+        running = None
+        if self.graph.literal(units) != 0:
+            running = self._scaled(scale, self.graph.div(units, self._certain(a, units)))
+        return Error(2.0 * OPERATIONS[op].ulps, error.relative * scale, running)
+
+    def _log(self, node, a):
+        return self._logarithm(node, a, 1.0, "log")
+
+    def _log10(self, node, a):
+        return self._logarithm(node, a, 1.0 / math.log(10.0), "log10")
+
+    def _log2(self, node, a):
+        return self._logarithm(node, a, 1.0 / math.log(2.0), "log2")
+
+    def _pow(self, node, a, b):
+        """a**b: the relative error of a times |b|, and the error of b times |log a|."""
+        graph = self.graph
+        one, other = self.error(a), self.error(b)
+        units = self._total(Error(0.0, one.absolute, one.running), a)
+        relative, running = 2.0 * OPERATIONS["pow"].ulps, None
+        if graph.is_constant(b):
+            relative += abs(nearest(graph, b)) * one.relative
+            parts = [None if graph.literal(units) == 0 else
+                     graph.mul(self._magnitude(b), graph.div(units, self._certain(a, units)))]
+        else:
+            parts = [None if graph.literal(units) == 0 and not one.relative else
+                     graph.mul(self._magnitude(b), graph.add(graph.div(units, self._certain(a, units)),
+                                                             graph.number(Fraction(one.relative))))]
+        exponent = self._total(other, b)
+        if graph.literal(exponent) != 0:
+            low, high = self.magnitudes.of(a)
+            if graph.is_constant(b) and 0.0 < low and high < math.inf:
+                relative += float(graph.literal(exponent)) * max(abs(math.log(low)), abs(math.log(high)))
+            else:
+                logarithm = graph.log(graph.max_(a, graph.number(_TINIEST)))
+                parts.append(graph.mul(self._magnitude(logarithm), exponent))
+        carried = self._sum(*parts)
+        if carried is not None:
+            running = graph.mul(self._magnitude(node), carried)
+        return Error(relative, self._underflow(node), running)
+
+    def _bounded_slope(self, node, a):
+        """sin and cos change by no more than their argument does."""
+        run, absolute = self._parts(a)
+        return Error(2.0 * OPERATIONS[self.graph.instructions[node].op].ulps, absolute, run)
+
+    _sin = _cos = _bounded_slope
+
+    def _general(self, node, instruction):
+        """Any other function: the error of each argument times the slope there."""
+        graph, operation = self.graph, OPERATIONS[instruction.op]
+        slopes = operation.pullback(graph, graph.number(1), instruction.args, node)
+        parts = []
+        for arg, slope in zip(instruction.args, slopes):
+            error = self.error(arg)
+            units = self._total(error, arg)
+            if slope is not None and graph.literal(units) != 0:
+                parts.append(graph.mul(graph.abs_(slope), units))
+        return Error(2.0 * operation.ulps, self._underflow(node), self._sum(*parts))
+
+
+def _power_of_two(value):
+    return value != 0.0 and abs(math.frexp(value)[0]) == 0.5
+
+
+def _upper(factor):
+    """The factor rounded up to three digits: short in print, and still a bound."""
+    if factor == int(factor) or factor > 1e3 or factor < 1e-3:
+        return Fraction(factor)
+    digits = 2 - math.floor(math.log10(factor))
+    return Fraction(math.ceil(factor * 10 ** digits), 10 ** digits)

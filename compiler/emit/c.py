@@ -1,0 +1,97 @@
+"""Kernels of a Closure as C99."""
+
+from rootwright.emit.layout import ATOM, lay_out
+from rootwright.emit.names import C_MACROS, Names
+from rootwright.emit.text import statement
+from rootwright.operations import OPERATIONS
+
+
+class CSpelling:
+    """How numbers, names and operations are written in C."""
+
+    nan = "NAN"
+
+    def __init__(self, model):
+        self.names = Names(model, C_MACROS)
+        self.prefix = model.name + "_"
+
+    def number(self, value):
+        multiple = value / 2.0 ** -1022
+        if 1.0 <= multiple < 64.0 and multiple == int(multiple):
+            return "DBL_MIN" if multiple == 1.0 else f"({multiple}*DBL_MIN)"
+        return repr(value)
+
+    def name(self, name):
+        return self.names.of(name)
+
+    def operation(self, op, strength, constants):
+        return OPERATIONS[op].c.replace("rw_", self.prefix), strength
+
+
+_SIGNATURES = {
+    "bracket": ("void", "double {end}[2], double {rounding}[2]"),
+    "residual": ("double", "double {x}, double *{slope}"),
+    "rounding": ("double", "double {x}, double *{slope_rounding}, double *{curvature}"),
+    "outside": ("int", ""),
+    "kink": ("int", "double {x}, double {error_bound}"),
+    "start": ("double", ""),
+    "outputs": ("void", "double {x}, double {y}[]"),
+    "jacobian": ("void", "double {x}, double {jac}[]"),
+}
+_TARGETS = {
+    "lower": "{end}[0]", "upper": "{end}[1]", "lower_rounding": "{rounding}[0]", "upper_rounding": "{rounding}[1]",
+    "slope": "*{slope}", "slope_rounding": "*{slope_rounding}", "curvature": "*{curvature}",
+}
+_RETURNED = ("g", "rounding", "outside", "kink", "start")
+_FORMALS = ("p", "end", "rounding", "slope", "slope_rounding", "curvature", "error_bound", "y", "jac")
+
+
+def kernel(closure, name, comment):
+    """Text of one kernel as a static C function, with the given comment lines above it."""
+    model = closure.model
+    spelling = CSpelling(model)
+    formals = {formal: spelling.names.ours(formal) for formal in _FORMALS} | {"x": spelling.name(model.unknown.name)}
+    kind, arguments = _SIGNATURES[name]
+    first = f"static {kind} {model.name}_{'partials' if name == 'jacobian' else name}(const double {formals['p']}[]"
+    signature = first + (", " + arguments.format(**formals) if arguments else "") + ")"
+    taken = {*spelling.names.used, *formals.values(), *C_MACROS}
+    laid = lay_out(closure, name, spelling, taken)
+    lines = [f"/* {line}" if k == 0 else f"   {line}" for k, line in enumerate(comment)]
+    lines[-1] += " */"
+    lines += [signature, "{"]
+    lines += _unpack(model, laid, formals, spelling)
+    for step in laid.statements:
+        lines += statement(f"const {'int' if step.condition else 'double'} {step.name} = {step.text};", "    ")
+    lines += _results(name, model, laid, formals)
+    lines.append("}")
+    return "\n".join(lines)
+
+
+def _unpack(model, laid, formals, spelling):
+    """The parameters read, by name; what is not used is said to be unused."""
+    read = [(k, parameter.name) for k, parameter in enumerate(model.parameters) if parameter.name in laid.inputs]
+    lines = []
+    for k, parameter in read:
+        lines.append(f"    const double {spelling.name(parameter)} = {formals['p']}[{k}];")
+    if not read:
+        lines.append(f"    (void){formals['p']};")
+    return lines
+
+
+def _results(name, model, laid, formals):
+    lines, returned = [], None
+    for k, (result, text) in enumerate(laid.results.items()):
+        if result in _RETURNED and not (name == "bracket"):
+            returned = text
+        elif name == "outputs":
+            lines += statement(f"{formals['y']}[{k + 1}] = {text};", "    ")
+        elif name == "jacobian":
+            lines += [f"    {formals['jac']}[{k}] = {text};" if len(text) < 70 else "\n".join(statement(f"{formals['jac']}[{k}] = {text};", "    "))]
+        else:
+            lines += statement(f"{_TARGETS[result].format(**formals)} = {text};", "    ")
+    unknown = model.unknown.name
+    if "{x}" in _SIGNATURES[name][1] and unknown not in laid.inputs:
+        lines.insert(0, f"    (void){formals['x']};")
+    if returned is not None:
+        lines += statement(f"return {returned};", "    ")
+    return lines

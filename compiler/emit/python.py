@@ -1,0 +1,72 @@
+"""Kernels of a Closure as pure Python, with the arithmetic of IEEE 754 where Python would raise instead."""
+
+from rootwright.emit.layout import ATOM, PRODUCT, lay_out
+from rootwright.emit.names import PYTHON_TAKEN, Names
+from rootwright.emit.text import statement
+from rootwright.operations import OPERATIONS
+
+
+class PythonSpelling:
+    """How numbers, names and operations are written in Python."""
+
+    nan = "math.nan"
+
+    def __init__(self, model):
+        self.names = Names(model, PYTHON_TAKEN)
+
+    def number(self, value):
+        return repr(value)
+
+    def name(self, name):
+        return self.names.of(name)
+
+    def operation(self, op, strength, constants):
+        if op == "div":
+            return ("{0}/{1}", PRODUCT) if constants[1] else (OPERATIONS["div"].python, ATOM)
+        return OPERATIONS[op].python, strength
+
+
+_ARGUMENTS = {"residual": ("x",), "rounding": ("x",), "kink": ("x", "error_bound"), "outputs": ("x",), "jacobian": ("x",)}
+_FORMALS = ("p", "error_bound")
+
+
+def kernel(closure, name, comment):
+    """Text of one kernel as a Python function whose docstring is the given lines; results come as a tuple, or alone."""
+    model = closure.model
+    spelling = PythonSpelling(model)
+    formals = {formal: spelling.names.ours(formal) for formal in _FORMALS} | {"x": spelling.name(model.unknown.name)}
+    arguments = ", ".join(formals[formal] for formal in ("p", *_ARGUMENTS.get(name, ())))
+    laid = lay_out(closure, name, spelling, {*spelling.names.used, *formals.values(), *PYTHON_TAKEN})
+    lines = [f"def _{'partials' if name == 'jacobian' else name}({arguments}):"]
+    lines += [f"    # {line}" for line in comment]
+    lines += _unpack(model, laid, formals, spelling)
+    for step in laid.statements:
+        lines += _statement(f"{step.name} = ", step.text)
+    values = list(laid.results.values())
+    if name in ("outside", "kink", "start"):
+        lines += _statement("return ", values[0])
+    elif name == "jacobian":
+        columns = len(model.parameters)
+        rows = [", ".join(values[k:k + columns]) for k in range(0, len(values), columns)]
+        lines += ["    return ["] + [line for row in rows for line in statement(f"[{row}],", " " * 8)] + ["    ]"]
+    else:
+        lines += _statement("return ", ", ".join(values) + ("," if len(values) == 1 else ""))
+    return "\n".join(lines)
+
+
+def _statement(head, text):
+    """One statement; a long one goes into parentheses, so that it may continue on further lines."""
+    if len(head) + len(text) + 4 <= 110:
+        return [f"    {head}{text}"]
+    return statement(f"{head}({text})", "    ")
+
+
+def _unpack(model, laid, formals, spelling):
+    read = [(k, parameter.name) for k, parameter in enumerate(model.parameters) if parameter.name in laid.inputs]
+    if not read:
+        return []
+    if len(read) == len(model.parameters):
+        names = ", ".join(spelling.name(name) for _, name in read) + ("," if len(read) == 1 else "")
+        return statement(f"{names} = {formals['p']}", "    ") if len(names) < 90 else \
+            statement(f"({names}) = {formals['p']}", "    ")
+    return [f"    {spelling.name(name)} = {formals['p']}[{k}]" for k, name in read]

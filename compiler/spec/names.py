@@ -27,6 +27,7 @@ _KEYWORDS_OF_CPP = frozenset("""
 _FUNCTIONS_OF_C = frozenset("pow fabs fmin fmax fma copysign isfinite isnan isinf signbit nextafter ldexp frexp".split())
 _EMITTED = frozenset(
     "solve solve_jacobian tangent adjoint jacobian hessian tangent_adjoint solve_many".split())
+_IMPORTED = frozenset(["math", "struct", "sys"])
 _EVAL_COLUMNS = frozenset("status iterations error_bound".split())
 
 # What people write who come from another language or from handwriting.
@@ -61,15 +62,18 @@ def quoted(text):
     return f"'{clipped(text)}'"
 
 
-def refusal(name):
-    """Why `name` cannot be declared, as (what is wrong, what would be right); None when it can."""
+def refusal(name, is_module=False):
+    """Why `name` cannot be declared, as (what is wrong, what would be right); None when it can.
+
+    A module's name is also the name of its file: not one that the emitted Python module imports.
+    """
     if not _IDENTIFIER.match(name):
         return "is not a name", f"names are ASCII letters, digits and underscores, a letter first, as in {tidy(name)}"
     if "__" in name:
         return "has two underscores in a row", f"single underscores are fine: {tidy(name)}"
     if len(name) > MAX_NAME_LENGTH:
         return f"has more than {MAX_NAME_LENGTH} characters", "choose a shorter name"
-    taken = _taken_by(name)
+    taken = "is a module of Python's library" if is_module and name in _IMPORTED else _taken_by(name)
     if taken:
         return taken, f"choose another name, for example {name}_" + ("value" if name in PREDEFINED else "1")
     return None

@@ -1,0 +1,130 @@
+"""Which names a spec declares, and which of them each expression may use."""
+
+from rootwright.spec.expression import Expression, names_in
+from rootwright.spec.names import FUNCTIONS, PREDEFINED, nearest, quoted, refusal
+from rootwright.spec.source import Path
+from rootwright.spec.tables import Findings
+
+CONSTANT, PARAMETER, DEFINITION, UNKNOWN, OUTPUT = "constant", "parameter", "definition", "unknown", "output"
+
+# Where an expression stands -> the kinds of names it may use, and how to say so. Definitions that depend on the unknown
+# are closed to all but the residual, definitions and outputs.
+_FIXED = (CONSTANT,), "numbers, constants and pi only"
+_GIVEN = (CONSTANT, PARAMETER, DEFINITION), "parameters, constants, and definitions free of the unknown"
+_FREE = (CONSTANT, PARAMETER, DEFINITION, UNKNOWN), "parameters, constants, definitions and the unknown"
+_ALLOWED = {
+    "constant": _FIXED, "range": _FIXED, "published value": _FIXED,
+    "bracket": _GIVEN, "start": _GIVEN, "condition": _GIVEN,
+    "definition": _FREE, "residual": _FREE,
+    "output": ((*_FREE[0], OUTPUT), "parameters, constants, definitions, the unknown, and outputs above it"),
+}
+
+
+class Scope:
+    """The declared names. Declare all of them first, then check every expression, then ask who depends on what."""
+
+    def __init__(self, findings: Findings):
+        self.findings = findings
+        self.kinds = {}              # name -> kind
+        self.places = {}             # name -> path of its declaration
+        self.order = {}              # name -> position among all declarations
+        self.uses = {}               # constant, definition or output -> names that its expression mentions
+        self.paths = {}              # constant, definition or output -> path of its expression
+
+    def declare(self, name: str, kind: str, path: Path, at_value: bool = False) -> None:
+        """Declares `name`, which is the key at `path` or (`at_value`) the text there."""
+        report = self.findings.error if at_value else self.findings.error_at_key
+        refused = refusal(name)
+        if refused:
+            report(path, f"the name {quoted(name)} {refused[0]}", refused[1])
+        if name in self.kinds:
+            line = self.findings.source.line_of(self.places[name])
+            report(path, f"the name {quoted(name)} is taken by the {self.kinds[name]} on line {line}",
+                   "give each constant, parameter, definition, unknown and output its own name")
+            return
+        # A refused name counts as declared: its uses are not further mistakes.
+        self.kinds[name], self.places[name], self.order[name] = kind, path, len(self.order)
+
+    def define(self, name: str, expression: Expression | None, path: Path) -> None:
+        """Notes what a constant, definition or output stands for, and where its expression is."""
+        self.uses[name], self.paths[name] = self.mentioned(expression), path
+
+    def mentioned(self, expression: Expression | None) -> tuple[str, ...]:
+        """The names in the expression, each once, in order of appearance."""
+        return tuple(dict.fromkeys(mention.name for mention in names_in(expression.tree))) if expression else ()
+
+    def check(self, expression: Expression | None, place: str, path: Path) -> None:
+        """Reports each name that the expression at `path` may not use where it stands, once."""
+        allowed, wording = _ALLOWED[place]
+        seen = set(PREDEFINED)
+        for mention in names_in(expression.tree) if expression else ():
+            word, part = mention.name, (mention.start, mention.end)
+            if word in seen:
+                continue
+            seen.add(word)
+            kind = self.kinds.get(word)
+            if kind is None:
+                self.findings.error(path, f"the name {quoted(word)} is not declared", self._likeness(word, allowed), part)
+            elif kind not in allowed:
+                self.findings.error(path, f"the {place} uses the {kind} {quoted(word)}", f"it can have {wording}", part)
+            elif allowed is _GIVEN[0] and kind == DEFINITION and self.depends_on_unknown(word):
+                self.findings.error(path, f"the {place} uses {quoted(word)}, a definition that depends on the unknown",
+                                    f"it can have {wording}", part)
+
+    def check_order(self) -> None:
+        """Reports uses of later declarations of the same kind, and circles. Call when every expression was checked."""
+        for name, path in self.paths.items():
+            self._check_order_of(name, path)
+
+    def _check_order_of(self, name, path):
+        for word in self.uses[name]:
+            if self.kinds.get(word) != self.kinds[name] or self.order[word] < self.order[name]:
+                continue
+            chain = self._chain(word, name)
+            if chain:
+                circle = " -> ".join([name, *chain])
+                self.findings.error(path, f"the {self.kinds[name]} {quoted(name)} is defined by itself: {circle}"[:300],
+                                    "one of them must be defined without the others")
+            else:
+                self.findings.error(path, f"{quoted(word)} is used before it is defined",
+                                    f"move {word} above {name}: {self.kinds[name]}s are read in order")
+
+    def depends_on_unknown(self, name: str) -> bool:
+        return any(self.kinds.get(word) == UNKNOWN for word in self.reach([name]))
+
+    def reach(self, names) -> set[str]:
+        """The names, and everything that their definitions use."""
+        found, pending = set(), list(names)
+        while pending:
+            name = pending.pop()
+            if name not in found:
+                found.add(name)
+                pending.extend(self.uses.get(name, ()))
+        return found
+
+    def _chain(self, first, last):
+        """Names that lead from `first` to `last` by use, both included; empty when none do."""
+        came_from, pending = {first: None}, [first]
+        while pending:
+            name = pending.pop()
+            if name == last:
+                chain = []
+                while name is not None:
+                    chain.append(name)
+                    name = came_from[name]
+                return chain[::-1]
+            for word in self.uses.get(name, ()):
+                if word not in came_from:
+                    came_from[word] = name
+                    pending.append(word)
+        return []
+
+    def _likeness(self, word, allowed):
+        if word in FUNCTIONS:
+            return f"{word} is a function: write {word}(...)"
+        near = nearest(word, [*(name for name, kind in self.kinds.items() if kind in allowed), *PREDEFINED])
+        if near:
+            return f"did you mean {near}?"
+        if word == "e":
+            return "write exp(1) for Euler's number, or declare e as a constant"
+        return "declare it in [constants], [parameters] or [definitions]"

@@ -1,0 +1,440 @@
+/* SPDX-License-Identifier: 0BSD */
+
+enum {
+    rw_status_flat = 2,
+    rw_status_kink = 4,
+    rw_status_not_finite = -1,
+    rw_status_no_sign_change = -2,
+    rw_status_iteration_limit = -3,
+    rw_status_bad_bracket = -4,
+    rw_status_jump = -5
+};
+
+typedef struct {
+    double x, g, slope; /* the residual and its slope at x */
+} rw_sample;
+
+static rw_sample rw_evaluate(const double p[], double x, rw_point *r)
+{
+    rw_sample s;
+    s.x = x;
+    s.g = rw_residual(p, x, &s.slope);
+    r->evaluations += 1;
+    return s;
+}
+
+static int rw_fail(rw_point *r, int status, double lower, double upper)
+{
+    r->y[0] = NAN;
+    r->residual = NAN;
+    r->slope = NAN;
+    r->error_bound = NAN;
+    r->lower = lower;
+    r->upper = upper;
+    r->status = status;
+    return status;
+}
+
+/* Doubles numbered in ascending order; 0.0 and -0.0 share the number 0. */
+static int64_t rw_ordinal(double x)
+{
+    int64_t bits;
+    memcpy(&bits, &x, sizeof bits);
+    return bits >= 0 ? bits : INT64_MIN - bits;
+}
+
+static double rw_from_ordinal(int64_t n)
+{
+    const int64_t bits = n >= 0 ? n : INT64_MIN - n;
+    double x;
+    memcpy(&x, &bits, sizeof x);
+    return x;
+}
+
+/* How many steps from double to double lead from a up to b: at most 2^64 - 2^53, so it needs all 64 bits. */
+static uint64_t rw_gap(double a, double b)
+{
+    return (uint64_t)rw_ordinal(b) - (uint64_t)rw_ordinal(a);
+}
+
+static int rw_between(double x, double a, double b)
+{
+    return (a < x && x < b) || (b < x && x < a);
+}
+
+/* A finite slope in the direction in which the residual changes sign. Beside an odd pole the direction is wrong. */
+static int rw_usable(rw_sample s, double rising)
+{
+    return isfinite(s.slope) && s.slope * rising > 0.0;
+}
+
+#if RW_OPEN_LOWER || RW_OPEN_UPPER
+/* The sample nearest to an open end at which the residual is finite and its sign is certain. The offsets are the
+   first one times 2, 2^3, 2^7, 2^15, ...: twelve of them reach from a subnormal to any number. Returns 0 or a status. */
+static int rw_enter(const double p[], double end, double far, double rounding, rw_sample *s, rw_point *r)
+{
+    const double half = 0.5 * far - 0.5 * end;
+    double offset = fmax(2.0 * fabs(nextafter(end, far) - end), 2.0 * rounding);
+    double bound, slope_rounding, curvature;
+    int growth, status = rw_status_not_finite;
+
+    for (growth = 1; growth <= 2048; growth *= 2) {
+        s->x = end + copysign(fmin(offset, fabs(half)), half);
+        if (!rw_between(s->x, end, far)) {
+            return rw_status_no_sign_change;
+        }
+        *s = rw_evaluate(p, s->x, r);
+        if (isfinite(s->g)) {
+            bound = rw_rounding(p, s->x, &slope_rounding, &curvature);
+            if (fabs(s->g) > bound) {
+                return 0;
+            }
+            status = rw_status_no_sign_change;
+        }
+        if (offset >= fabs(half)) {
+            break;
+        }
+        offset = offset < ldexp(fabs(half), -growth) ? ldexp(offset, growth) : fabs(half);
+    }
+    return status;
+}
+#endif
+
+/* The next point to try, from models of the residual between the two ends of the bracket, best and other. Where none
+   serves the result is not inside the bracket. In this order:
+   - the cubic through x(g) and its slopes at the two points evaluated last (Hermite's interpolation of the inverse
+     function; order 1 + sqrt(3)), if it agrees with Newton's step within a factor of 4. With overshoot it goes
+     past the root by twice the two steps' difference, to bring in the far end of the bracket too;
+   - the power law c*(x - a)^q + d through both ends and one end's slope: exact for a monomial, and good when the
+     other end's slope is zero or infinite;
+   - Newton's step. */
+static double rw_aim(rw_sample best, rw_sample previous, rw_sample other, double rising, int overshoot)
+{
+    const rw_sample slanted = rw_usable(best, rising) ? best : other;
+    const rw_sample anchor = rw_usable(best, rising) ? other : best;
+    double newton = 0.0, hermite, power, t, x;
+
+    if (rw_usable(best, rising)) {
+        newton = -best.g / best.slope;
+        if (rw_usable(previous, rising) && fabs(previous.g - best.g) > 0.0) {
+            t = best.g / (best.g - previous.g);
+            hermite = (1.0 - t) * (1.0 - t) * newton
+                    + t * t * ((3.0 - 2.0 * t) * (previous.x - best.x) - previous.g / previous.slope);
+            if ((hermite < 0.0) == (newton < 0.0) && fabs(hermite) < 4.0 * fabs(newton)
+                && fabs(newton) < 4.0 * fabs(hermite)) {
+                x = best.x + hermite + copysign(2.0 * fabs(hermite - newton), hermite);
+                if (overshoot && rw_between(x, best.x, other.x)) {
+                    return x;
+                }
+                x = best.x + hermite;
+                if (rw_between(x, best.x, other.x)) {
+                    return x;
+                }
+            }
+        }
+    }
+    if (!overshoot && rw_usable(slanted, rising)) {
+        power = slanted.slope * ((slanted.x - anchor.x) / (slanted.g - anchor.g));
+        if (power > 0x1p-10) {
+            t = pow(anchor.g / (anchor.g - slanted.g), 1.0 / power);
+            x = anchor.x + t * (slanted.x - anchor.x);
+            if (rw_between(x, best.x, other.x)) {
+                return x;
+            }
+        }
+    }
+    return best.x + newton;
+}
+
+/* Narrows the bracket between two samples of opposite signs down to a root, and leaves the root in best.
+   Returns 0 or a status.
+   The number of doubles between low and high at least halves over every three evaluations: two points from models of
+   the residual, or one of them the arithmetic middle, then the middle double. There are less than 2^64 doubles, so
+   the ends become adjacent within 3*64 evaluations, but for those at which the residual is not a number. */
+static int rw_narrow(const double p[], rw_sample *low, rw_sample *high, rw_sample *best, double start, rw_point *r)
+{
+    const double rising = high->g > 0.0 ? 1.0 : -1.0;
+    rw_sample previous, latest;
+    uint64_t gap = rw_gap(low->x, high->x), gap_left;
+    int tries = 0;  /* evaluations since the gap was halved */
+    int plain = 0;  /* the last point was the arithmetic middle */
+    int holes = 0;  /* evaluations in a row that were not a number */
+    int closing = 0;
+    int fast, improved;
+    double x, step, share, bound, slope_rounding, curvature;
+
+    *best = fabs(low->g) < fabs(high->g) ? *low : *high;
+    previous = fabs(low->g) < fabs(high->g) ? *high : *low;
+    for (;;) {
+        /* low.x < high.x, low.g and high.g are nonzero and of opposite signs; best is one of the two. */
+        if (rw_gap(low->x, high->x) <= 1u) {
+            bound = rw_rounding(p, best->x, &slope_rounding, &curvature);
+            if (fabs(best->g) <= bound) {
+                return 0;
+            }
+            /* A root's residual is at most slope * width here, and cube-root-like ones stay below 64 times that. */
+            if (best->slope * rising > 0.0
+                && fabs(best->g) <= 64.0 * fabs(best->slope) * (high->x - low->x)) {
+                return 0;
+            }
+            return rw_status_jump;
+        }
+        x = best->x;
+        if (rw_usable(*best, rising)) {
+            step = -best->g / best->slope;
+            if (fabs(step) <= 0x1p-50 * fabs(best->x)) {
+                bound = rw_rounding(p, best->x, &slope_rounding, &curvature);
+                if (fabs(best->g) <= bound) {
+                    return 0;
+                }
+                /* On a straight part of the curve the step ends the search; beside a pole at an open end, where the
+                   step is as small, |curvature * step / slope| is 1 or more. */
+                if (fabs(curvature * step) <= 0.25 * fabs(best->slope)) {
+                    closing = 1;
+                    x = best->x + step;
+                    if (!rw_between(x, low->x, high->x)) {
+                        return 0;
+                    }
+                }
+            }
+        }
+        if (r->evaluations >= RW_LIMIT) {
+            return closing ? 0 : rw_status_iteration_limit;
+        }
+
+        fast = closing;
+        if (!closing && holes == 0 && tries < 2) {
+            x = r->iterations == 0 && !isnan(start)
+                ? start
+                : rw_aim(*best, previous, (best->g < 0.0) == (low->g < 0.0) ? *high : *low, rising, tries == 1);
+            fast = rw_between(x, low->x, high->x);
+        }
+        plain = !fast && holes == 0 && tries < 2 && !plain;
+        if (plain) {
+            x = low->x < 0.0 && high->x > 0.0 ? 0.5 * (low->x + high->x) : low->x + 0.5 * (high->x - low->x);
+        }
+        if (holes > 0) { /* nearer and nearer to either end in turn, where the residual is known to be a number */
+            share = ldexp(1.0, -1 - (holes + 1) / 2);
+            x = holes % 2 == 1 ? (1.0 - share) * low->x + share * high->x : share * low->x + (1.0 - share) * high->x;
+        }
+        if (!rw_between(x, low->x, high->x)) {
+            x = rw_from_ordinal(rw_ordinal(low->x) + (int64_t)(rw_gap(low->x, high->x) / 2u));
+        }
+
+        latest = rw_evaluate(p, x, r);
+        r->iterations += 1;
+        tries += 1;
+        if (isnan(latest.g)) {
+            holes += 1;
+            if (closing) {
+                return 0;
+            }
+            if (holes > 8) {
+                return rw_status_not_finite;
+            }
+            continue;
+        }
+        holes = 0;
+        improved = fabs(latest.g) < fabs(best->g);
+        if (!(fabs(latest.g) > 0.0) || (closing && improved)) {
+            *best = latest;
+            return 0;
+        }
+        if (closing) {
+            return 0;
+        }
+        if (fast && !improved) {
+            bound = rw_rounding(p, best->x, &slope_rounding, &curvature);
+            if (fabs(best->g) <= bound) {
+                return 0;
+            }
+        }
+        if ((latest.g < 0.0) == (low->g < 0.0)) {
+            *low = latest;
+        } else {
+            *high = latest;
+        }
+        if (improved || best->x < low->x || best->x > high->x) {
+            previous = *best;
+            *best = latest;
+        } else {
+            previous = latest;
+        }
+        gap_left = rw_gap(low->x, high->x);
+        if (gap_left <= gap - gap / 2u) {
+            gap = gap_left;
+            tries = 0;
+        }
+    }
+}
+
+/* How far from the root x, towards one end of the bracket, the residual's sign may be mere rounding: the distance 2^k
+   of the nearest point at which it surely has the sign expected there, found by bisection of k, or of the end. */
+static double rw_reach(const double p[], double x, double end, int negative, rw_point *r)
+{
+    double reach = fabs(end - x), bound, slope_rounding, curvature;
+    rw_sample s;
+    int unsure, sure, k;
+
+    if (!(reach > 0.0)) {
+        return 0.0;
+    }
+    (void)frexp(fmax(fabs(x), 0x1p-1022), &unsure);
+    unsure -= 54; /* half the spacing of doubles at x */
+    (void)frexp(0.5 * end - 0.5 * x, &sure);
+    sure += 1; /* 2^sure exceeds the distance of the end */
+    while (sure - unsure > 1 && r->evaluations < RW_LIMIT) {
+        k = unsure + (sure - unsure) / 2;
+        s.x = x + copysign(ldexp(1.0, k), end - x);
+        if (!rw_between(s.x, x, end)) {
+            sure = k;
+            continue;
+        }
+        s = rw_evaluate(p, s.x, r);
+        bound = rw_rounding(p, s.x, &slope_rounding, &curvature);
+        if (fabs(s.g) > bound && (s.g < 0.0) == negative) {
+            sure = k;
+            reach = fabs(s.x - x);
+        } else {
+            unsure = k;
+        }
+    }
+    return reach;
+}
+
+/* Fills r for the root: error bound, enclosing bracket and caveats. end holds the bracket, rounding its uncertainty;
+   the residual is negative towards end[i] if negative[i]; at_end is the uncertainty of the root as an end itself. */
+static int rw_certify(const double p[], rw_sample root, const double end[2], const double rounding[2],
+                      const int negative[2], double at_end, rw_point *r)
+{
+    double slope_rounding, curvature, farthest, reach;
+    double error = fabs(root.g) + rw_rounding(p, root.x, &slope_rounding, &curvature);
+    const double slope = fabs(root.slope) - slope_rounding;
+    double bend = HUGE_VAL;
+
+    r->status = 0;
+    /* Newton-Kantorovich: with bend = |g_xx| * error / |g_x| <= 1/2 the root lies within
+       2*error / (1 + sqrt(1 - 2*bend)) of x, which is below (1 + bend) * error for bend <= 1/4;
+       2^-10 is for the rounding of these lines. */
+    if (slope > 0.0 && isfinite(slope)) {
+        bend = fabs(curvature) * (error / slope) / slope;
+    }
+    if (bend <= 0.25) {
+        error = (1.0 + bend) * (error / slope) * (1.0 + 0x1p-10);
+    } else {
+        r->status |= rw_status_flat;
+        if (!(error <= 0.0)) {
+            reach = rw_reach(p, root.x, end[0], negative[0], r);
+            error = fmax(reach, rw_reach(p, root.x, end[1], negative[1], r));
+        }
+    }
+    error += at_end;
+    farthest = fmax(root.x - end[0] + rounding[0], end[1] - root.x + rounding[1]);
+    r->error_bound = error < farthest ? error : farthest;
+    r->y[0] = root.x;
+    r->residual = root.g;
+    r->slope = root.slope;
+    r->lower = end[0];
+    r->upper = end[1];
+    if (root.x - r->error_bound > end[0]) {
+        r->lower = r->error_bound > 0.0 ? nextafter(root.x - r->error_bound, -HUGE_VAL) : root.x;
+    }
+    if (root.x + r->error_bound < end[1]) {
+        r->upper = r->error_bound > 0.0 ? nextafter(root.x + r->error_bound, HUGE_VAL) : root.x;
+    }
+#if RW_SWITCHES
+    if (rw_kink(p, root.x, r->error_bound)) {
+        r->status |= rw_status_kink;
+    }
+#endif
+    return r->status;
+}
+
+/* Finds the root in the bracket and fills r but for the outputs. start is where to look first, NAN for nowhere. */
+static int rw_locate(const double p[], double start, rw_point *r)
+{
+    double end[2], rounding[2], slack[2], slope_rounding, curvature, swap;
+    rw_sample low, high, root;
+    int negative[2], status, i;
+
+    r->iterations = 0;
+    r->evaluations = 0;
+    rw_bracket(p, end, rounding);
+    if (!isfinite(end[0]) || !isfinite(end[1])) {
+        return rw_fail(r, rw_status_not_finite, NAN, NAN);
+    }
+    for (i = 0; i < 2; i++) { /* an unbounded rounding error says nothing about where a root may be */
+        if (!isfinite(rounding[i])) {
+            rounding[i] = 0.0;
+        }
+    }
+    if (end[0] > end[1]) { /* ends that cross by no more than their rounding are equal */
+        if (!(end[0] - end[1] <= rounding[0] + rounding[1])) {
+            return rw_fail(r, rw_status_bad_bracket, NAN, NAN);
+        }
+        swap = end[0];
+        end[0] = end[1];
+        end[1] = swap;
+        swap = rounding[0];
+        rounding[0] = rounding[1];
+        rounding[1] = swap;
+    }
+
+#if RW_OPEN_LOWER
+    status = rw_enter(p, end[0], end[1], rounding[0], &low, r);
+    rounding[0] = 0.0;
+#else
+    low = rw_evaluate(p, end[0], r);
+    status = isnan(low.g) ? rw_status_not_finite : 0;
+#endif
+    if (status < 0) {
+        return rw_fail(r, status, end[0], end[1]);
+    }
+#if RW_OPEN_UPPER
+    status = rw_enter(p, end[1], end[0], rounding[1], &high, r);
+    rounding[1] = 0.0;
+#else
+    high = rw_evaluate(p, end[1], r);
+    status = isnan(high.g) ? rw_status_not_finite : 0;
+#endif
+    if (status < 0) {
+        return rw_fail(r, status, end[0], end[1]);
+    }
+
+    negative[0] = low.g < 0.0;
+    negative[1] = high.g < 0.0;
+    if (!(fabs(low.g) > 0.0)) {
+        return rw_certify(p, low, end, rounding, negative, rounding[0], r);
+    }
+    if (!(fabs(high.g) > 0.0)) {
+        return rw_certify(p, high, end, rounding, negative, rounding[1], r);
+    }
+    if (negative[0] == negative[1]) { /* no root but at an end, where zero up to rounding counts as zero */
+        slack[0] = rw_rounding(p, low.x, &slope_rounding, &curvature);
+        slack[1] = rw_rounding(p, high.x, &slope_rounding, &curvature);
+        if (rounding[0] > 0.0) {
+            slack[0] += fabs(low.slope) * rounding[0];
+        }
+        if (rounding[1] > 0.0) {
+            slack[1] += fabs(high.slope) * rounding[1];
+        }
+        if (fabs(low.g) <= slack[0] && !(fabs(high.g) <= slack[1] && fabs(high.g) < fabs(low.g))) {
+            return rw_certify(p, low, end, rounding, negative, rounding[0], r);
+        }
+        if (fabs(high.g) <= slack[1]) {
+            return rw_certify(p, high, end, rounding, negative, rounding[1], r);
+        }
+        return rw_fail(r, rw_status_no_sign_change, end[0], end[1]);
+    }
+
+#if RW_START
+    if (isnan(start)) {
+        start = rw_start(p);
+    }
+#endif
+    status = rw_narrow(p, &low, &high, &root, start, r);
+    if (status < 0) {
+        return rw_fail(r, status, low.x, high.x);
+    }
+    return rw_certify(p, root, end, rounding, negative, 0.0, r);
+}

@@ -17,11 +17,12 @@ class Lowering:
     def declare(self, name, node):
         self.names[name] = node
 
-    def lower(self, expression):
-        """Node of an Expression (a number, or a condition where the tree is one).
+    def lower(self, expression, places=None):
+        """Node of an Expression (a number, or a condition where the tree is one); `places` collects {node: span in the text}.
 
         Walks with a stack of its own: a sum of thousands of terms is a tree thousands of levels deep.
         """
+        places = {} if places is None else places
         stack, values = [(expression.tree, False)], []
         while stack:
             tree, ready = stack.pop()
@@ -37,6 +38,7 @@ class Lowering:
                 args = values[-count:]
                 del values[-count:]
                 values.append(self._operation(tree.op, args))
+                places.setdefault(values[-1], (tree.start, tree.end))
         return values[0]
 
     def _operation(self, op, args):

@@ -1,0 +1,157 @@
+"""A Closure to the files of a module: kernels printed, the runtime's source copied in, the manual on top."""
+
+import re
+from importlib import resources
+
+import jinja2
+
+from rootwright.calculus.constants import nearest
+from rootwright.emit import c, python
+from rootwright.emit.describe import comments
+from rootwright.emit.manual import STATUS, manual
+
+_KERNELS = ("bracket", "residual", "rounding", "outside", "kink", "start", "outputs", "jacobian")
+
+
+def assemble(closure, target="c"):
+    """Files of the module, {file name: text}: header and source for "c", one file for "python"."""
+    return {"c": _assemble_c, "python": _assemble_python}[target](closure)
+
+
+def _assemble_c(closure):
+    model, sizes = closure.model, _sizes(closure)
+    upper = model.name.upper()
+
+    def runtime(name):
+        text = resolve(_source(name), _features(closure))
+        for word, value in (("RW_M*RW_N", sizes["MN"]), ("RW_N", sizes["N"]), ("RW_M", sizes["M"]), ("RW_LIMIT", closure.limit)):
+            text = re.sub(rf"\b{re.escape(word)}\b", str(value), text)
+        return text.replace("rw_", f"{model.name}_").replace("RW_", f"{upper}_")
+
+    kernels = "\n\n".join(c.kernel(closure, name, comments(closure)[name]) for name in _KERNELS if name in closure.kernels)
+    solver, interface = runtime("solver.c"), runtime("interface.c")
+    helpers = _used(runtime("arithmetic.c"), kernels + solver + interface, r"^static \w+ (\w+)\(")
+    page = manual(closure, _example_c(closure), [
+        f"Interface: p[{sizes['N']}] holds the parameters, y[{sizes['M']}] the results, each in the order above. No heap, no globals, re-entrant."])
+    context = sizes | {"name": model.name, "upper": upper, "status": [(code, word) for code, word, _ in STATUS],
+                       "results": ", ".join(model.results), "manual": page, "provenance": page[-3:]}
+    source = context | {"helpers": "".join(f"{text}\n\n" for text in helpers), "kernels": kernels, "solver": solver, "interface": interface}
+    return {f"{model.name}.h": _render("module.h.j2", context), f"{model.name}.c": _render("module.c.j2", source)}
+
+
+def _assemble_python(closure):
+    model, sizes = closure.model, _sizes(closure)
+
+    def runtime(name):
+        text = resolve(_source(name), _features(closure))
+        return re.sub(r"\bLIMIT\b", str(closure.limit), text)
+
+    kernels = "\n\n\n".join(python.kernel(closure, name, comments(closure)[name]) for name in _KERNELS if name in closure.kernels)
+    solver, interface = runtime("solver.py"), runtime("interface.py")
+    helpers = _used(runtime("arithmetic.py"), kernels + solver + interface, r"^def (\w+)\(")
+    page = manual(closure, _example_python(closure), [
+        f"Interface: p is a sequence of the {sizes['N']} parameters, y a list of the {sizes['M']} results, each in the order above."])
+    context = sizes | {"status": [(code, word) for code, word, _ in STATUS], "parameters": ", ".join(p.name for p in model.parameters),
+                       "results": ", ".join(model.results), "manual": page, "kernels": kernels, "solver": solver,
+                       "interface": interface, "helpers": "".join(f"{text}\n\n\n" for text in helpers)}
+    return {f"{model.name}.py": _render("module.py.j2", context)}
+
+
+def _sizes(closure):
+    n, m = len(closure.model.parameters), len(closure.model.results)
+    return {"N": n, "M": m, "MN": m * n}
+
+
+def _features(closure):
+    unknown = closure.model.unknown
+    return {"OPEN_LOWER": unknown.open_lower, "OPEN_UPPER": unknown.open_upper, "SWITCHES": "kink" in closure.kernels,
+            "START": "start" in closure.kernels, "OUTPUTS": "outputs" in closure.kernels}
+
+
+def resolve(text, features):
+    """The text with its optional blocks decided: `#if NAME` (or `#if RW_NAME`), `#else`, `#endif` on lines of their own."""
+    kept, open_blocks = [], []
+    for line in text.splitlines():
+        words = line.split()
+        if words[:1] == ["#if"]:
+            open_blocks.append(_holds(" ".join(words[1:]), features))
+        elif words[:1] == ["#else"]:
+            open_blocks[-1] = not open_blocks[-1]
+        elif words[:1] == ["#endif"]:
+            open_blocks.pop()
+        elif all(open_blocks):
+            kept.append(line)
+    return "\n".join(kept)
+
+
+def _holds(test, features):
+    """A feature, or features joined by ||."""
+    return any(features[name.strip().removeprefix("RW_")] for name in test.split("||"))
+
+
+def _source(name):
+    """Text of a file of the runtime without its licence line, docstring and imports: only what is copied."""
+    text = resources.files("rootwright.runtime").joinpath(name).read_text(encoding="utf-8")
+    body = re.sub(r'\A(?:#.*\n|/\*.*\*/\n|\s*\n)*(?:""".*?"""\n)?', "", text, flags=re.S) if name.endswith(".py") else \
+        re.sub(r"\A(?:/\* SPDX.*\*/\n)?", "", text)
+    return re.sub(r"^import \w+\n", "", body, flags=re.M).strip("\n")
+
+
+def _used(text, referring, definition):
+    """The functions of a runtime file that the module calls, directly or through one another, in file order."""
+    functions = {}
+    for chunk in re.split(r"\n\n+(?=\S)", text):
+        found = re.search(definition, chunk, flags=re.M)
+        if found:
+            functions[found.group(1)] = chunk
+    wanted = set()
+    pending = [referring]
+    while pending:
+        words = set(re.findall(r"\w+", pending.pop()))
+        for name in functions:
+            if name in words and name not in wanted:
+                wanted.add(name)
+                pending.append(functions[name])
+    return [chunk for name, chunk in functions.items() if name in wanted]
+
+
+def _render(template, context):
+    environment = jinja2.Environment(trim_blocks=True, lstrip_blocks=True, undefined=jinja2.StrictUndefined, keep_trailing_newline=True)
+    return environment.from_string(resources.files("rootwright.runtime").joinpath(template).read_text(encoding="utf-8")).render(context)
+
+
+def _example_point(closure):
+    """A point inside the operating range to show: the first published one, else the middle of the ranges."""
+    from rootwright.calculus.lower import Lowering
+    from rootwright.calculus.program import Graph
+
+    model = closure.model
+    if not model.published:
+        return [(low + high) / 2 if parameter.spread != "log" else (low * high) ** 0.5
+                for parameter, (low, high) in zip(model.parameters, closure.ranges)]
+    graph = Graph()
+    lowering = Lowering(graph)
+    for constant in model.constants:
+        lowering.declare(constant.name, lowering.lower(constant.expression))
+    given = dict(model.published[0].given)
+    return [nearest(graph, lowering.lower(given[parameter.name])) for parameter in model.parameters]
+
+
+def _example_c(closure):
+    model = closure.model
+    values = ", ".join(repr(value) for value in _example_point(closure))
+    return [f"const double p[{len(model.parameters)}] = {{ {values} }};",
+            f"{model.name}_point r;",
+            f"double jac[{len(model.results) * len(model.parameters)}];",
+            f"if ({model.name}_solve_jacobian(p, NAN, &r, jac) >= 0) {{",
+            f"    use(r.y[0], jac[0]);    /* {model.unknown.name}, d{model.unknown.name}/d{model.parameters[0].name} */",
+            "}"]
+
+
+def _example_python(closure):
+    model = closure.model
+    values = ", ".join(repr(value) for value in _example_point(closure))
+    return [f"import {model.name}",
+            f"r, jac = {model.name}.solve_jacobian([{values}])",
+            "if r.status >= 0:",
+            f"    use(r.y[0], jac[0][0])    # {model.unknown.name}, d{model.unknown.name}/d{model.parameters[0].name}"]

@@ -1,0 +1,23 @@
+"""The comment above each kernel."""
+
+from rootwright.emit.text import paragraph
+
+
+def comments(closure):
+    """{kernel: comment lines}."""
+    model = closure.model
+    x = model.unknown.name
+    switches = "the root lies on a switch between pieces, up to the error bound and the rounding of what is compared"
+    texts = {
+        "bracket": f"The bracket of {x}, and bounds of the rounding errors of its ends.",
+        "residual": f"The residual, zero at the root, and its slope: {model.equation}",
+        "rounding": f"Bounds of the rounding errors of the residual and of its slope at {x} (running error analysis; 1.2e-16 is "
+                    "the unit roundoff 2^-53 and a margin), and the curvature, the second derivative of the residual.",
+        "outside": "True where the parameters are outside what the closure is meant for.",
+        "kink": f"True where {switches}.",
+        "start": f"The starting guess of the spec for {x}.",
+        "outputs": "The outputs at the root.",
+        "jacobian": f"Derivatives of {', '.join(model.results)} with respect to {', '.join(p.name for p in model.parameters)}, "
+                    f"by the implicit function theorem: d{x}/dP = -g_P/g_{x}.",
+    }
+    return {kernel: paragraph(texts[kernel], 104) for kernel in closure.kernels}

@@ -1,0 +1,120 @@
+/* SPDX-License-Identifier: 0BSD */
+
+/* True where the root has no usable slope: derivatives there are NaN. Same test as in the solver. */
+static int rw_without_slope(const double p[], double root)
+{
+    double slope, slope_rounding, curvature;
+    const double g = rw_residual(p, root, &slope);
+    const double rounding = rw_rounding(p, root, &slope_rounding, &curvature);
+    return rw_is_flat(g, slope, rounding, slope_rounding, curvature);
+}
+
+int rw_solve(const double p[RW_N], double start, rw_point *r)
+{
+    int k, status = RW_NOT_FINITE, finite = 1;
+    rw_clear(r);
+    for (k = 0; k < RW_N; k++) {
+        finite = finite && isfinite(p[k]);
+    }
+    if (finite) {
+        status = rw_locate(p, start, r);
+        if (status >= 0 && rw_outside(p)) {
+            status |= RW_OUTSIDE_RANGE;
+        }
+#if RW_OUTPUTS
+        if (status >= 0) {
+            rw_outputs(p, r->y[0], r->y);
+        }
+#endif
+    }
+    r->status = status;
+    return status;
+}
+
+int rw_solve_jacobian(const double p[RW_N], double start, rw_point *r, double jac[RW_M*RW_N])
+{
+    const int status = rw_solve(p, start, r);
+    int k;
+    if (status >= 0 && (status & RW_FLAT) == 0) {
+        rw_partials(p, r->y[0], jac);
+    } else {
+        for (k = 0; k < RW_M*RW_N; k++) {
+            jac[k] = NAN;
+        }
+    }
+    return status;
+}
+
+void rw_jacobian(const double p[RW_N], double root, double jac[RW_M*RW_N])
+{
+    int k;
+    if (rw_without_slope(p, root)) {
+        for (k = 0; k < RW_M*RW_N; k++) {
+            jac[k] = NAN;
+        }
+    } else {
+        rw_partials(p, root, jac);
+    }
+}
+
+void rw_tangent(const double p[RW_N], double root, const double p_dot[RW_N], double y_dot[RW_M])
+{
+    double jac[RW_M*RW_N];
+    int i, k;
+    rw_jacobian(p, root, jac);
+    for (i = 0; i < RW_M; i++) {
+        y_dot[i] = jac[RW_N*i]*p_dot[0];
+        for (k = 1; k < RW_N; k++) {
+            y_dot[i] += jac[RW_N*i + k]*p_dot[k];
+        }
+    }
+}
+
+void rw_adjoint(const double p[RW_N], double root, const double y_bar[RW_M], double p_bar[RW_N])
+{
+    double jac[RW_M*RW_N];
+    int i, k;
+    rw_jacobian(p, root, jac);
+    for (k = 0; k < RW_N; k++) {
+        for (i = 0; i < RW_M; i++) {
+            p_bar[k] += jac[RW_N*i + k]*y_bar[i];
+        }
+    }
+}
+
+size_t rw_solve_many(size_t n, const double *const p[RW_N], const ptrdiff_t stride[RW_N], const double *start,
+                     double *const y[RW_M], double *error_bound, double *const jac[RW_M*RW_N], int *status)
+{
+    size_t i, unsolved = 0;
+    for (i = 0; i < n; i++) {
+        double q[RW_N], d[RW_M*RW_N];
+        rw_point r;
+        int k;
+        for (k = 0; k < RW_N; k++) {
+            q[k] = p[k][(ptrdiff_t)i*stride[k]];
+        }
+        if (jac != NULL) {
+            rw_solve_jacobian(q, start != NULL ? start[i] : NAN, &r, d);
+            for (k = 0; k < RW_M*RW_N; k++) {
+                if (jac[k] != NULL) {
+                    jac[k][i] = d[k];
+                }
+            }
+        } else {
+            rw_solve(q, start != NULL ? start[i] : NAN, &r);
+        }
+        for (k = 0; k < RW_M; k++) {
+            if (y[k] != NULL) {
+                y[k][i] = r.y[k];
+            }
+        }
+        if (error_bound != NULL) {
+            error_bound[i] = r.error_bound;
+        }
+        if (status != NULL) {
+            status[i] = r.status;
+        }
+        unsolved += r.status < 0;
+    }
+    return unsolved;
+}

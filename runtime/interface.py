@@ -1,0 +1,56 @@
+# SPDX-License-Identifier: 0BSD
+
+
+def solve(p, start=math.nan):
+    """Root and outputs at the parameters p; start: a warm start, NaN for none. Returns a Point."""
+    p = _parameters(p)
+    r = Point()
+    if not all(math.isfinite(value) for value in p):
+        r.status = NOT_FINITE
+        return r
+    r.status = _locate(p, start, r)
+    if r.status >= 0 and _outside(p):
+        r.status |= OUTSIDE_RANGE
+    #if OUTPUTS
+    if r.status >= 0:
+        r.y[1:] = _outputs(p, r.y[0])
+    #endif
+    return r
+
+
+def solve_jacobian(p, start=math.nan):
+    """A Point, and the jacobian as M rows of N; NaN where there is no root or no slope."""
+    p = _parameters(p)
+    r = solve(p, start)
+    if r.status < 0 or r.status & FLAT:
+        return r, [[math.nan]*N for _ in range(M)]
+    return r, _partials(p, r.y[0])
+
+
+def jacobian(p, root):
+    """Derivatives of the M results with respect to the N parameters at a given root, as M rows of N."""
+    p = _parameters(p)
+    g, slope = _residual(p, root)
+    if _is_flat(g, slope, *_rounding(p, root)):
+        return [[math.nan]*N for _ in range(M)]
+    return _partials(p, root)
+
+
+def tangent(p, root, p_dot):
+    """y_dot of the M results for the direction p_dot of the N parameters."""
+    return [sum(d*s for d, s in zip(row, p_dot)) for row in jacobian(p, root)]
+
+
+def adjoint(p, root, y_bar, p_bar):
+    """Adds the adjoint of the N parameters for the weights y_bar of the M results into the list p_bar; returns it."""
+    for row, weight in zip(jacobian(p, root), y_bar):
+        for k, d in enumerate(row):
+            p_bar[k] += d*weight
+    return p_bar
+
+
+def _parameters(p):
+    p = tuple(float(value) for value in p)
+    if len(p) != N:
+        raise ValueError(f"{N} parameters wanted, {len(p)} given")
+    return p

@@ -92,8 +92,7 @@ def _holds(test, features):
 def _source(name):
     """Text of a file of the runtime without its licence line, docstring and imports: only what is copied."""
     text = resources.files("rootwright.runtime").joinpath(name).read_text(encoding="utf-8")
-    body = re.sub(r'\A(?:#.*\n|/\*.*\*/\n|\s*\n)*(?:""".*?"""\n)?', "", text, flags=re.S) if name.endswith(".py") else \
-        re.sub(r"\A(?:/\* SPDX.*\*/\n)?", "", text)
+    body = re.sub(r'\A(?:#[^\n]*\n|/\*[^\n]*SPDX[^\n]*\n)\n*("""(?:[^"]|"(?!""))*"""\n)?', "", text)
     return re.sub(r"^import \w+\n", "", body, flags=re.M).strip("\n")
 
 
@@ -140,18 +139,20 @@ def _example_point(closure):
 def _example_c(closure):
     model = closure.model
     values = ", ".join(repr(value) for value in _example_point(closure))
+    root, first = model.unknown.name, model.parameters[0].name
     return [f"const double p[{len(model.parameters)}] = {{ {values} }};",
             f"{model.name}_point r;",
             f"double jac[{len(model.results) * len(model.parameters)}];",
             f"if ({model.name}_solve_jacobian(p, NAN, &r, jac) >= 0) {{",
-            f"    use(r.y[0], jac[0]);    /* {model.unknown.name}, d{model.unknown.name}/d{model.parameters[0].name} */",
+            f"    const double {root} = r.y[0], {root}_{first} = jac[0];",
             "}"]
 
 
 def _example_python(closure):
     model = closure.model
     values = ", ".join(repr(value) for value in _example_point(closure))
+    root, first = model.unknown.name, model.parameters[0].name
     return [f"import {model.name}",
             f"r, jac = {model.name}.solve_jacobian([{values}])",
             "if r.status >= 0:",
-            f"    use(r.y[0], jac[0][0])    # {model.unknown.name}, d{model.unknown.name}/d{model.parameters[0].name}"]
+            f"    {root}, {root}_{first} = r.y[0], jac[0][0]"]

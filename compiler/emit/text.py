@@ -1,29 +1,33 @@
 """Text for comments: wrapped, and harmless whatever the spec's author wrote."""
 
 import textwrap
-import unicodedata
+
+from rootwright.spec.diagnostics import harmless as printable
+
+_MARKS = (("*/", "* /"), ("/*", "/ *"), ("??", "? ?"), ("\\", "/"), ('"""', "'''"))
 
 
 def harmless(text):
-    """Printable ASCII that can neither end a comment or a string nor start anything.
+    """One line of printable characters that can neither end a comment or a docstring nor start anything.
 
-    Other letters are kept where they are printable and directionless; control characters, direction marks and the
-    like become \\u escapes; the marks that C reads inside comments (the end mark, trigraphs) are broken up.
+    Control characters and direction marks become <U+XXXX>; the marks that C and Python read inside comments and
+    docstrings (ends, trigraphs, backslashes) are broken up.
     """
-    plain = "".join(ch if ch.isprintable() and unicodedata.bidirectional(ch) not in _DIRECTIONAL else
-                    " " if ch in "\r\n\t" else f"<U+{ord(ch):04X}>" for ch in text)
-    for mark, broken in (("*/", "* /"), ("/*", "/ *"), ("??", "? ?"), ("\\", "/"), ('"""', "'''")):
+    plain = printable(text)
+    for mark, broken in _MARKS:
         while mark in plain:
             plain = plain.replace(mark, broken)
-    return " ".join(plain.split())
+    return plain
 
 
-_DIRECTIONAL = {"R", "AL", "RLE", "RLO", "LRE", "LRO", "PDF", "LRI", "RLI", "FSI", "PDI", "BN"}
+def folded(text):
+    """Harmless text with every run of white space, line breaks included, as one space."""
+    return harmless(" ".join(text.split()))
 
 
 def paragraph(text, width=94, indent="", hang=None):
     """Lines of a wrapped paragraph."""
-    return textwrap.wrap(harmless(text), width, initial_indent=indent, subsequent_indent=indent if hang is None else hang,
+    return textwrap.wrap(folded(text), width, initial_indent=indent, subsequent_indent=indent if hang is None else hang,
                          break_long_words=False, break_on_hyphens=False) or [indent.rstrip()]
 
 

@@ -1,8 +1,11 @@
 """The published values of a spec: parameters given, results expected, tolerances, source."""
 
+from collections.abc import Iterator
+
 from rootwright.spec.expression import Apply, Expression, Number
 from rootwright.spec.model import Published
 from rootwright.spec.names import clipped, nearest, quoted
+from rootwright.spec.source import Path, Source
 from rootwright.spec.tables import REQUIRED, Findings, Table
 
 _EXAMPLES = {
@@ -32,6 +35,15 @@ def read_published(findings: Findings, top: Table, parameters: list[str], result
         return ()
     return tuple(_entry(Table(findings, ("published", index), entry, tuple(_EXAMPLES)), parameters, results)
                  for index, entry in enumerate(entries))
+
+
+def published_expressions(entries: tuple[Published, ...], source: Source) -> Iterator[tuple[str, str, Expression, Path]]:
+    """Key, name, expression and path of each value; a single tolerance comes once for every result."""
+    for index, entry in enumerate(entries):
+        for key in ("given", "expect", "tolerance"):
+            for name, expression in getattr(entry, key):
+                path = "published", index, key, name
+                yield key, name, expression, path if path in source.places else path[:-1]
 
 
 def _entry(table, parameters, results):
@@ -83,6 +95,6 @@ def _tolerance(table, expected):
         tolerance = {name: one for name in expected}
     for name, value in tolerance.items():
         if value and is_written_below(value, or_zero=False):
-            table.findings.error((*path, name), "a tolerance is negative", "give the absolute error that is allowed")
+            table.findings.error((*path, name) if isinstance(table.values["tolerance"], dict) else path, "a tolerance is negative", "give the absolute error that is allowed")
             break
     return tolerance

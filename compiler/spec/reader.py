@@ -7,7 +7,7 @@ from rootwright.spec import units
 from rootwright.spec.diagnostics import Diagnostic
 from rootwright.spec.model import Constant, Definition, Model, Output, Parameter, Unknown
 from rootwright.spec.names import clipped, quoted, refusal
-from rootwright.spec.published import is_written_below, read_published
+from rootwright.spec.published import is_written_below, published_expressions, read_published
 from rootwright.spec.scope import CONSTANT, DEFINITION, OUTPUT, PARAMETER, UNKNOWN, Scope
 from rootwright.spec.source import load
 from rootwright.spec.tables import REQUIRED, Findings, Table, TooMany
@@ -170,10 +170,8 @@ class _Reader:
     def _published(self, draft):
         results = [name for name in (draft.unknown and draft.unknown.name, *(output.name for output in draft.outputs)) if name]
         entries = read_published(self.findings, self.top, [parameter.name for parameter in draft.parameters], results)
-        for index, entry in enumerate(entries):
-            for key in ("given", "expect", "tolerance"):
-                for name, expression in getattr(entry, key):
-                    self._taken(expression, "published value", ("published", index, key, name))
+        for _, _, expression, path in published_expressions(entries, self.findings.source):
+            self._taken(expression, "published value", path)
         return entries
 
     def _check_use(self, draft):

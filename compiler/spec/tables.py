@@ -49,7 +49,10 @@ class Findings:
         self._add(self.source.key_span(path), message, help, WARNING)
 
     def _add(self, span, message, help, severity):
-        self.diagnostics.append(self.source.diagnostic(span, message, help, severity))
+        found = self.source.diagnostic(span, message, help, severity)
+        if found in self.diagnostics:        # one tolerance serves several results
+            return
+        self.diagnostics.append(found)
         if len(self.diagnostics) >= MAX_FINDINGS:
             raise TooMany
 

@@ -1,15 +1,5 @@
 /* SPDX-License-Identifier: 0BSD */
 
-enum {
-    rw_status_flat = 2,
-    rw_status_kink = 4,
-    rw_status_not_finite = -1,
-    rw_status_no_sign_change = -2,
-    rw_status_iteration_limit = -3,
-    rw_status_bad_bracket = -4,
-    rw_status_jump = -5
-};
-
 typedef struct {
     double x, g, slope; /* the residual and its slope at x */
 } rw_sample;
@@ -23,12 +13,24 @@ static rw_sample rw_evaluate(const double p[], double x, rw_point *r)
     return s;
 }
 
-static int rw_fail(rw_point *r, int status, double lower, double upper)
+static void rw_clear(rw_point *r)
 {
-    r->y[0] = NAN;
+    int k;
+    for (k = 0; k < RW_M; k++) {
+        r->y[k] = NAN;
+    }
     r->residual = NAN;
     r->slope = NAN;
     r->error_bound = NAN;
+    r->lower = NAN;
+    r->upper = NAN;
+    r->iterations = 0;
+    r->evaluations = 0;
+    r->status = RW_NOT_FINITE;
+}
+
+static int rw_fail(rw_point *r, int status, double lower, double upper)
+{
     r->lower = lower;
     r->upper = upper;
     r->status = status;
@@ -70,18 +72,19 @@ static int rw_usable(rw_sample s, double rising)
 
 #if RW_OPEN_LOWER || RW_OPEN_UPPER
 /* The sample nearest to an open end at which the residual is finite and its sign is certain. The offsets are the
-   first one times 2, 2^3, 2^7, 2^15, ...: twelve of them reach from a subnormal to any number. Returns 0 or a status. */
+   first one times 2, 2^3, 2^7, 2^15, ...: twelve of them reach from a subnormal to any number.
+   Returns 0 or a status. */
 static int rw_enter(const double p[], double end, double far, double rounding, rw_sample *s, rw_point *r)
 {
     const double half = 0.5 * far - 0.5 * end;
     double offset = fmax(2.0 * fabs(nextafter(end, far) - end), 2.0 * rounding);
     double bound, slope_rounding, curvature;
-    int growth, status = rw_status_not_finite;
+    int growth, status = RW_NOT_FINITE;
 
     for (growth = 1; growth <= 2048; growth *= 2) {
         s->x = end + copysign(fmin(offset, fabs(half)), half);
         if (!rw_between(s->x, end, far)) {
-            return rw_status_no_sign_change;
+            return RW_NO_SIGN_CHANGE;
         }
         *s = rw_evaluate(p, s->x, r);
         if (isfinite(s->g)) {
@@ -89,7 +92,7 @@ static int rw_enter(const double p[], double end, double far, double rounding, r
             if (fabs(s->g) > bound) {
                 return 0;
             }
-            status = rw_status_no_sign_change;
+            status = RW_NO_SIGN_CHANGE;
         }
         if (offset >= fabs(half)) {
             break;
@@ -103,15 +106,17 @@ static int rw_enter(const double p[], double end, double far, double rounding, r
 /* The next point to try, from models of the residual between the two ends of the bracket, best and other. Where none
    serves the result is not inside the bracket. In this order:
    - the cubic through x(g) and its slopes at the two points evaluated last (Hermite's interpolation of the inverse
-     function; order 1 + sqrt(3)), if it agrees with Newton's step within a factor of 4. With overshoot it goes
+     function; order 1 + sqrt(3)), if it agrees with Newton's step within a factor of 16. With overshoot it goes
      past the root by twice the two steps' difference, to bring in the far end of the bracket too;
-   - the power law c*(x - a)^q + d through both ends and one end's slope: exact for a monomial, and good when the
-     other end's slope is zero or infinite;
+   - the power law c*(x - a)^q + d through both ends with the steeper one's slope: exact for a monomial, and good
+     where the slope at the other end is zero;
    - Newton's step. */
 static double rw_aim(rw_sample best, rw_sample previous, rw_sample other, double rising, int overshoot)
 {
-    const rw_sample slanted = rw_usable(best, rising) ? best : other;
-    const rw_sample anchor = rw_usable(best, rising) ? other : best;
+    const int other_steeper = rw_usable(other, rising)
+                              && !(rw_usable(best, rising) && fabs(best.slope) >= fabs(other.slope));
+    const rw_sample steep = other_steeper ? other : best;
+    const rw_sample anchor = other_steeper ? best : other;
     double newton = 0.0, hermite, power, t, x;
 
     if (rw_usable(best, rising)) {
@@ -120,8 +125,8 @@ static double rw_aim(rw_sample best, rw_sample previous, rw_sample other, double
             t = best.g / (best.g - previous.g);
             hermite = (1.0 - t) * (1.0 - t) * newton
                     + t * t * ((3.0 - 2.0 * t) * (previous.x - best.x) - previous.g / previous.slope);
-            if ((hermite < 0.0) == (newton < 0.0) && fabs(hermite) < 4.0 * fabs(newton)
-                && fabs(newton) < 4.0 * fabs(hermite)) {
+            if ((hermite < 0.0) == (newton < 0.0) && fabs(hermite) < 16.0 * fabs(newton)
+                && fabs(newton) < 16.0 * fabs(hermite)) {
                 x = best.x + hermite + copysign(2.0 * fabs(hermite - newton), hermite);
                 if (overshoot && rw_between(x, best.x, other.x)) {
                     return x;
@@ -133,11 +138,11 @@ static double rw_aim(rw_sample best, rw_sample previous, rw_sample other, double
             }
         }
     }
-    if (!overshoot && rw_usable(slanted, rising)) {
-        power = slanted.slope * ((slanted.x - anchor.x) / (slanted.g - anchor.g));
+    if (!overshoot && rw_usable(steep, rising)) {
+        power = steep.slope * ((steep.x - anchor.x) / (steep.g - anchor.g));
         if (power > 0x1p-10) {
-            t = pow(anchor.g / (anchor.g - slanted.g), 1.0 / power);
-            x = anchor.x + t * (slanted.x - anchor.x);
+            t = pow(anchor.g / (anchor.g - steep.g), 1.0 / power);
+            x = anchor.x + t * (steep.x - anchor.x);
             if (rw_between(x, best.x, other.x)) {
                 return x;
             }
@@ -177,7 +182,7 @@ static int rw_narrow(const double p[], rw_sample *low, rw_sample *high, rw_sampl
                 && fabs(best->g) <= 64.0 * fabs(best->slope) * (high->x - low->x)) {
                 return 0;
             }
-            return rw_status_jump;
+            return RW_JUMP;
         }
         x = best->x;
         if (rw_usable(*best, rising)) {
@@ -199,7 +204,7 @@ static int rw_narrow(const double p[], rw_sample *low, rw_sample *high, rw_sampl
             }
         }
         if (r->evaluations >= RW_LIMIT) {
-            return closing ? 0 : rw_status_iteration_limit;
+            return closing ? 0 : RW_ITERATION_LIMIT;
         }
 
         fast = closing;
@@ -230,7 +235,7 @@ static int rw_narrow(const double p[], rw_sample *low, rw_sample *high, rw_sampl
                 return 0;
             }
             if (holes > 8) {
-                return rw_status_not_finite;
+                return RW_NOT_FINITE;
             }
             continue;
         }
@@ -302,30 +307,35 @@ static double rw_reach(const double p[], double x, double end, int negative, rw_
     return reach;
 }
 
+/* No slope to speak of: within its own rounding error, or so small that the curve bends within the error of the root.
+   Newton-Kantorovich: the root lies within 2*error / (1 + sqrt(1 - 2*bend)) where bend = |g_xx| * error / |g_x|
+   is at most 1/2; half of that is let pass. */
+static int rw_is_flat(double g, double slope, double rounding, double slope_rounding, double curvature)
+{
+    const double least = fabs(slope) - slope_rounding;
+    return !(least > 0.0 && isfinite(least) && fabs(curvature) * ((fabs(g) + rounding) / least) / least <= 0.25);
+}
+
 /* Fills r for the root: error bound, enclosing bracket and caveats. end holds the bracket, rounding its uncertainty;
    the residual is negative towards end[i] if negative[i]; at_end is the uncertainty of the root as an end itself. */
 static int rw_certify(const double p[], rw_sample root, const double end[2], const double rounding[2],
                       const int negative[2], double at_end, rw_point *r)
 {
-    double slope_rounding, curvature, farthest, reach;
-    double error = fabs(root.g) + rw_rounding(p, root.x, &slope_rounding, &curvature);
-    const double slope = fabs(root.slope) - slope_rounding;
-    double bend = HUGE_VAL;
+    double slope_rounding, curvature, error, least, farthest;
+    const double bound = rw_rounding(p, root.x, &slope_rounding, &curvature);
 
     r->status = 0;
-    /* Newton-Kantorovich: with bend = |g_xx| * error / |g_x| <= 1/2 the root lies within
-       2*error / (1 + sqrt(1 - 2*bend)) of x, which is below (1 + bend) * error for bend <= 1/4;
-       2^-10 is for the rounding of these lines. */
-    if (slope > 0.0 && isfinite(slope)) {
-        bend = fabs(curvature) * (error / slope) / slope;
-    }
-    if (bend <= 0.25) {
-        error = (1.0 + bend) * (error / slope) * (1.0 + 0x1p-10);
+    if (!rw_is_flat(root.g, root.slope, bound, slope_rounding, curvature)) {
+        least = fabs(root.slope) - slope_rounding;
+        error = (fabs(root.g) + bound) / least;
+        /* 2 / (1 + sqrt(1 - 2*bend)) < 1 + bend for bend <= 1/4; 2^-10 is for the rounding of these lines. */
+        error *= (1.0 + fabs(curvature) * error / least) * (1.0 + 0x1p-10);
     } else {
-        r->status |= rw_status_flat;
-        if (!(error <= 0.0)) {
-            reach = rw_reach(p, root.x, end[0], negative[0], r);
-            error = fmax(reach, rw_reach(p, root.x, end[1], negative[1], r));
+        r->status |= RW_FLAT;
+        error = 0.0;
+        if (!(fabs(root.g) + bound <= 0.0)) {
+            error = rw_reach(p, root.x, end[0], negative[0], r);
+            error = fmax(error, rw_reach(p, root.x, end[1], negative[1], r));
         }
     }
     error += at_end;
@@ -344,24 +354,23 @@ static int rw_certify(const double p[], rw_sample root, const double end[2], con
     }
 #if RW_SWITCHES
     if (rw_kink(p, root.x, r->error_bound)) {
-        r->status |= rw_status_kink;
+        r->status |= RW_KINK;
     }
 #endif
     return r->status;
 }
 
-/* Finds the root in the bracket and fills r but for the outputs. start is where to look first, NAN for nowhere. */
+/* Finds the root in the bracket and fills r, which comes cleared, but for the outputs.
+   start is where to look first, NAN for nowhere. */
 static int rw_locate(const double p[], double start, rw_point *r)
 {
     double end[2], rounding[2], slack[2], slope_rounding, curvature, swap;
     rw_sample low, high, root;
     int negative[2], status, i;
 
-    r->iterations = 0;
-    r->evaluations = 0;
     rw_bracket(p, end, rounding);
     if (!isfinite(end[0]) || !isfinite(end[1])) {
-        return rw_fail(r, rw_status_not_finite, NAN, NAN);
+        return rw_fail(r, RW_NOT_FINITE, NAN, NAN);
     }
     for (i = 0; i < 2; i++) { /* an unbounded rounding error says nothing about where a root may be */
         if (!isfinite(rounding[i])) {
@@ -370,7 +379,7 @@ static int rw_locate(const double p[], double start, rw_point *r)
     }
     if (end[0] > end[1]) { /* ends that cross by no more than their rounding are equal */
         if (!(end[0] - end[1] <= rounding[0] + rounding[1])) {
-            return rw_fail(r, rw_status_bad_bracket, NAN, NAN);
+            return rw_fail(r, RW_BAD_BRACKET, NAN, NAN);
         }
         swap = end[0];
         end[0] = end[1];
@@ -385,7 +394,7 @@ static int rw_locate(const double p[], double start, rw_point *r)
     rounding[0] = 0.0;
 #else
     low = rw_evaluate(p, end[0], r);
-    status = isnan(low.g) ? rw_status_not_finite : 0;
+    status = isnan(low.g) ? RW_NOT_FINITE : 0;
 #endif
     if (status < 0) {
         return rw_fail(r, status, end[0], end[1]);
@@ -395,7 +404,7 @@ static int rw_locate(const double p[], double start, rw_point *r)
     rounding[1] = 0.0;
 #else
     high = rw_evaluate(p, end[1], r);
-    status = isnan(high.g) ? rw_status_not_finite : 0;
+    status = isnan(high.g) ? RW_NOT_FINITE : 0;
 #endif
     if (status < 0) {
         return rw_fail(r, status, end[0], end[1]);
@@ -424,7 +433,7 @@ static int rw_locate(const double p[], double start, rw_point *r)
         if (fabs(high.g) <= slack[1]) {
             return rw_certify(p, high, end, rounding, negative, rounding[1], r);
         }
-        return rw_fail(r, rw_status_no_sign_change, end[0], end[1]);
+        return rw_fail(r, RW_NO_SIGN_CHANGE, end[0], end[1]);
     }
 
 #if RW_START

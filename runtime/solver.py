@@ -1,13 +1,5 @@
 # SPDX-License-Identifier: 0BSD
 
-_FLAT = 2
-_KINK = 4
-_NOT_FINITE = -1
-_NO_SIGN_CHANGE = -2
-_ITERATION_LIMIT = -3
-_BAD_BRACKET = -4
-_JUMP = -5
-
 
 class _Sample:
     """The residual g and its slope at x."""
@@ -27,10 +19,6 @@ def _evaluate(p, x, r):
 
 
 def _fail(r, status, lower, upper):
-    r.y[0] = math.nan
-    r.residual = math.nan
-    r.slope = math.nan
-    r.error_bound = math.nan
     r.lower = lower
     r.upper = upper
     r.status = status
@@ -62,7 +50,7 @@ def _usable(s, rising):
     return math.isfinite(s.slope) and s.slope * rising > 0.0
 
 
-#if OPEN_LOWER or OPEN_UPPER
+#if OPEN_LOWER || OPEN_UPPER
 def _enter(p, end, far, rounding, r):
     """The sample nearest to an open end at which the residual is finite and its sign is certain, and 0 or a status.
 
@@ -70,20 +58,20 @@ def _enter(p, end, far, rounding, r):
     """
     half = 0.5 * far - 0.5 * end
     offset = max(2.0 * abs(math.nextafter(end, far) - end), 2.0 * rounding)
-    status = _NOT_FINITE
+    status = NOT_FINITE
     sample = None
 
     growth = 1
     while growth <= 2048:
         x = end + math.copysign(min(offset, abs(half)), half)
         if not _between(x, end, far):
-            return sample, _NO_SIGN_CHANGE
+            return sample, NO_SIGN_CHANGE
         sample = _evaluate(p, x, r)
         if math.isfinite(sample.g):
             bound = _rounding(p, x)[0]
             if abs(sample.g) > bound:
                 return sample, 0
-            status = _NO_SIGN_CHANGE
+            status = NO_SIGN_CHANGE
         if offset >= abs(half):
             break
         offset = math.ldexp(offset, growth) if offset < math.ldexp(abs(half), -growth) else abs(half)
@@ -97,14 +85,16 @@ def _aim(best, previous, other, rising, overshoot):
 
     Where none serves the result is not inside the bracket. In this order:
     - the cubic through x(g) and its slopes at the two points evaluated last (Hermite's interpolation of the inverse
-      function; order 1 + sqrt(3)), if it agrees with Newton's step within a factor of 4. With overshoot it goes
+      function; order 1 + sqrt(3)), if it agrees with Newton's step within a factor of 16. With overshoot it goes
       past the root by twice the two steps' difference, to bring in the far end of the bracket too;
-    - the power law c*(x - a)^q + d through both ends and one end's slope: exact for a monomial, and good when the
-      other end's slope is zero or infinite;
+    - the power law c*(x - a)^q + d through both ends with the steeper one's slope: exact for a monomial, and good
+      where the slope at the other end is zero;
     - Newton's step.
     """
-    slanted = best if _usable(best, rising) else other
-    anchor = other if _usable(best, rising) else best
+    other_steeper = (_usable(other, rising)
+                     and not (_usable(best, rising) and abs(best.slope) >= abs(other.slope)))
+    steep = other if other_steeper else best
+    anchor = best if other_steeper else other
     newton = 0.0
 
     if _usable(best, rising):
@@ -113,19 +103,19 @@ def _aim(best, previous, other, rising, overshoot):
             t = best.g / (best.g - previous.g)
             hermite = ((1.0 - t) * (1.0 - t) * newton
                        + t * t * ((3.0 - 2.0 * t) * (previous.x - best.x) - previous.g / previous.slope))
-            if ((hermite < 0.0) == (newton < 0.0) and abs(hermite) < 4.0 * abs(newton)
-                    and abs(newton) < 4.0 * abs(hermite)):
+            if ((hermite < 0.0) == (newton < 0.0) and abs(hermite) < 16.0 * abs(newton)
+                    and abs(newton) < 16.0 * abs(hermite)):
                 x = best.x + hermite + math.copysign(2.0 * abs(hermite - newton), hermite)
                 if overshoot and _between(x, best.x, other.x):
                     return x
                 x = best.x + hermite
                 if _between(x, best.x, other.x):
                     return x
-    if not overshoot and _usable(slanted, rising):
-        power = slanted.slope * ((slanted.x - anchor.x) / (slanted.g - anchor.g))
+    if not overshoot and _usable(steep, rising):
+        power = steep.slope * ((steep.x - anchor.x) / (steep.g - anchor.g))
         if power > 2.0**-10:
-            t = math.pow(anchor.g / (anchor.g - slanted.g), 1.0 / power)
-            x = anchor.x + t * (slanted.x - anchor.x)
+            t = math.pow(anchor.g / (anchor.g - steep.g), 1.0 / power)
+            x = anchor.x + t * (steep.x - anchor.x)
             if _between(x, best.x, other.x):
                 return x
     return best.x + newton
@@ -157,7 +147,7 @@ def _narrow(p, low, high, start, r):
             if (best.slope * rising > 0.0
                     and abs(best.g) <= 64.0 * abs(best.slope) * (high.x - low.x)):
                 return low, high, best, 0
-            return low, high, best, _JUMP
+            return low, high, best, JUMP
         x = best.x
         if _usable(best, rising):
             step = -best.g / best.slope
@@ -172,8 +162,8 @@ def _narrow(p, low, high, start, r):
                     x = best.x + step
                     if not _between(x, low.x, high.x):
                         return low, high, best, 0
-        if r.evaluations >= _LIMIT:
-            return low, high, best, 0 if closing else _ITERATION_LIMIT
+        if r.evaluations >= LIMIT:
+            return low, high, best, 0 if closing else ITERATION_LIMIT
 
         fast = closing
         if not closing and holes == 0 and tries < 2:
@@ -199,7 +189,7 @@ def _narrow(p, low, high, start, r):
             if closing:
                 return low, high, best, 0
             if holes > 8:
-                return low, high, best, _NOT_FINITE
+                return low, high, best, NOT_FINITE
             continue
         holes = 0
         improved = abs(latest.g) < abs(best.g)
@@ -239,7 +229,7 @@ def _reach(p, x, end, negative, r):
     unsure -= 54  # half the spacing of doubles at x
     sure = math.frexp(0.5 * end - 0.5 * x)[1]
     sure += 1  # 2^sure exceeds the distance of the end
-    while sure - unsure > 1 and r.evaluations < _LIMIT:
+    while sure - unsure > 1 and r.evaluations < LIMIT:
         k = unsure + (sure - unsure) // 2
         x_probe = x + math.copysign(math.ldexp(1.0, k), end - x)
         if not _between(x_probe, x, end):
@@ -255,6 +245,16 @@ def _reach(p, x, end, negative, r):
     return reach
 
 
+def _is_flat(g, slope, rounding, slope_rounding, curvature):
+    """No slope to speak of: within its own rounding error, or so small that the curve bends within the root's error.
+
+    Newton-Kantorovich: the root lies within 2*error / (1 + sqrt(1 - 2*bend)) where bend = |g_xx| * error / |g_x|
+    is at most 1/2; half of that is let pass.
+    """
+    least = abs(slope) - slope_rounding
+    return not (least > 0.0 and math.isfinite(least) and abs(curvature) * ((abs(g) + rounding) / least) / least <= 0.25)
+
+
 def _certify(p, root, end, rounding, negative, at_end, r):
     """Fills r for the root: error bound, enclosing bracket and caveats.
 
@@ -262,23 +262,19 @@ def _certify(p, root, end, rounding, negative, at_end, r):
     the uncertainty of the root as an end itself.
     """
     bound, slope_rounding, curvature = _rounding(p, root.x)
-    error = abs(root.g) + bound
-    slope = abs(root.slope) - slope_rounding
-    bend = math.inf
 
     r.status = 0
-    # Newton-Kantorovich: with bend = |g_xx| * error / |g_x| <= 1/2 the root lies within
-    # 2*error / (1 + sqrt(1 - 2*bend)) of x, which is below (1 + bend) * error for bend <= 1/4;
-    # 2^-10 is for the rounding of these lines.
-    if slope > 0.0 and math.isfinite(slope):
-        bend = abs(curvature) * (error / slope) / slope
-    if bend <= 0.25:
-        error = (1.0 + bend) * (error / slope) * (1.0 + 2.0**-10)
+    if not _is_flat(root.g, root.slope, bound, slope_rounding, curvature):
+        least = abs(root.slope) - slope_rounding
+        error = (abs(root.g) + bound) / least
+        # 2 / (1 + sqrt(1 - 2*bend)) < 1 + bend for bend <= 1/4; 2^-10 is for the rounding of these lines.
+        error *= (1.0 + abs(curvature) * error / least) * (1.0 + 2.0**-10)
     else:
-        r.status |= _FLAT
-        if not error <= 0.0:
-            reach = _reach(p, root.x, end[0], negative[0], r)
-            error = max(reach, _reach(p, root.x, end[1], negative[1], r))
+        r.status |= FLAT
+        error = 0.0
+        if not abs(root.g) + bound <= 0.0:
+            error = _reach(p, root.x, end[0], negative[0], r)
+            error = max(error, _reach(p, root.x, end[1], negative[1], r))
     error += at_end
     farthest = max(root.x - end[0] + rounding[0], end[1] - root.x + rounding[1])
     r.error_bound = error if error < farthest else farthest
@@ -293,26 +289,27 @@ def _certify(p, root, end, rounding, negative, at_end, r):
         r.upper = math.nextafter(root.x + r.error_bound, math.inf) if r.error_bound > 0.0 else root.x
 #if SWITCHES
     if _kink(p, root.x, r.error_bound):
-        r.status |= _KINK
+        r.status |= KINK
 #endif
     return r.status
 
 
 def _locate(p, start, r):
-    """Finds the root in the bracket and fills r but for the outputs. start is where to look first, NaN for nowhere."""
-    r.iterations = 0
-    r.evaluations = 0
+    """Finds the root in the bracket and fills r, which comes new, but for the outputs.
+
+    start is where to look first, NaN for nowhere.
+    """
     lower, upper, lower_rounding, upper_rounding = _bracket(p)
     end = [lower, upper]
     rounding = [lower_rounding, upper_rounding]
     if not math.isfinite(end[0]) or not math.isfinite(end[1]):
-        return _fail(r, _NOT_FINITE, math.nan, math.nan)
+        return _fail(r, NOT_FINITE, math.nan, math.nan)
     for i in range(2):  # an unbounded rounding error says nothing about where a root may be
         if not math.isfinite(rounding[i]):
             rounding[i] = 0.0
     if end[0] > end[1]:  # ends that cross by no more than their rounding are equal
         if not end[0] - end[1] <= rounding[0] + rounding[1]:
-            return _fail(r, _BAD_BRACKET, math.nan, math.nan)
+            return _fail(r, BAD_BRACKET, math.nan, math.nan)
         end.reverse()
         rounding.reverse()
 
@@ -321,7 +318,7 @@ def _locate(p, start, r):
     rounding[0] = 0.0
 #else
     low = _evaluate(p, end[0], r)
-    status = _NOT_FINITE if math.isnan(low.g) else 0
+    status = NOT_FINITE if math.isnan(low.g) else 0
 #endif
     if status < 0:
         return _fail(r, status, end[0], end[1])
@@ -330,7 +327,7 @@ def _locate(p, start, r):
     rounding[1] = 0.0
 #else
     high = _evaluate(p, end[1], r)
-    status = _NOT_FINITE if math.isnan(high.g) else 0
+    status = NOT_FINITE if math.isnan(high.g) else 0
 #endif
     if status < 0:
         return _fail(r, status, end[0], end[1])
@@ -350,7 +347,7 @@ def _locate(p, start, r):
             return _certify(p, low, end, rounding, negative, rounding[0], r)
         if abs(high.g) <= slack[1]:
             return _certify(p, high, end, rounding, negative, rounding[1], r)
-        return _fail(r, _NO_SIGN_CHANGE, end[0], end[1])
+        return _fail(r, NO_SIGN_CHANGE, end[0], end[1])
 
 #if START
     if math.isnan(start):

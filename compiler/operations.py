@@ -69,6 +69,13 @@ def _gauss(sign):
     return pullback
 
 
+def _logarithm(base):
+    """d log_b(a)/da = (1/log b)/a."""
+    def pullback(g, adj, args, v):
+        return (g.div(g.mul(adj, g.div(1, g.log(g.number(base)))), args[0]),)
+    return pullback
+
+
 def _function(ulps, cost, pullback, name, domain="everywhere", python=None, arity=1):
     arguments = ", ".join("{%d}" % i for i in range(arity))
     return Operation("function", (arity, arity), domain, f"{name}({arguments})", f"{python or 'math.' + name}({arguments})",
@@ -100,8 +107,8 @@ OPERATIONS: dict[str, Operation] = {
     "exp": _function(1.0, 15, lambda g, adj, a, v: (g.mul(adj, v),), "exp", "a < 709.78", "_exp"),
     "expm1": _function(1.0, 20, lambda g, adj, a, v: (g.mul(adj, g.add(v, 1)),), "expm1", "a < 709.78", "_expm1"),
     "log": _function(1.0, 15, lambda g, adj, a, v: (g.div(adj, a[0]),), "log", "a > 0", "_log"),
-    "log10": _function(2.0, 20, lambda g, adj, a, v: (g.div(adj, g.mul(a[0], g.log(g.number(10)))),), "log10", "a > 0", "_log10"),
-    "log2": _function(1.0, 15, lambda g, adj, a, v: (g.div(adj, g.mul(a[0], g.log(g.number(2)))),), "log2", "a > 0", "_log2"),
+    "log10": _function(2.0, 20, _logarithm(10), "log10", "a > 0", "_log10"),
+    "log2": _function(1.0, 15, _logarithm(2), "log2", "a > 0", "_log2"),
     "log1p": _function(1.0, 20, lambda g, adj, a, v: (g.div(adj, g.add(1, a[0])),), "log1p", "a > -1", "_log1p"),
     "sin": _function(1.0, 20, lambda g, adj, a, v: (g.mul(adj, g.cos(a[0])),), "sin", python="_sin"),
     "cos": _function(1.0, 20, lambda g, adj, a, v: (g.neg(g.mul(adj, g.sin(a[0]))),), "cos", python="_cos"),

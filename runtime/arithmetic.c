@@ -8,10 +8,10 @@ static double rw_sign(double a)
 
 static double rw_min(double a, double b)
 {
-    return a <= b ? a : b < a ? b : NAN;
+    return a <= b ? a : b < a ? b : (double)NAN;
 }
 
 static double rw_max(double a, double b)
 {
-    return a >= b ? a : b > a ? b : NAN;
+    return a >= b ? a : b > a ? b : (double)NAN;
 }

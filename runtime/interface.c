@@ -94,14 +94,14 @@ size_t rw_solve_many(size_t n, const double *const p[RW_N], const ptrdiff_t stri
             q[k] = p[k][(ptrdiff_t)i*stride[k]];
         }
         if (jac != NULL) {
-            rw_solve_jacobian(q, start != NULL ? start[i] : NAN, &r, d);
+            rw_solve_jacobian(q, start != NULL ? start[i] : (double)NAN, &r, d);
             for (k = 0; k < RW_M*RW_N; k++) {
                 if (jac[k] != NULL) {
                     jac[k][i] = d[k];
                 }
             }
         } else {
-            rw_solve(q, start != NULL ? start[i] : NAN, &r);
+            rw_solve(q, start != NULL ? start[i] : (double)NAN, &r);
         }
         for (k = 0; k < RW_M; k++) {
             if (y[k] != NULL) {

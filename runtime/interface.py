@@ -38,7 +38,13 @@ def jacobian(p, root):
 
 def tangent(p, root, p_dot):
     """y_dot of the M results for the direction p_dot of the N parameters."""
-    return [sum(d*s for d, s in zip(row, p_dot)) for row in jacobian(p, root)]
+    y_dot = []
+    for row in jacobian(p, root):
+        total = 0.0
+        for d, s in zip(row, p_dot):
+            total += d*s
+        y_dot.append(total)
+    return y_dot
 
 
 def adjoint(p, root, y_bar, p_bar):

@@ -12,6 +12,7 @@ Kernels, and their results in order:
     jacobian   M*N partial derivatives of the results, row-major
 """
 
+import math
 import struct
 from dataclasses import dataclass
 from fractions import Fraction
@@ -199,10 +200,13 @@ class _Closing:
 
 
 def _touch(graph, node):
+    """Make sure that the value of a constant is known; a derivative's constant that overflows is infinite, as at run time."""
     try:
         nearest(graph, node)
     except NotReal:
-        graph.constants.pop(node, None)
+        exact = graph.literal(node)
+        if exact is not None:
+            graph.constants[node] = (math.copysign(math.inf, exact), 0.0)
 
 
 def limit(lower, upper):

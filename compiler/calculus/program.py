@@ -98,7 +98,7 @@ class Graph:
             node = Node(len(self.instructions))
             self.instructions.append(instruction)
             self._index[instruction] = node
-            self._constant.append(op not in ("input", *CONDITIONS) and all(self._constant[arg] for arg in args))
+            self._constant.append(op not in ("input", "nan", *CONDITIONS) and all(self._constant[arg] for arg in args))
         return node
 
     def number(self, value):
@@ -158,12 +158,14 @@ class Graph:
             return b
         if self.literal(b) == 0:
             return a
-        if a == b:
-            return self.mul(2, a)
-        if self.instructions[b].op == "neg":
-            return self.sub(a, self.instructions[b].args[0])
-        if self.instructions[a].op == "neg":
-            return self.sub(b, self.instructions[a].args[0])
+        (left, left_base), (right, right_base) = self._multiple(a), self._multiple(b)
+        if left_base == right_base:
+            return self.mul(left + right, left_base)
+        if self.instructions[a].op == "add" and self._multiple(self.instructions[a].args[1])[1] == right_base:
+            return self.add(self.instructions[a].args[0], self.add(self.instructions[a].args[1], b))
+        for one, other in ((a, b), (b, a)):
+            if self._is_negative(other):
+                return self.sub(one, self.neg(other))
         return self.apply("add", a, b)
 
     def sub(self, a, b):
@@ -172,8 +174,8 @@ class Graph:
             return a
         if self.literal(a) == 0:
             return self.neg(b)
-        if self.instructions[b].op == "neg":
-            return self.add(a, self.instructions[b].args[0])
+        if self._is_negative(b):
+            return self.add(a, self.neg(b))
         return self.apply("sub", a, b)
 
     def neg(self, a):
@@ -249,6 +251,24 @@ class Graph:
                 break
             square = self.apply("mul", square, square)
         return result if exponent > 0 else self.apply("div", self.number(1), result)
+
+    def _multiple(self, node):
+        """The value as an exact number times another value."""
+        instruction = self.instructions[node]
+        factor = self.literal(instruction.args[0]) if instruction.op == "mul" else None
+        return (Fraction(1), node) if factor is None else (factor, instruction.args[1])
+
+    def abs_(self, a):
+        (a,) = self._operands(a)
+        value = self.literal(a)
+        return self.apply("abs", a) if value is None else self.number(abs(value))
+
+    def _is_negative(self, node):
+        """True for a value written with a minus sign in front."""
+        instruction = self.instructions[node]
+        if instruction.op in ("mul", "div"):
+            instruction = self.instructions[instruction.args[0]]
+        return instruction.op == "neg" or instruction.op == "number" and instruction.value < 0
 
     def _operands(self, *values):
         return [value if isinstance(value, Node) else self.number(value) for value in values]

@@ -17,7 +17,7 @@ import math
 from dataclasses import dataclass
 from fractions import Fraction
 
-from rootwright.calculus.constants import nearest, nearest_rounding
+from rootwright.calculus.constants import NotReal, nearest, nearest_rounding
 from rootwright.calculus.magnitude import largest, smallest
 from rootwright.calculus.program import CONDITIONS, Node, needed
 from rootwright.operations import OPERATIONS
@@ -70,7 +70,7 @@ class Rounding:
         if error.relative:
             total = self._plus(total, self._scaled(error.relative, self._magnitude(node)))
         if error.absolute:
-            total = graph.add(total, graph.number(Fraction(error.absolute)))
+            total = graph.add(total, graph.number(_upper(error.absolute)))
         return total
 
     def _plus(self, total, part):
@@ -112,13 +112,19 @@ class Rounding:
 
     def _operation(self, node):
         instruction = self.graph.instructions[node]
-        if self.graph.is_constant(node):
-            return Error(relative=nearest_rounding(self.graph, node))
-        if instruction.op == "input":
+        if instruction.op in ("input", "nan"):
             return Error()
+        if self.graph.is_constant(node):
+            return self._constant(node)
         rule = getattr(self, "_" + instruction.op, None)
         error = rule(node, *instruction.args) if rule else self._general(node, instruction)
         return error
+
+    def _constant(self, node):
+        try:
+            return Error(relative=nearest_rounding(self.graph, node))
+        except NotReal:             # a constant of a derivative that overflows: infinite, and not in error
+            return Error()
 
     def _underflow(self, node):
         return 0.0 if smallest(self.magnitudes.of(node)) > _SMALL else _SUBNORMAL
@@ -280,8 +286,8 @@ def _power_of_two(value):
 
 
 def _upper(factor):
-    """The factor rounded up to three digits: short in print, and still a bound."""
-    if factor == int(factor) or factor > 1e3 or factor < 1e-3:
+    """The factor rounded up to three digits: short in print, and still a bound. Multiples of the smallest normal double stay."""
+    if factor == int(factor) or factor < 1e-290 or factor > 1e290:
         return Fraction(factor)
-    digits = 2 - math.floor(math.log10(factor))
-    return Fraction(math.ceil(factor * 10 ** digits), 10 ** digits)
+    scale = Fraction(10) ** (2 - math.floor(math.log10(factor)))
+    return Fraction(math.ceil(Fraction(factor) * scale)) / scale

@@ -1,6 +1,8 @@
 """Kernels of a Closure as C99."""
 
-from rootwright.emit.layout import ATOM, lay_out
+import math
+
+from rootwright.emit.layout import lay_out
 from rootwright.emit.names import C_MACROS, Names
 from rootwright.emit.text import statement
 from rootwright.operations import OPERATIONS
@@ -9,7 +11,7 @@ from rootwright.operations import OPERATIONS
 class CSpelling:
     """How numbers, names and operations are written in C."""
 
-    nan = "NAN"
+    nan = "(double)NAN"      # NAN is a float: without the cast it would be promoted
 
     def __init__(self, model):
         self.names = Names(model, C_MACROS)
@@ -19,7 +21,7 @@ class CSpelling:
         multiple = value / 2.0 ** -1022
         if 1.0 <= multiple < 64.0 and multiple == int(multiple):
             return "DBL_MIN" if multiple == 1.0 else f"({multiple}*DBL_MIN)"
-        return repr(value)
+        return repr(value) if math.isfinite(value) else "(double)INFINITY" if value > 0.0 else "-(double)INFINITY"
 
     def name(self, name):
         return self.names.of(name)
@@ -81,12 +83,12 @@ def _unpack(model, laid, formals, spelling):
 def _results(name, model, laid, formals):
     lines, returned = [], None
     for k, (result, text) in enumerate(laid.results.items()):
-        if result in _RETURNED and not (name == "bracket"):
+        if result in _RETURNED:
             returned = text
         elif name == "outputs":
             lines += statement(f"{formals['y']}[{k + 1}] = {text};", "    ")
         elif name == "jacobian":
-            lines += [f"    {formals['jac']}[{k}] = {text};" if len(text) < 70 else "\n".join(statement(f"{formals['jac']}[{k}] = {text};", "    "))]
+            lines += statement(f"{formals['jac']}[{k}] = {text};", "    ")
         else:
             lines += statement(f"{_TARGETS[result].format(**formals)} = {text};", "    ")
     unknown = model.unknown.name

@@ -95,7 +95,8 @@ class _Layout:
             text, strength = self._spell(node, instruction)
             label = self.labels.get(node)
             trivial = instruction.op == "neg" and strength >= SIGN and len(text) < 24
-            if (label is not None and not (is_root and uses == 1)) or (uses > 1 and not trivial) or len(text) > LONGEST:
+            last = is_root and uses == 1            # goes straight into its result
+            if not last and (label is not None or uses > 1 and not trivial or len(text) > LONGEST):
                 self._state(node, self._fresh(label), text)
             else:
                 self.texts[node] = (text, strength)
@@ -137,6 +138,8 @@ class _Layout:
             bare = inner >= COMPARE or inner == strength
         elif position == 0:
             bare = inner >= strength
+        elif strength == COMPARE:
+            bare = inner > COMPARE
         else:
             bare = inner > strength and not text.startswith("-")
         return text if bare else f"({text})"

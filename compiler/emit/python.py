@@ -1,5 +1,7 @@
 """Kernels of a Closure as pure Python, with the arithmetic of IEEE 754 where Python would raise instead."""
 
+import math
+
 from rootwright.emit.layout import ATOM, PRODUCT, lay_out
 from rootwright.emit.names import PYTHON_TAKEN, Names
 from rootwright.emit.text import statement
@@ -15,7 +17,7 @@ class PythonSpelling:
         self.names = Names(model, PYTHON_TAKEN)
 
     def number(self, value):
-        return repr(value)
+        return repr(value) if math.isfinite(value) else "math.inf" if value > 0.0 else "-math.inf"
 
     def name(self, name):
         return self.names.of(name)

@@ -33,7 +33,7 @@ def render(diagnostic: Diagnostic) -> str:
 
 
 def harmless(text: str) -> str:
-    """`text` with control characters, bidirectional marks and everything else that does not print written as <U+XXXX>."""
+    """`text` with control characters, bidirectional marks and all else that does not print written as <U+XXXX>."""
     return "".join(_harmless_character(character) for character in text)
 
 

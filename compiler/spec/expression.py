@@ -13,7 +13,7 @@ from rootwright.operations import OPERATIONS
 from rootwright.spec.names import FUNCTIONS, clipped, nearest, quoted
 
 MAX_NESTING = 200                # pending parentheses, calls, signs and powers
-MAX_OPERATIONS = 20_000          # in one expression
+MAX_OPERATIONS = 20_000          # in one expression; each argument after a function's first counts as one
 
 _LOGIC = frozenset(key for key, row in OPERATIONS.items() if row.kind == "logic")
 _CONDITIONS = _LOGIC | frozenset(key for key, row in OPERATIONS.items() if row.kind == "comparison")
@@ -144,15 +144,14 @@ class _Parser:
         self.problems = []
 
     def run(self):
-        tokens = self._tokens()
-        if not tokens:
-            self._stop(0, len(self.text), "the expression is empty", "write a number, a name or a formula")
-        for token in tokens:
+        for token in self._tokens():
             if self.wants_operand:
                 self._operand(*token)
             else:
                 self._operator(*token)
             self.last = token
+        if self.last is None:
+            self._stop(0, len(self.text), "the expression is empty", "write a number, a name or a formula")
         if self.wants_operand:
             end = self.last[3]
             self._stop(end, end, "the expression ends too early", f"something has to follow {self._word(self.last)}")
@@ -168,20 +167,27 @@ class _Parser:
 
     def _tokens(self):
         """Tokens as (kind, word, start, end); a function's name and its parenthesis are one token, a "call"."""
-        tokens, position, text = [], 0, self.text
+        position, text, held = 0, self.text, None
         while position < len(text):
             match = _TOKEN.match(text, position)
-            if match is None:
+            kind, word, end = (match.lastgroup, match.group(), match.end()) if match else ("foreign", "", position)
+            if held and kind != "space":
+                if word == "(":
+                    kind, word, position = "call", held[1], held[2]
+                else:
+                    yield held
+                held = None
+            if kind == "foreign":
                 self._refuse_character(position)
-            kind, word, end = match.lastgroup, match.group(), match.end()
             if kind == "number" and (stuck := _STUCK_TO_NUMBER.match(text, end)):
                 self._refuse_number(position, end, stuck.end())
-            if word == "(" and tokens and tokens[-1][0] == "name" and tokens[-1][1] not in _LOGIC:
-                tokens[-1] = ("call", tokens[-1][1], tokens[-1][2], end)
+            if kind == "name" and word not in _LOGIC:
+                held = kind, word, position, end
             elif kind != "space":
-                tokens.append((kind, word, position, end))
+                yield kind, word, position, end
             position = end
-        return tokens
+        if held:
+            yield held
 
     def _operand(self, kind, word, start, end):
         """Takes a token where a value should begin."""
@@ -198,9 +204,12 @@ class _Parser:
             self._push(_Pending(None, _OPEN, len(self.operands), start, end, True))
         elif word == ")" and self.last and self.last[0] == "call":
             self._close(start, end)
-        elif word != "+":
+        elif word == "+":
+            self._count(start, end)
+        else:
             place = f"between {self._word(self.last)} and" if self.last else "before"
-            self._stop(start, end, f"a value is missing {place} '{word}'", "write a number, a name or a parenthesis there")
+            self._stop(start, end, f"a value is missing {place} '{word}'",
+                       "write a number, a name or a parenthesis there")
 
     def _operator(self, kind, word, start, end):
         """Takes a token that follows a value."""
@@ -221,6 +230,7 @@ class _Parser:
             if not self.pending or self.pending[-1].op is None:
                 self._stop(start, end, "a comma has no place here",
                            "commas separate the arguments of a function; decimals have a point, as in 0.5")
+            self._count(start, end)
             self.wants_operand = True
         elif word == "==":
             self._stop(start, end, "'==' is not an operator",
@@ -242,7 +252,15 @@ class _Parser:
         self.operands.append((node, start, end))
         self.wants_operand = False
 
+    def _count(self, start, end):
+        self.operations += 1
+        if self.operations > MAX_OPERATIONS:
+            self._stop(start, end, f"the expression has more than {MAX_OPERATIONS:,} operations",
+                       "give parts of it names in [definitions]")
+
     def _push(self, item):
+        if item.op is not None:
+            self._count(item.start, item.end)
         self.pending.append(item)
         self.nesting += item.nests
         if self.nesting > MAX_NESTING:
@@ -274,10 +292,6 @@ class _Parser:
         self._apply(item.op, taken, item.start, end)
 
     def _apply(self, op, taken, start, end):
-        self.operations += 1
-        if self.operations > MAX_OPERATIONS:
-            self._stop(start, end, f"the expression has more than {MAX_OPERATIONS:,} operations",
-                       "give parts of it names in [definitions]")
         for index, argument in enumerate(taken):
             self._check_kind(*argument, op in _LOGIC or op == "where" and index == 0)
         self._value(Apply(op, tuple(argument[0] for argument in taken), start, end), start, end)
@@ -325,7 +339,7 @@ class _Parser:
             help = f"powers of ten have an e: {clipped(number)}e{clipped(rest[1:])}"
         elif rest in ("e", "E"):
             help = f"the power of ten is missing: {clipped(number)}e0"
-        elif not rest.startswith(("x", "X")) and re.fullmatch("[A-Za-z][A-Za-z0-9_]*", rest):
+        elif not word.startswith(("0x", "0X")) and re.fullmatch("[A-Za-z][A-Za-z0-9_]*", rest):
             help = f"write * to multiply: {clipped(number)}*{clipped(rest)}"
         else:
             help = "numbers are decimal: 12, 0.5 or 1.5e-3"

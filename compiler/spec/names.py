@@ -24,7 +24,8 @@ _KEYWORDS_OF_CPP = frozenset("""
     try typeid typename using virtual wchar_t xor xor_eq
 """.split())
 # C's maths functions that emitted code may call besides those of the spec language.
-_FUNCTIONS_OF_C = frozenset("pow fabs fmin fmax fma copysign isfinite isnan isinf signbit nextafter ldexp frexp".split())
+_FUNCTIONS_OF_C = frozenset(
+    "pow fabs fmin fmax fma copysign isfinite isnan isinf signbit nextafter ldexp frexp".split())
 _EMITTED = frozenset(
     "solve solve_jacobian tangent adjoint jacobian hessian tangent_adjoint solve_many".split())
 _IMPORTED = frozenset(["math", "struct", "sys"])
@@ -42,7 +43,7 @@ _IDENTIFIER = re.compile(r"[A-Za-z][A-Za-z0-9_]*\Z")
 
 
 def nearest(word, known):
-    """The known word most like `word`, or None when nothing is near. Long words are not compared: that takes too long."""
+    """The known word most like `word`, or None when nothing is near. Long words are not compared: it takes too long."""
     if len(word) > 64:
         return None
     if word in _HABITS and _HABITS[word] in known:

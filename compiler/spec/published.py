@@ -37,7 +37,8 @@ def read_published(findings: Findings, top: Table, parameters: list[str], result
                  for index, entry in enumerate(entries))
 
 
-def published_expressions(entries: tuple[Published, ...], source: Source) -> Iterator[tuple[str, str, Expression, Path]]:
+def published_expressions(entries: tuple[Published, ...],
+                          source: Source) -> Iterator[tuple[str, str, Expression, Path]]:
     """Key, name, expression and path of each value; a single tolerance comes once for every result."""
     for index, entry in enumerate(entries):
         for key in ("given", "expect", "tolerance"):
@@ -54,7 +55,8 @@ def _entry(table, parameters, results):
                              "a published value gives every parameter")
     expect = _values(table, "expect", results, "result")
     if expect is not None and not table.values["expect"]:
-        table.findings.error(table.at("expect"), "expect names no result", "results: " + clipped(", ".join(results), 100))
+        table.findings.error(table.at("expect"), "expect names no result",
+                             "the results are " + clipped(", ".join(results), 100))
     expect = expect or {}
     tolerance = _tolerance(table, list(expect))
     source = table.text("source", _EXAMPLES["source"], REQUIRED)
@@ -95,6 +97,6 @@ def _tolerance(table, expected):
         tolerance = {name: one for name in expected}
     for name, value in tolerance.items():
         if value and is_written_below(value, or_zero=False):
-            table.findings.error((*path, name) if isinstance(table.values["tolerance"], dict) else path, "a tolerance is negative", "give the absolute error that is allowed")
-            break
+            place = (*path, name) if isinstance(table.values["tolerance"], dict) else path
+            table.findings.error(place, "a tolerance is negative", "give the absolute error that is allowed")
     return tolerance

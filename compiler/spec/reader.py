@@ -96,7 +96,8 @@ class _Reader:
         path = ("constants", name)
         self.scope.declare(name, CONSTANT, path)
         if not isinstance(value, dict):
-            return Constant(name, self._defined(name, self.findings.expression(path, value), "constant", path), None, "")
+            expression = self._defined(name, self.findings.expression(path, value), "constant", path)
+            return Constant(name, expression, None, "")
         table = Table(self.findings, path, value, ("value", "unit", "about"))
         expression = self._defined(name, table.expression("value", "value = 1.0"), "constant", table.at("value"))
         return Constant(name, expression, self._unit(table), table.text("about", _ABOUT))
@@ -153,8 +154,10 @@ class _Reader:
 
     def _residual(self):
         table = self._section("residual", ("equation",), '[residual] with equation = "left = right"')
-        path = ("residual", "equation")
-        return table and self._taken(table.expression("equation", 'equation = "left = right"', "equation"), "residual", path)
+        if table is None:
+            return None
+        expression = table.expression("equation", 'equation = "left = right"', "equation")
+        return self._taken(expression, "residual", table.at("equation"))
 
     def _output(self, name, value):
         path = ("outputs", name)
@@ -168,8 +171,11 @@ class _Reader:
         return Output(name, expression, self._unit(table), table.text("about", _ABOUT))
 
     def _published(self, draft):
-        results = [name for name in (draft.unknown and draft.unknown.name, *(output.name for output in draft.outputs)) if name]
-        entries = read_published(self.findings, self.top, [parameter.name for parameter in draft.parameters], results)
+        parameters = [parameter.name for parameter in draft.parameters]
+        results = [output.name for output in draft.outputs]
+        if draft.unknown and draft.unknown.name:
+            results.insert(0, draft.unknown.name)
+        entries = read_published(self.findings, self.top, parameters, results)
         for _, _, expression, path in published_expressions(entries, self.findings.source):
             self._taken(expression, "published value", path)
         return entries
@@ -185,8 +191,8 @@ class _Reader:
         used = self.scope.reach([*(name for names in mentioned for name in names), *(o.name for o in draft.outputs)])
         for parameter in draft.parameters:
             if parameter.name not in used:
-                self.findings.warning_at_key(("parameters", parameter.name), f"nothing uses the parameter {parameter.name}",
-                                             "take it away, or use it")
+                self.findings.warning_at_key(("parameters", parameter.name),
+                                             f"nothing uses the parameter {quoted(parameter.name)}", "use it, or take it away")
 
     # Small steps of the above.
     def _section(self, key, keys, needed=None):

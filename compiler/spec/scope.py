@@ -21,7 +21,7 @@ _ALLOWED = {
 
 
 class Scope:
-    """The declared names. Declare all of them first, then check every expression, then ask who depends on what."""
+    """The declared names. Declare and define all of them first, then check every expression."""
 
     def __init__(self, findings: Findings):
         self.findings = findings
@@ -30,6 +30,7 @@ class Scope:
         self.order = {}              # name -> position among all declarations
         self.uses = {}               # constant, definition or output -> names that its expression mentions
         self.paths = {}              # constant, definition or output -> path of its expression
+        self._dependent = None       # names whose value depends on the unknown, once somebody asks
 
     def declare(self, name: str, kind: str, path: Path, at_value: bool = False) -> None:
         """Declares `name`, which is the key at `path` or (`at_value`) the text there."""
@@ -64,10 +65,11 @@ class Scope:
             seen.add(word)
             kind = self.kinds.get(word)
             if kind is None:
-                self.findings.error(path, f"the name {quoted(word)} is not declared", self._likeness(word, allowed), part)
+                self.findings.error(path, f"the name {quoted(word)} is not declared",
+                                    self._likeness(word, allowed), part)
             elif kind not in allowed:
                 self.findings.error(path, f"the {place} uses the {kind} {quoted(word)}", f"it can have {wording}", part)
-            elif allowed is _GIVEN[0] and kind == DEFINITION and self.depends_on_unknown(word):
+            elif allowed is _GIVEN[0] and kind == DEFINITION and self._depends_on_unknown(word):
                 self.findings.error(path, f"the {place} uses {quoted(word)}, a definition that depends on the unknown",
                                     f"it can have {wording}", part)
 
@@ -89,18 +91,18 @@ class Scope:
                 self.findings.error(path, f"{quoted(word)} is used before it is defined",
                                     f"move {word} above {name}: {self.kinds[name]}s are read in order")
 
-    def depends_on_unknown(self, name: str) -> bool:
-        return any(self.kinds.get(word) == UNKNOWN for word in self.reach([name]))
+    def _depends_on_unknown(self, name):
+        if self._dependent is None:
+            users = {}
+            for user, words in self.uses.items():
+                for word in words:
+                    users.setdefault(word, []).append(user)
+            self._dependent = _closure([name for name, kind in self.kinds.items() if kind == UNKNOWN], users)
+        return name in self._dependent
 
     def reach(self, names) -> set[str]:
         """The names, and everything that their definitions use."""
-        found, pending = set(), list(names)
-        while pending:
-            name = pending.pop()
-            if name not in found:
-                found.add(name)
-                pending.extend(self.uses.get(name, ()))
-        return found
+        return _closure(names, self.uses)
 
     def _chain(self, first, last):
         """Names that lead from `first` to `last` by use, both included; empty when none do."""
@@ -128,3 +130,14 @@ class Scope:
         if word == "e":
             return "write exp(1) for Euler's number, or declare e as a constant"
         return "declare it in [constants], [parameters] or [definitions]"
+
+
+def _closure(names, leads_to):
+    """The names, and all that are reached from them."""
+    found, pending = set(), list(names)
+    while pending:
+        name = pending.pop()
+        if name not in found:
+            found.add(name)
+            pending.extend(leads_to.get(name, ()))
+    return found

@@ -13,9 +13,10 @@ from rootwright.spec.diagnostics import ERROR, Diagnostic
 
 MAX_BYTES = 1 << 20
 MAX_LINES = 50_000
-MAX_ENTRIES = 20_000             # keys, table headers and array elements
+MAX_ENTRIES = 10_000             # keys, table headers and array elements
 MAX_DEPTH = 24                   # nesting of arrays and inline tables, and parts of a dotted key
 MAX_SCALAR = 1_000               # characters of a number or date
+_SHORTEN = "a spec describes one equation: shorten it"
 
 Path = tuple                     # of keys and of positions in arrays, e.g. ("parameters", "Re", "range", 0)
 
@@ -112,7 +113,7 @@ def _decimal_text(text):
 def _decode(data):
     """The text, and (span, message, help) of what makes it unreadable or None."""
     if len(data) > MAX_BYTES:
-        return "", ((0, 1), f"the file is larger than {MAX_BYTES:,} bytes", "a spec describes one equation: shorten it")
+        return "", ((0, 1), f"the file is larger than {MAX_BYTES:,} bytes", _SHORTEN)
     try:
         text = data.decode("utf-8")
         fault = None
@@ -129,13 +130,14 @@ def _decode(data):
         return before + after, ((len(before), len(before) + 1), *fault[1:])
     text = text.removeprefix("\ufeff").replace("\r\n", "\n")
     if text.count("\n") > MAX_LINES:
-        return "", ((0, 1), f"the file has more than {MAX_LINES:,} lines", "a spec describes one equation: shorten it")
+        return "", ((0, 1), f"the file has more than {MAX_LINES:,} lines", _SHORTEN)
     return text, None
 
 
 def _repetition(source, path, span):
     name = path[-1]
-    return source.diagnostic(span, f"'{name[:40]}' is given twice", f"the first is on line {source.line_of(path)}: keep one")
+    return source.diagnostic(span, f"'{name[:40]}' is given twice",
+                             f"the first is on line {source.line_of(path)}: keep one")
 
 
 class _Refused(Exception):
@@ -192,7 +194,7 @@ class _Scanner:
     def _count(self, span):
         self.entries += 1
         if self.entries > MAX_ENTRIES:
-            raise _Refused(span, f"the file has more than {MAX_ENTRIES:,} entries", "a spec describes one equation: shorten it")
+            raise _Refused(span, f"the file has more than {MAX_ENTRIES:,} entries", _SHORTEN)
 
     def _header(self):
         is_array = self.text.startswith("[[", self.at)
@@ -233,7 +235,8 @@ class _Scanner:
                 self.at = match.end()
             end = self.at
             if len(parts) > MAX_DEPTH:
-                raise _Refused((start, end), f"a key has more than {MAX_DEPTH} parts", "no key of a spec has more than three")
+                raise _Refused((start, end), f"a key has more than {MAX_DEPTH} parts",
+                               "no key of a spec has more than three")
             self._skip(_SPACE)
             if not self.text.startswith(".", self.at):
                 return parts, (start, end)
@@ -255,7 +258,8 @@ class _Scanner:
         start = self.at
         self._count((start, start + 1))
         if depth > MAX_DEPTH:
-            raise _Refused((start, start + 1), f"values nest deeper than {MAX_DEPTH} levels", "no value of a spec nests deeper than two")
+            raise _Refused((start, start + 1), f"values nest deeper than {MAX_DEPTH} levels",
+                           "no value of a spec nests deeper than two")
         first = self.text[start:start + 1]
         # Known before its parts, so that a key of an inline table is not taken for a repetition of the table.
         self.source.places.setdefault(path, Place(key or (start, start + 1), (start, start + 1)))
@@ -304,7 +308,7 @@ _LINE_CONTINUATION = re.compile(r"\\[ \t]*\n[ \t\n]*")
 
 
 def _decode_string(text, start, end):
-    """What the string literal text[start:end] says, with the offset in `text` of each of its characters and of its end."""
+    """What the string literal text[start:end] says, with the offset of each of its characters and of its end."""
     quote = text[start]
     width = 3 if text.startswith(quote * 3, start) and end - start >= 6 else 1
     at, stop = start + width, end - width

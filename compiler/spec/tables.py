@@ -10,7 +10,7 @@ from rootwright.spec.names import clipped, nearest, quoted
 from rootwright.spec.source import DecimalText, Path, Source
 
 MAX_FINDINGS = 100               # more errors than anyone mends in one go
-MAX_OPERATIONS_OF_FILE = 100_000
+MAX_OPERATIONS_OF_FILE = 50_000
 MAX_DIGITS = 1_000               # characters of a number
 MAX_EXPONENT = 9_999             # of ten; far outside the doubles, near enough for exact arithmetic
 
@@ -63,12 +63,17 @@ class Findings:
     def expression(self, path: Path, value, form: str = "number") -> Expression | None:
         """The number or the string at `path` as an expression, its literals finite as doubles."""
         if isinstance(value, DecimalText) or isinstance(value, int) and not isinstance(value, bool):
-            return self._number(path, value) if form == "number" else self._refuse(path, value, "an expression in quotes")
-        if not isinstance(value, str):
-            return self._refuse(path, value, 'a number, or an expression in quotes as in "2*pi"'
-                                if form == "number" else "an expression in quotes")
+            if form == "number":
+                return self._number(path, value)
+        elif isinstance(value, str):
+            return self._parsed(path, value, form)
+        wanted = 'a number, or an expression in quotes as in "2*pi"' if form == "number" else "an expression in quotes"
+        self.error(path, f"{kind_of(value)} stands where {wanted} is needed", f"write {wanted}")
+        return None
+
+    def _parsed(self, path, value, form):
         if self.operations > MAX_OPERATIONS_OF_FILE:
-            self.error(path, f"the expressions of the file have more than {MAX_OPERATIONS_OF_FILE:,} operations altogether",
+            self.error(path, f"the expressions of the file have more than {MAX_OPERATIONS_OF_FILE:,} operations",
                        "a spec describes one equation: shorten it")
             raise TooMany
         try:
@@ -114,12 +119,9 @@ class Findings:
             self.error(path, f"the number {shown} is larger than any double", "doubles reach up to 1.8e308", part)
             return False
         if value == 0.0 and mantissa.strip("0."):
-            self.warning(path, f"the number {shown} is zero as a double", "the smallest double above zero is 4.9e-324", part)
+            self.warning(path, f"the number {shown} is zero as a double",
+                         "the smallest double above zero is 4.9e-324", part)
         return True
-
-    def _refuse(self, path, value, wanted):
-        self.error(path, f"{kind_of(value)} stands where {wanted} is needed"[:200], f"write {wanted}")
-        return None
 
     def wrong_type(self, path: Path, value, wanted: str, example: str) -> None:
         self.error(path, f"{_key_name(path)} is {kind_of(value)}, not {wanted}", f"write it like {example}")

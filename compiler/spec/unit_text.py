@@ -39,7 +39,8 @@ class Unit:
         exponents = dict(self.dimensions)        # a product has no origin
         for base, exponent in other.dimensions:
             exponents[base] = exponents.get(base, Fraction(0)) + exponent * power
-        return Unit(tuple(sorted((base, e) for base, e in exponents.items() if e)), self.scale + other.scale * float(power))
+        nonzero = sorted((base, exponent) for base, exponent in exponents.items() if exponent)
+        return Unit(tuple(nonzero), self.scale + other.scale * float(power))
 
     def to_the(self, power: Fraction | int) -> "Unit":
         return ONE.times(self, power)
@@ -58,13 +59,15 @@ ONE = Unit((), 0.0, text="1")
 
 
 def _si(text, factor=1.0, **exponents):
-    return Unit(tuple(sorted((base, Fraction(exponent)) for base, exponent in exponents.items())), math.log(factor), text=text)
+    dimensions = sorted((base, Fraction(exponent)) for base, exponent in exponents.items())
+    return Unit(tuple(dimensions), math.log(factor), text=text)
 
 
 # Units that take SI prefixes, and units that take none. The SI brochure, 9th edition (2019), tables 2, 4, 7 and 8;
 # percent, ppm and bar in common use.
 _PREFIXED = {unit.text: unit for unit in (
-    _si("m", m=1), _si("g", 1e-3, kg=1), _si("s", s=1), _si("A", A=1), _si("K", K=1), _si("mol", mol=1), _si("cd", cd=1),
+    _si("m", m=1), _si("g", 1e-3, kg=1), _si("s", s=1), _si("A", A=1), _si("K", K=1), _si("mol", mol=1),
+    _si("cd", cd=1),
     _si("Hz", s=-1), _si("N", kg=1, m=1, s=-2), _si("Pa", kg=1, m=-1, s=-2), _si("J", kg=1, m=2, s=-2),
     _si("W", kg=1, m=2, s=-3), _si("C", A=1, s=1), _si("V", kg=1, m=2, s=-3, A=-1), _si("F", kg=-1, m=-2, s=4, A=2),
     _si("ohm", kg=1, m=2, s=-3, A=-2), _si("S", kg=-1, m=-2, s=3, A=2), _si("Wb", kg=1, m=2, s=-2, A=-1),
@@ -89,7 +92,8 @@ _SUPERSCRIPTS = str.maketrans("\u2070\u00b9\u00b2\u00b3\u2074\u2075\u2076\u2077\
 _TOKEN = re.compile(r"""
     (?P<space>  [ ]+)
   | (?P<number> [0-9]+(?:\.[0-9]+)?(?:e[+-]?[0-9]{1,2})?)
-  | (?P<name>   [A-Za-z_\u00b0\u00b5\u03bc\u03a9\u2126\u00c5\u2103][A-Za-z_0-9\u00b5\u03bc\u03a9\u2126\u00c5]*(?:-[0-9]+)?|[%\u2030])
+  | (?P<name>   [A-Za-z_\u00b0\u00b5\u03bc\u03a9\u2126\u00c5\u2103][A-Za-z_0-9\u00b5\u03bc\u03a9\u2126\u00c5]*
+                (?:-[0-9]+)? | [%\u2030])
   | (?P<raised> [\u207b\u00b9\u00b2\u00b3\u2070\u2074-\u2079]+)
   | (?P<symbol> \*\*|[*/^()\u00b7\u22c5-])
 """, re.VERBOSE)
@@ -256,7 +260,8 @@ def _ask_pint(name):
         return None
     if not set(dimensions) <= set(_BASES) or not 0.0 < factor < math.inf:
         return None
-    exponents = {_BASES[key]: Fraction(power).limit_denominator(MAX_POWER) for key, power in dimensions.items() if power}
+    exponents = {_BASES[key]: Fraction(power).limit_denominator(MAX_POWER)
+                 for key, power in dimensions.items() if power}
     # Root units count mass in grams.
     scale = math.log(factor) - math.log(1000.0) * float(exponents.get("kg", 0))
     if at_zero == 0.0:

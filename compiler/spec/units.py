@@ -5,8 +5,8 @@ without a unit has the one that its expression has; definitions always do.
 
 Rules:
 
-* Two quantities that are added, compared, equated or chosen between have the same dimensions and the same scale. kPa and
-  Pa differ, and so do cm3/mol and m3/mol, kJ and J, percent and 1. rad is 1; deg is not.
+* Two quantities that are added, compared, equated or chosen between have the same dimensions and the same scale. kPa
+  and Pa differ, and so do cm3/mol and m3/mol, kJ and J, percent and 1. rad is 1; deg is not.
 * A literal is dimensionless. Zero fits any unit. A range end, bracket end, start, constant or published value made of
   literals only has the unit of what it bounds; one that uses names must come out in that unit.
 * exp, log, sin and the like take and give dimensionless numbers; sqrt and cbrt halve and third the exponents; abs, min,
@@ -34,7 +34,8 @@ from rootwright.spec.unit_text import ONE, Unit, UnitError, parse_unit
 _ANY = Unit((), 0.0, origin="any")           # the unit of a literal zero
 
 _SAME = frozenset(["add", "sub", "min", "max", "hypot", "atan2", "lt", "le", "gt", "ge"])
-_SYMBOLS = {"add": "+", "sub": "-", "mul": "*", "div": "/", "pow": "^", "lt": "<", "le": "<=", "gt": ">", "ge": ">=", "neg": "-"}
+_SYMBOLS = {"add": "+", "sub": "-", "mul": "*", "div": "/", "pow": "^", "lt": "<", "le": "<=", "gt": ">", "ge": ">=",
+            "neg": "-"}
 _MAX_BITS = 512                              # of the numerator and denominator of an exponent
 _SWITCH_OFF = 'dimensions = "label" switches the check off'
 
@@ -129,8 +130,8 @@ class _Checker:
         declared = self._declared(("outputs", output.name), output.unit)
         if declared and measure.unit and not _fits(measure.unit, declared):
             self.findings.error(("outputs", output.name, "unit"),
-                                f"the unit of {output.name} is declared as {declared}, and its expression has {measure.unit}",
-                                f"nothing is converted: declare {measure.unit}, or multiply by a constant that has a unit")
+                                f"{output.name} is declared in {declared}, and its expression has {measure.unit}",
+                                f"nothing is converted: declare {measure.unit}, or multiply by a constant with a unit")
         self.known[output.name] = _Measure(declared or measure.unit)
 
     def _published(self, key, name, expression, path):
@@ -140,7 +141,7 @@ class _Checker:
         self._bounded(expression, unit, path, "published value")
 
     def _bounded(self, expression, unit, path, what):
-        """Checks a constant expression against the unit of what it bounds, and returns its value where it is rational."""
+        """Checks a constant expression against the unit of what it bounds; its value where that is rational."""
         if expression is None:
             return None
         measure = self._measure(expression, path)
@@ -258,7 +259,7 @@ def _power(node, base, exponent):
     if base.unit.agrees(ONE):
         return _Measure(ONE, value)
     if exponent.value is None:
-        raise _Mismatch(node.args[0], f"the base of a power has the unit {base.unit}, and its exponent is no known number",
+        raise _Mismatch(node.args[0], f"the base of a power has the unit {base.unit}, its exponent is no known number",
                         f"make the base dimensionless, or the exponent a number or a constant; {_SWITCH_OFF}")
     return _Measure(base.unit.to_the(exponent.value), value)
 
@@ -292,7 +293,7 @@ def _refuse_points(node, units):
     for argument, unit in zip(node.args, units):
         if unit.origin and unit is not _ANY:
             name = _SYMBOLS.get(node.op, node.op)
-            raise _Mismatch(argument, f"{name} is not for a temperature in {unit}, whose zero is a matter of convention",
+            raise _Mismatch(argument, f"{name} is not for a temperature in {unit}, whose zero is a convention",
                             f"use kelvin, or a difference of temperatures; {_SWITCH_OFF}")
 
 

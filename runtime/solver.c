@@ -70,6 +70,13 @@ static int rw_usable(rw_sample s, double rising)
     return isfinite(s.slope) && s.slope * rising > 0.0;
 }
 
+/* Zero up to rounding. A bound that is not finite says nothing, nor does the huge one beside a pole, where the residual
+   is larger than the largest one known on this bracket. */
+static int rw_is_zero(double g, double bound, double largest)
+{
+    return isfinite(bound) && fabs(g) <= bound && fabs(g) <= largest;
+}
+
 #if RW_OPEN_LOWER || RW_OPEN_UPPER
 /* The sample nearest to an open end at which the residual is finite and its sign is certain. The offsets are the
    first one times 2, 2^3, 2^7, 2^15, ...: twelve of them reach from a subnormal to any number.
@@ -159,11 +166,13 @@ static double rw_aim(rw_sample best, rw_sample previous, rw_sample other, double
 static int rw_narrow(const double p[], rw_sample *low, rw_sample *high, rw_sample *best, double start, rw_point *r)
 {
     const double rising = high->g > 0.0 ? 1.0 : -1.0;
+    const double largest = fmax(fabs(low->g), fabs(high->g));
     rw_sample previous, latest;
     uint64_t gap = rw_gap(low->x, high->x), gap_left;
     int tries = 0;  /* evaluations since the gap was halved */
     int plain = 0;  /* the last point was the arithmetic middle */
     int holes = 0;  /* evaluations in a row that were not a number */
+    int slow = 0;   /* the last model was poor: beside a simple pole Newton's step leaves half of the residual */
     int closing = 0;
     int fast, improved;
     double x, step, share, bound, slope_rounding, curvature;
@@ -174,7 +183,7 @@ static int rw_narrow(const double p[], rw_sample *low, rw_sample *high, rw_sampl
         /* low.x < high.x, low.g and high.g are nonzero and of opposite signs; best is one of the two. */
         if (rw_gap(low->x, high->x) <= 1u) {
             bound = rw_rounding(p, best->x, &slope_rounding, &curvature);
-            if (fabs(best->g) <= bound) {
+            if (rw_is_zero(best->g, bound, largest)) {
                 return 0;
             }
             /* A root's residual is at most slope * width here, and cube-root-like ones stay below 64 times that. */
@@ -189,15 +198,12 @@ static int rw_narrow(const double p[], rw_sample *low, rw_sample *high, rw_sampl
             step = -best->g / best->slope;
             if (fabs(step) <= 0x1p-50 * fabs(best->x)) {
                 bound = rw_rounding(p, best->x, &slope_rounding, &curvature);
-                if (fabs(best->g) <= bound) {
-                    return 0;
-                }
                 /* On a straight part of the curve the step ends the search; beside a pole at an open end, where the
                    step is as small, |curvature * step / slope| is 1 or more. */
                 if (fabs(curvature * step) <= 0.25 * fabs(best->slope)) {
                     closing = 1;
                     x = best->x + step;
-                    if (!rw_between(x, low->x, high->x)) {
+                    if (rw_is_zero(best->g, bound, largest) || !rw_between(x, low->x, high->x)) {
                         return 0;
                     }
                 }
@@ -208,7 +214,7 @@ static int rw_narrow(const double p[], rw_sample *low, rw_sample *high, rw_sampl
         }
 
         fast = closing;
-        if (!closing && holes == 0 && tries < 2) {
+        if (!closing && !slow && holes == 0 && tries < 2) {
             x = r->iterations == 0 && !isnan(start)
                 ? start
                 : rw_aim(*best, previous, (best->g < 0.0) == (low->g < 0.0) ? *high : *low, rising, tries == 1);
@@ -250,10 +256,11 @@ static int rw_narrow(const double p[], rw_sample *low, rw_sample *high, rw_sampl
         }
         if (fast && !improved) {
             bound = rw_rounding(p, best->x, &slope_rounding, &curvature);
-            if (fabs(best->g) <= bound) {
+            if (rw_is_zero(best->g, bound, largest)) {
                 return 0;
             }
         }
+        slow = fast && fabs(latest.g) > 0.4 * fabs(best->g);
         if ((latest.g < 0.0) == (low->g < 0.0)) {
             *low = latest;
         } else {
@@ -338,6 +345,9 @@ static int rw_certify(const double p[], rw_sample root, const double end[2], con
             error = fmax(error, rw_reach(p, root.x, end[1], negative[1], r));
         }
     }
+    if (fabs(root.g) + bound > 0.0) { /* not exact, even where the bound underflows */
+        error = fmax(error, 0x1p-1074);
+    }
     error += at_end;
     farthest = fmax(root.x - end[0] + rounding[0], end[1] - root.x + rounding[1]);
     r->error_bound = error < farthest ? error : farthest;
@@ -364,7 +374,7 @@ static int rw_certify(const double p[], rw_sample root, const double end[2], con
    start is where to look first, NAN for nowhere. */
 static int rw_locate(const double p[], double start, rw_point *r)
 {
-    double end[2], rounding[2], slack[2], slope_rounding, curvature, swap;
+    double end[2], rounding[2], slack, slope_rounding, curvature, swap;
     rw_sample low, high, root;
     int negative[2], status, i;
 
@@ -419,19 +429,14 @@ static int rw_locate(const double p[], double start, rw_point *r)
         return rw_certify(p, high, end, rounding, negative, rounding[1], r);
     }
     if (negative[0] == negative[1]) { /* no root but at an end, where zero up to rounding counts as zero */
-        slack[0] = rw_rounding(p, low.x, &slope_rounding, &curvature);
-        slack[1] = rw_rounding(p, high.x, &slope_rounding, &curvature);
-        if (rounding[0] > 0.0) {
-            slack[0] += fabs(low.slope) * rounding[0];
+        i = fabs(high.g) < fabs(low.g);
+        root = i ? high : low;
+        slack = rw_rounding(p, root.x, &slope_rounding, &curvature);
+        if (rounding[i] > 0.0) {
+            slack += fabs(root.slope) * rounding[i];
         }
-        if (rounding[1] > 0.0) {
-            slack[1] += fabs(high.slope) * rounding[1];
-        }
-        if (fabs(low.g) <= slack[0] && !(fabs(high.g) <= slack[1] && fabs(high.g) < fabs(low.g))) {
-            return rw_certify(p, low, end, rounding, negative, rounding[0], r);
-        }
-        if (fabs(high.g) <= slack[1]) {
-            return rw_certify(p, high, end, rounding, negative, rounding[1], r);
+        if (rw_is_zero(root.g, slack, fabs(root.g))) {
+            return rw_certify(p, root, end, rounding, negative, rounding[i], r);
         }
         return rw_fail(r, RW_NO_SIGN_CHANGE, end[0], end[1]);
     }

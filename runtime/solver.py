@@ -50,6 +50,12 @@ def _usable(s, rising):
     return math.isfinite(s.slope) and s.slope * rising > 0.0
 
 
+def _is_zero(g, bound, largest):
+    """Zero up to rounding. A bound that is not finite says nothing, nor does the huge one beside a pole, where the
+    residual is larger than the largest one known on this bracket."""
+    return math.isfinite(bound) and abs(g) <= bound and abs(g) <= largest
+
+
 #if OPEN_LOWER || OPEN_UPPER
 def _enter(p, end, far, rounding, r):
     """The sample nearest to an open end at which the residual is finite and its sign is certain, and 0 or a status.
@@ -129,10 +135,12 @@ def _narrow(p, low, high, start, r):
     the ends become adjacent within 3*64 evaluations, but for those at which the residual is not a number.
     """
     rising = 1.0 if high.g > 0.0 else -1.0
+    largest = max(abs(low.g), abs(high.g))
     gap = _gap(low.x, high.x)
     tries = 0  # evaluations since the gap was halved
     plain = False  # the last point was the arithmetic middle
     holes = 0  # evaluations in a row that were not a number
+    slow = False  # the last model was poor: beside a simple pole Newton's step leaves half of the residual
     closing = False
 
     best = low if abs(low.g) < abs(high.g) else high
@@ -141,7 +149,7 @@ def _narrow(p, low, high, start, r):
         # low.x < high.x, low.g and high.g are nonzero and of opposite signs; best is one of the two.
         if _gap(low.x, high.x) <= 1:
             bound = _rounding(p, best.x)[0]
-            if abs(best.g) <= bound:
+            if _is_zero(best.g, bound, largest):
                 return low, high, best, 0
             # A root's residual is at most slope * width here, and cube-root-like ones stay below 64 times that.
             if (best.slope * rising > 0.0
@@ -153,20 +161,18 @@ def _narrow(p, low, high, start, r):
             step = -best.g / best.slope
             if abs(step) <= 2.0**-50 * abs(best.x):
                 bound, _, curvature = _rounding(p, best.x)
-                if abs(best.g) <= bound:
-                    return low, high, best, 0
                 # On a straight part of the curve the step ends the search; beside a pole at an open end, where the
                 # step is as small, |curvature * step / slope| is 1 or more.
                 if abs(curvature * step) <= 0.25 * abs(best.slope):
                     closing = True
                     x = best.x + step
-                    if not _between(x, low.x, high.x):
+                    if _is_zero(best.g, bound, largest) or not _between(x, low.x, high.x):
                         return low, high, best, 0
         if r.evaluations >= LIMIT:
             return low, high, best, 0 if closing else ITERATION_LIMIT
 
         fast = closing
-        if not closing and holes == 0 and tries < 2:
+        if not closing and not slow and holes == 0 and tries < 2:
             if r.iterations == 0 and not math.isnan(start):
                 x = start
             else:
@@ -199,8 +205,9 @@ def _narrow(p, low, high, start, r):
             return low, high, best, 0
         if fast and not improved:
             bound = _rounding(p, best.x)[0]
-            if abs(best.g) <= bound:
+            if _is_zero(best.g, bound, largest):
                 return low, high, best, 0
+        slow = fast and abs(latest.g) > 0.4 * abs(best.g)
         if (latest.g < 0.0) == (low.g < 0.0):
             low = latest
         else:
@@ -275,6 +282,8 @@ def _certify(p, root, end, rounding, negative, at_end, r):
         if not abs(root.g) + bound <= 0.0:
             error = _reach(p, root.x, end[0], negative[0], r)
             error = max(error, _reach(p, root.x, end[1], negative[1], r))
+    if abs(root.g) + bound > 0.0:  # not exact, even where the bound underflows
+        error = max(error, 2.0**-1074)
     error += at_end
     farthest = max(root.x - end[0] + rounding[0], end[1] - root.x + rounding[1])
     r.error_bound = error if error < farthest else farthest
@@ -338,15 +347,13 @@ def _locate(p, start, r):
     if not abs(high.g) > 0.0:
         return _certify(p, high, end, rounding, negative, rounding[1], r)
     if negative[0] == negative[1]:  # no root but at an end, where zero up to rounding counts as zero
-        slack = [_rounding(p, low.x)[0], _rounding(p, high.x)[0]]
-        if rounding[0] > 0.0:
-            slack[0] += abs(low.slope) * rounding[0]
-        if rounding[1] > 0.0:
-            slack[1] += abs(high.slope) * rounding[1]
-        if abs(low.g) <= slack[0] and not (abs(high.g) <= slack[1] and abs(high.g) < abs(low.g)):
-            return _certify(p, low, end, rounding, negative, rounding[0], r)
-        if abs(high.g) <= slack[1]:
-            return _certify(p, high, end, rounding, negative, rounding[1], r)
+        i = int(abs(high.g) < abs(low.g))
+        root = high if i else low
+        slack = _rounding(p, root.x)[0]
+        if rounding[i] > 0.0:
+            slack += abs(root.slope) * rounding[i]
+        if _is_zero(root.g, slack, abs(root.g)):
+            return _certify(p, root, end, rounding, negative, rounding[i], r)
         return _fail(r, NO_SIGN_CHANGE, end[0], end[1])
 
 #if START

@@ -101,7 +101,7 @@ def _switches():
                  Point({"a": "4"}, "16"), Point({"a": "-1"}, "-1")),
         _problem("condition_joined", "where(x > 1 and not (x >= 2 or a < 0), x^2, x) = a", ("0", "1.99"), {"a": (0, 3)},
                  Point({"a": "0.5"}, "0.5"), *_inverses(mp.sqrt, "3")),
-        _problem("step", "where(x < a, -1, 1)", inside, middle,
+        _problem("step", "where(x < a, x - 9, x + 9)", inside, middle,
                  Point({"a": "1"}, None, ("jump",)), Point({"a": "1.1"}, None, ("jump",))),
         _problem("pole_inside", "1/(x - a)", inside, middle, Point({"a": "1.1"}, None, ("jump",))),
         _problem("sign_of_zero", "sign(x - a)*(1 + x^2)", inside, middle,
@@ -121,7 +121,7 @@ def _without_root():
                  Point({"a": "2", "b": "0"}, None, ("bad_bracket",)), Point({"a": "0", "b": "2"}, "1")),
         _problem("undefined_by_parameter", "x = log(a)", ("-9", "9"), {"a": (-1, 9)},
                  Point({"a": "-1"}, None, ("not_finite",)),
-                 Point({"a": "0"}, None, ("not_finite",)),
+                 Point({"a": "0"}, None, ("not_finite", "no_sign_change")),        # infinite of one sign
                  Point({"a": "1"}, "0")),
         _problem("undefined_at_end", "sqrt(x) = a", ("-1", "4"), {"a": (0.5, 2)},
                  Point({"a": "1"}, None, ("not_finite",))),

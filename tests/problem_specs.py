@@ -31,7 +31,8 @@ class Problem(NamedTuple):
     points: tuple[Point, ...]
 
 
-def spec(name, equation, bracket, parameters, *, unknown="x", definitions=None, outputs=None, unselected=(), **keys):
+def spec(name, equation, bracket, parameters, *, unknown="x", definitions=None, outputs=None, unselected=(), require=(),
+         **keys):
     """A spec text. `parameters`: name -> (low, high); `unselected`: those without derivatives; `keys`: of [unknown]."""
     lines = ["format = 1", f"name = {json.dumps(name)}", "[parameters]"]
     for parameter, (low, high) in parameters.items():
@@ -44,6 +45,8 @@ def spec(name, equation, bracket, parameters, *, unknown="x", definitions=None, 
                       f"{key} = {{ expression = {json.dumps(text)} }}" for key, text in table.items()]
     lines += ["[unknown]", f"name = {json.dumps(unknown)}", f"bracket = {json.dumps(list(bracket))}"]
     lines += [f"{key} = {json.dumps(value)}" for key, value in keys.items()]
+    if require:
+        lines += ["[domain]", f"require = {json.dumps(list(require))}"]
     lines += ["[residual]", f"equation = {json.dumps(equation)}"]
     return "\n".join(lines) + "\n"
 
@@ -208,5 +211,5 @@ def _chandrupatla():
 def _brackets(name, equation, c, ends, root, status=("solved",), within="0"):
     """One function with many brackets: their ends are parameters without derivatives."""
     box = {"c": (-10, 10), "lo": (-1e10, 1e10), "hi": (-1e10, 1e12)}
-    text = spec(name, equation, ("lo", "hi"), box, unselected=("lo", "hi"))
+    text = spec(name, equation, ("lo", "hi"), box, unselected=("lo", "hi"), require=("lo < hi",))
     return Problem(name, text, tuple(Point({"c": c, "lo": lo, "hi": hi}, root, status, within) for lo, hi in ends))

@@ -1,0 +1,333 @@
+"""The command line: arguments, files, exit status. Nothing is computed here, and heavy modules are imported where they are used."""
+
+import argparse
+import contextlib
+import io
+import json
+import os
+import sys
+from pathlib import Path
+
+from rootwright import __version__
+
+OK, FOUND, WRONG, INTERRUPTED = 0, 1, 2, 130
+
+_SPECS = "a spec file, or the bare name of a shipped spec"
+_STATUS = "exit status: 0 all well; 1 the command ran and found something wrong; 2 the input or the usage is wrong"
+
+
+class Refusal(Exception):
+    """The input or the usage is wrong; the message is one line that says what, and how to mend it."""
+
+
+def main(argv=None):
+    """Run a command line (the process's own by default) and return its exit status. Nothing is raised."""
+    _tame(sys.stdout)
+    _tame(sys.stderr)
+    try:
+        try:
+            arguments = _parser().parse_args(argv)
+        except SystemExit as done:          # argparse has printed help or what is wrong
+            return int(done.code or OK)
+        status = arguments.run(arguments)
+        if sys.stdout is not None:
+            sys.stdout.flush()
+        return status
+    except Refusal as refusal:
+        return _complain(str(refusal), WRONG)
+    except KeyboardInterrupt:
+        return _complain("interrupted", INTERRUPTED)
+    except BrokenPipeError:
+        _discard_stdout()
+        return FOUND
+    except OSError as error:
+        _discard_stdout()
+        place = f"{error.filename}: " if error.filename else "output: "
+        return _complain(f"{place}{error.strerror or error}; is the disk full, or the place not writable?", WRONG)
+    except Exception as error:
+        return _complain(f"a defect of rootwright, not of the spec: {type(error).__name__}: {error}; please report it with the spec", WRONG)
+
+
+def _parser():
+    parser = argparse.ArgumentParser(
+        prog="rootwright", allow_abbrev=False, epilog=_STATUS,
+        description="From one scalar equation, written in a spec, to a standalone solver with exact derivatives of its root.")
+    parser.add_argument("--version", action="version", version=f"rootwright {__version__}")
+    commands = parser.add_subparsers(metavar="COMMAND", required=True)
+
+    check = _command(commands, "check", _check, "read and validate specs; print each like a page of a handbook", several=True)
+    _add_json(check)
+
+    compile_ = _command(commands, "compile", _compile, "write a standalone module for each spec", several=True)
+    compile_.add_argument("--into", metavar="DIR", default=".", help="folder to write to, made where it is missing (default: the current one)")
+    compile_.add_argument("--target", choices=("c", "python"), default="c", help="c: NAME.h and NAME.c (default); python: NAME.py")
+    compile_.add_argument("--precision", type=_precision, default="double", metavar="double", help="arithmetic of the module")
+    compile_.add_argument("--order", type=_order, default=1, metavar="0|1",
+                          help="highest derivatives asked for (default 1); a module always has first derivatives, so both write the same")
+
+    evaluate = _command(commands, "eval", _eval, "solve at the points of a CSV file; write a CSV with roots, outputs, derivatives, status",
+                        "The input has one column for each parameter, named in its first line; other columns pass through. A row that is "
+                        "ragged or has a cell that is no number gets the status bad_input, with missing cells empty and surplus ones "
+                        "kept in the last column. Exits 1 when any row is left without a root.")
+    evaluate.add_argument("--points", metavar="IN.csv", required=True, help="points to solve at; - for standard input")
+    evaluate.add_argument("--out", metavar="OUT.csv", default="-", help="where to write; - for standard output (default)")
+    evaluate.add_argument("--order", type=_order, default=1, metavar="0|1", help="1: with derivatives (default); 0: without")
+    evaluate.add_argument("--target", choices=("c", "python"), default="c",
+                          help="which module solves (default c; python where there is no C compiler)")
+
+    verify = _command(commands, "verify", _verify, "hold modules against a high-precision reference and the published values", several=True)
+    verify.add_argument("--points", type=_count, default=200, metavar="N", help="points of the operating range (default 200)")
+    verify.add_argument("--seed", type=int, default=1, metavar="S", help="seed of the random points (default 1)")
+    _add_json(verify)
+
+    demo = commands.add_parser("demo", help="a whole job on an invented water main, start to end", allow_abbrev=False, epilog=_STATUS)
+    demo.set_defaults(run=_demo)
+    return parser
+
+
+def _command(commands, name, run, summary, details="", several=False):
+    command = commands.add_parser(name, help=summary, description=f"{summary[0].upper()}{summary[1:]}. {details}".strip(),
+                                  allow_abbrev=False, epilog=_STATUS)
+    command.add_argument("specs" if several else "spec", metavar="SPEC", nargs="+" if several else None, help=_SPECS)
+    command.set_defaults(run=run)
+    return command
+
+
+def _add_json(command):
+    command.add_argument("--json", action="store_true",
+                         help="print one JSON object; for several specs it has one member, `specs`, a list of such objects")
+
+
+def _order(text):
+    if text in ("0", "1"):
+        return int(text)
+    raise argparse.ArgumentTypeError("second derivatives are not available yet; ask for 0 or 1" if text == "2" else f"{text!r} is not 0 or 1")
+
+
+def _precision(text):
+    if text == "double":
+        return text
+    raise argparse.ArgumentTypeError("single precision is not available yet; leave the option out"
+                                     if text == "single" else f"{text!r} is not a precision; leave the option out")
+
+
+def _count(text):
+    if text.isdecimal() and 0 < int(text) <= 10**7:
+        return int(text)
+    raise argparse.ArgumentTypeError(f"{text!r} is not a number of points; give a whole number from 1 to 10000000")
+
+
+# -- commands
+
+
+def _check(arguments):
+    from rootwright import pipeline
+    from rootwright.binding.module import load
+    from rootwright.evidence.page import describe, render
+
+    def show(closure):
+        facts = describe(closure, load(closure, pipeline.emit(closure, "python"), "python"))
+        return facts, "" if arguments.json else render(facts), OK
+
+    return _each(arguments, show)
+
+
+def _verify(arguments):
+    from rootwright.evidence.verify import render, to_json, verify
+
+    def show(closure):
+        report = verify(closure, points=arguments.points, seed=arguments.seed, progress=_progress())
+        return to_json(report), "" if arguments.json else render(report), FOUND if report.failed else OK
+
+    return _each(arguments, show)
+
+
+def _each(arguments, show):
+    """Run `show(closure) -> (JSON data, text, status)` on every spec and print what it found; the worst status of all."""
+    found, worst = [], OK
+    for k, spec in enumerate(arguments.specs):
+        closure, diagnostics = _closure(spec)
+        data, text, status = ({}, "", WRONG) if closure is None else show(closure)
+        worst = max(worst, status)
+        found.append({"spec": spec, "valid": closure is not None} | data | {"diagnostics": diagnostics})
+        if text:
+            print(("\n\n" if k else "") + text, end="")
+    if arguments.json:
+        print(json.dumps(_finite(found[0] if len(found) == 1 else {"specs": found}), indent=2))
+    return worst
+
+
+def _finite(data):
+    """The data with NaN and infinities, which JSON has not, as null."""
+    if isinstance(data, dict):
+        return {key: _finite(value) for key, value in data.items()}
+    if isinstance(data, (list, tuple)):
+        return [_finite(value) for value in data]
+    return None if isinstance(data, float) and data - data != 0.0 else data
+
+
+def _compile(arguments):
+    from rootwright import pipeline
+    from rootwright.files import replacing
+
+    worst, written = OK, {}
+    for spec in arguments.specs:
+        closure, _ = _closure(spec)
+        if closure is None:
+            worst = WRONG
+            continue
+        files = pipeline.emit(closure, arguments.target)
+        clash = next((name for name in files if name in written), None)
+        if clash:
+            raise Refusal(f"{spec}: {clash} was just written for {written[clash]}; give the specs different names, or compile into different folders")
+        folder = Path(arguments.into)
+        folder.mkdir(parents=True, exist_ok=True)
+        with contextlib.ExitStack() as stack:
+            for name, text in files.items():
+                stack.enter_context(replacing(folder/name)).write(text.encode("utf-8"))
+        for name, text in files.items():
+            written[name] = spec
+            print(f"{folder/name}  {len(text.encode('utf-8')):,} bytes")
+    return worst
+
+
+def _eval(arguments):
+    from rootwright.evidence.evaluate import BAD_INPUT, TableError, evaluate
+
+    closure, _ = _closure(arguments.spec)
+    if closure is None:
+        return WRONG
+    module = _load(closure, arguments.target)
+    with contextlib.ExitStack() as stack:
+        source = stack.enter_context(_source(arguments.points))
+        sink = stack.enter_context(_sink(arguments.out))
+        try:
+            counts = evaluate(closure.model, module, source, sink, arguments.order, _rows())
+        except TableError as error:
+            raise Refusal(f"{_shown(arguments.points, 'standard input')}: {error}") from None
+    total = sum(counts.values())
+    words = ", ".join(f"{count:,} {word}" for word, count in counts.items())
+    print(f"{total:,} row{'s'*(total != 1)}" + (f": {words}" if words else ""), file=sys.stderr)
+    rootless = [word for word in counts if word == BAD_INPUT or word in _failures()]
+    return FOUND if rootless else OK
+
+
+def _failures():
+    from rootwright.emit.manual import STATUS
+
+    return {word for code, word, _ in STATUS if code < 0}
+
+
+def _demo(arguments):
+    from rootwright.demo import story
+
+    return story.run(sys.stdout, _progress())
+
+
+# -- specs, files, streams
+
+
+def _closure(spec):
+    """(Closure or None, diagnostics as data); what is wrong goes to stderr."""
+    from rootwright import pipeline
+    from rootwright.spec.diagnostics import harmless, render
+
+    try:
+        data, filename = pipeline.find(spec)
+    except pipeline.SpecError as error:
+        for diagnostic in error.diagnostics:
+            print(f"{harmless(spec)}: {diagnostic.message}\n  {diagnostic.help}", file=sys.stderr)
+        return None, [_as_data(diagnostic) for diagnostic in error.diagnostics]
+    try:
+        closure, diagnostics = pipeline.closure(data, filename)
+    except pipeline.SpecError as error:
+        closure, diagnostics = None, error.diagnostics
+    print("\n".join(render(diagnostic) for diagnostic in diagnostics), end="", file=sys.stderr)
+    return closure, [_as_data(diagnostic) for diagnostic in diagnostics]
+
+
+def _as_data(diagnostic):
+    return {name: getattr(diagnostic, name) for name in ("severity", "file", "line", "column", "length", "message", "help")}
+
+
+def _load(closure, target):
+    from rootwright import pipeline
+    from rootwright.binding.build import BuildFailed, NoCompiler
+    from rootwright.binding.module import load
+
+    if target == "c":
+        try:
+            return load(closure, pipeline.emit(closure, "c"), "c")
+        except NoCompiler as error:
+            print(f"{error}; going on with the Python target, which is slower", file=sys.stderr)
+        except BuildFailed as error:
+            raise Refusal(f"the C compiler refused the module ({str(error).splitlines()[0] if str(error) else 'no message'}); "
+                          "set CC to another compiler, or use --target python") from None
+    return load(closure, pipeline.emit(closure, "python"), "python")
+
+
+def _shown(path, standard):
+    return standard if path == "-" else path
+
+
+def _source(path):
+    """Binary stream to read from, as a context."""
+    if path == "-":
+        if sys.stdin is None:
+            raise Refusal("standard input is closed; name a file with --points")
+        return contextlib.nullcontext(sys.stdin.buffer)
+    try:
+        return open(path, "rb")
+    except OSError as error:
+        raise Refusal(f"{path}: {error.strerror}; give a CSV file with --points, or - for standard input") from None
+
+
+@contextlib.contextmanager
+def _sink(path):
+    """Text stream to write to; a file appears, or is replaced, when all is written."""
+    from rootwright.files import replacing
+
+    if path == "-" and sys.stdout is None:
+        raise Refusal("standard output is closed; name a file with --out")
+    with contextlib.nullcontext(sys.stdout.buffer) if path == "-" else replacing(path) as binary:
+        text = io.TextIOWrapper(binary, encoding="utf-8", newline="")
+        try:
+            yield text
+            text.flush()
+        finally:
+            with contextlib.suppress(OSError):
+                text.detach()
+
+
+def _progress():
+    """A function that shows a line of progress on a terminal, and None where nobody watches."""
+    if sys.stderr is None or not sys.stderr.isatty():
+        return None
+
+    def show(text):
+        sys.stderr.write(f"\r\x1b[K{text}")
+        sys.stderr.flush()
+    return show
+
+
+def _rows():
+    show = _progress()
+    return None if show is None else lambda done: show(f"{done:,} rows")
+
+
+def _tame(stream):
+    """Let a stream print anything: what its encoding has not is escaped."""
+    if isinstance(stream, io.TextIOWrapper):
+        stream.reconfigure(errors="backslashreplace")
+
+
+def _complain(message, status):
+    with contextlib.suppress(OSError):
+        print(f"rootwright: {' '.join(message.split())}", file=sys.stderr)
+    return status
+
+
+def _discard_stdout():
+    """Send what is still to be printed nowhere, so that the interpreter does not stumble over it when it ends."""
+    with contextlib.suppress(OSError, ValueError, AttributeError):
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())

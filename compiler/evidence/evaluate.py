@@ -1,0 +1,193 @@
+"""A table of points through a module: the table's own columns, then root, outputs, status and derivatives. Streams."""
+
+import csv
+import io
+from collections import Counter
+from itertools import islice
+
+from rootwright.emit.manual import STATUS
+from rootwright.spec.names import nearest
+
+CHUNK = 4096                     # rows solved, and held, at a time
+
+BAD_INPUT = "bad_input"
+
+
+class TableError(Exception):
+    """A table that cannot be used; the message is one line that says what is wrong and how to mend it."""
+
+
+def word(status):
+    """Status as the status column spells it: `solved`, the failure's word, or the caveats joined with `+`."""
+    if status <= 0:
+        return dict((code, name) for code, name, _ in STATUS)[status]
+    return "+".join(name for code, name, _ in STATUS if code > 0 and status & code)
+
+
+def columns(model, order):
+    """Names of the columns that `evaluate` adds."""
+    derivatives = [f"d{result}/d{parameter.name}" for result in model.results for parameter in model.parameters
+                   if parameter.differentiate]
+    return [*model.results, "status", "iterations", "error_bound", *(derivatives if order else [])]
+
+
+def evaluate(model, module, source, sink, order=1, progress=None):
+    """Solve at every row of a CSV and write it with the results added; returns {status word: rows}, in the order of the status table.
+
+    source: binary stream of UTF-8 text with one column for each parameter, named in its first line. sink: text stream that does
+    not translate line ends. module: a CModule or PythonModule. progress: called with the number of rows done so far.
+    Memory does not grow with the number of rows. Raises TableError where the table as a whole cannot be read.
+    """
+    text = io.TextIOWrapper(source, encoding="utf-8-sig", newline="")
+    try:
+        return _Evaluation(model, module, _Lines(text), sink, order).run(progress)
+    finally:
+        text.detach()
+
+
+class _Lines:
+    """The lines of a stream, one at a time; the last one is kept."""
+
+    def __init__(self, stream):
+        self.stream = stream
+        self.last = ""
+
+    def __iter__(self):
+        for self.last in self.stream:
+            yield self.last
+
+
+class _Evaluation:
+    def __init__(self, model, module, lines, sink, order):
+        self.model, self.module, self.lines, self.order = model, module, lines, order
+        self.reader = csv.reader(lines)
+        self.added = columns(model, order)
+        self.header = self._header()
+        self.places = self._places()
+        self.writer = csv.writer(sink, lineterminator="\r\n" if lines.last.endswith("\r\n") else "\n")
+        self.flush = sink.flush
+        self.differentiated = [k for k, parameter in enumerate(model.parameters) if parameter.differentiate]
+        self.words = {}
+
+    def run(self, progress):
+        counts, done = Counter(), 0
+        self.writer.writerow(self.header + self.added)
+        while rows := list(self._rows(CHUNK)):
+            self.writer.writerows(self._solved(rows, counts))
+            self.flush()
+            done += len(rows)
+            if progress is not None:
+                progress(done)
+        codes = sorted(self.words, key=lambda code: (code < 0, abs(code)))
+        return {name: counts[name] for name in [*map(self._word, codes), BAD_INPUT] if counts[name]}
+
+    # -- reading
+
+    def _rows(self, count):
+        """Up to `count` rows that hold anything."""
+        try:
+            for row in islice(filter(None, self.reader), count):
+                yield row
+                last = row[-1]
+                if ("\n" in last or "\r" in last) and not self.lines.last.rstrip().endswith('"'):
+                    self._refuse('a quotation mark is opened and never closed; close it, or double it inside a quoted cell')
+        except csv.Error as error:
+            self._refuse("a cell is longer than 131,072 characters; is a quotation mark never closed?" if "limit" in str(error)
+                         else f"{error}; quote cells that hold line breaks")
+        except UnicodeDecodeError:
+            self._refuse("the text is not UTF-8; save the table as UTF-8")
+
+    def _refuse(self, message):
+        line = self.reader.line_num + 1
+        raise TableError(f"near line {line}: {message}")
+
+    def _header(self):
+        header = next(self._rows(1), None)
+        if header is None:
+            raise TableError("the table is empty; its first line names the columns, one for each of "
+                             + ", ".join(parameter.name for parameter in self.model.parameters))
+        return header
+
+    def _places(self):
+        """Index of each parameter's column."""
+        names = [cell.strip() for cell in self.header]
+        wanted = [parameter.name for parameter in self.model.parameters]
+        for name in wanted:
+            if name not in names:
+                near = nearest(name, [other for other in names if other not in wanted])
+                hint = f"the first line must name {', '.join(wanted)}" + (f"; it has `{near}`" if near else "")
+                if len(names) == 1 and any(mark in names[0] for mark in ";\t"):
+                    hint = "columns are separated by commas"
+                raise TableError(f"no column is called `{name}`; {hint}")
+            if names.count(name) > 1:
+                raise TableError(f"{names.count(name)} columns are called `{name}`; rename all but one")
+        for name in names:
+            if name in self.added:
+                raise TableError(f"a column is called `{name}`, as is one of the results; rename or remove it")
+        return [names.index(name) for name in wanted]
+
+    # -- solving
+
+    def _solved(self, rows, counts):
+        """The rows with their results. A row that is no point is solved as NaN, and says `bad_input`."""
+        bad = set()
+        for k, row in enumerate(rows):
+            if len(row) != len(self.header):
+                rows[k] = self._squared(row)
+                bad.add(k)
+        points = self._points(rows, bad)
+        out = self.module.solve_batch(points, self.order > 0)
+        status = [self._word(code) for code in out["status"].tolist()]
+        for k in bad:
+            status[k] = BAD_INPUT
+        counts.update(status)
+        derivatives = [()]*len(rows)
+        if self.order:
+            derivatives = out["jac"][:, :, self.differentiated].reshape(len(rows), -1).tolist()
+        empty = [""]*len(self.added)
+        for row, code, name, y, iterations, bound, slopes in zip(
+                rows, out["status"].tolist(), status, out["y"].tolist(), out["iterations"].tolist(), out["error_bound"].tolist(), derivatives):
+            if code < 0:
+                empty[len(y)] = name
+                yield row + empty
+            else:
+                yield [*row, *y, name, iterations, bound, *slopes]
+
+    def _word(self, code):
+        if code not in self.words:
+            self.words[code] = word(code)
+        return self.words[code]
+
+    def _squared(self, row):
+        """A ragged row with as many cells as there are columns: empty ones added, or the surplus kept in the last one."""
+        missing = len(self.header) - len(row)
+        return row + [""]*missing if missing > 0 else row[:missing - 1] + [",".join(row[missing - 1:])]
+
+    def _points(self, rows, bad):
+        """Parameters of every row as floats, NaN all through where one is not a number; such rows are added to `bad`."""
+        values = []
+        for place in self.places:
+            cells = [row[place] for row in rows]
+            try:
+                if not _plain("".join(cells)):
+                    raise ValueError
+                values.append(list(map(float, cells)))
+            except ValueError:
+                values.append([_number(cell) for cell in cells])
+        points = list(zip(*values))
+        bad.update(k for k, point in enumerate(points) if None in point)
+        for k in bad:
+            points[k] = (float("nan"),)*len(self.places)
+        return points
+
+
+def _plain(text):
+    """What `float` reads beyond plain numbers, digit groups and digits of other scripts, is left out."""
+    return text.isascii() and "_" not in text
+
+
+def _number(cell):
+    try:
+        return float(cell) if _plain(cell) else None
+    except ValueError:
+        return None

@@ -1,0 +1,220 @@
+"""A spec as a page of a handbook: what it says, the derivatives in closed form, a few solved points, the published values."""
+
+import math
+import random
+import textwrap
+
+from rootwright.calculus.doubles import Doubles
+from rootwright.calculus.program import interpret
+from rootwright.calculus.soundness import between
+from rootwright.evidence.evaluate import word
+from rootwright.evidence.formula import derivative_lines, residual_name
+from rootwright.spec.diagnostics import harmless
+
+WIDTH = 100
+POINTS = 5
+
+_TRIES = 500                     # points looked at for some that meet every requirement
+_ROOT = {"only": "the only root in the bracket", "lowest": "the lowest root in the bracket", "highest": "the highest root in the bracket"}
+_DIMENSIONS = {"checked": "checked: the equation and all definitions agree in dimension",
+               "label": "labels only: the formula is empirical, its dimensions are not checked",
+               "none": "not checked: not everything in use carries a unit"}
+
+
+def describe(closure, module):
+    """What the page says, as data for JSON. module: the closure's emitted module, which solves the sample of points."""
+    model = closure.model
+    formulas = derivative_lines(model)
+    unknown = model.unknown
+    return {
+        "name": model.name, "title": model.title, "source": model.source, "caution": model.caution,
+        "equation": model.equation,
+        "definitions": [{"name": item.name, "expression": item.expression.text} for item in model.definitions],
+        "constants": [_item(item, value=item.expression.text) for item in model.constants],
+        "parameters": [_item(item, range=[item.low.text, item.high.text], spread=item.spread, differentiate=item.differentiate)
+                       for item in model.parameters],
+        "unknown": _item(unknown, bracket=[unknown.lower.text, unknown.upper.text], ends=_ends(unknown), root=unknown.root,
+                         start=None if unknown.start is None else unknown.start.text),
+        "domain": [condition.text for condition in model.require],
+        "outputs": [_item(item, expression=item.expression.text) for item in model.outputs],
+        "dimensions": model.dimensions,
+        "derivatives": {result: dict(lines) for result, lines in formulas.items()},
+        "points": [_solved(model, module, point) for point in sample_points(closure)],
+        "published": [{"given": _texts(item.given), "expect": _texts(item.expect), "tolerance": _texts(item.tolerance),
+                       "source": item.source} for item in model.published],
+        "digest": model.digest,
+    }
+
+
+def _item(item, **more):
+    return {"name": item.name, "unit": item.unit, "about": item.about} | more
+
+
+def _texts(pairs):
+    return {name: expression.text for name, expression in pairs}
+
+
+def _ends(unknown):
+    return {(False, False): "closed", (True, True): "open", (True, False): "open-lower",
+            (False, True): "open-upper"}[unknown.open_lower, unknown.open_upper]
+
+
+def sample_points(closure):
+    """Up to POINTS points {parameter: double} of the operating range: lower ends, middle, upper ends, then others at random (fixed
+    seed), rounded to a few digits so that they read well."""
+    names = [parameter.name for parameter in closure.model.parameters]
+    generator = random.Random(1)
+    points = []
+    for k in range(_TRIES):
+        shares = [k/2]*len(names) if k < 3 else [generator.random() for _ in names]
+        point = {name: _rounded(low, high, between(low, high, share, parameter.spread))
+                 for name, share, (low, high), parameter in zip(names, shares, closure.ranges, closure.model.parameters)}
+        if point not in points and not interpret(closure.program, Doubles(), point, ["outside"])["outside"]:
+            points.append(point)
+        if len(points) == POINTS:
+            break
+    return points
+
+
+def _rounded(low, high, value):
+    """The value to three digits, or as many as tell the ends of the range apart; not outside the range."""
+    spread = abs(high/2 - low/2)/max(abs(low), abs(high), 5e-324)
+    digits = 3 if not spread > 0.0 else min(17, max(3, 3 - math.floor(math.log10(spread))))
+    return min(max(float(f"{value:.{digits}g}"), low), high)
+
+
+def _solved(model, module, point):
+    solved = module.solve(list(point.values()))
+    return {"given": point, "results": dict(zip(model.results, solved.y)) if solved.status >= 0 else None,
+            "error_bound": solved.error_bound if solved.status >= 0 else None, "status": word(solved.status)}
+
+
+# -- the page
+
+
+def render(facts):
+    """Text of the page for what `describe` found; lines of at most WIDTH columns."""
+    lines = [facts["name"]]
+    if facts["title"]:
+        lines += _wrapped(facts["title"], "")
+    lines += ["="*max(len(line) for line in lines), ""]
+    for label, text in (("Source", facts["source"]), ("Caution", facts["caution"])):
+        if text:
+            lines += _labelled(label, text)
+    lines += ["", *_equation(facts), *_quantities(facts), *_derivatives(facts), *_points(facts), *_published(facts)]
+    lines += _labelled("Dimensions", _DIMENSIONS[facts["dimensions"]])
+    return "\n".join(line.rstrip() for line in lines) + "\n"
+
+
+def _plain(text):
+    return harmless(" ".join(text.split()))
+
+
+def _wrapped(text, indent, hang=None):
+    return textwrap.wrap(_plain(text), WIDTH, initial_indent=indent, subsequent_indent=indent if hang is None else hang,
+                         break_on_hyphens=False) or [indent]
+
+
+def _labelled(label, text):
+    return _wrapped(text, f"{label:11} ", " "*12)
+
+
+def _formula(name, text):
+    return _wrapped(f"{name} = {text}", "    ", " "*8)
+
+
+def _equation(facts):
+    lines = ["Equation", ""] + _wrapped(facts["equation"] + ("" if "=" in facts["equation"] else " = 0"), "    ", " "*8)
+    if facts["definitions"]:
+        lines += ["", "  with", ""]
+        for item in facts["definitions"]:
+            lines += _formula(item["name"], item["expression"])
+    return lines + [""]
+
+
+def _quantities(facts):
+    unknown = facts["unknown"]
+    left, right = ("(" if unknown["ends"] in ("open", "open-lower") else "["), (")" if unknown["ends"] in ("open", "open-upper") else "]")
+    bracket = f"{left}{unknown['bracket'][0]}, {unknown['bracket'][1]}{right}"
+    lines = _table(f"Unknown, {_ROOT[unknown['root']]}", ("name", "bracket", "unit", "about"),
+                   [(unknown["name"], bracket, unknown["unit"], unknown["about"])])
+    if unknown["start"]:
+        lines[-1:] = _labelled("    start", unknown["start"]) + [""]
+    rows = [(item["name"], f"{item['range'][0]} to {item['range'][1]}", item["unit"], item["spread"],
+             item["about"] + ("" if item["differentiate"] else " (not differentiated)")) for item in facts["parameters"]]
+    lines += _table("Parameters", ("name", "range", "unit", "spread", "about"), rows)
+    if facts["domain"]:
+        lines += ["Meant for", ""] + [line for text in facts["domain"] for line in _wrapped(text, "    ", " "*8)] + [""]
+    lines += _table("Outputs", ("name", "formula", "unit", "about"),
+                    [(item["name"], item["expression"], item["unit"], item["about"]) for item in facts["outputs"]])
+    return lines + _table("Constants", ("name", "value", "unit", "about"),
+                          [(item["name"], item["value"], item["unit"], item["about"]) for item in facts["constants"]])
+
+
+def _table(title, head, rows):
+    """A table whose last column is wrapped, and whose wide cells push it to the next line; nothing without rows."""
+    if not rows:
+        return []
+    rows = [tuple(_plain(cell or "") for cell in row) for row in rows]
+    limits = [min(36, max(len(cell) for cell in column)) for column in zip(head, *rows)][:-1]
+    lines = [title, "", "    " + "  ".join(f"{cell:{width}}" for cell, width in zip(head, limits)) + "  " + head[-1]]
+    room = 4 + sum(limits) + 2*len(limits)
+    for row in rows:
+        cells = "    " + "  ".join(f"{cell:{width}}" for cell, width in zip(row, limits))
+        if any(len(cell) > width for cell, width in zip(row, limits)):
+            lines += _wrapped("  ".join(cell for cell in row[:-1] if cell), "    ", " "*8)
+            lines += _wrapped(row[-1], " "*room) if row[-1] else []
+        else:
+            about = textwrap.wrap(row[-1], max(30, WIDTH - room)) or [""]
+            lines += [cells + "  " + about[0]] + [" "*room + more for more in about[1:]]
+    return lines + [""]
+
+
+def _derivatives(facts):
+    unknown, parameters = facts["unknown"]["name"], [item["name"] for item in facts["parameters"] if item["differentiate"]]
+    (g, of_residual), *of_outputs = facts["derivatives"].items()
+    lines = ["Derivatives", ""]
+    lines += _wrapped(f"d{unknown}/dP = -{g}_P/{g}_{unknown} for every parameter P, by the implicit function theorem; {g} is the "
+                      "equation's left side minus its right side." if "=" in facts["equation"] else
+                      f"d{unknown}/dP = -{g}_P/{g}_{unknown} for every parameter P, by the implicit function theorem; {g} is the "
+                      "expression that is to be zero.", "  ")
+    lines += [""] + [line for name, text in of_residual.items() for line in _formula(name, text)] + [""]
+    for output, formulas in of_outputs:
+        along = _along(formulas, output, unknown)
+        direct = [name for name in parameters if _along(formulas, output, name)]
+        rule = " + ".join([f"{output}_P"]*bool(direct) + [f"{along}*d{unknown}/dP"]*bool(along)) or "0"
+        lines += _wrapped(f"d{output}/dP = {rule}", "  ")
+        lines += [""] + [line for name, text in formulas.items() for line in _formula(name, text)] + [""]
+    return lines
+
+
+def _along(formulas, output, name):
+    """Label of the derivative of an output along an input, None where it is zero."""
+    return next((label for label in (f"{output}_{name}", f"{output}__{name}") if label in formulas), None)
+
+
+def _points(facts):
+    if not facts["points"]:
+        return ["Solved points", "", "    none: no sampled point of the ranges meets every requirement", ""]
+    results = [facts["unknown"]["name"], *(item["name"] for item in facts["outputs"])]
+    rows = [[item["name"], *(f"{point['given'][item['name']]:.6g}" for point in facts["points"])] for item in facts["parameters"]]
+    rows.append(None)
+    rows += [[name, *(f"{point['results'][name]:.8g}" if point["results"] else "-" for point in facts["points"])] for name in results]
+    rows.append(["status", *(point["status"] for point in facts["points"])])
+    widths = [max(len(row[k]) for row in rows if row) for k in range(len(rows[0]))]
+    lines = ["Solved points of the operating range", ""]
+    for row in rows:
+        lines.append("" if row is None else "    " + "  ".join(
+            f"{cell:<{width}}" if k == 0 else f"{cell:>{width}}" for k, (cell, width) in enumerate(zip(row, widths))))
+    return lines + [""]
+
+
+def _published(facts):
+    if not facts["published"]:
+        return []
+    lines = ["Published values (as quoted; `rootwright verify` runs them)", ""]
+    for item in facts["published"]:
+        given = ", ".join(f"{name} = {text}" for name, text in item["given"].items())
+        expect = ", ".join(f"{name} = {text} +- {item['tolerance'][name]}" for name, text in item["expect"].items())
+        lines += _wrapped(f"{given}:  {expect}", "    ", " "*8) + _wrapped(item["source"], " "*8)
+    return lines + [""]

@@ -1,0 +1,351 @@
+"""Certified roots and derivatives, independent of what the compiler emits.
+
+A root is enclosed by two points at which balls of growing precision give the residual certain, opposite signs, and which lie
+within 2^-200 of each other relative to the root. Derivatives are central differences of roots solved again at parameters moved by
+2^-100 of their size, so truncation stays near 2^-200 and cancellation is covered by the working precision; no symbolic
+derivative is used anywhere.
+"""
+
+import math
+from dataclasses import dataclass
+
+import flint
+
+from rootwright.calculus.balls import ball, precision
+from rootwright.evidence.trees import Place, Trees
+
+BITS = (160, 320, 640, 1280)    # precisions tried for a sign
+CLOSE = -200                    # a root is enclosed within 2^CLOSE of its size
+STEP = -100                     # derivatives: shift of a parameter, 2^STEP of its size
+FINE = 448                      # bits for derivatives
+KINK = 1e-12                    # one-sided derivatives further apart than this share are those of a kink
+
+
+class NotSettled(Exception):
+    """No root could be certified; the message says why."""
+
+
+@dataclass(frozen=True)
+class Root:
+    """The exact root lies within `radius` of `mid` (exact balls). `kind`: "crossing" (a certain change of sign in the bracket), "beyond"
+    (one outside the bracket's end, within the distance asked for), "exact" (the residual is exactly zero) or "touching" (zero to 2^-1000 of
+    its terms at an end, with no change of sign)."""
+    mid: flint.arb
+    radius: flint.arb
+    kind: str
+    point: tuple[tuple[str, float], ...]
+
+    def distance(self, x):
+        """(smallest, largest) distance of a double from the root, as floats rounded outwards by no more than an ulp or so."""
+        with precision(320):
+            gap = abs(self.mid - ball(x))
+            return max(float((gap - self.radius).mid()), 0.0), float((gap + self.radius).mid())
+
+
+@dataclass(frozen=True)
+class Derivative:
+    """value: the derivative, a float and a ball; or why there is none ("kink", "undefined", "unbounded")."""
+    value: float | None
+    why: str = ""
+
+
+class Reference:
+    """The reference for one Model."""
+
+    def __init__(self, model):
+        self.model = model
+        self.trees = Trees(model)
+
+    def root(self, point, near=None, reach=0.0):
+        """The root at a point {parameter: double}. `near` is where to look first; a root as far as `reach` from it also counts where it
+        lies outside the bracket. Raises NotSettled."""
+        return _Search(self.trees, self._place(point), point, near, reach).root()
+
+    def outputs(self, root, bits=FINE):
+        """Balls of the outputs, {name: ball}, at a Root."""
+        place = self._place(dict(root.point))
+        with precision(bits):
+            x = root.mid + flint.arb(0, root.radius)
+        return {name: place.value(target, x, bits) for name, target in self.trees.outputs.items()}
+
+    def derivatives(self, root):
+        """{(result, parameter): Derivative} at a Root, for the parameters that are differentiated."""
+        return _Differences(self, root).all()
+
+    def _place(self, point):
+        return Place(self.trees, {name: ball(value) for name, value in point.items()})
+
+
+def sign(value):
+    """-1, 0 (exactly zero) or 1; None where the ball does not tell."""
+    return 1 if value > 0 else -1 if value < 0 else 0 if value.is_zero() else None
+
+
+class _Search:
+    def __init__(self, trees, place, point, near, reach):
+        self.trees, self.place, self.point = trees, place, tuple(point.items())
+        self.near, self.reach = None if near is None else ball(near), reach
+
+    def sign(self, x):
+        """Certain sign of the residual at an exact number; None where it is undefined or zero as far as 1280 bits show."""
+        for bits in BITS:
+            found = sign(self.place.residual(x, bits))
+            if found is not None:
+                return found
+        return None
+
+    def root(self):
+        with precision(BITS[-1]):
+            a, b = (self.place.value(end, None, BITS[-1]) for end in self.trees.ends)
+            if not (a.is_finite() and b.is_finite()):
+                raise NotSettled("a bracket end is not finite")
+            if a > b:
+                raise NotSettled("the bracket is reversed")
+            a, b = a.mid(), b.mid()
+            unknown = self.trees.model.unknown
+            a, sign_a = self._enter(a, b, unknown.open_lower)
+            b, sign_b = self._enter(b, a, unknown.open_upper)
+            for end, at_end in ((a, sign_a), (b, sign_b)):
+                if not at_end and self._chosen(end, a, b):
+                    return self._at_end(end, at_end)
+            if sign_a and sign_b and sign_a != sign_b:
+                return self._narrow(a, b, sign_a, *self._nearby(a, b, sign_a))
+            return self._beyond()
+
+    def _enter(self, end, far, is_open):
+        """An end and its sign there; next to it where it is open or the residual is undefined at it."""
+        if not is_open:
+            found = self.sign(end)
+            if found is not None or self.place.residual(end, BITS[-1]).is_finite():
+                return end, found
+        for k in (400, 200, 100, 50):
+            x = end + (far - end) * flint.arb(2) ** -k
+            found = self.sign(x)
+            if found is not None:
+                return x, found
+        return end, None if not is_open else 1
+
+    def _chosen(self, end, a, b):
+        """Whether a zero at an end is the root meant: it is, unless the number to be checked lies elsewhere."""
+        return self.near is None or abs(self.near - end) <= max(flint.arb(self.reach), abs(end) * flint.arb(2) ** -40)
+
+    def _at_end(self, end, at_end):
+        """A root at an end, where the residual is exactly zero or has no certain sign."""
+        if at_end == 0:
+            return Root(end, flint.arb(0), "exact", self.point)
+        radius = self._radius(end)
+        below, above = self.sign(end - radius), self.sign(end + radius)
+        if below and above and below != above:
+            return Root(end, radius, "crossing", self.point)
+        return Root(end, radius, "touching", self.point)
+
+    def _radius(self, x):
+        return (abs(x) if not x.is_zero() else flint.arb(1)) * flint.arb(2) ** CLOSE
+
+    def _nearby(self, a, b, sign_a):
+        """A part of the bracket around `near` with a change of sign in the bracket's direction; the bracket if there is none."""
+        if self.near is not None:
+            size = max(abs(self.near), (b - a) * flint.arb(2) ** -80)
+            for k in (-50, -44, -36, -24, -10):
+                low, high = self.near - size * flint.arb(2) ** k, self.near + size * flint.arb(2) ** k
+                low, high = (low if low > a else a), (high if high < b else b)
+                if low < high and (low <= a or self.sign(low) == sign_a) and (high >= b or self.sign(high) == -sign_a):
+                    return low, high
+        return a, b
+
+    def _narrow(self, lower, upper, sign_a, a, b):
+        """Bisection to 40 bits, then secants of growing precision, certified by signs on both sides."""
+        for _ in range(6000):
+            if self._is_narrow(a, b, -40):
+                root = self._polish(a, b, sign_a)
+                if root is not None:
+                    return root
+            if self._is_narrow(a, b, CLOSE):
+                break
+            x = self._middle(a, b)
+            found = self.sign(x)
+            if found is None:       # a zero to 1280 bits, or a hole
+                x, found = self._beside(a, b, x)
+            if found == 0:
+                return Root(x, flint.arb(0), "exact", self.point)
+            a, b = (x, b) if found == sign_a else (a, x)
+        self._refuse_jump(a, b, lower, upper)
+        middle = (a + b) / 2
+        return Root(middle.mid(), (b - a).mid(), "crossing", self.point)
+
+    @staticmethod
+    def _is_narrow(a, b, k):
+        return b - a <= min(abs(a), abs(b)) * flint.arb(2) ** k
+
+    @staticmethod
+    def _middle(a, b):
+        """The arithmetic middle; the geometric one where the ends differ in size, and 0 where they differ in sign."""
+        if a < 0 and b > 0:
+            return flint.arb(0)
+        small, large = min(abs(a), abs(b)), max(abs(a), abs(b))
+        if small.is_zero():
+            small = large * flint.arb(2) ** -2300
+        if 4 * small < large:
+            return (small.sqrt() * large.sqrt() * (1 if b > 0 else -1)).mid()
+        return ((a + b) / 2).mid()
+
+    def _beside(self, a, b, x):
+        for share in (0.375, 0.625, 0.25, 0.75, 0.0625, 0.9375, 2.0 ** -60, 1.0 - 2.0 ** -50):
+            beside = (a + (b - a) * ball(share)).mid()
+            found = self.sign(beside)
+            if found is not None:
+                return beside, found
+        raise NotSettled("the residual is undefined in the bracket, or zero in a whole part of it")
+
+    def _polish(self, a, b, sign_a):
+        bits = BITS[1]
+        with precision(bits):
+            x, y = a, b
+            gx, gy = (self.place.residual(v, bits).mid() for v in (x, y))
+            for _ in range(12):
+                if gy == gx:
+                    break
+                x, y, gx = y, (y - gy * (y - x) / (gy - gx)).mid(), gy
+                if not (y.is_finite() and a <= y <= b):
+                    return None
+                if abs(y - x) <= self._radius(y) / 16:
+                    break
+                value = self.place.residual(y, bits)
+                if value.is_zero():
+                    return Root(y, flint.arb(0), "exact", self.point)
+                gy = value.mid()
+            radius = self._radius(y)
+        with precision(BITS[-1]):
+            below, above = self.sign(y - radius), self.sign(y + radius)
+        return Root(y, radius, "crossing", self.point) if below == sign_a and above == -sign_a else None
+
+    def _refuse_jump(self, a, b, lower, upper):
+        """A root's residual falls as the ends close in; at a step or a pole it does not."""
+        width = (b - a) * flint.arb(2) ** 100
+        for end, far in ((a, max(lower, a - width)), (b, min(upper, b + width))):
+            near, further = (abs(self.place.residual(x.mid(), BITS[-1])) for x in (end, far))
+            if not near < further * 0.9:
+                raise NotSettled("the sign changes across a step or a pole")
+
+    def _beyond(self):
+        """No change of sign in the bracket: one around `near`, within `reach` of it."""
+        if self.near is not None and self.reach > 0.0:
+            reach = ball(self.reach)
+            low, high = self.near - reach, self.near + reach
+            sign_low, sign_high = self.sign(low), self.sign(high)
+            if sign_low and sign_high and sign_low != sign_high:
+                found = self._narrow(low, high, sign_low, low, high)
+                return Root(found.mid, found.radius, "beyond", self.point)
+        raise NotSettled("the residual has one sign at both ends of the bracket")
+
+
+class _Differences:
+    def __init__(self, reference, root):
+        self.reference, self.root = reference, root
+        self.model, self.trees = reference.model, reference.trees
+        self.point = dict(root.point)
+        self.ranges = {}
+
+    def all(self):
+        with precision(FINE):
+            here = self._place({})
+            self.size = abs(self.root.mid) if not self.root.mid.is_zero() else flint.arb(1)
+            self.slope = self._slope(here)
+            center = None if self.slope is None else self._results(here)
+            found = {}
+            for parameter in self.model.parameters:
+                if parameter.differentiate:
+                    column = self._column(parameter, center) if center else {}
+                    for result in self.model.results:
+                        found[result, parameter.name] = column.get(result, Derivative(None, "undefined"))
+            return found
+
+    def _place(self, shift):
+        values = {name: ball(value) for name, value in self.point.items()}
+        return Place(self.trees, values | shift)
+
+    def _slope(self, here):
+        """Slope of the residual at the root, by a central difference: only its leading digits matter."""
+        h = self.size * flint.arb(2) ** STEP
+        above, below = (here.residual(self.root.mid + s * h, FINE) for s in (1, -1))
+        slope = (above - below) / (2 * h)
+        return slope.mid() if slope.is_finite() and not slope.contains(0) else None
+
+    def _results(self, place):
+        """Balls of the unknown and the outputs at a place near the root, or None where they are undefined."""
+        x = self.root.mid
+        for _ in range(12):
+            g = place.residual(x, FINE)
+            if not g.is_finite():
+                return None
+            step = (g / self.slope).mid()
+            x = (x - step).mid()
+            if abs(step) <= self.size * flint.arb(2) ** (40 - FINE):
+                break
+        g = place.residual(x, FINE)
+        error = 2 * (g / self.slope).abs_upper()
+        if not (error.is_finite() and error <= self.size * flint.arb(2) ** (100 - FINE)):
+            return None
+        around = x + flint.arb(0, error)
+        values = {self.model.unknown.name: around}
+        for name, target in self.trees.outputs.items():
+            values[name] = place.value(target, around, FINE)
+        return values
+
+    def _moved(self, parameter, h):
+        return self._results(self._place({parameter.name: ball(self.point[parameter.name]) + h}))
+
+    def _column(self, parameter, center):
+        value = self.point[parameter.name]
+        h = (ball(abs(value)) if value else self._width(parameter)) * flint.arb(2) ** STEP
+        above, below = self._moved(parameter, h), self._moved(parameter, -h)
+        column = {}
+        for result in self.model.results:
+            up, down = (None if side is None or not side[result].is_finite() else side[result] for side in (above, below))
+            middle = center[result]
+            if not middle.is_finite():
+                column[result] = Derivative(None, "undefined")
+            elif up is not None and down is not None:
+                column[result] = self._central(up, middle, down, h)
+            elif up is not None or down is not None:
+                side = h if up is not None else -h
+                column[result] = self._one_sided(result, parameter, middle, up if up is not None else down, side)
+            else:
+                column[result] = Derivative(None, "undefined")
+        return column
+
+    def _width(self, parameter):
+        """Width of a parameter's range, to scale the shift of a parameter that is zero."""
+        low, high = (Place(self.trees, {}).value(self.trees.add(end), None, 64) for end in (parameter.low, parameter.high))
+        width = (high - low).mid()
+        return width if width > 0 else flint.arb(1)
+
+    @staticmethod
+    def _central(up, middle, down, h):
+        forward, backward = (up - middle) / h, (middle - down) / h
+        natural = abs(middle.mid() / h) * flint.arb(2) ** (STEP - 20)
+        scale = max(abs(forward.mid()), abs(backward.mid()), natural)
+        if abs((forward - backward).mid()) > scale * KINK + abs((forward - backward).rad()) * 2:
+            return Derivative(None, "kink")
+        return _settled((up - down) / (2 * h), middle)
+
+    def _one_sided(self, result, parameter, middle, near, h):
+        """Second-order one-sided difference; where it changes with the step, the derivative is unbounded."""
+        far, further = (self._moved(parameter, factor * h) for factor in (2, 4))
+        if far is None or further is None:
+            return Derivative(None, "undefined")
+        fine = (4 * near - 3 * middle - far[result]) / (2 * h)
+        coarse = (4 * far[result] - 3 * middle - further[result]) / (4 * h)
+        if abs((fine - coarse).mid()) > abs(fine.mid()) * KINK + abs((fine - coarse).rad()) * 2:
+            return Derivative(None, "unbounded")
+        return _settled(fine, middle)
+
+
+def _settled(value, middle):
+    """The derivative, if its ball is small against it or against the result's size."""
+    if not value.is_finite() or value.rad() > max(abs(value.mid()), abs(middle.mid()) * flint.arb(2) ** -40) * flint.arb(2) ** -80:
+        return Derivative(None, "undefined")
+    try:
+        return Derivative(float(value.mid()))
+    except OverflowError:
+        return Derivative(math.inf if value > 0 else -math.inf)

@@ -6,11 +6,10 @@ backwards over the author's trees.
 """
 
 import math
-from fractions import Fraction
 
 import flint
 
-from rootwright.calculus.balls import precision
+from rootwright.calculus.balls import ball, precision
 from rootwright.evidence.trees import CONSTANT, run
 from rootwright.operations import OPERATIONS
 
@@ -28,12 +27,13 @@ def noise(place, x):
     return (total / slope if slope > 0.0 and math.isfinite(total) else math.inf), slope
 
 
-def sensitivity(place, x):
-    """(sum of |dg/dv| ulp(v), |g_x|) at x, as floats."""
+def sensitivity(place, x, target=None):
+    """(sum of |dg/dv| ulp(v), |g_x|) at x, as floats, for the residual g or another target of the trees."""
     trees = place.trees
-    values = place.values(trees.residual, x, BITS)
-    _, fixed, moving = trees.order(trees.residual)
-    adjoints = {trees.residual: 1.0}
+    target = trees.residual if target is None else target
+    values = place.values(target, x, BITS)
+    _, fixed, moving = trees.order(target)
+    adjoints = {target: 1.0}
     total = 0.0
     with precision(BITS):
         for k in sorted((*fixed, *moving), reverse=True):
@@ -62,12 +62,7 @@ def _rounding(value):
     """An ulp for a constant that no double holds exactly, else 0."""
     if not hasattr(value, "is_exact"):
         return 0.0              # a condition
-    if value.is_exact():
-        mantissa, exponent = value.man_exp()
-        exact = Fraction(int(mantissa)) * Fraction(2) ** int(exponent)
-        if Fraction(float(exact)) == exact:
-            return 0.0
-    return _ulp(value)
+    return 0.0 if value.is_exact() and (ball(float(value)) - value).is_zero() else _ulp(value)
 
 
 def _partial(step, index, values):

@@ -6,7 +6,6 @@ within 2^-200 of each other relative to the root. Derivatives are central differ
 derivative is used anywhere.
 """
 
-import math
 from dataclasses import dataclass
 
 import flint
@@ -33,7 +32,6 @@ class Root:
     mid: flint.arb
     radius: flint.arb
     kind: str
-    point: tuple[tuple[str, float], ...]
 
     def distance(self, x):
         """(smallest, largest) distance of a double from the root, as floats rounded outwards by no more than an ulp or so."""
@@ -59,21 +57,18 @@ class Reference:
     def root(self, point, near=None, reach=0.0):
         """The root at a point {parameter: double}. `near` is where to look first; a root as far as `reach` from it also counts where it
         lies outside the bracket. Raises NotSettled."""
-        return _Search(self.trees, self._place(point), point, near, reach).root()
+        return _Search(self.trees, self.place(point), near, reach).root()
 
-    def outputs(self, root, bits=FINE):
-        """Balls of the outputs, {name: ball}, at a Root."""
-        place = self._place(dict(root.point))
-        with precision(bits):
-            x = root.mid + flint.arb(0, root.radius)
-        return {name: place.value(target, x, bits) for name, target in self.trees.outputs.items()}
-
-    def derivatives(self, root):
-        """{(result, parameter): Derivative} at a Root, for the parameters that are differentiated."""
-        return _Differences(self, root).all()
-
-    def _place(self, point):
+    def place(self, point):
+        """The author's expressions at a point {parameter: double}."""
         return Place(self.trees, {name: ball(value) for name, value in point.items()})
+
+    def derivatives(self, point, x):
+        """{(result, parameter): Derivative} for the parameters that are differentiated, at x, an exact ball.
+
+        x is the root; or any number near it, and then what is differentiated is the root of the residual less its value at x.
+        """
+        return _Differences(self, point, x).all()
 
 
 def sign(value):
@@ -82,8 +77,8 @@ def sign(value):
 
 
 class _Search:
-    def __init__(self, trees, place, point, near, reach):
-        self.trees, self.place, self.point = trees, place, tuple(point.items())
+    def __init__(self, trees, place, near, reach):
+        self.trees, self.place = trees, place
         self.near, self.reach = None if near is None else ball(near), reach
 
     def sign(self, x):
@@ -132,12 +127,12 @@ class _Search:
     def _at_end(self, end, at_end):
         """A root at an end, where the residual is exactly zero or has no certain sign."""
         if at_end == 0:
-            return Root(end, flint.arb(0), "exact", self.point)
+            return Root(end, flint.arb(0), "exact")
         radius = self._radius(end)
         below, above = self.sign(end - radius), self.sign(end + radius)
         if below and above and below != above:
-            return Root(end, radius, "crossing", self.point)
-        return Root(end, radius, "touching", self.point)
+            return Root(end, radius, "crossing")
+        return Root(end, radius, "touching")
 
     def _radius(self, x):
         return (abs(x) if not x.is_zero() else flint.arb(1)) * flint.arb(2) ** CLOSE
@@ -167,11 +162,11 @@ class _Search:
             if found is None:       # a zero to 1280 bits, or a hole
                 x, found = self._beside(a, b, x)
             if found == 0:
-                return Root(x, flint.arb(0), "exact", self.point)
+                return Root(x, flint.arb(0), "exact")
             a, b = (x, b) if found == sign_a else (a, x)
         self._refuse_jump(a, b, lower, upper)
         middle = (a + b) / 2
-        return Root(middle.mid(), (b - a).mid(), "crossing", self.point)
+        return Root(middle.mid(), (b - a).mid(), "crossing")
 
     @staticmethod
     def _is_narrow(a, b, k):
@@ -212,12 +207,12 @@ class _Search:
                     break
                 value = self.place.residual(y, bits)
                 if value.is_zero():
-                    return Root(y, flint.arb(0), "exact", self.point)
+                    return Root(y, flint.arb(0), "exact")
                 gy = value.mid()
             radius = self._radius(y)
         with precision(BITS[-1]):
             below, above = self.sign(y - radius), self.sign(y + radius)
-        return Root(y, radius, "crossing", self.point) if below == sign_a and above == -sign_a else None
+        return Root(y, radius, "crossing") if below == sign_a and above == -sign_a else None
 
     def _refuse_jump(self, a, b, lower, upper):
         """A root's residual falls as the ends close in; at a step or a pole it does not."""
@@ -235,21 +230,20 @@ class _Search:
             sign_low, sign_high = self.sign(low), self.sign(high)
             if sign_low and sign_high and sign_low != sign_high:
                 found = self._narrow(low, high, sign_low, low, high)
-                return Root(found.mid, found.radius, "beyond", self.point)
+                return Root(found.mid, found.radius, "beyond")
         raise NotSettled("the residual has one sign at both ends of the bracket")
 
 
 class _Differences:
-    def __init__(self, reference, root):
-        self.reference, self.root = reference, root
+    def __init__(self, reference, point, x):
         self.model, self.trees = reference.model, reference.trees
-        self.point = dict(root.point)
-        self.ranges = {}
+        self.point, self.x = point, x
 
     def all(self):
         with precision(FINE):
             here = self._place({})
-            self.size = abs(self.root.mid) if not self.root.mid.is_zero() else flint.arb(1)
+            self.size = abs(self.x) if not self.x.is_zero() else flint.arb(1)
+            self.level = here.residual(self.x, FINE).mid()
             self.slope = self._slope(here)
             center = None if self.slope is None else self._results(here)
             found = {}
@@ -267,22 +261,22 @@ class _Differences:
     def _slope(self, here):
         """Slope of the residual at the root, by a central difference: only its leading digits matter."""
         h = self.size * flint.arb(2) ** STEP
-        above, below = (here.residual(self.root.mid + s * h, FINE) for s in (1, -1))
+        above, below = (here.residual(self.x + side * h, FINE) for side in (1, -1))
         slope = (above - below) / (2 * h)
         return slope.mid() if slope.is_finite() and not slope.contains(0) else None
 
     def _results(self, place):
         """Balls of the unknown and the outputs at a place near the root, or None where they are undefined."""
-        x = self.root.mid
+        x = self.x
         for _ in range(12):
-            g = place.residual(x, FINE)
+            g = place.residual(x, FINE) - self.level
             if not g.is_finite():
                 return None
             step = (g / self.slope).mid()
             x = (x - step).mid()
             if abs(step) <= self.size * flint.arb(2) ** (40 - FINE):
                 break
-        g = place.residual(x, FINE)
+        g = place.residual(x, FINE) - self.level
         error = 2 * (g / self.slope).abs_upper()
         if not (error.is_finite() and error <= self.size * flint.arb(2) ** (100 - FINE)):
             return None
@@ -345,7 +339,4 @@ def _settled(value, middle):
     """The derivative, if its ball is small against it or against the result's size."""
     if not value.is_finite() or value.rad() > max(abs(value.mid()), abs(middle.mid()) * flint.arb(2) ** -40) * flint.arb(2) ** -80:
         return Derivative(None, "undefined")
-    try:
-        return Derivative(float(value.mid()))
-    except OverflowError:
-        return Derivative(math.inf if value > 0 else -math.inf)
+    return Derivative(float(value.mid()))

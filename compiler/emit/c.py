@@ -3,7 +3,7 @@
 import math
 
 from rootwright.emit.layout import lay_out
-from rootwright.emit.names import C_MACROS, Names
+from rootwright.emit.names import Names, taken_in_c
 from rootwright.emit.text import statement
 from rootwright.operations import OPERATIONS
 
@@ -14,7 +14,7 @@ class CSpelling:
     nan = "(double)NAN"      # NAN is a float: without the cast it would be promoted
 
     def __init__(self, model):
-        self.names = Names(model, C_MACROS)
+        self.names = Names(model, taken_in_c)
         self.prefix = model.name + "_"
 
     def number(self, value):
@@ -56,7 +56,7 @@ def kernel(closure, name, comment):
     kind, arguments = _SIGNATURES[name]
     first = f"static {kind} {model.name}_{'partials' if name == 'jacobian' else name}(const double {formals['p']}[]"
     signature = first + (", " + arguments.format(**formals) if arguments else "") + ")"
-    taken = {*spelling.names.used, *formals.values(), *C_MACROS}
+    taken = {*spelling.names.used, *formals.values()}
     laid = lay_out(closure, name, spelling, taken)
     lines = [f"/* {line}" if k == 0 else f"   {line}" for k, line in enumerate(comment)]
     lines[-1] += " */"

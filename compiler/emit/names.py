@@ -1,29 +1,35 @@
 """Names in emitted code: the author's names stay, ours keep out of their way."""
 
-# Macros that the standard headers (or a compiler in its default mode) may define; a local of that name would not compile.
-C_MACROS = frozenset("""
-    NAN INFINITY HUGE_VAL HUGE_VALF HUGE_VALL NULL FP_INFINITE FP_NAN FP_NORMAL FP_SUBNORMAL FP_ZERO FP_ILOGB0 FP_ILOGBNAN
-    MATH_ERRNO MATH_ERREXCEPT math_errhandling EOF BUFSIZ errno assert offsetof linux unix i386 DOMAIN SING OVERFLOW UNDERFLOW PLOSS TLOSS
-    M_E M_LOG2E M_LOG10E M_LN2 M_LN10 M_PI M_PI_2 M_PI_4 M_1_PI M_2_PI M_2_SQRTPI M_SQRT2 M_SQRT1_2 MAXFLOAT
-    fpclassify isfinite isinf isnan isnormal signbit isgreater isgreaterequal isless islessequal islessgreater isunordered
-    INT8_MAX INT16_MAX INT32_MAX INT64_MAX INT8_MIN INT16_MIN INT32_MIN INT64_MIN UINT8_MAX UINT16_MAX UINT32_MAX UINT64_MAX
-    INTPTR_MAX INTPTR_MIN UINTPTR_MAX INTMAX_MAX INTMAX_MIN UINTMAX_MAX PTRDIFF_MAX PTRDIFF_MIN SIZE_MAX SIG_ATOMIC_MAX WCHAR_MAX WINT_MAX
-    INT8_C INT16_C INT32_C INT64_C UINT8_C UINT16_C UINT32_C UINT64_C INTMAX_C UINTMAX_C
-    int8_t int16_t int32_t int64_t uint8_t uint16_t uint32_t uint64_t size_t ptrdiff_t
-""".split())
+import re
 
-PYTHON_TAKEN = frozenset({"math", "struct"})
+# Macros and types that the headers of a module, or a compiler in its default mode, define: a local of that name would not compile.
+_C_MACRO = re.compile(
+    r"(DBL|FLT|LDBL|DEC|DECIMAL|FP|M|MATH|INT\d*|UINT\d*|INTMAX|UINTMAX|INTPTR|UINTPTR|PTRDIFF|SIZE|SIG_ATOMIC|WCHAR|WINT)_[A-Z0-9_]+[A-Za-z]?"
+    r"|NAN|INFINITY|SNAN[FL]?|HUGE|HUGE_VAL[FL]?|HUGE_VAL_F\d+X?|NULL|MAXFLOAT|DOMAIN|SING|OVERFLOW|UNDERFLOW|PLOSS|TLOSS|X_TLOSS|EOF|BUFSIZ"
+    r"|math_errhandling|errno|assert|offsetof|linux|unix|i386|is(finite|inf|nan|normal|greater|greaterequal|less|lessequal|lessgreater|unordered)"
+    r"|(BIG|LITTLE|PDP)_ENDIAN|BYTE_ORDER|FD_[A-Z]+|NFDBITS|RAND_MAX|MB_CUR_MAX|EXIT_[A-Z]+|W[A-Z]{5,}|alloca|strn?dupa|issubnormal"
+    r"|[bl]e(16|32|64)toh|hto[bl]e(16|32|64)"
+    r"|fpclassify|signbit|u?int(_fast|_least)?\d+_t|u?int(max|ptr)_t|(size|ptrdiff|wchar|float|double|max_align)_t")
+
+
+def taken_in_c(name):
+    return _C_MACRO.fullmatch(name) is not None
+
+
+def taken_in_python(name):
+    """The modules that emitted kernels use."""
+    return name in ("math", "struct")
 
 
 class Names:
     """The names of one module in one target: `of(name)` for an author's name, `ours(name)` for one of ours."""
 
-    def __init__(self, model, taken):
+    def __init__(self, model, is_taken):
         self.author = {}
         declared = [item.name for group in (model.constants, model.parameters, model.definitions, model.outputs) for item in group]
         declared.append(model.unknown.name)
         for name in declared:
-            self.author[name] = name if name not in taken else _free(name, {*declared, *taken})
+            self.author[name] = _free(name + "_", declared) if is_taken(name) else name
         self.used = frozenset(self.author.values())
 
     def of(self, name):

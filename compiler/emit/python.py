@@ -3,7 +3,7 @@
 import math
 
 from rootwright.emit.layout import ATOM, PRODUCT, lay_out
-from rootwright.emit.names import PYTHON_TAKEN, Names
+from rootwright.emit.names import Names, taken_in_python
 from rootwright.emit.text import statement
 from rootwright.operations import OPERATIONS
 
@@ -14,7 +14,7 @@ class PythonSpelling:
     nan = "math.nan"
 
     def __init__(self, model):
-        self.names = Names(model, PYTHON_TAKEN)
+        self.names = Names(model, taken_in_python)
 
     def number(self, value):
         return repr(value) if math.isfinite(value) else "math.inf" if value > 0.0 else "-math.inf"
@@ -38,7 +38,7 @@ def kernel(closure, name, comment):
     spelling = PythonSpelling(model)
     formals = {formal: spelling.names.ours(formal) for formal in _FORMALS} | {"x": spelling.name(model.unknown.name)}
     arguments = ", ".join(formals[formal] for formal in ("p", *_ARGUMENTS.get(name, ())))
-    laid = lay_out(closure, name, spelling, {*spelling.names.used, *formals.values(), *PYTHON_TAKEN})
+    laid = lay_out(closure, name, spelling, {*spelling.names.used, *formals.values()})
     lines = [f"def _{'partials' if name == 'jacobian' else name}({arguments}):"]
     lines += [f"    # {line}" for line in comment]
     lines += _unpack(model, laid, formals, spelling)

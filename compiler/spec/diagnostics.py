@@ -29,7 +29,8 @@ def render(diagnostic: Diagnostic) -> str:
     label = "" if diagnostic.severity == ERROR else diagnostic.severity + ": "
     shown, offset, length = _shown_line(diagnostic)
     head = f"{harmless(diagnostic.file)}:{diagnostic.line}:{diagnostic.column}: {label}{_cut(diagnostic.message)}"
-    return f"{head}\n  {shown}\n  {' ' * offset}{'^' * length}\n  {_cut(diagnostic.help)}\n"
+    lines = head, f"  {shown}".rstrip(), f"  {' ' * offset}{'^' * length}", f"  {_cut(diagnostic.help)}"
+    return "".join(line + "\n" for line in lines)
 
 
 def harmless(text: str) -> str:

@@ -99,6 +99,7 @@ _TOKEN = re.compile(r"""
   | (?P<name>   [A-Za-z][A-Za-z0-9_]*)
   | (?P<symbol> \*\*|<=|>=|==|[-+*/^<>=(),])
 """, re.VERBOSE)
+_POWER_OF_TEN_IN_FORTRAN = re.compile("[dD]([+-]?[0-9]+)")
 _STUCK_TO_NUMBER = re.compile(r"[A-Za-z0-9_.]+")
 
 # symbol -> (operation, precedence). Signs bind tighter than products and looser than powers; "not" looser than
@@ -335,8 +336,8 @@ class _Parser:
         plain = word.replace("_", "")
         if "_" in word and _TOKEN.fullmatch(plain):
             help = f"digits are not grouped: {clipped(plain)}"
-        elif re.fullmatch("[dD][0-9]+", rest):
-            help = f"powers of ten have an e: {clipped(number)}e{clipped(rest[1:])}"
+        elif power := _POWER_OF_TEN_IN_FORTRAN.match(self.text, number_end):
+            help = f"powers of ten have an e: {clipped(number)}e{clipped(power.group(1))}"
         elif rest in ("e", "E"):
             help = f"the power of ten is missing: {clipped(number)}e0"
         elif not word.startswith(("0x", "0X")) and re.fullmatch("[A-Za-z][A-Za-z0-9_]*", rest):

@@ -87,7 +87,7 @@ def _tolerance(table, expected):
     """The tolerance of each expected result: one number for all of them, or a table."""
     path = table.at("tolerance")
     if isinstance(table.values.get("tolerance"), dict):
-        tolerance = _values(table, "tolerance", expected, "result that is expected")
+        tolerance = _values(table, "tolerance", expected, "expected result")
         missing = [name for name in expected if name not in tolerance]
         if missing:
             table.findings.error(path, "the tolerance leaves out " + clipped(", ".join(missing), 100),

@@ -68,6 +68,7 @@ class _Reader:
         if draft.residual:
             draft = replace(draft, equation=draft.residual.text)
         draft = replace(draft, published=self._published(draft))
+        self.scope.has_gaps = not draft.parameters or draft.unknown is None or draft.unknown.name is None
         for expression, place, path in self.expressions:
             self.scope.check(expression, place, path)
         self.scope.check_order()
@@ -192,7 +193,8 @@ class _Reader:
         for parameter in draft.parameters:
             if parameter.name not in used:
                 self.findings.warning_at_key(("parameters", parameter.name),
-                                             f"nothing uses the parameter {quoted(parameter.name)}", "use it, or take it away")
+                                             f"nothing uses the parameter {quoted(parameter.name)}",
+                                             "use it, or take it away")
 
     # Small steps of the above.
     def _section(self, key, keys, needed=None):

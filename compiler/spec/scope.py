@@ -1,7 +1,7 @@
 """Which names a spec declares, and which of them each expression may use."""
 
 from rootwright.spec.expression import Expression, names_in
-from rootwright.spec.names import FUNCTIONS, PREDEFINED, nearest, quoted, refusal
+from rootwright.spec.names import FUNCTIONS, PREDEFINED, clipped, nearest, quoted, refusal
 from rootwright.spec.source import Path
 from rootwright.spec.tables import Findings
 
@@ -26,44 +26,47 @@ class Scope:
     def __init__(self, findings: Findings):
         self.findings = findings
         self.kinds = {}              # name -> kind
-        self.places = {}             # name -> path of its declaration
+        self.spans = {}              # name -> span of its declaration in the file
         self.order = {}              # name -> position among all declarations
-        self.uses = {}               # constant, definition or output -> names that its expression mentions
+        self.uses = {}               # constant, definition or output -> names that its expression mentions -> where
         self.paths = {}              # constant, definition or output -> path of its expression
+        self.has_gaps = False        # a section that declares names is missing: then unknown names are no news
         self._dependent = None       # names whose value depends on the unknown, once somebody asks
 
     def declare(self, name: str, kind: str, path: Path, at_value: bool = False) -> None:
         """Declares `name`, which is the key at `path` or (`at_value`) the text there."""
-        report = self.findings.error if at_value else self.findings.error_at_key
+        source = self.findings.source
+        span = source.value_span(path) if at_value else source.key_span(path)
         refused = refusal(name)
         if refused:
-            report(path, f"the name {quoted(name)} {refused[0]}", refused[1])
+            self.findings.error_in(span, f"the name {quoted(name)} {refused[0]}", refused[1])
         if name in self.kinds:
-            line = self.findings.source.line_of(self.places[name])
-            report(path, f"the name {quoted(name)} is taken by the {self.kinds[name]} on line {line}",
-                   "give each constant, parameter, definition, unknown and output its own name")
+            (first, earlier), (second, _) = sorted([(self.spans[name], self.kinds[name]), (span, kind)])
+            line = source.line_of(first)
+            self.findings.error_in(second, f"the name {quoted(name)} is taken by the {earlier} on line {line}",
+                                   "give each constant, parameter, definition, unknown and output its own name")
             return
         # A refused name counts as declared: its uses are not further mistakes.
-        self.kinds[name], self.places[name], self.order[name] = kind, path, len(self.order)
+        self.kinds[name], self.spans[name], self.order[name] = kind, span, len(self.order)
 
     def define(self, name: str, expression: Expression | None, path: Path) -> None:
         """Notes what a constant, definition or output stands for, and where its expression is."""
         self.uses[name], self.paths[name] = self.mentioned(expression), path
 
-    def mentioned(self, expression: Expression | None) -> tuple[str, ...]:
-        """The names in the expression, each once, in order of appearance."""
-        return tuple(dict.fromkeys(mention.name for mention in names_in(expression.tree))) if expression else ()
+    def mentioned(self, expression: Expression | None) -> dict[str, tuple[int, int]]:
+        """The names in the expression in order of appearance, each with the span of its first mention."""
+        found = {}
+        for mention in names_in(expression.tree) if expression else ():
+            found.setdefault(mention.name, (mention.start, mention.end))
+        return found
 
     def check(self, expression: Expression | None, place: str, path: Path) -> None:
         """Reports each name that the expression at `path` may not use where it stands, once."""
         allowed, wording = _ALLOWED[place]
-        seen = set(PREDEFINED)
-        for mention in names_in(expression.tree) if expression else ():
-            word, part = mention.name, (mention.start, mention.end)
-            if word in seen:
-                continue
-            seen.add(word)
+        for word, part in self.mentioned(expression).items():
             kind = self.kinds.get(word)
+            if word in PREDEFINED or kind is None and self.has_gaps:
+                continue
             if kind is None:
                 self.findings.error(path, f"the name {quoted(word)} is not declared",
                                     self._likeness(word, allowed), part)
@@ -75,21 +78,21 @@ class Scope:
 
     def check_order(self) -> None:
         """Reports uses of later declarations of the same kind, and circles. Call when every expression was checked."""
+        in_circles = set()
         for name, path in self.paths.items():
-            self._check_order_of(name, path)
-
-    def _check_order_of(self, name, path):
-        for word in self.uses[name]:
-            if self.kinds.get(word) != self.kinds[name] or self.order[word] < self.order[name]:
-                continue
-            chain = self._chain(word, name)
-            if chain:
-                circle = " -> ".join([name, *chain])
-                self.findings.error(path, f"the {self.kinds[name]} {quoted(name)} is defined by itself: {circle}"[:300],
-                                    "one of them must be defined without the others")
-            else:
-                self.findings.error(path, f"{quoted(word)} is used before it is defined",
-                                    f"move {word} above {name}: {self.kinds[name]}s are read in order")
+            for word, part in self.uses[name].items():
+                is_earlier = self.kinds.get(word) != self.kinds[name] or self.order[word] < self.order[name]
+                if is_earlier or word in in_circles:
+                    continue
+                chain = self._chain(word, name)
+                if chain:
+                    in_circles.update(chain)
+                    circle = clipped(" -> ".join([name, *chain]), 200)
+                    self.findings.error(path, f"the {self.kinds[name]} {quoted(name)} is defined by itself: {circle}",
+                                        "one of them must be defined without the others", part)
+                else:
+                    self.findings.error(path, f"{quoted(word)} is used before it is defined",
+                                        f"move {word} above {name}: {self.kinds[name]}s are read in order", part)
 
     def _depends_on_unknown(self, name):
         if self._dependent is None:

@@ -58,8 +58,8 @@ class Source:
         length = max(1, min(end - start, len(line) - column))
         return Diagnostic(self.filename, index + 1, column + 1, length, line, message, help, severity)
 
-    def line_of(self, path: Path) -> int:
-        return bisect.bisect_right(self._starts, self.key_span(path)[0])
+    def line_of(self, span: tuple[int, int]) -> int:
+        return bisect.bisect_right(self._starts, span[0])
 
     def key_span(self, path: Path) -> tuple[int, int]:
         """Span of the key at `path`, or of the nearest table around it that is in the file."""
@@ -137,7 +137,7 @@ def _decode(data):
 def _repetition(source, path, span):
     name = path[-1]
     return source.diagnostic(span, f"'{name[:40]}' is given twice",
-                             f"the first is on line {source.line_of(path)}: keep one")
+                             f"the first is on line {source.line_of(source.key_span(path))}: keep one")
 
 
 class _Refused(Exception):

@@ -37,10 +37,13 @@ class Findings:
 
     def error(self, path: Path, message: str, help: str, part=None) -> None:
         """An error in the value at `path`, or in the characters [start, end) = `part` of that string."""
-        self._add(self.source.value_span(path, part), message, help, ERROR)
+        self.error_in(self.source.value_span(path, part), message, help)
 
     def error_at_key(self, path: Path, message: str, help: str) -> None:
-        self._add(self.source.key_span(path), message, help, ERROR)
+        self.error_in(self.source.key_span(path), message, help)
+
+    def error_in(self, span: tuple[int, int], message: str, help: str) -> None:
+        self._add(span, message, help, ERROR)
 
     def warning(self, path: Path, message: str, help: str, part=None) -> None:
         self._add(self.source.value_span(path, part), message, help, WARNING)

@@ -67,7 +67,6 @@ def _si(text, factor=1.0, **exponents):
 # percent, ppm and bar in common use.
 _PREFIXED = {unit.text: unit for unit in (
     _si("m", m=1), _si("g", 1e-3, kg=1), _si("s", s=1), _si("A", A=1), _si("K", K=1), _si("mol", mol=1),
-    _si("cd", cd=1),
     _si("Hz", s=-1), _si("N", kg=1, m=1, s=-2), _si("Pa", kg=1, m=-1, s=-2), _si("J", kg=1, m=2, s=-2),
     _si("W", kg=1, m=2, s=-3), _si("C", A=1, s=1), _si("V", kg=1, m=2, s=-3, A=-1), _si("F", kg=-1, m=-2, s=4, A=2),
     _si("ohm", kg=1, m=2, s=-3, A=-2), _si("S", kg=-1, m=-2, s=3, A=2), _si("Wb", kg=1, m=2, s=-2, A=-1),
@@ -75,7 +74,7 @@ _PREFIXED = {unit.text: unit for unit in (
 )}
 _PREFIXES = {"G": 1e9, "M": 1e6, "k": 1e3, "d": 1e-1, "c": 1e-2, "m": 1e-3, "u": 1e-6, "n": 1e-9}
 _PLAIN = {unit.text: unit for unit in (
-    _si("rad"), _si("sr"), _si("deg", math.pi / 180), _si("percent", 1e-2), _si("ppm", 1e-6), _si("l", 1e-3, m=3),
+    _si("cd", cd=1), _si("rad"), _si("sr"), _si("deg", math.pi / 180), _si("percent", 1e-2), _si("ppm", 1e-6), _si("l", 1e-3, m=3),
     _si("min", 60.0, s=1), _si("h", 3600.0, s=1), Unit((("K", Fraction(1)),), 0.0, "degC", "degC"),
 )}
 
@@ -91,7 +90,7 @@ _SUPERSCRIPTS = str.maketrans("\u2070\u00b9\u00b2\u00b3\u2074\u2075\u2076\u2077\
 
 _TOKEN = re.compile(r"""
     (?P<space>  [ ]+)
-  | (?P<number> [0-9]+(?:\.[0-9]+)?(?:e[+-]?[0-9]{1,2})?)
+  | (?P<number> [0-9]+(?:\.[0-9]+)?(?:e[+-]?[0-9]{1,2})?(?![0-9.]))
   | (?P<name>   [A-Za-z_\u00b0\u00b5\u03bc\u03a9\u2126\u00c5\u2103][A-Za-z_0-9\u00b5\u03bc\u03a9\u2126\u00c5]*
                 (?:-[0-9]+)? | [%\u2030])
   | (?P<raised> [\u207b\u00b9\u00b2\u00b3\u2070\u2074-\u2079]+)
@@ -171,8 +170,8 @@ class _UnitParser:
             if self._peek()[1] != ")":
                 self._stop("the unit lacks a ')' here")
         elif kind == "number":
-            if not 0.0 < float(word) < math.inf:
-                self._stop("the factor of a unit is above zero")
+            if len(word) > 20 or float(word) == 0.0:
+                self._stop("the factor of a unit is a short number above zero")
             unit = Unit((), math.log(float(word)))
         elif kind == "name":
             unit = self._named(word, start, end)

@@ -197,9 +197,10 @@ class _Search:
         with precision(bits):
             x, y = a, b
             gx, gy = (self.place.residual(v, bits).mid() for v in (x, y))
+            height = min(abs(gx), abs(gy)) / 2
             for _ in range(12):
                 if gy == gx:
-                    break
+                    return None
                 x, y, gx = y, (y - gy * (y - x) / (gy - gx)).mid(), gy
                 if not (y.is_finite() and a <= y <= b):
                     return None
@@ -209,6 +210,8 @@ class _Search:
                 if value.is_zero():
                     return Root(y, flint.arb(0), "exact")
                 gy = value.mid()
+            if not abs(gy) < height:        # a step or a pole
+                return None
             radius = self._radius(y)
         with precision(BITS[-1]):
             below, above = self.sign(y - radius), self.sign(y + radius)
@@ -324,14 +327,14 @@ class _Differences:
         return _settled((up - down) / (2 * h), middle)
 
     def _one_sided(self, result, parameter, middle, near, h):
-        """Second-order one-sided difference; where it changes with the step, the derivative is unbounded."""
+        """Second-order one-sided difference; where it grows as the step shrinks, the derivative is unbounded."""
         far, further = (self._moved(parameter, factor * h) for factor in (2, 4))
         if far is None or further is None:
             return Derivative(None, "undefined")
         fine = (4 * near - 3 * middle - far[result]) / (2 * h)
         coarse = (4 * far[result] - 3 * middle - further[result]) / (4 * h)
         if abs((fine - coarse).mid()) > abs(fine.mid()) * KINK + abs((fine - coarse).rad()) * 2:
-            return Derivative(None, "unbounded")
+            return Derivative(None, "unbounded" if abs(fine) > abs(coarse) else "undefined")
         return _settled(fine, middle)
 
 

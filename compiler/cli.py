@@ -136,7 +136,8 @@ def _verify(arguments):
     from rootwright.evidence.verify import render, to_json, verify
 
     def show(closure):
-        report = verify(closure, points=arguments.points, seed=arguments.seed, progress=_progress())
+        with _progress() as progress:
+            report = verify(closure, points=arguments.points, seed=arguments.seed, progress=progress)
         return to_json(report), "" if arguments.json else render(report), FOUND if report.failed else OK
 
     return _each(arguments, show)
@@ -181,7 +182,7 @@ def _compile(arguments):
         if clash:
             raise Refusal(f"{spec}: {clash} was just written for {written[clash]}; give the specs different names, or compile into different folders")
         folder = Path(arguments.into)
-        folder.mkdir(parents=True, exist_ok=True)
+        _make(folder)
         with contextlib.ExitStack() as stack:
             for name, text in files.items():
                 stack.enter_context(replacing(folder/name)).write(text.encode("utf-8"))
@@ -191,8 +192,15 @@ def _compile(arguments):
     return worst
 
 
+def _make(folder):
+    try:
+        folder.mkdir(parents=True, exist_ok=True)
+    except OSError as error:
+        raise Refusal(f"{folder}: {error.strerror}; name a folder that is there, or can be made, with --into") from None
+
+
 def _eval(arguments):
-    from rootwright.evidence.evaluate import BAD_INPUT, TableError, evaluate
+    from rootwright.evidence.evaluate import TableError, evaluate, is_rootless
 
     closure, _ = _closure(arguments.spec)
     if closure is None:
@@ -201,27 +209,25 @@ def _eval(arguments):
     with contextlib.ExitStack() as stack:
         source = stack.enter_context(_source(arguments.points))
         sink = stack.enter_context(_sink(arguments.out))
+        progress = stack.enter_context(_progress())
         try:
-            counts = evaluate(closure.model, module, source, sink, arguments.order, _rows())
+            counts = evaluate(closure.model, module, source, sink, arguments.order, progress)
         except TableError as error:
             raise Refusal(f"{_shown(arguments.points, 'standard input')}: {error}") from None
     total = sum(counts.values())
     words = ", ".join(f"{count:,} {word}" for word, count in counts.items())
     print(f"{total:,} row{'s'*(total != 1)}" + (f": {words}" if words else ""), file=sys.stderr)
-    rootless = [word for word in counts if word == BAD_INPUT or word in _failures()]
-    return FOUND if rootless else OK
-
-
-def _failures():
-    from rootwright.emit.manual import STATUS
-
-    return {word for code, word, _ in STATUS if code < 0}
+    return FOUND if any(is_rootless(word) for word in counts) else OK
 
 
 def _demo(arguments):
     from rootwright.demo import story
 
-    return story.run(sys.stdout, _progress())
+    page = io.StringIO()
+    with _progress() as progress:
+        status = story.run(page, progress)
+    print(page.getvalue(), end="")
+    return status
 
 
 # -- specs, files, streams
@@ -299,20 +305,21 @@ def _sink(path):
                 text.detach()
 
 
+@contextlib.contextmanager
 def _progress():
-    """A function that shows a line of progress on a terminal, and None where nobody watches."""
+    """A function that shows a line of progress on a terminal, wiped away at the end; None where nobody watches."""
     if sys.stderr is None or not sys.stderr.isatty():
-        return None
+        yield None
+        return
 
     def show(text):
         sys.stderr.write(f"\r\x1b[K{text}")
         sys.stderr.flush()
-    return show
 
-
-def _rows():
-    show = _progress()
-    return None if show is None else lambda done: show(f"{done:,} rows")
+    try:
+        yield show
+    finally:
+        show("")
 
 
 def _tame(stream):

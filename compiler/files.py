@@ -19,7 +19,10 @@ def replacing(path):
             yield stream
         return
     temporary = os.path.join(os.path.dirname(path), f".rootwright-{secrets.token_hex(8)}")
-    stream = open(temporary, "xb")
+    try:
+        stream = open(temporary, "xb")
+    except OSError as error:
+        raise OSError(error.errno, error.strerror, path) from None
     try:
         with stream:
             yield stream

@@ -1,11 +1,10 @@
-"""A compiled closure as an object: the functions of the emitted module, whichever target is behind them."""
+"""A compiled closure as an object: the functions of the emitted module, whichever target is behind them.
+
+numpy and cffi are imported where they are used: who only runs the Python target does not wait for them.
+"""
 
 import math
 import types
-
-import numpy as np
-
-from rootwright.binding.build import build
 
 FIELDS = ("error_bound", "iterations", "status")
 
@@ -16,6 +15,8 @@ class CModule:
     target = "c"
 
     def __init__(self, name, files, parameters, results):
+        from rootwright.binding.build import build
+
         self.N, self.M = len(parameters), len(results)
         self.parameters, self.results = tuple(parameters), tuple(results)
         self._name = name
@@ -72,6 +73,8 @@ class CModule:
     def solve_batch(self, points, derivatives):
         """Solve many points. points: array (n, N). Returns a dict of arrays: y (n, M), error_bound, iterations, status (n,), and
         jac (n, M, N) where derivatives are wanted."""
+        import numpy as np
+
         points = np.ascontiguousarray(points, dtype=float).reshape(-1, self.N)
         count = len(points)
         dtype = np.dtype([("y", float, (self.M,)), ("residual", float), ("slope", float), ("error_bound", float), ("lower", float),
@@ -98,6 +101,8 @@ class PythonModule:
 
     def solve_batch(self, points, derivatives):
         """As for C, point by point."""
+        import numpy as np
+
         solved = [self.solve_jacobian(p) if derivatives else (self.solve(p), None) for p in points]
         out = {field: np.array([getattr(r, field) for r, _ in solved]) for field in FIELDS}
         out["y"] = np.array([r.y for r, _ in solved]).reshape(-1, self.M)

@@ -2,6 +2,7 @@
 
 import csv
 import io
+import re
 from collections import Counter
 from itertools import islice
 
@@ -24,6 +25,11 @@ def word(status):
     return "+".join(name for code, name, _ in STATUS if code > 0 and status & code)
 
 
+def is_rootless(status_word):
+    """True for the status word of a row without a root."""
+    return status_word == BAD_INPUT or any(name == status_word and code < 0 for code, name, _ in STATUS)
+
+
 def columns(model, order):
     """Names of the columns that `evaluate` adds."""
     derivatives = [f"d{result}/d{parameter.name}" for result in model.results for parameter in model.parameters
@@ -35,7 +41,7 @@ def evaluate(model, module, source, sink, order=1, progress=None):
     """Solve at every row of a CSV and write it with the results added; returns {status word: rows}, in the order of the status table.
 
     source: binary stream of UTF-8 text with one column for each parameter, named in its first line. sink: text stream that does
-    not translate line ends. module: a CModule or PythonModule. progress: called with the number of rows done so far.
+    not translate line ends. module: a CModule or PythonModule. progress: called with a line of text now and then.
     Memory does not grow with the number of rows. Raises TableError where the table as a whole cannot be read.
     """
     text = io.TextIOWrapper(source, encoding="utf-8-sig", newline="")
@@ -64,20 +70,19 @@ class _Evaluation:
         self.added = columns(model, order)
         self.header = self._header()
         self.places = self._places()
-        self.writer = csv.writer(sink, lineterminator="\r\n" if lines.last.endswith("\r\n") else "\n")
-        self.flush = sink.flush
+        self.sink = sink
+        self.end = "\r\n" if lines.last.endswith("\r\n") else "\n"
         self.differentiated = [k for k, parameter in enumerate(model.parameters) if parameter.differentiate]
         self.words = {}
 
     def run(self, progress):
         counts, done = Counter(), 0
-        self.writer.writerow(self.header + self.added)
+        self._write([",".join([*map(_cell, self.header), *self.added])])
         while rows := list(self._rows(CHUNK)):
-            self.writer.writerows(self._solved(rows, counts))
-            self.flush()
+            self._write(self._solved(rows, counts))
             done += len(rows)
             if progress is not None:
-                progress(done)
+                progress(f"{done:,} rows")
         codes = sorted(self.words, key=lambda code: (code < 0, abs(code)))
         return {name: counts[name] for name in [*map(self._word, codes), BAD_INPUT] if counts[name]}
 
@@ -129,7 +134,7 @@ class _Evaluation:
     # -- solving
 
     def _solved(self, rows, counts):
-        """The rows with their results. A row that is no point is solved as NaN, and says `bad_input`."""
+        """Lines of the output for the rows. A row that is no point is solved as NaN, and says `bad_input`."""
         bad = set()
         for k, row in enumerate(rows):
             if len(row) != len(self.header):
@@ -144,14 +149,21 @@ class _Evaluation:
         derivatives = [()]*len(rows)
         if self.order:
             derivatives = out["jac"][:, :, self.differentiated].reshape(len(rows), -1).tolist()
-        empty = [""]*len(self.added)
+        plain = not _SPECIAL.search("\t".join(map("\t".join, rows)))
+        before, after = ","*len(self.model.results), ","*(len(self.added) - len(self.model.results) - 1)
         for row, code, name, y, iterations, bound, slopes in zip(
                 rows, out["status"].tolist(), status, out["y"].tolist(), out["iterations"].tolist(), out["error_bound"].tolist(), derivatives):
+            cells = ",".join(row if plain else map(_cell, row))
             if code < 0:
-                empty[len(y)] = name
-                yield row + empty
+                yield f"{cells}{before},{name}{after}"
             else:
-                yield [*row, *y, name, iterations, bound, *slopes]
+                numbers = ",".join(map(repr, y)), name, str(iterations), repr(bound), *map(repr, slopes)
+                yield f"{cells},{','.join(numbers)}"
+
+    def _write(self, lines):
+        """Write and pass on, so that who reads from a pipe sees every chunk when it is done."""
+        self.sink.write(self.end.join(lines) + self.end)
+        self.sink.flush()
 
     def _word(self, code):
         if code not in self.words:
@@ -179,6 +191,14 @@ class _Evaluation:
         for k in bad:
             points[k] = (float("nan"),)*len(self.places)
         return points
+
+
+_SPECIAL = re.compile('[",\r\n]')
+
+
+def _cell(text):
+    """A cell as CSV writes it: in quotation marks where it needs them."""
+    return '"' + text.replace('"', '""') + '"' if _SPECIAL.search(text) else text
 
 
 def _plain(text):

@@ -14,6 +14,8 @@ from rootwright.spec.diagnostics import harmless
 WIDTH = 100
 POINTS = 5
 
+_STAY = "\0"                     # a space at which no line ends
+_CELL = 36                       # widest cell of a table but for the last column
 _TRIES = 500                     # points looked at for some that meet every requirement
 _ROOT = {"only": "the only root in the bracket", "lowest": "the lowest root in the bracket", "highest": "the highest root in the bracket"}
 _DIMENSIONS = {"checked": "checked: the equation and all definitions agree in dimension",
@@ -107,28 +109,37 @@ def render(facts):
 
 
 def _plain(text):
-    return harmless(" ".join(text.split()))
+    return _STAY.join(harmless(" ".join(part.split())) for part in text.split(_STAY))
 
 
 def _wrapped(text, indent, hang=None):
-    return textwrap.wrap(_plain(text), WIDTH, initial_indent=indent, subsequent_indent=indent if hang is None else hang,
-                         break_on_hyphens=False) or [indent]
+    lines = textwrap.wrap(_plain(text), WIDTH, initial_indent=indent, subsequent_indent=indent if hang is None else hang,
+                          break_on_hyphens=False)
+    return [line.replace(_STAY, " ") for line in lines] or [indent]
 
 
 def _labelled(label, text):
     return _wrapped(text, f"{label:11} ", " "*12)
 
 
-def _formula(name, text):
-    return _wrapped(f"{name} = {text}", "    ", " "*8)
+def _formula(text):
+    """A formula or equation, continued before an operator outside of parentheses where that is possible."""
+    depth, pieces = 0, []
+    for word in _plain(text).split(" "):
+        pieces.append(word + (_STAY if depth + word.count("(") > word.count(")") or word in ("+", "-", "=") else " "))
+        depth += word.count("(") - word.count(")")
+    text = "".join(pieces).rstrip().replace(f" ={_STAY}", f"{_STAY}={_STAY}")
+    if max(map(len, text.split(" "))) > WIDTH - 8:
+        text = text.replace(_STAY, " ")
+    return _wrapped(text, "    ", " "*8)
 
 
 def _equation(facts):
-    lines = ["Equation", ""] + _wrapped(facts["equation"] + ("" if "=" in facts["equation"] else " = 0"), "    ", " "*8)
+    lines = ["Equation", ""] + _formula(facts["equation"] + ("" if "=" in facts["equation"] else " = 0"))
     if facts["definitions"]:
         lines += ["", "  with", ""]
         for item in facts["definitions"]:
-            lines += _formula(item["name"], item["expression"])
+            lines += _formula(f"{item['name']} = {item['expression']}")
     return lines + [""]
 
 
@@ -152,39 +163,44 @@ def _quantities(facts):
 
 
 def _table(title, head, rows):
-    """A table whose last column is wrapped, and whose wide cells push it to the next line; nothing without rows."""
+    """A table without its empty columns, the last one wrapped; a row with a cell that is too wide runs over two lines. Nothing
+    without rows."""
     if not rows:
         return []
-    rows = [tuple(_plain(cell or "") for cell in row) for row in rows]
-    limits = [min(36, max(len(cell) for cell in column)) for column in zip(head, *rows)][:-1]
-    lines = [title, "", "    " + "  ".join(f"{cell:{width}}" for cell, width in zip(head, limits)) + "  " + head[-1]]
-    room = 4 + sum(limits) + 2*len(limits)
-    for row in rows:
-        cells = "    " + "  ".join(f"{cell:{width}}" for cell, width in zip(row, limits))
-        if any(len(cell) > width for cell, width in zip(row, limits)):
-            lines += _wrapped("  ".join(cell for cell in row[:-1] if cell), "    ", " "*8)
-            lines += _wrapped(row[-1], " "*room) if row[-1] else []
+    columns = [(name, [_plain(cell or "") for cell in column]) for name, column in zip(head, zip(*rows))]
+    head, columns = zip(*[(name, column) for name, column in columns if any(column)])
+    widths = [min(_CELL, max(map(len, (name, *column)))) for name, column in zip(head, columns)]
+    widths[-1] = max(_CELL, WIDTH - 4 - sum(widths[:-1]) - 2*(len(widths) - 1))
+    lines = [title, "", _row(head, widths)]
+    for row in zip(*columns):
+        if all(len(cell) <= width for cell, width in zip(row[:-1], widths)):
+            first, *more = textwrap.wrap(row[-1], widths[-1]) or [""]
+            lines += [_row((*row[:-1], first), widths), *(_row(("",)*len(row[:-1]) + (text,), widths) for text in more)]
         else:
-            about = textwrap.wrap(row[-1], max(30, WIDTH - room)) or [""]
-            lines += [cells + "  " + about[0]] + [" "*room + more for more in about[1:]]
+            lines += _wrapped("  ".join(filter(None, row)), "    ", " "*8)
     return lines + [""]
 
 
+def _row(cells, widths):
+    return "    " + "  ".join(f"{cell:{width}}" for cell, width in zip(cells, widths))
+
+
 def _derivatives(facts):
-    unknown, parameters = facts["unknown"]["name"], [item["name"] for item in facts["parameters"] if item["differentiate"]]
+    x, parameters = facts["unknown"]["name"], [item["name"] for item in facts["parameters"] if item["differentiate"]]
     (g, of_residual), *of_outputs = facts["derivatives"].items()
+    names = {x, *(item["name"] for group in ("parameters", "constants", "definitions", "outputs") for item in facts[group])}
+    theta = next(name for name in ("P", "theta", "parameter", "any_parameter") if name not in names)
+    meaning = "the equation's left side minus its right side" if "=" in facts["equation"] else "the expression that is to be zero"
     lines = ["Derivatives", ""]
-    lines += _wrapped(f"d{unknown}/dP = -{g}_P/{g}_{unknown} for every parameter P, by the implicit function theorem; {g} is the "
-                      "equation's left side minus its right side." if "=" in facts["equation"] else
-                      f"d{unknown}/dP = -{g}_P/{g}_{unknown} for every parameter P, by the implicit function theorem; {g} is the "
-                      "expression that is to be zero.", "  ")
-    lines += [""] + [line for name, text in of_residual.items() for line in _formula(name, text)] + [""]
+    lines += _wrapped(f"d{x}/d{theta} = -{g}_{theta}/{g}_{x} for every parameter {theta}, by the implicit function theorem; {g} is "
+                      f"{meaning}", "  ")
+    lines += [""] + [line for name, text in of_residual.items() for line in _formula(f"{name} = {text}")] + [""]
     for output, formulas in of_outputs:
-        along = _along(formulas, output, unknown)
-        direct = [name for name in parameters if _along(formulas, output, name)]
-        rule = " + ".join([f"{output}_P"]*bool(direct) + [f"{along}*d{unknown}/dP"]*bool(along)) or "0"
-        lines += _wrapped(f"d{output}/dP = {rule}", "  ")
-        lines += [""] + [line for name, text in formulas.items() for line in _formula(name, text)] + [""]
+        along = _along(formulas, output, x)
+        direct = any(_along(formulas, output, name) for name in parameters)
+        rule = " + ".join([f"{output}_{theta}"]*direct + [f"{along}*d{x}/d{theta}"]*bool(along)) or "0"
+        lines += _wrapped(f"d{output}/d{theta} = {rule}", "  ") + [""]
+        lines += [line for name, text in formulas.items() for line in _formula(f"{name} = {text}")] + [""]
     return lines
 
 
@@ -214,7 +230,8 @@ def _published(facts):
         return []
     lines = ["Published values (as quoted; `rootwright verify` runs them)", ""]
     for item in facts["published"]:
-        given = ", ".join(f"{name} = {text}" for name, text in item["given"].items())
-        expect = ", ".join(f"{name} = {text} +- {item['tolerance'][name]}" for name, text in item["expect"].items())
+        given = ", ".join(f"{name}{_STAY}={_STAY}{text}" for name, text in item["given"].items())
+        expect = ", ".join(f"{name}{_STAY}={_STAY}{text}{_STAY}+-{_STAY}{item['tolerance'][name]}"
+                           for name, text in item["expect"].items())
         lines += _wrapped(f"{given}:  {expect}", "    ", " "*8) + _wrapped(item["source"], " "*8)
     return lines + [""]

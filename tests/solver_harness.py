@@ -392,7 +392,7 @@ _OPERATIONS = {
 
 def _constant(text):
     v = float(text)
-    return Jet(v, e=0.0 if math.isfinite(v) and Fraction(text) == Fraction(v) else _U * abs(v))
+    return Jet(v, e=0.0 if math.isfinite(v) and Fraction(text) == Fraction(v) else _U * abs(v) + _TINY)
 
 
 def evaluate(tree, values, operations=_OPERATIONS, number=_constant):

@@ -5,7 +5,8 @@ import math
 
 import mpmath as mp
 import pytest
-from problem_specs import alefeld_potra_shi, spec
+from nasty_specs import nasty
+from problem_specs import alefeld_potra_shi, scipy_collection, spec
 from rootwright import pipeline
 from rootwright.binding.module import load
 from rootwright.calculus.balls import ball
@@ -125,6 +126,11 @@ def test_the_reference_finds_the_154_roots_from_the_brackets_alone():
                 assert abs(_digits(root.mid) - true) <= abs(true)*mp.mpf(10)**-48, point.given
 
 
+def test_a_residual_that_is_undefined_everywhere_has_no_root():
+    with pytest.raises(NotSettled, match="undefined"):
+        _reference("x + sqrt(-a)", ("-9", "4"), {"a": (1, 2)}).root({"a": 1.0})
+
+
 @pytest.mark.parametrize("equation, root, size", [
     ("x*x - 3", 3**0.5, math.ulp(3.0)/(2*3**0.5)),      # one product; the difference is zero at the root
     ("x - 0.1", 0.1, math.ulp(0.1)),                    # a rounded constant
@@ -147,6 +153,15 @@ def test_a_shipped_spec_holds_its_limits_at_sampled_points(name):
     assert not report.failed, render(report)
     assert report.corners + report.random == POINTS
     assert all(set(words) <= {"solved", "kink", "outside_range"} for words in report.statuses.values()), report.statuses
+
+
+@pytest.mark.parametrize("problem", (*alefeld_potra_shi(), *scipy_collection(), *nasty()), ids=lambda problem: problem.id)
+def test_a_problem_holds_the_limits_wherever_it_has_a_root(problem):
+    closure, built = _pair(problem.text)
+    points = [{name: float(text) for name, text in point.given.items()} for point in problem.points]
+    report = hold(closure, built, points)
+    missed = [finding for finding in report.findings if finding.key != "solved" or "finds none either" not in finding.what]
+    assert not missed, render(report)
 
 
 def test_c_and_python_hold_their_limits_and_agree():

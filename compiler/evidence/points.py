@@ -36,13 +36,18 @@ def exact(trees, expression):
     return Place(trees, {}).value(trees.add(expression), None, 256)
 
 
+def in_range(closure, point):
+    """Whether a point lies in the operating range, as the module judges it."""
+    return not interpret(closure.program, Doubles(), point, ["outside"])["outside"]
+
+
 def _inside(closure, candidates, count):
     """The first `count` candidates that meet every requirement."""
     found = 0
     for point in candidates:
         if found == count:
             return
-        if not interpret(closure.program, Doubles(), point, ["outside"])["outside"]:
+        if in_range(closure, point):
             found += 1
             yield point
 

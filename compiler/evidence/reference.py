@@ -34,10 +34,9 @@ class Root:
     kind: str
 
     def distance(self, x):
-        """(smallest, largest) distance of a double from the root, as floats rounded outwards by no more than an ulp or so."""
+        """Distance of a double from the root, as a float; 0 within the radius, some 1e-60 of the root, where it may be the root."""
         with precision(320):
-            gap = abs(self.mid - ball(x))
-            return max(float((gap - self.radius).mid()), 0.0), float((gap + self.radius).mid())
+            return max(float((abs(self.mid - ball(x)) - self.radius).mid()), 0.0)
 
 
 @dataclass(frozen=True)
@@ -103,6 +102,8 @@ class _Search:
             for end, at_end in ((a, sign_a), (b, sign_b)):
                 if not at_end and self._chosen(end, a, b):
                     return self._at_end(end, at_end)
+            if self.near is not None and a <= self.near <= b and self.place.residual(self.near, BITS[0]).is_zero():
+                return Root(self.near, flint.arb(0), "exact")
             if sign_a and sign_b and sign_a != sign_b:
                 return self._narrow(a, b, sign_a, *self._nearby(a, b, sign_a))
             return self._beyond()
@@ -118,7 +119,7 @@ class _Search:
             found = self.sign(x)
             if found is not None:
                 return x, found
-        return end, None if not is_open else 1
+        raise NotSettled("the residual is undefined at an end of the bracket and next to it")
 
     def _chosen(self, end, a, b):
         """Whether a zero at an end is the root meant: it is, unless the number to be checked lies elsewhere."""
@@ -312,10 +313,10 @@ class _Differences:
         return column
 
     def _width(self, parameter):
-        """Width of a parameter's range, to scale the shift of a parameter that is zero."""
+        """What scales the shift of a parameter that is zero: the width of its range, or 1 if that is less."""
         low, high = (Place(self.trees, {}).value(self.trees.add(end), None, 64) for end in (parameter.low, parameter.high))
         width = (high - low).mid()
-        return width if width > 0 else flint.arb(1)
+        return width if 0 < width < 1 else flint.arb(1)
 
     @staticmethod
     def _central(up, middle, down, h):

@@ -17,7 +17,7 @@ from rootwright.emit.manual import STATUS
 from rootwright.evidence.evaluate import word
 from rootwright.evidence.limits import DERIVATIVE_GUARD, LIMITS, ROOT_NOISE, ROOT_ULPS
 from rootwright.evidence.noise import noise, sensitivity
-from rootwright.evidence.points import choose, exact, published
+from rootwright.evidence.points import choose, exact, in_range, published
 from rootwright.evidence.reference import FINE, NotSettled, Reference
 from rootwright.evidence.report import Finding, Measure, Report, Value, render, to_json
 
@@ -48,15 +48,15 @@ def modules(closure):
 
 
 def hold(closure, built, points=200, seed=1, progress=None, notes=()):
-    """Report on modules {target: module}, built elsewhere; see `verify`."""
-    corners, inside = choose(closure, points, seed)
+    """Report on modules {target: module}, built elsewhere; see `verify`. `points` may also be the points themselves, {parameter: double}."""
     holding = _Holding(closure, built, seed)
+    corners, inside = choose(closure, points, seed) if isinstance(points, int) else ([], list(points))
     wanted = published(holding.reference.trees)
     every = [*corners, *inside, *wanted]
     for k, point in enumerate(every):
         if progress is not None:
             progress(f"{closure.model.name}: {k} of {len(every)} points")
-        holding.try_point(point, k < len(corners) + len(inside))
+        holding.try_point(point)
     values = holding.published(wanted)
     if progress is not None:
         progress("")
@@ -109,13 +109,13 @@ class _Holding:
 
     # -- one point
 
-    def try_point(self, point, in_range):
+    def try_point(self, point):
         solved = {target: module.solve_jacobian(list(point.values())) for target, module in self.built.items()}
         for target, (r, _) in solved.items():
             self.statuses[target][word(r.status)] += 1
         roots = {target: r for target, (r, _) in solved.items() if r.status >= 0}
         self._same_status(solved, point)
-        self._all_solved(solved, point, in_range)
+        self._all_solved(solved, point)
         if not roots:
             return
         place = self.reference.place(point)
@@ -141,9 +141,9 @@ class _Holding:
         if len(set(words.values())) > 1:
             self.found("targets", "c", "C says {c}, Python says {python}".format(**words), point)
 
-    def _all_solved(self, solved, point, in_range):
+    def _all_solved(self, solved, point):
         for target, (r, _) in solved.items():
-            if r.status < 0 and in_range:
+            if r.status < 0 and in_range(self.closure, point):
                 try:
                     truth = f"a root is at {float(self.reference.root(point).mid)!r}"
                 except NotSettled as error:
@@ -166,17 +166,17 @@ class _Holding:
 
     def _root_error(self, root, r, allowed, target, point):
         name, size = self.model.unknown.name, float(root.mid)
-        least, most = root.distance(r.y[0])
+        error = root.distance(r.y[0])
         what = f"{r.y[0]!r}, exact {size!r}, error_bound {r.error_bound:.3g}"
         if math.isfinite(allowed):
-            self.measured("root", most / allowed, target, name, point, what)
+            self.measured("root", error / allowed, target, name, point, what)
         else:
             self.skipped["roots without a slope, whose noise has no bound"] += 1
-        ratio = most / r.error_bound if r.error_bound > 0.0 else 0.0 if least <= 0.0 else math.inf
+        ratio = error / r.error_bound if r.error_bound > 0.0 else 0.0 if error <= 0.0 else math.inf
         self.measured("bound", ratio, target, name, point, what)
         if size:
-            self.ulps = max(self.ulps, most / math.ulp(size))
-        self.overestimates.append(r.error_bound / max(most + math.ulp(size) / 2.0, math.ulp(0.0)))
+            self.ulps = max(self.ulps, error / math.ulp(size))
+        self.overestimates.append(r.error_bound / max(error + math.ulp(size) / 2.0, math.ulp(0.0)))
 
     def _outputs(self, place, r, target, point):
         for index, (name, step) in enumerate(self.reference.trees.outputs.items(), 1):

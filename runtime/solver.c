@@ -162,7 +162,8 @@ static double rw_aim(rw_sample best, rw_sample previous, rw_sample other, double
    Returns 0 or a status.
    The number of doubles between low and high at least halves over every three evaluations: two points from models of
    the residual, or one of them the arithmetic middle, then the middle double. There are less than 2^64 doubles, so
-   the ends become adjacent within 3*64 evaluations, but for those at which the residual is not a number. */
+   the ends become adjacent within 3*64 evaluations, but for those at which the residual is not a number. A last step
+   of Newton's may follow, for its accuracy. */
 static int rw_narrow(const double p[], rw_sample *low, rw_sample *high, rw_sample *best, double start, rw_point *r)
 {
     const double rising = high->g > 0.0 ? 1.0 : -1.0;
@@ -174,8 +175,8 @@ static int rw_narrow(const double p[], rw_sample *low, rw_sample *high, rw_sampl
     int holes = 0;  /* evaluations in a row that were not a number */
     int slow = 0;   /* the last model was poor: beside a simple pole Newton's step leaves half of the residual */
     int closing = 0;
-    int fast, improved;
-    double x, step, share, bound, slope_rounding, curvature;
+    int fast, improved, zero;
+    double x, step, bend, share, bound, slope_rounding, curvature;
 
     *best = fabs(low->g) < fabs(high->g) ? *low : *high;
     previous = fabs(low->g) < fabs(high->g) ? *high : *low;
@@ -196,14 +197,16 @@ static int rw_narrow(const double p[], rw_sample *low, rw_sample *high, rw_sampl
         x = best->x;
         if (rw_usable(*best, rising)) {
             step = -best->g / best->slope;
-            if (fabs(step) <= 0x1p-50 * fabs(best->x)) {
+            if (fabs(step) <= 0x1p-26 * fabs(best->x)) {
+                /* Newton's step leaves the error bend/2 * step. It is the last one if that is below half an ulp, or if
+                   the rest is rounding. Beside a pole at an open end, where the step is as small, bend is 1 or more. */
                 bound = rw_rounding(p, best->x, &slope_rounding, &curvature);
-                /* On a straight part of the curve the step ends the search; beside a pole at an open end, where the
-                   step is as small, |curvature * step / slope| is 1 or more. */
-                if (fabs(curvature * step) <= 0.25 * fabs(best->slope)) {
-                    closing = 1;
+                bend = fabs(curvature * step / best->slope);
+                zero = rw_is_zero(best->g, bound, largest);
+                closing = bend <= 0.25 && (zero || bend * fabs(step) <= 0x1p-53 * fabs(best->x));
+                if (closing) {
                     x = best->x + step;
-                    if (rw_is_zero(best->g, bound, largest) || !rw_between(x, low->x, high->x)) {
+                    if ((zero && fabs(step) <= 0x1p-50 * fabs(best->x)) || !rw_between(x, low->x, high->x)) {
                         return 0;
                     }
                 }

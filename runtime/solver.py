@@ -132,7 +132,8 @@ def _narrow(p, low, high, start, r):
 
     The number of doubles between low and high at least halves over every three evaluations: two points from models of
     the residual, or one of them the arithmetic middle, then the middle double. There are less than 2^64 doubles, so
-    the ends become adjacent within 3*64 evaluations, but for those at which the residual is not a number.
+    the ends become adjacent within 3*64 evaluations, but for those at which the residual is not a number. A last step
+    of Newton's may follow, for its accuracy.
     """
     rising = 1.0 if high.g > 0.0 else -1.0
     largest = max(abs(low.g), abs(high.g))
@@ -159,14 +160,16 @@ def _narrow(p, low, high, start, r):
         x = best.x
         if _usable(best, rising):
             step = -best.g / best.slope
-            if abs(step) <= 2.0**-50 * abs(best.x):
+            if abs(step) <= 2.0**-26 * abs(best.x):
+                # Newton's step leaves the error bend/2 * step. It is the last one if that is below half an ulp, or if
+                # the rest is rounding. Beside a pole at an open end, where the step is as small, bend is 1 or more.
                 bound, _, curvature = _rounding(p, best.x)
-                # On a straight part of the curve the step ends the search; beside a pole at an open end, where the
-                # step is as small, |curvature * step / slope| is 1 or more.
-                if abs(curvature * step) <= 0.25 * abs(best.slope):
-                    closing = True
+                bend = abs(curvature * step / best.slope)
+                zero = _is_zero(best.g, bound, largest)
+                closing = bend <= 0.25 and (zero or bend * abs(step) <= 2.0**-53 * abs(best.x))
+                if closing:
                     x = best.x + step
-                    if _is_zero(best.g, bound, largest) or not _between(x, low.x, high.x):
+                    if (zero and abs(step) <= 2.0**-50 * abs(best.x)) or not _between(x, low.x, high.x):
                         return low, high, best, 0
         if r.evaluations >= LIMIT:
             return low, high, best, 0 if closing else ITERATION_LIMIT

@@ -45,7 +45,16 @@ def main(argv=None):
         place = f"{error.filename}: " if error.filename else "output: "
         return _complain(f"{place}{error.strerror or error}; is the disk full, or the place not writable?", WRONG)
     except Exception as error:
-        return _complain(f"a defect of rootwright, not of the spec: {type(error).__name__}: {error}; please report it with the spec", WRONG)
+        return _complain(_explained(error), WRONG)
+
+
+def _explained(error):
+    from rootwright.binding.build import BuildFailed
+
+    first, *_ = [*str(error).splitlines(), "no message"]
+    if isinstance(error, BuildFailed):
+        return f"the C compiler refused the module ({first}); set CC to another compiler, or use the Python target"
+    return f"a defect of rootwright, not of the spec: {type(error).__name__}: {first}; please report it with the spec"
 
 
 def _parser():
@@ -258,7 +267,7 @@ def _as_data(diagnostic):
 
 def _load(closure, target):
     from rootwright import pipeline
-    from rootwright.binding.build import BuildFailed, NoCompiler
+    from rootwright.binding.build import NoCompiler
     from rootwright.binding.module import load
 
     if target == "c":
@@ -266,9 +275,6 @@ def _load(closure, target):
             return load(closure, pipeline.emit(closure, "c"), "c")
         except NoCompiler as error:
             print(f"{error}; going on with the Python target, which is slower", file=sys.stderr)
-        except BuildFailed as error:
-            raise Refusal(f"the C compiler refused the module ({str(error).splitlines()[0] if str(error) else 'no message'}); "
-                          "set CC to another compiler, or use --target python") from None
     return load(closure, pipeline.emit(closure, "python"), "python")
 
 

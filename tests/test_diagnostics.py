@@ -98,6 +98,12 @@ def test_the_caret_finds_the_right_entry_of_an_array_of_tables():
     assert [each.line for each in found] == [GOOD.count("\n") + 10, GOOD.count("\n") + 16]
 
 
+def test_the_caret_finds_a_table_inside_an_array_of_tables():
+    entry = '\n[[published]]\nexpect.x = 1\ntolerance = 1\nsource = "invented"\n[published.given]\na = %s\n'
+    found = diagnostics(GOOD + entry % "1" + entry % '"@"')
+    assert [each.line for each in found] == [GOOD.count("\n") + 14]
+
+
 def test_windows_line_ends_and_a_byte_order_mark_are_fine():
     data = b"\xef\xbb\xbf" + GOOD.replace("\n", "\r\n").encode()
     assert read(data, "spec.toml")[0] is not None
@@ -116,7 +122,7 @@ def test_a_diagnostic_reads_place_line_caret_help():
 
 @pytest.mark.parametrize("character", [
     "\x1b", "\x07", "\r", "\x7f", "\x9b", "\u200b", "\u202e", "\u2066", "\ufeff", "\u2028",
-                                       "\u0301", "\U000e0041"])
+    "\u0301", "\U000e0041"])
 def test_characters_that_do_not_print_are_escaped_everywhere(character):
     text = rendered(f"a{character}b@", 4, message=f"m{character}", file=f"f{character}")
     assert character not in text

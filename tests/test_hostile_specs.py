@@ -185,7 +185,8 @@ HUGE = {
     "backslashes": ('a = "' + "\\" * (MEGABYTE - 10), "TOML"),
     "quotes in a string": ('a = """' + '""x' * 300_000 + '"""', "not known"),
     "the same key": ("a = 1\n" * 9_000, "given twice"),
-    "units": (GOOD.replace("rel = {", many(1_500, 'p{0} = {{ range = [0, 1], unit = "m^{0}/s" }}\n') + "rel = {"), "exponent"),
+    "units": (GOOD.replace("rel = {", many(1_500, 'p{0} = {{ range = [0, 1], unit = "m^{0}/s" }}\n') + "rel = {"),
+              "exponent"),
     "an oversized file": ("x" * (MEGABYTE + 1), "larger than"),
 }
 

@@ -130,7 +130,7 @@ def test_spellings_of_no_unit_are_dimensionless(text):
 
 @pytest.mark.parametrize("text, scale", [
     ("%", 0.01), ("percent", 0.01), ("\u2030", 0.001), ("ppm", 1e-6), ("deg", math.pi / 180),
-                                         ("\u00b0", math.pi / 180), ("kJ/J", 1000.0)])
+    ("\u00b0", math.pi / 180), ("kJ/J", 1000.0)])
 def test_percent_and_degrees_are_scales_of_their_own(text, scale):
     unit = parse_unit(text)
     assert unit.dimensions == () and math.isclose(math.exp(unit.scale), scale) and not unit.agrees(ONE)
@@ -247,7 +247,7 @@ def test_powers_need_known_exponents_or_dimensionless_bases(part):
 
 @pytest.mark.parametrize("part", [
     "2*t", "t/T", "-t", "t^2", "exp(t)", "t + u", "abs(t)", "sqrt(t)", "T - t", "sign(t)", "t*t", "1/t",
-                                  "t + 273.15", "611*exp(17.6*t/(t + 243))"])
+    "t + 273.15", "611*exp(17.6*t/(t + 243))"])
 def test_a_point_on_a_temperature_scale_is_no_number(part):
     assert errors(part) != []
     assert spec(part, dimensions='dimensions = "label"')[1] == []
@@ -295,6 +295,12 @@ def test_requirements_and_published_values_are_checked():
     for wrong in [("p < q", 1, "1.0", "1e-3"), ("p < p", '"R"', "1.0", "1e-3"), ("p < p", 1, '"R"', "1e-3"),
     ("p < p", 1, "1.0", '"R"')]:
         assert len(errors(published=published.format(*wrong))) == 1
+
+
+def test_a_tolerance_of_a_temperature_is_a_difference():
+    published = ("[[published]]\ngiven = { p=1,q=1,V=1,w=1,T=1,t=20,u=20,f=50,E=1,share=1,angle=1,tilt=1,d=1,k=1,v=1,n=1 }\n"
+                 'expect = { x = "25" }\ntolerance = "T0/1000"\nsource = "invented"\n')
+    assert errors(unit='"degC"', equation="x = t", bracket='"t", "u"', published=published) == []
 
 
 def test_the_units_library_is_not_loaded_for_everyday_units():

@@ -203,7 +203,7 @@ def test_ordinals_number_the_doubles_without_a_gap():
 
 
 def liar(seed, lower, upper, root):
-    """The sign changes at root; values and slopes are noise, so that every model misleads, and none can be confirmed."""
+    """The sign changes at root; values and slopes are noise, so that every model misleads and none can be confirmed."""
     noise = random.Random(seed)
     slopes = [noise.choice((-1.0, 1.0)) * 10.0**noise.uniform(-30.0, 30.0) for _ in range(997)]
     values = [10.0**noise.uniform(-30.0, 30.0) for _ in range(991)]

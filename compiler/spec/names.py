@@ -48,7 +48,7 @@ def nearest(word, known):
         return None
     if word in _HABITS and _HABITS[word] in known:
         return _HABITS[word]
-    candidates = [name for name in known if abs(len(name) - len(word)) <= 3][:500]
+    candidates = [name for name in known if abs(len(name) - len(word)) <= 3][:100]
     same = [name for name in candidates if name.lower() == word.lower()]
     return (same or difflib.get_close_matches(word, candidates, 1, 0.6) or [None])[0]
 

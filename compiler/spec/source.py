@@ -7,6 +7,7 @@ whose sheer shape (nesting, number of entries, very long dotted keys) would keep
 import bisect
 import re
 import tomllib
+from collections.abc import Sequence
 from dataclasses import dataclass, field
 
 from rootwright.spec.diagnostics import ERROR, Diagnostic
@@ -41,7 +42,7 @@ class Source:
     repeated: list[tuple[Path, tuple[int, int]]] = field(default_factory=list)     # keys given twice
     _lines: list[str] = field(default_factory=list)
     _starts: list[int] = field(default_factory=list)
-    _offsets: dict[Path, list[int]] = field(default_factory=dict)
+    _offsets: dict[Path, Sequence[int]] = field(default_factory=dict)
 
     def __post_init__(self):
         self._lines = self.text.split("\n")
@@ -74,7 +75,7 @@ class Source:
         if part is None or self.text[start] not in "\"'":
             return place.value
         if path not in self._offsets:
-            self._offsets[path] = _decode_string(self.text, start, end)[1]
+            self._offsets[path] = _string_offsets(self.text, start, end)
         offsets = self._offsets[path]
         first = offsets[min(part[0], len(offsets) - 1)]
         return first, max(first + 1, offsets[min(part[1], len(offsets) - 1)]) if part[1] > part[0] else first + 1
@@ -303,6 +304,18 @@ class _Scanner:
         self._expect("}")
 
 
+def _string_offsets(text, start, end):
+    """For each character of the string literal text[start:end], and for its end, the offset in `text`."""
+    if text.find("\\", start, end) >= 0:
+        return _decode_string(text, start, end)[1]
+    width = _quotes(text, start, end)
+    return range(start + width + text.startswith("\n", start + width), end - width + 1)
+
+
+def _quotes(text, start, end):
+    return 3 if text.startswith(text[start] * 3, start) and end - start >= 6 else 1
+
+
 _ESCAPES = {"b": "\b", "t": "\t", "n": "\n", "f": "\f", "r": "\r", '"': '"', "\\": "\\"}
 _LINE_CONTINUATION = re.compile(r"\\[ \t]*\n[ \t\n]*")
 
@@ -310,7 +323,7 @@ _LINE_CONTINUATION = re.compile(r"\\[ \t]*\n[ \t\n]*")
 def _decode_string(text, start, end):
     """What the string literal text[start:end] says, with the offset of each of its characters and of its end."""
     quote = text[start]
-    width = 3 if text.startswith(quote * 3, start) and end - start >= 6 else 1
+    width = _quotes(text, start, end)
     at, stop = start + width, end - width
     if width == 3 and text.startswith("\n", at):
         at += 1

@@ -9,6 +9,7 @@ import sys
 
 import pytest
 
+from rootwright.binding.build import NoCompiler
 from rootwright.demo import page, reference, story, town
 from rootwright.demo.calibrate import Survey, measure
 from rootwright.demo.gradients import (Adjoints, Differences, LoopDifferences, LoopTape, WholeTape, taped_closures,
@@ -134,8 +135,8 @@ def test_the_adjoint_gradient_is_that_of_a_second_model_in_complex_arithmetic(ho
 
 def test_the_adjoint_gradient_is_that_of_central_differences(hour, states, gradient, closures):
     # Central steps of 1e-4 in a logarithm leave 1e-8/6 of the third derivative, which is at most ten times the first;
-    # rounding leaves an ulp of the misfit (about 2000) over the step, 2e-9, of derivatives that exceed 10. Forward steps
-    # of 1e-7 leave half that of the second derivative, and 2e-6 of rounding.
+    # rounding leaves an ulp of the misfit (about 2000) over the step, 2e-9, of derivatives that exceed 10. Forward
+    # steps of 1e-7 leave half that of the second derivative, and 2e-6 of rounding.
     agree(gradient, Differences(hour, closures, 1e-4, central=True)(HANDBOOK, states), 1e-7)
     agree(gradient, Differences(hour, closures, 1e-7, central=False)(HANDBOOK, states), 1e-5)
 
@@ -223,6 +224,20 @@ def test_the_page_is_told_in_full(told, closures, hour, monkeypatch):
         assert any(name in line for line in lines)
 
 
+def test_without_a_c_compiler_the_story_is_told_in_python_and_says_so(told, monkeypatch):
+    def compiled(target):
+        if target == "c":
+            raise NoCompiler("none")
+        return compile_closures(target)
+    monkeypatch.setattr(story, "compile_closures", compiled)
+    monkeypatch.setattr(story, "search", lambda survey, closures, gradient: told.found)
+    monkeypatch.setattr(story, "STEPS", (1e-5, 1e-6))
+    monkeypatch.setattr(town, "CASES", town.CASES[2:3])
+    stream = io.StringIO()
+    story.run(stream, None, ticks())
+    assert "to Python (no C compiler was found)" in stream.getvalue()
+
+
 def test_a_failed_check_is_said_and_counts(told, monkeypatch):
     failing = changed(told, failures=["a junction gains or loses water"])
     monkeypatch.setattr(story, "calibrated", lambda progress, clock: (failing, None))
@@ -234,7 +249,8 @@ def test_a_failed_check_is_said_and_counts(told, monkeypatch):
 
 @pytest.mark.parametrize(("name", "x"), [
     ("sqrt", 0.7), ("exp", 0.3), ("expm1", 0.3), ("log", 0.7), ("log1p", 0.3), ("log10", 0.7), ("log2", 0.7),
-    ("sin", 0.3), ("cos", 0.3), ("tan", 0.3), ("atan", 0.3), ("sinh", 0.3), ("cosh", 0.3), ("tanh", 0.3), ("fabs", -0.3)])
+    ("sin", 0.3), ("cos", 0.3), ("tan", 0.3), ("atan", 0.3), ("sinh", 0.3), ("cosh", 0.3), ("tanh", 0.3),
+    ("fabs", -0.3)])
 def test_a_taped_function_has_the_derivative_of_its_difference_quotient(name, x):
     # Quotients of steps of 1e-5: 1e-10 of curvature, 1e-11 of rounding.
     tape = Tape()

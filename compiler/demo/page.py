@@ -50,7 +50,8 @@ def _place(told):
 
 
 def _closures(told):
-    lines = [f"1. Three closures, compiled from their specs to {TARGETS[told.target]} in {told.compile_seconds:.1f} s",
+    language = "C" if told.target == "c" else "Python (no C compiler was found)"
+    lines = [f"1. Three closures, compiled from their specs to {language} in {told.compile_seconds:.1f} s",
              f"   {'spec':14} {'solved for':10} {'equation':40} {'links':>5}  {'evaluations: mean, most':>23}"]
     for model, links, mean, most in told.closures:
         lines.append(f"   {model.name:14} {model.unknown.name:10} {model.equation:40} {links:5}  {mean:18.1f} {most:4}")
@@ -93,7 +94,8 @@ def _found(told):
             f"{error*shown:7.3f} {unknown.planted*shown:9.3f}   {off:+.1f} standard errors")
     return lines + _wrapped(
         f"In {found.steps} steps and {told.search_seconds:.1f} s half the sum of squares fell from "
-        f"{found.history[0]:.0f} to {found.misfit:.1f}; errors of reading alone leave {free/2:.0f} +- {math.sqrt(free/2):.0f}.")
+        f"{found.history[0]:.0f} to {found.misfit:.1f}; errors of reading alone leave {free/2:.0f} +- "
+        f"{math.sqrt(free/2):.0f}.")
 
 
 def _ways(told):
@@ -122,7 +124,8 @@ def _ways(told):
 
 def _lessons(told):
     ways = told.ways
-    first, plain = ways["adjoints"], ways["plain"]
+    first = ways["adjoints"]
+    plain = ways.get("plain", first)        # in the tapes' language
     share = [error/value for error, value in zip(told.errors, told.survey.values(told.found.z))]
     vague = told.survey.unknowns[share.index(max(share))].name
     lines = ["5. What to learn from it"]

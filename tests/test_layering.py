@@ -10,7 +10,8 @@ import pytest
 COMPILER = Path(__file__).parent.parent/"compiler"
 RUNTIME = COMPILER.parent/"runtime"
 
-ORDER = ("runtime", "version", "operations", "spec", "calculus", "emit", "binding", "evidence", "pipeline", "demo", "files", "cli", "__main__")
+ORDER = ("runtime", "version", "operations", "spec", "calculus", "proof", "plan", "emit", "binding", "evidence", "pipeline", "demo",
+         "files", "cli", "__main__")
 HEAVY = {"numpy", "sympy", "flint", "mpmath", "pint", "cffi", "jinja2", "scipy"}
 
 

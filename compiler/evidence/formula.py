@@ -5,7 +5,7 @@ They come from the same derivative rules as the emitted code.
 
 from rootwright.calculus.differentiate import partials
 from rootwright.calculus.lower import Lowering
-from rootwright.calculus.program import Graph, needed
+from rootwright.calculus.program import Graph, Node, needed
 from rootwright.evidence.tidy import formula
 
 
@@ -41,6 +41,7 @@ class _Sheet:
         self.model = model
         self.graph = graph = Graph()
         self.declared = _declared(model)
+        self.forms = {}
         lowering = Lowering(graph)
         for constant in model.constants:
             lowering.declare(constant.name, graph.named(constant.name, lowering.lower(constant.expression)))
@@ -66,35 +67,36 @@ class _Sheet:
                 through = flows.pop(name)
                 if not self._is_short(through):
                     label = self._label(result, name)
-                    lines.append((label, formula(graph, through)))
+                    lines.append((label, formula(graph, through, self.forms)))
                     through = graph.input(label)
                 self._flow(through, self.bodies[name], flows, name)
         wanted = [self.model.unknown.name, *(p.name for p in self.model.parameters if p.differentiate)]
-        return lines + [(self._label(result, name), formula(graph, flows[name])) for name in wanted
+        return lines + [(self._label(result, name), formula(graph, flows[name], self.forms)) for name in wanted
                         if name in flows and graph.literal(flows[name]) != 0]
 
     def _flow(self, weight, body, flows, name=None):
         """Adds weight times the partial derivatives of a body to the derivatives with respect to what it mentions."""
         graph = self.graph
-        inputs = [node for node in needed(graph.instructions, [body]) if graph.instructions[node].op == "input"]
-        for node, partial in zip(inputs, partials(graph, body, [type(weight)(node) for node in inputs])):
-            if name is not None:
-                partial = self._mention(partial, body, name)
+        inputs = [Node(node) for node in needed(graph.instructions, [body]) if graph.instructions[node].op == "input"]
+        derivatives = partials(graph, body, inputs)
+        if name is not None:
+            derivatives = self._mention(derivatives, body, name)
+        for node, partial in zip(inputs, derivatives):
             mentioned = graph.instructions[node].value
             flows[mentioned] = graph.add(flows.get(mentioned, graph.number(0)), graph.mul(weight, partial))
 
-    def _mention(self, partial, body, name):
-        """The partial derivative with the body's own value, where it appears, written as its name."""
+    def _mention(self, derivatives, body, name):
+        """The derivatives with the body's own value, where it appears in them, written as its name."""
         graph = self.graph
         if graph.instructions[body].op in ("input", "number", "named"):
-            return partial
+            return derivatives
         named = {body: graph.input(name)}
-        for node in needed(graph.instructions, [partial], [body]):
+        for node in needed(graph.instructions, derivatives, [body]):
             instruction = graph.instructions[node]
             args = tuple(named.get(arg, arg) for arg in instruction.args)
             if args != instruction.args:
                 named[node] = graph.enter(instruction.op, args, instruction.value)
-        return named.get(partial, partial)
+        return [named.get(partial, partial) for partial in derivatives]
 
     def _is_short(self, node):
         instruction = self.graph.instructions[node]

@@ -16,10 +16,12 @@ _CUT = "..."
 _COMPARISONS = {key: row.c.split()[1] for key, row in OPERATIONS.items() if row.kind == "comparison" and key != "ordered"}
 
 
-def formula(graph, node):
-    """Text of an instruction of a Graph, tidied; TOO_LONG where it is longer than LONGEST."""
-    forms = {}
-    for k in needed(graph.instructions, [node]):
+def formula(graph, node, forms):
+    """Text of an instruction of a Graph, tidied; TOO_LONG where it is longer than LONGEST.
+
+    `forms` is kept between calls for one graph: it holds what is tidied already.
+    """
+    for k in needed(graph.instructions, [node], forms):
         forms[k] = _form(graph, graph.instructions[k], forms)
     text = forms[node].text()
     return TOO_LONG if _CUT in text else text

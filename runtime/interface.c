@@ -6,7 +6,7 @@ static int rw_without_slope(const double p[], double root)
     double slope, slope_rounding, curvature;
     const double g = rw_residual(p, root, &slope);
     const double rounding = rw_rounding(p, root, &slope_rounding, &curvature);
-    return rw_is_flat(g, slope, rounding, slope_rounding, curvature);
+    return rw_is_flat(rw_bend(p, root, g, slope, rounding, slope_rounding, curvature));
 }
 
 int rw_solve(const double p[RW_N], double start, rw_point *r)

@@ -31,7 +31,7 @@ def jacobian(p, root):
     """Derivatives of the M results with respect to the N parameters at a given root, as M rows of N."""
     p = _parameters(p)
     g, slope = _residual(p, root)
-    if _is_flat(g, slope, *_rounding(p, root)):
+    if _is_flat(_bend(p, root, g, slope, *_rounding(p, root))):
         return [[math.nan]*N for _ in range(M)]
     return _partials(p, root)
 

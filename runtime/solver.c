@@ -317,13 +317,30 @@ static double rw_reach(const double p[], double x, double end, int negative, rw_
     return reach;
 }
 
-/* No slope to speak of: within its own rounding error, or so small that the curve bends within the error of the root.
-   Newton-Kantorovich: the root lies within 2*error / (1 + sqrt(1 - 2*bend)) where bend = |g_xx| * error / |g_x|
-   is at most 1/2; half of that is let pass. */
-static int rw_is_flat(double g, double slope, double rounding, double slope_rounding, double curvature)
+/* By what share of itself the slope changes within the error of a root at x: |g_xx| * error / |g_x|, or where the second
+   derivative overflows (beside 1e-300, say) what the slopes at both ends tell. INFINITY where the slope is within its
+   own rounding error. Newton-Kantorovich: up to 1/2 the root lies within 2*error / (1 + sqrt(1 - 2*bend)) of x. */
+static double rw_bend(const double p[], double x, double g, double slope, double rounding, double slope_rounding,
+                      double curvature)
 {
     const double least = fabs(slope) - slope_rounding;
-    return !(least > 0.0 && isfinite(least) && fabs(curvature) * ((fabs(g) + rounding) / least) / least <= 0.25);
+    const double error = (fabs(g) + rounding) / least;
+    double before, after;
+    if (!(least > 0.0 && isfinite(least))) {
+        return INFINITY;
+    }
+    if (isfinite(curvature)) {
+        return fabs(curvature) * error / least;
+    }
+    (void)rw_residual(p, x - error, &before);
+    (void)rw_residual(p, x + error, &after);
+    return fabs(before - slope) / least + fabs(after - slope) / least;
+}
+
+/* No slope to speak of: the curve is not straight within the error of the root. */
+static int rw_is_flat(double bend)
+{
+    return !(bend <= 0.25);
 }
 
 /* Fills r for the root: error bound, enclosing bracket and caveats. end holds the bracket, rounding its uncertainty;
@@ -331,15 +348,15 @@ static int rw_is_flat(double g, double slope, double rounding, double slope_roun
 static int rw_certify(const double p[], rw_sample root, const double end[2], const double rounding[2],
                       const int negative[2], double at_end, rw_point *r)
 {
-    double slope_rounding, curvature, error, least, farthest;
+    double slope_rounding, curvature, error, farthest;
     const double bound = rw_rounding(p, root.x, &slope_rounding, &curvature);
+    const double bend = rw_bend(p, root.x, root.g, root.slope, bound, slope_rounding, curvature);
 
     r->status = 0;
-    if (!rw_is_flat(root.g, root.slope, bound, slope_rounding, curvature)) {
-        least = fabs(root.slope) - slope_rounding;
-        error = (fabs(root.g) + bound) / least;
+    if (!rw_is_flat(bend)) {
+        error = (fabs(root.g) + bound) / (fabs(root.slope) - slope_rounding);
         /* 2 / (1 + sqrt(1 - 2*bend)) < 1 + bend for bend <= 1/4; 2^-10 is for the rounding of these lines. */
-        error *= (1.0 + fabs(curvature) * error / least) * (1.0 + 0x1p-10);
+        error *= (1.0 + bend) * (1.0 + 0x1p-10);
     } else {
         r->status |= RW_FLAT;
         error = 0.0;

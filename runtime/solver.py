@@ -255,14 +255,27 @@ def _reach(p, x, end, negative, r):
     return reach
 
 
-def _is_flat(g, slope, rounding, slope_rounding, curvature):
-    """No slope to speak of: within its own rounding error, or so small that the curve bends within the root's error.
+def _bend(p, x, g, slope, rounding, slope_rounding, curvature):
+    """By what share of itself the slope changes within the error of a root at x.
 
-    Newton-Kantorovich: the root lies within 2*error / (1 + sqrt(1 - 2*bend)) where bend = |g_xx| * error / |g_x|
-    is at most 1/2; half of that is let pass.
+    |g_xx| * error / |g_x|, or where the second derivative overflows (beside 1e-300, say) what the slopes at both ends
+    tell. Infinite where the slope is within its own rounding error. Newton-Kantorovich: up to 1/2 the root lies within
+    2*error / (1 + sqrt(1 - 2*bend)) of x.
     """
     least = abs(slope) - slope_rounding
-    return not (least > 0.0 and math.isfinite(least) and abs(curvature) * ((abs(g) + rounding) / least) / least <= 0.25)
+    if not (least > 0.0 and math.isfinite(least)):
+        return math.inf
+    error = (abs(g) + rounding) / least
+    if math.isfinite(curvature):
+        return abs(curvature) * error / least
+    before = _residual(p, x - error)[1]
+    after = _residual(p, x + error)[1]
+    return abs(before - slope) / least + abs(after - slope) / least
+
+
+def _is_flat(bend):
+    """No slope to speak of: the curve is not straight within the error of the root."""
+    return not bend <= 0.25
 
 
 def _certify(p, root, end, rounding, negative, at_end, r):
@@ -272,13 +285,13 @@ def _certify(p, root, end, rounding, negative, at_end, r):
     the uncertainty of the root as an end itself.
     """
     bound, slope_rounding, curvature = _rounding(p, root.x)
+    bend = _bend(p, root.x, root.g, root.slope, bound, slope_rounding, curvature)
 
     r.status = 0
-    if not _is_flat(root.g, root.slope, bound, slope_rounding, curvature):
-        least = abs(root.slope) - slope_rounding
-        error = (abs(root.g) + bound) / least
+    if not _is_flat(bend):
+        error = (abs(root.g) + bound) / (abs(root.slope) - slope_rounding)
         # 2 / (1 + sqrt(1 - 2*bend)) < 1 + bend for bend <= 1/4; 2^-10 is for the rounding of these lines.
-        error *= (1.0 + abs(curvature) * error / least) * (1.0 + 2.0**-10)
+        error *= (1.0 + bend) * (1.0 + 2.0**-10)
     else:
         r.status |= FLAT
         error = 0.0

@@ -161,7 +161,7 @@ static double rw_start(const double p[])
 extern "C" {
 #endif
 int harness_solve(const harness *h, double start, rw_point *r);
-int harness_is_flat(double g, double slope, double rounding, double slope_rounding, double curvature);
+double harness_bend(double g, double slope, double rounding, double slope_rounding, double curvature);
 #ifdef __cplusplus
 }
 #endif
@@ -173,9 +173,9 @@ int harness_solve(const harness *h, double start, rw_point *r)
     return rw_locate(&start, start, r);
 }
 
-int harness_is_flat(double g, double slope, double rounding, double slope_rounding, double curvature)
+double harness_bend(double g, double slope, double rounding, double slope_rounding, double curvature)
 {
-    return rw_is_flat(g, slope, rounding, slope_rounding, curvature);
+    return rw_bend(&g, 0.0, g, slope, rounding, slope_rounding, curvature);
 }
 """
 
@@ -232,7 +232,8 @@ def _library(features):
     assert not messages, messages
     library = ctypes.CDLL(str(path))
     library.harness_solve.argtypes = [ctypes.POINTER(_Harness), ctypes.c_double, ctypes.POINTER(_Point)]
-    library.harness_is_flat.argtypes = [ctypes.c_double] * 5
+    library.harness_bend.argtypes = [ctypes.c_double] * 5
+    library.harness_bend.restype = ctypes.c_double
     return library
 
 
@@ -256,8 +257,8 @@ def solve_c(problem, start=NAN):
     return Outcome([point.y[0]], *(getattr(point, name) for name, _ in _Point._fields_[1:]))
 
 
-def is_flat_c(*numbers):
-    return bool(_library(()).harness_is_flat(*numbers))
+def bend_c(*numbers):
+    return _library(()).harness_bend(*numbers)
 
 
 # -- formulas: value, two derivatives, and bounds of the rounding errors of value and slope

@@ -396,7 +396,11 @@ def test_a_root_on_a_switch_is_marked_and_told_its_error_bound():
 
 
 def test_flatness_is_judged_from_the_slope_s_rounding_and_the_bend():
-    is_flat = python_core(line(0.5))["_is_flat"]
+    core = python_core(line(0.5))
+
+    def is_flat(*numbers):
+        return core["_is_flat"](core["_bend"](None, 0.5, *numbers))
+
     assert not is_flat(0.0, 1.0, 1e-16, 1e-16, 1.0)
     assert is_flat(0.0, 1e-16, 1e-16, 2e-16, 0.0)           # the slope is within its rounding
     assert not is_flat(0.0, 1.0, 0.24, 0.0, 1.0)
@@ -404,4 +408,4 @@ def test_flatness_is_judged_from_the_slope_s_rounding_and_the_bend():
     for bad in (NAN, INF):
         assert is_flat(0.0, bad, 1e-16, 1e-16, 1.0)
         assert is_flat(0.0, 1.0, bad, 1e-16, 1.0)
-        assert is_flat(0.0, 1.0, 1e-16, 1e-16, bad)
+        assert is_flat(0.0, 1.0, 1e-16, 1e-16, 1.0) == is_flat(0.0, 1.0, 1e-16, 1e-16, bad)     # a line is straight

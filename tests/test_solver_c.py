@@ -8,7 +8,7 @@ import pytest
 
 from corpus import APS, SPECIAL
 from solver_harness import (FEATURES, INF, NAN, STATUS, STRICT, Problem, callback_source, compile_c, formula,
-                            have_compiler, is_flat_c, point_source, python_core, solve, solve_c)
+                            have_compiler, bend_c, point_source, python_core, solve, solve_c)
 from test_solver import BRACKETS, liar, line, problem, step
 
 pytestmark = pytest.mark.skipif(not have_compiler(), reason="needs gcc")
@@ -60,10 +60,23 @@ def test_c_and_python_agree_on_hostile_kernels(hostile):
 
 
 def test_flatness_is_judged_alike():
-    is_flat = python_core(line(0.5))["_is_flat"]
-    values = (0.0, 1e-300, 1e-16, 0.25, 1.0, 1e300, INF, NAN)
-    for numbers in product(values, repeat=5):
-        assert is_flat_c(*numbers) == is_flat(*numbers), numbers
+    bend = python_core(line(0.5))["_bend"]
+    values = (0.0, 1e-300, 1e-16, 0.25, 1.0, 1e300)
+    for *numbers, curvature in product((*values, INF, NAN), (*values, INF, NAN), (*values, INF, NAN), (*values, INF, NAN), values):
+        one, other = bend_c(*numbers, curvature), bend(None, 0.0, *numbers, curvature)
+        assert one == other or one != one and other != other, numbers
+
+
+@pytest.mark.parametrize("straight", [True, False])
+def test_where_the_curvature_overflows_the_slopes_beside_the_root_decide(straight):
+    """log(x) = -690: the second derivative 1/x^2 overflows, and the curve is straight within the error, or is not."""
+    root = math.exp(-690.0)
+    hostile = Problem(1e-310, 1e-290, lambda x: (math.log(x) + 690.0, 1.0/x),
+                      lambda x: (1e-13 if straight else 0.5, 1e-16/x, -INF))
+    outcome = solve(hostile)
+    assert outcome.root == pytest.approx(root, rel=1e-12) or not straight
+    assert (outcome.status & STATUS["FLAT"] == 0) == straight
+    assert same(outcome, solve_c(hostile))
 
 
 @pytest.mark.parametrize("chosen", list(product((False, True), repeat=len(FEATURES))))
@@ -151,7 +164,7 @@ int main(void)
         printf("%a %a %a %a %a %a %d %d %d %d\n", r.y[0], r.residual, r.slope, r.error_bound, r.lower, r.upper,
                r.iterations, r.evaluations, r.status, fetestexcept(FE_INVALID | FE_DIVBYZERO | FE_OVERFLOW) != 0);
     }
-    return rw_is_flat(0.0, 1.0, 0.0, 0.0, 0.0);
+    return rw_is_flat(rw_bend(given[0], 0.0, 0.0, 1.0, 0.0, 0.0, 0.0));
 }
 """
 

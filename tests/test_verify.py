@@ -80,7 +80,8 @@ def test_a_derivative_at_the_edge_of_the_domain_is_taken_from_one_side():
     assert reference.derivatives({"a": 0.0}, reference.root({"a": 0.0}).mid)["x", "a"].value == pytest.approx(3.0, abs=1e-15)
 
 
-@pytest.mark.parametrize("equation, why", [("x = 2 + abs(a)", "kink"), ("x = 2 + sqrt(a)", "unbounded")])
+@pytest.mark.parametrize("equation, why", [
+    ("x = 2 + abs(a)", "kink"), ("x = 2 + sqrt(a)", "unbounded"), ("x = 2 + a^1.1", "undefined")])
 def test_where_there_is_no_derivative_the_reference_says_why(equation, why):
     reference = _reference(equation, ("0", "9"), {"a": (-1, 1)})
     derivative = reference.derivatives({"a": 0.0}, reference.root({"a": 0.0}).mid)["x", "a"]
@@ -91,6 +92,8 @@ def test_where_there_is_no_derivative_the_reference_says_why(equation, why):
     ("(x - a)^2", ("a", "3"), 1.0, "exact", 1.0),
     ("(x^2 - a)^2", ("sqrt(a)", "3"), 2.0, "touching", math.sqrt(2.0)),
     ("x^2 - a", ("sqrt(a)", "3"), 2.0, "crossing", math.sqrt(2.0)),
+    ("x*tanh(100*x) - a", ("a", "3"), 1.0, "crossing", 1.0),        # 1e-86 inside the end
+    ("x*tanh(9999*x) - a", ("a", "3"), 1.0, "crossing", 1.0),       # 1e-8685 inside the end
     ("(x - a)^3", ("0", "3"), 1.25, "crossing", 1.25),
     ("x*(1 + a)", ("-1", "2"), 1.0, "exact", 0.0),
 ])

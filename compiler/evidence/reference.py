@@ -223,7 +223,7 @@ class _Search:
         width = (b - a) * flint.arb(2) ** 100
         for end, far in ((a, max(lower, a - width)), (b, min(upper, b + width))):
             near, further = (abs(self.place.residual(x.mid(), BITS[-1])) for x in (end, far))
-            if not near < further * 0.9:
+            if far != end and not near < further * 0.9:
                 raise NotSettled("the sign changes across a step or a pole")
 
     def _beyond(self):
@@ -328,14 +328,16 @@ class _Differences:
         return _settled((up - down) / (2 * h), middle)
 
     def _one_sided(self, result, parameter, middle, near, h):
-        """Second-order one-sided difference; where it grows as the step shrinks, the derivative is unbounded."""
+        """Second-order one-sided difference; where it does not converge, the derivative is unbounded; where it does so
+        slowly, as beside a fractional power, it is left alone."""
         far, further = (self._moved(parameter, factor * h) for factor in (2, 4))
         if far is None or further is None:
             return Derivative(None, "undefined")
-        fine = (4 * near - 3 * middle - far[result]) / (2 * h)
-        coarse = (4 * far[result] - 3 * middle - further[result]) / (4 * h)
+        one, two, four = (near - middle) / h, (far[result] - middle) / (2 * h), (further[result] - middle) / (4 * h)
+        fine, coarse = 2 * one - two, 2 * two - four
         if abs((fine - coarse).mid()) > abs(fine.mid()) * KINK + abs((fine - coarse).rad()) * 2:
-            return Derivative(None, "unbounded" if abs(fine) > abs(coarse) else "undefined")
+            grows = abs((one - two).mid()) >= abs((two - four).mid()) * (1 - KINK)
+            return Derivative(None, "unbounded" if grows else "undefined")
         return _settled(fine, middle)
 
 

@@ -45,6 +45,7 @@ class _Layout:
         self.constants = closure.constants
         self.target = target
         self.taken = set(taken)
+        self.numbered = (f"t{k}" for k in count(1))
         self.texts = {}          # node -> (text, strength)
         self.statements = []
         self.inputs = set()
@@ -110,7 +111,7 @@ class _Layout:
     def _fresh(self, label):
         """The author's name for a definition; for anything else a name that is free."""
         if label is None:
-            return next(f"t{k}" for k in count(1) if f"t{k}" not in self.taken)
+            return next(name for name in self.numbered if name not in self.taken)
         name = self.target.name(label)
         if name in self.target.names.used and name not in self.stated or name not in self.taken:
             return name

@@ -335,8 +335,10 @@ def _tame(stream):
 
 
 def _complain(message, status):
+    from rootwright.spec.diagnostics import harmless
+
     with contextlib.suppress(OSError):
-        print(f"rootwright: {' '.join(message.split())}", file=sys.stderr)
+        print(f"rootwright: {harmless(' '.join(message.split()))}", file=sys.stderr)
     return status
 
 

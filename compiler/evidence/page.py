@@ -10,11 +10,13 @@ from rootwright.calculus.soundness import between
 from rootwright.evidence.evaluate import word
 from rootwright.evidence.formula import derivative_lines, residual_name
 from rootwright.spec.diagnostics import harmless
+from rootwright.spec.names import clipped
 
 WIDTH = 100
 POINTS = 5
 
 _STAY = "\0"                     # a space at which no line ends
+_NAME = 24                       # longest name beside the solved points
 _CELL = 36                       # widest cell of a table but for the last column
 _TRIES = 500                     # points looked at for some that meet every requirement
 _ROOT = {"only": "the only root in the bracket", "lowest": "the lowest root in the bracket", "highest": "the highest root in the bracket"}
@@ -192,8 +194,10 @@ def _derivatives(facts):
     theta = next(name for name in ("P", "theta", "parameter", "any_parameter") if name not in names)
     meaning = "the equation's left side minus its right side" if "=" in facts["equation"] else "the expression that is to be zero"
     lines = ["Derivatives", ""]
+    if not parameters:
+        return lines + ["    none: no parameter is differentiated", ""]
     lines += _wrapped(f"d{x}/d{theta} = -{g}_{theta}/{g}_{x} for every parameter {theta}, by the implicit function theorem; {g} is "
-                      f"{meaning}", "  ")
+                      f"{meaning}; what is not listed is zero.", "  ")
     lines += [""] + [line for name, text in of_residual.items() for line in _formula(f"{name} = {text}")] + [""]
     for output, formulas in of_outputs:
         along = _along(formulas, output, x)
@@ -213,11 +217,13 @@ def _points(facts):
     if not facts["points"]:
         return ["Solved points", "", "    none: no sampled point of the ranges meets every requirement", ""]
     results = [facts["unknown"]["name"], *(item["name"] for item in facts["outputs"])]
-    rows = [[item["name"], *(f"{point['given'][item['name']]:.6g}" for point in facts["points"])] for item in facts["parameters"]]
+    rows = [[clipped(item["name"], _NAME), *(f"{point['given'][item['name']]:.6g}" for point in facts["points"])] for item in facts["parameters"]]
     rows.append(None)
-    rows += [[name, *(f"{point['results'][name]:.8g}" if point["results"] else "-" for point in facts["points"])] for name in results]
+    rows += [[clipped(name, _NAME), *(f"{point['results'][name]:.8g}" if point["results"] else "-" for point in facts["points"])] for name in results]
     rows.append(["status", *(point["status"] for point in facts["points"])])
     widths = [max(len(row[k]) for row in rows if row) for k in range(len(rows[0]))]
+    while sum(widths) + 2*len(widths) + 2 > WIDTH:
+        widths.pop()
     lines = ["Solved points of the operating range", ""]
     for row in rows:
         lines.append("" if row is None else "    " + "  ".join(

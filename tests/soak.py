@@ -2,9 +2,9 @@
 
     python tests/soak.py [points] [spec...]
 
-100,000 points over all shipped specs by default, of the C module where there is a compiler. Roots within their limit and covered by
-error_bound at every point, derivatives within theirs, everything inside the operating range solved: all that `verify` holds a module to, and what
-goes into its calibration. Exits 1 where anything fails. `test_verify.py` samples the same.
+100,000 points over all shipped specs by default, of the C module where there is a compiler. Roots within their limit
+and covered by error_bound at every point, derivatives within theirs, everything inside the operating range solved: all
+that `verify` holds a module to. Exits 1 where anything fails. `test_verify.py` samples the same.
 """
 
 import statistics
@@ -54,9 +54,9 @@ def main(arguments):
             print(render(report), flush=True)
         failures += report.failures
         overestimates.append(report.overestimate)
+    low, middle, high = min(overestimates), statistics.median(overestimates), max(overestimates)
     print(f"{failures} failures in {time.monotonic() - started:.0f} s; error_bound over true error plus half an ulp: "
-          f"medians {min(overestimates):.3g} to {max(overestimates):.3g}, in the middle {statistics.median(overestimates):.3g} "
-          f"(goal: {OVERESTIMATE:g})")
+          f"medians {low:.3g} to {high:.3g}, in the middle {middle:.3g} (goal: {OVERESTIMATE:g})")
     return 1 if failures else 0
 
 

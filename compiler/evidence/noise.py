@@ -1,8 +1,8 @@
 """The noise of a root: how far one rounding of every operation of the residual can move it.
 
-The sum over all operations v of the author's residual, and over its rounded constants, of |dg/dv| ulp(v), divided by |g_x|.
-The derivatives are found without the compiler's rules: every operation's own by a difference at high precision, then one sweep
-backwards over the author's trees.
+The sum over all operations v of the author's residual, and over its rounded constants, of |dg/dv| ulp(v), divided by
+|g_x|. The derivatives are found without the compiler's rules: every operation's own by a difference at high precision,
+then one sweep backwards over the author's trees.
 """
 
 import math
@@ -19,7 +19,7 @@ _ROUNDS_NOTHING = ("input", "neg", "abs", "sign", "min", "max", "where")
 
 
 def noise(place, x):
-    """(noise, slope): noise of the root x (an exact ball), infinite where there is no slope, and |g_x| there, as floats.
+    """(noise, slope) as floats: noise of the root x (an exact ball), infinite where there is no slope, and |g_x| there.
 
     `place` holds the author's expressions at the parameters (`trees.Place`).
     """

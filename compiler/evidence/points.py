@@ -13,8 +13,8 @@ TRIES = 200                     # points looked at for each one that meets every
 def choose(closure, count, seed):
     """(corners, random points) of the operating range, together up to `count`, each {parameter: double}.
 
-    Corners make up to a quarter; the others are uniform in the coordinates that each `spread` says. Fewer where few points of the
-    box of ranges meet every requirement.
+    Corners make up to a quarter; the others are uniform in the coordinates that each `spread` says. Fewer where few
+    points of the box of ranges meet every requirement.
     """
     generator = random.Random(seed)
     corners = list(_inside(closure, _corners(closure, generator), count // 4))
@@ -55,7 +55,8 @@ def _inside(closure, candidates, count):
 def _corners(closure, generator):
     """All corners of the box where there are few of them, else random ones without repetition."""
     dimensions = len(closure.ranges)
-    numbers = range(2 ** dimensions) if dimensions <= 10 else sorted({generator.getrandbits(dimensions) for _ in range(1024)})
+    numbers = range(2 ** dimensions) if dimensions <= 10 else \
+        sorted({generator.getrandbits(dimensions) for _ in range(1024)})
     seen = set()
     for k in generator.sample(numbers, len(numbers)):
         corner = tuple(ends[k >> bit & 1] for bit, ends in enumerate(closure.ranges))

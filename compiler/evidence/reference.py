@@ -1,9 +1,9 @@
 """Certified roots and derivatives, independent of what the compiler emits.
 
-A root is enclosed by two points at which balls of growing precision give the residual certain, opposite signs, and which lie
-within 2^-200 of each other relative to the root. Derivatives are central differences of roots solved again at parameters moved by
-2^-100 of their size, so truncation stays near 2^-200 and cancellation is covered by the working precision; no symbolic
-derivative is used anywhere.
+A root is enclosed by two points at which balls of growing precision give the residual certain, opposite signs, and
+which lie within 2^-200 of each other relative to the root. Derivatives are central differences of roots solved again at
+parameters moved by 2^-100 of their size, so truncation stays near 2^-200 and cancellation is covered by the working
+precision; no symbolic derivative is used anywhere.
 """
 
 from dataclasses import dataclass
@@ -26,15 +26,15 @@ class NotSettled(Exception):
 
 @dataclass(frozen=True)
 class Root:
-    """The exact root lies within `radius` of `mid` (exact balls). `kind`: "crossing" (a certain change of sign in the bracket), "beyond"
-    (one outside the bracket's end, within the distance asked for), "exact" (the residual is exactly zero) or "touching" (zero to 2^-1000 of
-    its terms at an end, with no change of sign)."""
+    """The exact root lies within `radius` of `mid` (exact balls). `kind`: "crossing" (a certain change of sign in the
+    bracket), "beyond" (one outside the bracket's end, within the distance asked for), "exact" (the residual is exactly
+    zero) or "touching" (zero to 2^-1000 of its terms at an end, with no change of sign)."""
     mid: flint.arb
     radius: flint.arb
     kind: str
 
     def distance(self, x):
-        """Distance of a double from the root, as a float; 0 within the radius, some 1e-60 of the root, where it may be the root."""
+        """Distance of a double from the root, as a float; 0 within the radius, where the double may be the root."""
         with precision(320):
             return max(float((abs(self.mid - ball(x)) - self.radius).mid()), 0.0)
 
@@ -54,8 +54,10 @@ class Reference:
         self.trees = Trees(model)
 
     def root(self, point, near=None, reach=0.0):
-        """The root at a point {parameter: double}. `near` is where to look first; a root as far as `reach` from it also counts where it
-        lies outside the bracket. Raises NotSettled."""
+        """The root at a point {parameter: double}. Raises NotSettled.
+
+        `near` is where to look first; a root as far as `reach` from it also counts where it lies outside the bracket.
+        """
         return _Search(self.trees, self.place(point), near, reach).root()
 
     def place(self, point):
@@ -65,7 +67,7 @@ class Reference:
     def derivatives(self, point, x):
         """{(result, parameter): Derivative} for the parameters that are differentiated, at x, an exact ball.
 
-        x is the root; or any number near it, and then what is differentiated is the root of the residual less its value at x.
+        x is the root; or any number near it: then the root of the residual less its value at x is differentiated.
         """
         return _Differences(self, point, x).all()
 
@@ -81,7 +83,7 @@ class _Search:
         self.near, self.reach = None if near is None else ball(near), reach
 
     def sign(self, x):
-        """Certain sign of the residual at an exact number; None where it is undefined or zero as far as 1280 bits show."""
+        """Certain sign of the residual at an exact number; None where it is undefined, or zero to 1280 bits."""
         for bits in BITS:
             found = sign(self.place.residual(x, bits))
             if found is not None:
@@ -139,7 +141,7 @@ class _Search:
         return (abs(x) if not x.is_zero() else flint.arb(1)) * flint.arb(2) ** CLOSE
 
     def _nearby(self, a, b, sign_a):
-        """A part of the bracket around `near` with a change of sign in the bracket's direction; the bracket if there is none."""
+        """A part of the bracket around `near` with its change of sign; the bracket if there is none."""
         if self.near is not None:
             size = max(abs(self.near), (b - a) * flint.arb(2) ** -80)
             for k in (-50, -44, -36, -24, -10):
@@ -299,7 +301,7 @@ class _Differences:
         above, below = self._moved(parameter, h), self._moved(parameter, -h)
         column = {}
         for result in self.model.results:
-            up, down = (None if side is None or not side[result].is_finite() else side[result] for side in (above, below))
+            up, down = (side[result] if side and side[result].is_finite() else None for side in (above, below))
             middle = center[result]
             if not middle.is_finite():
                 column[result] = Derivative(None, "undefined")
@@ -314,8 +316,9 @@ class _Differences:
 
     def _width(self, parameter):
         """What scales the shift of a parameter that is zero: the width of its range, or 1 if that is less."""
-        low, high = (Place(self.trees, {}).value(self.trees.add(end), None, 64) for end in (parameter.low, parameter.high))
-        width = (high - low).mid()
+        low, high = (self.trees.add(end) for end in (parameter.low, parameter.high))
+        nowhere = Place(self.trees, {})
+        width = (nowhere.value(high, None, 64) - nowhere.value(low, None, 64)).mid()
         return width if 0 < width < 1 else flint.arb(1)
 
     @staticmethod
@@ -343,6 +346,7 @@ class _Differences:
 
 def _settled(value, middle):
     """The derivative, if its ball is small against it or against the result's size."""
-    if not value.is_finite() or value.rad() > max(abs(value.mid()), abs(middle.mid()) * flint.arb(2) ** -40) * flint.arb(2) ** -80:
+    size = max(abs(value.mid()), abs(middle.mid()) * flint.arb(2) ** -40)
+    if not value.is_finite() or value.rad() > size * flint.arb(2) ** -80:
         return Derivative(None, "undefined")
     return Derivative(float(value.mid()))

@@ -4,13 +4,14 @@ import textwrap
 from dataclasses import asdict, dataclass
 
 from rootwright.evidence.limits import LIMITS, OVERESTIMATE
+from rootwright.spec.diagnostics import harmless
 
 WIDTH = 110
 
 
 @dataclass(frozen=True)
 class Measure:
-    """One quantity over all points: its worst value and where, its median, how often it was taken. `key` is one of LIMITS."""
+    """One quantity over all points, a key of LIMITS: its worst value and where, its median, how often it was taken."""
     key: str
     count: int
     worst: float
@@ -27,7 +28,7 @@ class Measure:
 
 @dataclass(frozen=True)
 class Finding:
-    """Something wrong at one point: which promise (a key of LIMITS, or "solved", "kink", "published"), and what happened."""
+    """Something wrong at one point. `key`: which promise, one of LIMITS or "solved", "kink", "published"."""
     key: str
     target: str
     what: str
@@ -72,20 +73,21 @@ class Report:
 def to_json(report):
     """The report as a dictionary of plain data; `limit`, `goal` and `statement` say what each measure is held to."""
     data = asdict(report) | {"failed": report.failed}
-    data["measures"] = [asdict(m) | {"passed": m.passed, "limit": LIMITS[m.key].worst, "goal": LIMITS[m.key].median,
+    data["measures"] = [asdict(m) | {"passed": m.passed, "limit": LIMITS[m.key].worst, "goal": LIMITS[m.key].goal,
                                      "statement": LIMITS[m.key].statement} for m in report.measures]
     return data
 
 
 def render(report):
     """The report as text."""
-    return "\n".join([*_head(report), *_measures(report), *_published(report), *_findings(report), _verdict(report)]) + "\n"
+    lines = [*_head(report), *_measures(report), *_published(report), *_findings(report), _verdict(report)]
+    return "\n".join(lines) + "\n"
 
 
 def _head(report):
     targets = " and ".join({"c": "C", "python": "Python"}[target] for target in report.targets)
-    yield (f"{report.name}: {targets} against a certified reference at {report.corners} corners of the operating range, "
-           f"{report.random} random points (seed {report.seed})")
+    yield (f"{report.name}: {targets} against a certified reference at {report.corners} corners of the operating range"
+           f" and {report.random} random points (seed {report.seed})")
     if report.corners + report.random == 0:
         yield "no point that meets every requirement was found: only published values were tried"
     yield from report.notes
@@ -99,11 +101,12 @@ def _measures(report):
     for measure in report.measures:
         limit = LIMITS[measure.key]
         verdict = "holds" if measure.passed else "FAILS"
-        goal = "" if limit.median is None else f"; {100 * measure.within:.4g} % within {limit.median:g}"
-        yield (f"  {limit.measure:42}{measure.worst:>10.2g}{limit.worst:>9.2g}{measure.median:>10.2g}{measure.count:>8}  "
-               f"{verdict}{goal}")
+        goal = "" if limit.goal is None else f"; {100 * measure.within:.4g} % within {limit.goal:g}"
+        yield (f"  {limit.measure:42}{measure.worst:>10.2g}{limit.worst:>9.2g}{measure.median:>10.2g}"
+               f"{measure.count:>8}  {verdict}{goal}")
     yield f"  worst error of a root: {report.root_ulps:.3g} ulp"
-    yield f"  error_bound over true error plus half an ulp: median {report.overestimate:.3g} (goal: {OVERESTIMATE:g} at most)"
+    yield (f"  error_bound over true error plus half an ulp: median {report.overestimate:.3g} "
+           f"(goal: {OVERESTIMATE:g} at most)")
     for reason, count in report.skipped.items():
         yield f"  {count} {reason}"
     yield ""
@@ -116,11 +119,11 @@ def _published(report):
         yield f"  {'published value':24}{'expected':>20}{'computed':>22}{'difference':>12}{'tolerance':>11}  verdict"
     for value in report.published:
         verdict = "agrees" if value.passed else "DIFFERS"
-        yield (f"  {value.result:24}{value.expected!r:>20}{value.computed!r:>22}{value.difference:>12.2g}{value.tolerance:>11.2g}  "
-               f"{verdict}")
+        yield (f"  {value.result:24}{value.expected!r:>20}{value.computed!r:>22}{value.difference:>12.2g}"
+               f"{value.tolerance:>11.2g}  {verdict}")
         at = ", ".join(f"{name} = {number!r}" for name, number in value.given.items())
         yield from textwrap.wrap(f"at {at}", WIDTH, initial_indent="      ", subsequent_indent="        ")
-        yield from textwrap.wrap(value.source, WIDTH, initial_indent="      ", subsequent_indent="        ")
+        yield from textwrap.wrap(harmless(value.source), WIDTH, initial_indent="      ", subsequent_indent="        ")
     yield ""
 
 

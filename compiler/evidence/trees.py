@@ -1,8 +1,8 @@
 """The author's expressions in ball arithmetic, straight from the trees of the Model.
 
-The reference for `verify` shares nothing with the compiler's own path: no lowering, no folding, no common subexpressions, no
-derivative rules. Numbers are the exact decimals that were written, parameters exact numbers; every value is a rigorous
-enclosure at the working precision (`calculus/balls.py`).
+The reference for `verify` shares nothing with the compiler's own path: no lowering, no folding, no common
+subexpressions, no derivative rules. Numbers are the exact decimals that were written, parameters exact numbers; every
+value is a rigorous enclosure at the working precision (`calculus/balls.py`).
 """
 
 from dataclasses import dataclass
@@ -32,7 +32,7 @@ class Step:
 
 
 class Trees:
-    """Steps of all expressions of a Model. Targets are step numbers: `residual`, `ends`, `require`, and `outputs` by name."""
+    """Steps of the expressions of a Model. Targets are step numbers: `residual`, `ends`, and `outputs` by name."""
 
     def __init__(self, model):
         self.model = model
@@ -47,7 +47,6 @@ class Trees:
             self.names[definition.name] = self.add(definition.expression)
         self.residual = self.add(model.residual)
         self.ends = (self.add(model.unknown.lower), self.add(model.unknown.upper))
-        self.require = tuple(self.add(condition) for condition in model.require)
         self.outputs = {}
         for output in model.outputs:
             self.outputs[output.name] = self.names[output.name] = self.add(output.expression)
@@ -88,7 +87,8 @@ class Trees:
             depends = MOVING if value == self.model.unknown.name else FIXED
         else:
             depends = max((self.steps[arg].depends for arg in args), default=CONSTANT)
-        apply = None if op in ("number", "pi", "input") else choose if op == "where" else getattr(BALLS, METHODS.get(op, op))
+        apply = None if op in ("number", "pi", "input") else choose if op == "where" else \
+            getattr(BALLS, METHODS.get(op, op))
         self.steps.append(Step(op, apply, args, value, depends))
         return len(self.steps) - 1
 
@@ -101,7 +101,8 @@ class Trees:
                 if step not in needed:
                     needed.add(step)
                     pending.extend(self.steps[step].args)
-            self._orders[target] = tuple([k for k in sorted(needed) if self.steps[k].depends == kind and self.steps[k].op != "input"]
+            inner = [k for k in sorted(needed) if self.steps[k].op != "input"]
+            self._orders[target] = tuple([k for k in inner if self.steps[k].depends == kind]
                                          for kind in (CONSTANT, FIXED, MOVING))
         return self._orders[target]
 
@@ -131,7 +132,7 @@ class Place:
         self._fixed = {}
 
     def values(self, target, x, bits):
-        """Values of all steps of a target, {step: ball}; x may be None where the target does not depend on the unknown."""
+        """Values of all steps of a target, {step: ball}, good until the next call. x: None where it plays no part."""
         with precision(bits):
             if (target, bits) not in self._fixed:
                 values = dict(self.trees.constants(target, bits))
@@ -139,8 +140,8 @@ class Place:
                     values[self.trees.names[name]] = value
                 for k in self.trees.order(target)[FIXED]:
                     values[k] = run(self.trees.steps[k], values)
-                self._fixed[target, bits] = values, [(k, s.apply, s.args) for k in self.trees.order(target)[MOVING]
-                                                     for s in (self.trees.steps[k],)]
+                moving = [(k, self.trees.steps[k]) for k in self.trees.order(target)[MOVING]]
+                self._fixed[target, bits] = values, [(k, step.apply, step.args) for k, step in moving]
             values, moving = self._fixed[target, bits]
             values[self.trees.unknown] = x
             for k, apply, args in moving:

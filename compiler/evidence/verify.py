@@ -1,7 +1,8 @@
 """Hold a compiled module against a reference that shares nothing with it, and against its published values.
 
-Roots: certified enclosures in ball arithmetic from the author's trees (`evidence/reference.py`). Derivatives: high-precision
-differences of roots solved again. Tangent against adjoint: w.(J v) = (J' w).v. C against Python. The limits are in `limits.py`.
+Roots: certified enclosures in ball arithmetic from the author's trees (`evidence/reference.py`). Derivatives:
+high-precision differences of roots solved again. Tangent against adjoint: w.(J v) = (J' w).v. C against Python. The
+limits are in `limits.py`.
 """
 
 import math
@@ -15,7 +16,7 @@ from rootwright.binding.build import NoCompiler
 from rootwright.binding.module import load
 from rootwright.emit.manual import STATUS
 from rootwright.evidence.evaluate import word
-from rootwright.evidence.limits import DERIVATIVE_GUARD, LIMITS, ROOT_NOISE, ROOT_ULPS
+from rootwright.evidence.limits import LIMITS, ROOT_NOISE, ROOT_ULPS, SCALE_SHARE, SCALE_WIDTH
 from rootwright.evidence.noise import noise, sensitivity
 from rootwright.evidence.points import choose, exact, in_range, published
 from rootwright.evidence.reference import FINE, NotSettled, Reference
@@ -30,7 +31,8 @@ CAVEATS = {name: code for code, name, _ in STATUS if code > 0}
 def verify(closure, points=200, seed=1, progress=None):
     """Report on the modules of a Closure at so many points of its operating range and at its published points.
 
-    `progress` is called with a line of text now and then. Without a C compiler the Python module alone is held against the reference.
+    `progress` is called with a line of text now and then. Without a C compiler the Python module alone is held against
+    the reference.
     """
     built, notes = modules(closure)
     return hold(closure, built, points, seed, progress, notes)
@@ -48,7 +50,10 @@ def modules(closure):
 
 
 def hold(closure, built, points=200, seed=1, progress=None, notes=()):
-    """Report on modules {target: module}, built elsewhere; see `verify`. `points` may also be the points themselves, {parameter: double}."""
+    """Report on modules {target: module}, built elsewhere; see `verify`.
+
+    `points` may also be the points themselves, {parameter: double}.
+    """
     holding = _Holding(closure, built, seed)
     corners, inside = choose(closure, points, seed) if isinstance(points, int) else ([], list(points))
     wanted = published(holding.reference.trees)
@@ -75,7 +80,7 @@ class _Tally:
             self.worst = (value, target, of, point)
 
     def measure(self):
-        goal = LIMITS[self.key].median
+        goal = LIMITS[self.key].goal
         within = 1.0 if goal is None else sum(value <= goal for value in self.values) / len(self.values)
         value, target, of, point = self.worst
         return Measure(self.key, len(self.values), value, statistics.median(self.values), within, target, of, point)
@@ -91,7 +96,8 @@ class _Holding:
         self.skipped, self.kinds, self.findings = Counter(), Counter(), []
         self.failures = 0
         self.ulps, self.overestimates = 0.0, []
-        self.widths = {parameter.name: high - low for parameter, (low, high) in zip(self.model.parameters, closure.ranges)}
+        self.widths = {parameter.name: high - low
+                       for parameter, (low, high) in zip(self.model.parameters, closure.ranges)}
 
     # -- collecting
 
@@ -113,7 +119,7 @@ class _Holding:
         solved = {target: module.solve_jacobian(list(point.values())) for target, module in self.built.items()}
         for target, (r, _) in solved.items():
             self.statuses[target][word(r.status)] += 1
-        roots = {target: r for target, (r, _) in solved.items() if r.status >= 0}
+        roots = {target: r for target, (r, _) in solved.items() if r.status >= 0 and self._is_number(r, target, point)}
         self._same_status(solved, point)
         self._all_solved(solved, point)
         if not roots:
@@ -141,6 +147,12 @@ class _Holding:
         if len(set(words.values())) > 1:
             self.found("targets", "c", "C says {c}, Python says {python}".format(**words), point)
 
+    def _is_number(self, r, target, point):
+        if math.isfinite(r.y[0]) and math.isfinite(r.error_bound):
+            return True
+        self.found("root", target, f"{word(r.status)}, but the root is {r.y[0]!r} with error_bound {r.error_bound!r}", point)
+        return False
+
     def _all_solved(self, solved, point):
         for target, (r, _) in solved.items():
             if r.status < 0 and in_range(self.closure, point):
@@ -158,7 +170,7 @@ class _Holding:
             residual = self.reference.trees.residual
             rounding, _ = sensitivity(place, ball(near.y[0]))
             if abs(float(place.value(residual, ball(near.y[0]), FINE).mid())) <= rounding:
-                self.skipped["points where the residual touches zero within rounding: no exact root to compare with"] += 1
+                self.skipped["points where the residual only touches zero, within rounding: no exact root"] += 1
             else:
                 for target, r in roots.items():
                     self.found("root", target, f"{r.y[0]!r} is no root that the reference can confirm: {error}", point)
@@ -192,7 +204,7 @@ class _Holding:
                           f"{r.y[index]!r}, exact {true!r}")
 
     def _identity(self, solved, target, point):
-        """w.(J v) by the tangent and (J' w).v by the adjoint, for random v and w of the sizes of parameters and results."""
+        """w.(J v) by tangent and (J' w).v by adjoint, for random v and w of the sizes of parameters and results."""
         r, jac = solved
         if not all(math.isfinite(entry) for row in jac for entry in row):
             return
@@ -248,8 +260,8 @@ class _Holding:
                 self.measured("derivative", error, target, of, point, what)
 
     def _scale(self, derivative, result, parameter, point):
-        reach = max(abs(point[parameter]), 1e-3 * self.widths[parameter], 5e-324)
-        return max(abs(derivative), DERIVATIVE_GUARD * abs(result) / reach, 5e-324)
+        reach = max(abs(point[parameter]), SCALE_WIDTH * self.widths[parameter], 5e-324)
+        return max(abs(derivative), SCALE_SHARE * abs(result) / reach, 5e-324)
 
     def _without(self, why, of, given, target, point):
         """The reference finds no derivative."""
@@ -280,13 +292,13 @@ class _Holding:
                 rows.append(Value(result, float(expected.mid()), float(tolerance.mid()), computed,
                                   math.inf if off is None else float(off.mid()), passed, entry.source, point))
                 if not passed:
-                    self.found("published", target, f"{result} is {computed!r} ({word(r.status)}), expected {float(expected.mid())!r} "
-                               f"within {float(tolerance.mid()):g}", point)
+                    self.found("published", target, f"{result} is {computed!r} ({word(r.status)}), expected "
+                               f"{float(expected.mid())!r} within {float(tolerance.mid()):g}", point)
             yield max(rows, key=lambda value: value.difference)
 
     def report(self, corners, inside, values, notes):
         measures = tuple(tally.measure() for tally in self.tallies.values() if tally.values)
         overestimate = statistics.median(self.overestimates) if self.overestimates else math.nan
-        return Report(self.model.name, tuple(self.built), notes, corners, inside, self.seed,
-                      {target: dict(words) for target, words in self.statuses.items()}, measures, self.ulps, overestimate,
-                      dict(self.skipped), tuple(values), tuple(self.findings), self.failures)
+        statuses = {target: dict(words) for target, words in self.statuses.items()}
+        return Report(self.model.name, tuple(self.built), notes, corners, inside, self.seed, statuses, measures,
+                      self.ulps, overestimate, dict(self.skipped), tuple(values), tuple(self.findings), self.failures)

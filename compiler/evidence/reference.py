@@ -41,7 +41,7 @@ class Root:
 
 @dataclass(frozen=True)
 class Derivative:
-    """value: the derivative, a float and a ball; or why there is none ("kink", "undefined", "unbounded")."""
+    """value: the derivative, or None; why: the reason that there is none: "kink", "undefined", "unbounded"."""
     value: float | None
     why: str = ""
 

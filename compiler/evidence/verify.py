@@ -150,7 +150,8 @@ class _Holding:
     def _is_number(self, r, target, point):
         if math.isfinite(r.y[0]) and math.isfinite(r.error_bound):
             return True
-        self.found("root", target, f"{word(r.status)}, but the root is {r.y[0]!r} with error_bound {r.error_bound!r}", point)
+        what = f"{word(r.status)}, but the root is {r.y[0]!r} with error_bound {r.error_bound!r}"
+        self.found("root", target, what, point)
         return False
 
     def _all_solved(self, solved, point):

@@ -1,4 +1,4 @@
-"""The command line: arguments, files, exit status. Nothing is computed here, and heavy modules are imported where they are used."""
+"""The command line: arguments, files, exit status. Nothing is computed here; heavy modules are imported where used."""
 
 import argparse
 import contextlib
@@ -12,7 +12,7 @@ from rootwright import __version__
 
 OK, FOUND, WRONG, INTERRUPTED = 0, 1, 2, 130
 
-_SPECS = "a spec file, or the bare name of a shipped spec"
+_SPEC, _SPECS = {"dest": "spec"}, {"dest": "specs", "nargs": "+"}
 _STATUS = "exit status: 0 all well; 1 the command ran and found something wrong; 2 the input or the usage is wrong"
 
 
@@ -53,64 +53,77 @@ def _explained(error):
 
     first, *_ = [*str(error).splitlines(), "no message"]
     if isinstance(error, BuildFailed):
-        return f"the C compiler refused the module ({first}); set CC to another compiler, or use the Python target"
+        return f"the C compiler refused the module ({first}); set CC to another one, or use the Python target"
     return f"a defect of rootwright, not of the spec: {type(error).__name__}: {first}; please report it with the spec"
 
 
 def _parser():
     parser = argparse.ArgumentParser(
         prog="rootwright", allow_abbrev=False, epilog=_STATUS,
-        description="From one scalar equation, written in a spec, to a standalone solver with exact derivatives of its root.")
+        description="From one scalar equation, written in a spec, to a standalone solver with exact derivatives of its "
+                    "root.")
     parser.add_argument("--version", action="version", version=f"rootwright {__version__}")
     commands = parser.add_subparsers(metavar="COMMAND", required=True)
 
-    check = _command(commands, "check", _check, "read and validate specs; print each like a page of a handbook", several=True)
+    check = _command(commands, "check", _check, "read and validate specs; print each like a page of a handbook", _SPECS)
     _add_json(check)
 
-    compile_ = _command(commands, "compile", _compile, "write a standalone module for each spec", several=True)
-    compile_.add_argument("--into", metavar="DIR", default=".", help="folder to write to, made where it is missing (default: the current one)")
-    compile_.add_argument("--target", choices=("c", "python"), default="c", help="c: NAME.h and NAME.c (default); python: NAME.py")
-    compile_.add_argument("--precision", type=_precision, default="double", metavar="double", help="arithmetic of the module")
+    compile_ = _command(commands, "compile", _compile, "write a standalone module for each spec", _SPECS)
+    compile_.add_argument("--into", metavar="DIR", default=".",
+                          help="folder to write to, made where it is missing (default: the current one)")
+    compile_.add_argument("--target", choices=("c", "python"), default="c",
+                          help="c: NAME.h and NAME.c (default); python: NAME.py")
+    compile_.add_argument("--precision", type=_precision, default="double", metavar="double",
+                          help="arithmetic of the module")
     compile_.add_argument("--order", type=_order, default=1, metavar="0|1",
-                          help="highest derivatives asked for (default 1); a module always has first derivatives, so both write the same")
+                          help="highest derivatives asked for (default 1); a module always has first derivatives, so "
+                               "both write the same")
 
-    evaluate = _command(commands, "eval", _eval, "solve at the points of a CSV file; write a CSV with roots, outputs, derivatives, status",
-                        "The input has one column for each parameter, named in its first line; other columns pass through. A row that is "
-                        "ragged or has a cell that is no number gets the status bad_input, with missing cells empty and surplus ones "
-                        "kept in the last column. Exits 1 when any row is left without a root.")
+    evaluate = _command(
+        commands, "eval", _eval,
+        "solve at the points of a CSV file; write a CSV with roots, outputs, derivatives, status", _SPEC,
+        "The input has one column for each parameter, named in its first line; other columns pass through. A row that "
+        "is ragged or has a cell that is no number gets the status bad_input, with missing cells empty and surplus "
+        "ones kept in the last column. Exits 1 when any row is left without a root.")
     evaluate.add_argument("--points", metavar="IN.csv", required=True, help="points to solve at; - for standard input")
-    evaluate.add_argument("--out", metavar="OUT.csv", default="-", help="where to write; - for standard output (default)")
-    evaluate.add_argument("--order", type=_order, default=1, metavar="0|1", help="1: with derivatives (default); 0: without")
+    evaluate.add_argument("--out", metavar="OUT.csv", default="-",
+                          help="where to write; - for standard output (default)")
+    evaluate.add_argument("--order", type=_order, default=1, metavar="0|1",
+                          help="1: with derivatives (default); 0: without")
     evaluate.add_argument("--target", choices=("c", "python"), default="c",
                           help="which module solves (default c; python where there is no C compiler)")
 
-    verify = _command(commands, "verify", _verify, "hold modules against a high-precision reference and the published values", several=True)
-    verify.add_argument("--points", type=_count, default=200, metavar="N", help="points of the operating range (default 200)")
+    verify = _command(commands, "verify", _verify,
+                      "hold modules against a high-precision reference and the published values", _SPECS)
+    verify.add_argument("--points", type=_count, default=200, metavar="N",
+                        help="points of the operating range (default 200)")
     verify.add_argument("--seed", type=int, default=1, metavar="S", help="seed of the random points (default 1)")
     _add_json(verify)
 
-    demo = commands.add_parser("demo", help="a whole job on an invented water main, start to end", allow_abbrev=False, epilog=_STATUS)
-    demo.set_defaults(run=_demo)
+    _command(commands, "demo", _demo, "a whole job on an invented water main, start to end")
     return parser
 
 
-def _command(commands, name, run, summary, details="", several=False):
-    command = commands.add_parser(name, help=summary, description=f"{summary[0].upper()}{summary[1:]}. {details}".strip(),
-                                  allow_abbrev=False, epilog=_STATUS)
-    command.add_argument("specs" if several else "spec", metavar="SPEC", nargs="+" if several else None, help=_SPECS)
+def _command(commands, name, run, summary, spec=None, details=""):
+    """A command that runs `run(arguments)`; spec: how its specs are declared, None where it takes none."""
+    description = f"{summary[0].upper()}{summary[1:]}. {details}".strip()
+    command = commands.add_parser(name, help=summary, description=description, allow_abbrev=False, epilog=_STATUS)
+    if spec is not None:
+        command.add_argument(metavar="SPEC", help="a spec file, or the bare name of a shipped spec", **spec)
     command.set_defaults(run=run)
     return command
 
 
 def _add_json(command):
     command.add_argument("--json", action="store_true",
-                         help="print one JSON object; for several specs it has one member, `specs`, a list of such objects")
+                         help="print one JSON object; for several specs its one member `specs` lists their objects")
 
 
 def _order(text):
     if text in ("0", "1"):
         return int(text)
-    raise argparse.ArgumentTypeError("second derivatives are not available yet; ask for 0 or 1" if text == "2" else f"{text!r} is not 0 or 1")
+    raise argparse.ArgumentTypeError("second derivatives are not available yet; ask for 0 or 1" if text == "2"
+                                     else f"{text!r} is not 0 or 1")
 
 
 def _precision(text):
@@ -123,7 +136,7 @@ def _precision(text):
 def _count(text):
     if text.isdecimal() and 0 < int(text) <= 10**7:
         return int(text)
-    raise argparse.ArgumentTypeError(f"{text!r} is not a number of points; give a whole number from 1 to 10000000")
+    raise argparse.ArgumentTypeError(f"{text!r} is not a number of points; give one from 1 to 10000000")
 
 
 # -- commands
@@ -153,7 +166,7 @@ def _verify(arguments):
 
 
 def _each(arguments, show):
-    """Run `show(closure) -> (JSON data, text, status)` on every spec and print what it found; the worst status of all."""
+    """Run `show(closure) -> (JSON data, text, status)` on every spec and print what it found: worst status."""
     found, worst = [], OK
     for k, spec in enumerate(arguments.specs):
         closure, diagnostics = _closure(spec)
@@ -189,7 +202,8 @@ def _compile(arguments):
         files = pipeline.emit(closure, arguments.target)
         clash = next((name for name in files if name in written), None)
         if clash:
-            raise Refusal(f"{spec}: {clash} was just written for {written[clash]}; give the specs different names, or compile into different folders")
+            raise Refusal(f"{spec}: {clash} was just written for {written[clash]}; give the specs different names, or "
+                          "compile into different folders")
         folder = Path(arguments.into)
         _make(folder)
         with contextlib.ExitStack() as stack:
@@ -262,7 +276,8 @@ def _closure(spec):
 
 
 def _as_data(diagnostic):
-    return {name: getattr(diagnostic, name) for name in ("severity", "file", "line", "column", "length", "message", "help")}
+    names = ("severity", "file", "line", "column", "length", "message", "help")
+    return {name: getattr(diagnostic, name) for name in names}
 
 
 def _load(closure, target):

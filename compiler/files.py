@@ -10,8 +10,8 @@ import shutil
 def replacing(path):
     """A binary stream whose content takes the place of the file `path` when the block ends well.
 
-    Otherwise the old file stays and nothing is left behind. What is there and no regular file (a device, a pipe) is written to
-    directly. Raises OSError.
+    Otherwise the old file stays and nothing is left behind. What is there and no regular file (a device, a pipe) is
+    written to directly. Raises OSError.
     """
     path = os.path.realpath(path)
     if os.path.exists(path) and not os.path.isfile(path):

@@ -38,8 +38,11 @@ def write(folder, name="level", equation="x^2 = a"):
     return str(path)
 
 
+COMMAND = [sys.executable, "-m", "rootwright"]
+
+
 def run(*arguments, **options):
-    return subprocess.run([sys.executable, "-m", "rootwright", *arguments], capture_output=True, text=True, check=False, **options)
+    return subprocess.run([*COMMAND, *arguments], capture_output=True, text=True, check=False, **options)
 
 
 # -- the command itself
@@ -60,8 +63,9 @@ def test_every_command_explains_itself(command, capsys):
     assert "exit status" in capsys.readouterr().out
 
 
-@pytest.mark.parametrize("arguments", [[], ["nonsense"], ["check"], ["check", "kepler", "--nonsense"], ["verify", "kepler", "--points", "0"],
-                                       ["eval", "kepler"], ["compile", "kepler", "--target", "ada"]])
+@pytest.mark.parametrize("arguments", [
+    [], ["nonsense"], ["check"], ["check", "kepler", "--nonsense"], ["verify", "kepler", "--points", "0"],
+    ["eval", "kepler"], ["compile", "kepler", "--target", "ada"]])
 def test_wrong_usage_exits_2_and_says_so_on_stderr(arguments, capsys):
     assert cli.main(arguments) == 2
     captured = capsys.readouterr()
@@ -91,7 +95,7 @@ def test_an_interrupt_exits_130_in_one_line(monkeypatch, capsys):
 
 
 def test_a_reader_that_goes_away_ends_the_command_quietly():
-    process = subprocess.Popen([sys.executable, "-m", "rootwright", "check", "kepler"], stdout=subprocess.PIPE, stderr=subprocess.PIPE)
+    process = subprocess.Popen([*COMMAND, "check", "kepler"], stdout=subprocess.PIPE, stderr=subprocess.PIPE)
     process.stdout.close()
     error = process.stderr.read()
     process.stderr.close()
@@ -101,14 +105,15 @@ def test_a_reader_that_goes_away_ends_the_command_quietly():
 @pytest.mark.skipif(not os.path.exists("/dev/full"), reason="needs a device that is always full")
 def test_a_full_disk_is_told_in_one_line():
     with open("/dev/full", "w") as full:
-        done = subprocess.run([sys.executable, "-m", "rootwright", "check", "kepler"], stdout=full, stderr=subprocess.PIPE, text=True, check=False)
+        done = subprocess.run([*COMMAND, "check", "kepler"], stdout=full, stderr=subprocess.PIPE, text=True,
+                              check=False)
     assert done.returncode == 2
     assert done.stderr.count("\n") == 1 and "is the disk full" in done.stderr
 
 
 def test_an_encoding_without_a_letter_of_the_spec_escapes_it(tmp_path):
-    path = tmp_path/"level.toml"
-    path.write_text(SQUARE.format(name="level", equation="x^2 = a").replace("[parameters]", 'title = "Füllstand"\n[parameters]'), encoding="utf-8")
+    path = Path(write(tmp_path))
+    path.write_text(path.read_text().replace("[parameters]", 'title = "Füllstand"\n[parameters]'), encoding="utf-8")
     done = run("check", str(path), env=os.environ | {"PYTHONIOENCODING": "ascii"})
     assert done.returncode == 0 and "F\\xfcllstand" in done.stdout
 
@@ -123,7 +128,7 @@ def shipped(request):
 
 
 def test_the_formulas_on_the_page_are_the_derivatives_that_the_module_returns(shipped, monkeypatch):
-    """Read back as expressions of a spec and evaluated with 300 bits, they give what the module's own instructions give."""
+    """Read back as expressions of a spec and evaluated with 300 bits, they give what the module's instructions give."""
     closure, module = shipped
     monkeypatch.setattr(tidy, "LONGEST", 10**6)
     model, sheet = closure.model, derivative_lines(closure.model)
@@ -141,7 +146,8 @@ def test_the_formulas_on_the_page_are_the_derivatives_that_the_module_returns(sh
             lowering.declare(label, lowering.lower(parse(text)))
     g, *outputs = sheet
     for point in sample_points(closure):
-        inputs = {name: ball(value) for name, value in point.items()} | {model.unknown.name: ball(module.solve(list(point.values())).y[0])}
+        root = module.solve(list(point.values())).y[0]
+        inputs = {name: ball(value) for name, value in (*point.items(), (model.unknown.name, root))}
         with precision(300):
             emitted = interpret(closure.program, Balls(), inputs, closure.kernels["jacobian"])
             values = evaluate(graph.instructions, lowering.names.values(), Balls(), inputs)
@@ -172,16 +178,17 @@ def test_the_page_of_every_shipped_spec_has_all_its_parts_within_100_columns(shi
     assert captured.err == ""
     assert max(map(len, captured.out.splitlines())) <= 100
     words = " ".join(captured.out.replace("\n", " ").split())
-    for text in (model.title, model.source, model.caution, model.unknown.about, *(parameter.about for parameter in model.parameters),
-                 *(published.source for published in model.published)):
+    for text in (model.title, model.source, model.caution, model.unknown.about,
+                 *(parameter.about for parameter in model.parameters), *(value.source for value in model.published)):
         assert " ".join(text.split()) in words
-    for heading in ("Source", "Equation", "Unknown", "Parameters", "Derivatives", "Solved points", "Published values", "Dimensions"):
+    for heading in ("Source", "Equation", "Unknown", "Parameters", "Derivatives", "Solved points", "Published values",
+                    "Dimensions"):
         assert f"\n{heading}" in captured.out
 
 
 def test_keplers_equation_has_the_derivatives_of_the_textbooks(capsys):
-    """dE/dM = 1/(1 - e*cos E), dE/de = sin E/(1 - e*cos E): common practice, e.g. the Newton step in Meeus, Astronomical Algorithms,
-    chapter 30."""
+    """dE/dM = 1/(1 - e*cos E), dE/de = sin E/(1 - e*cos E): common practice; the divisor is also that of
+    Newton's step in Meeus, Astronomical Algorithms, chapter 30 (from memory)."""
     assert cli.main(["check", "kepler", "--json"]) == 0
     facts = json.loads(capsys.readouterr().out)
     assert facts["derivatives"]["g"] == {"g_E": "1 - e*cos(E)", "g_e": "-sin(E)", "g_M": "-1"}

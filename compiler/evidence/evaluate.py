@@ -38,11 +38,11 @@ def columns(model, order):
 
 
 def evaluate(model, module, source, sink, order=1, progress=None):
-    """Solve at every row of a CSV and write it with the results added; returns {status word: rows}, in the order of the status table.
+    """Solve at every row of a CSV and write it with the results added; returns {status word: rows}.
 
-    source: binary stream of UTF-8 text with one column for each parameter, named in its first line. sink: text stream that does
-    not translate line ends. module: a CModule or PythonModule. progress: called with a line of text now and then.
-    Memory does not grow with the number of rows. Raises TableError where the table as a whole cannot be read.
+    source: binary stream of UTF-8 text with one column for each parameter, named in its first line. sink: text stream
+    that does not translate line ends. module: a CModule or PythonModule. progress: called with a line of text now and
+    then. Memory does not grow with the number of rows. Raises TableError where the table as a whole cannot be read.
     """
     text = io.TextIOWrapper(source, encoding="utf-8-sig", newline="")
     try:
@@ -95,10 +95,10 @@ class _Evaluation:
                 yield row
                 last = row[-1]
                 if ("\n" in last or "\r" in last) and not self.lines.last.rstrip().endswith('"'):
-                    self._refuse('a quotation mark is opened and never closed; close it, or double it inside a quoted cell')
+                    self._refuse("a quotation mark is never closed; close it, or double it inside a quoted cell")
         except csv.Error as error:
-            self._refuse("a cell is longer than 131,072 characters; is a quotation mark never closed?" if "limit" in str(error)
-                         else f"{error}; quote cells that hold line breaks")
+            too_long = "a cell is longer than 131,072 characters; is a quotation mark never closed?"
+            self._refuse(too_long if "limit" in str(error) else f"{error}; quote cells that hold line breaks")
         except UnicodeDecodeError:
             self._refuse("the text is not UTF-8; save the table as UTF-8")
 
@@ -142,23 +142,23 @@ class _Evaluation:
                 bad.add(k)
         points = self._points(rows, bad)
         out = self.module.solve_batch(points, self.order > 0)
-        status = [self._word(code) for code in out["status"].tolist()]
+        codes = out["status"].tolist()
+        words = [self._word(code) for code in codes]
         for k in bad:
-            status[k] = BAD_INPUT
-        counts.update(status)
+            words[k] = BAD_INPUT
+        counts.update(words)
         derivatives = [()]*len(rows)
         if self.order:
             derivatives = out["jac"][:, :, self.differentiated].reshape(len(rows), -1).tolist()
         plain = not _SPECIAL.search("\t".join(map("\t".join, rows)))
         before, after = ","*len(self.model.results), ","*(len(self.added) - len(self.model.results) - 1)
-        for row, code, name, y, iterations, bound, slopes in zip(
-                rows, out["status"].tolist(), status, out["y"].tolist(), out["iterations"].tolist(), out["error_bound"].tolist(), derivatives):
+        numbers = (out[field].tolist() for field in ("y", "iterations", "error_bound"))
+        for row, code, name, y, iterations, bound, slopes in zip(rows, codes, words, *numbers, derivatives):
             cells = ",".join(row if plain else map(_cell, row))
             if code < 0:
                 yield f"{cells}{before},{name}{after}"
             else:
-                numbers = ",".join(map(repr, y)), name, str(iterations), repr(bound), *map(repr, slopes)
-                yield f"{cells},{','.join(numbers)}"
+                yield ",".join([cells, *map(repr, y), name, str(iterations), repr(bound), *map(repr, slopes)])
 
     def _write(self, lines):
         """Write and pass on, so that who reads from a pipe sees every chunk when it is done."""
@@ -171,12 +171,12 @@ class _Evaluation:
         return self.words[code]
 
     def _squared(self, row):
-        """A ragged row with as many cells as there are columns: empty ones added, or the surplus kept in the last one."""
+        """A ragged row made as long as the header: empty cells added, or the surplus kept in the last one."""
         missing = len(self.header) - len(row)
         return row + [""]*missing if missing > 0 else row[:missing - 1] + [",".join(row[missing - 1:])]
 
     def _points(self, rows, bad):
-        """Parameters of every row as floats, NaN all through where one is not a number; such rows are added to `bad`."""
+        """Parameters of every row as floats; where one is no number all are NaN, and the row is added to `bad`."""
         values = []
         for place in self.places:
             cells = [row[place] for row in rows]

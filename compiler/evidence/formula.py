@@ -12,9 +12,9 @@ from rootwright.evidence.tidy import formula
 def derivative_lines(model):
     """{result: [(name, formula), ...]} for the residual (under a name of its own, the first key) and every output.
 
-    The lines of r hold `r_d = ...` for the definitions d between r and its inputs (the derivative of r through all that uses d), then
-    for the unknown and the differentiated parameters; what is zero is left out. Formulas that are a mere number or name are put where
-    they are used.
+    The lines of r hold `r_d = ...` for the definitions d between r and its inputs (the derivative of r through all that
+    uses d), then for the unknown and the differentiated parameters; what is zero is left out. Formulas that are a mere
+    number or name are put where they are used.
     """
     sheet = _Sheet(model)
     lines = {residual_name(model): sheet.lines(residual_name(model), sheet.residual)}

@@ -1,4 +1,4 @@
-"""A spec as a page of a handbook: what it says, the derivatives in closed form, a few solved points, the published values."""
+"""A spec as a page of a handbook: what it says, closed-form derivatives, a few solved points, the published values."""
 
 import math
 import random
@@ -19,7 +19,6 @@ _STAY = "\0"                     # a space at which no line ends
 _NAME = 24                       # longest name beside the solved points
 _CELL = 36                       # widest cell of a table but for the last column
 _TRIES = 500                     # points looked at for some that meet every requirement
-_ROOT = {"only": "the only root in the bracket", "lowest": "the lowest root in the bracket", "highest": "the highest root in the bracket"}
 _DIMENSIONS = {"checked": "checked: the equation and all definitions agree in dimension",
                "label": "labels only: the formula is empirical, its dimensions are not checked",
                "none": "not checked: not everything in use carries a unit"}
@@ -35,17 +34,17 @@ def describe(closure, module):
         "equation": model.equation,
         "definitions": [{"name": item.name, "expression": item.expression.text} for item in model.definitions],
         "constants": [_item(item, value=item.expression.text) for item in model.constants],
-        "parameters": [_item(item, range=[item.low.text, item.high.text], spread=item.spread, differentiate=item.differentiate)
-                       for item in model.parameters],
-        "unknown": _item(unknown, bracket=[unknown.lower.text, unknown.upper.text], ends=_ends(unknown), root=unknown.root,
-                         start=None if unknown.start is None else unknown.start.text),
+        "parameters": [_item(item, range=[item.low.text, item.high.text], spread=item.spread,
+                             differentiate=item.differentiate) for item in model.parameters],
+        "unknown": _item(unknown, bracket=[unknown.lower.text, unknown.upper.text], ends=_ends(unknown),
+                         root=unknown.root, start=None if unknown.start is None else unknown.start.text),
         "domain": [condition.text for condition in model.require],
         "outputs": [_item(item, expression=item.expression.text) for item in model.outputs],
         "dimensions": model.dimensions,
         "derivatives": {result: dict(lines) for result, lines in formulas.items()},
         "points": [_solved(model, module, point) for point in sample_points(closure)],
-        "published": [{"given": _texts(item.given), "expect": _texts(item.expect), "tolerance": _texts(item.tolerance),
-                       "source": item.source} for item in model.published],
+        "published": [{"given": _texts(item.given), "expect": _texts(item.expect),
+                       "tolerance": _texts(item.tolerance), "source": item.source} for item in model.published],
         "digest": model.digest,
     }
 
@@ -64,15 +63,15 @@ def _ends(unknown):
 
 
 def sample_points(closure):
-    """Up to POINTS points {parameter: double} of the operating range: lower ends, middle, upper ends, then others at random (fixed
-    seed), rounded to a few digits so that they read well."""
-    names = [parameter.name for parameter in closure.model.parameters]
+    """Up to POINTS points {parameter: double} of the operating range, rounded to a few digits so that they read well:
+    the lower ends, the middle, the upper ends, then points at random (fixed seed)."""
+    parameters = closure.model.parameters
     generator = random.Random(1)
     points = []
     for k in range(_TRIES):
-        shares = [k/2]*len(names) if k < 3 else [generator.random() for _ in names]
-        point = {name: _rounded(low, high, between(low, high, share, parameter.spread))
-                 for name, share, (low, high), parameter in zip(names, shares, closure.ranges, closure.model.parameters)}
+        shares = [k/2]*len(parameters) if k < 3 else [generator.random() for _ in parameters]
+        point = {parameter.name: _rounded(low, high, between(low, high, share, parameter.spread))
+                 for parameter, share, (low, high) in zip(parameters, shares, closure.ranges)}
         if point not in points and not interpret(closure.program, Doubles(), point, ["outside"])["outside"]:
             points.append(point)
         if len(points) == POINTS:
@@ -115,8 +114,8 @@ def _plain(text):
 
 
 def _wrapped(text, indent, hang=None):
-    lines = textwrap.wrap(_plain(text), WIDTH, initial_indent=indent, subsequent_indent=indent if hang is None else hang,
-                          break_on_hyphens=False)
+    lines = textwrap.wrap(_plain(text), WIDTH, initial_indent=indent, break_on_hyphens=False,
+                          subsequent_indent=indent if hang is None else hang)
     return [line.replace(_STAY, " ") for line in lines] or [indent]
 
 
@@ -147,14 +146,16 @@ def _equation(facts):
 
 def _quantities(facts):
     unknown = facts["unknown"]
-    left, right = ("(" if unknown["ends"] in ("open", "open-lower") else "["), (")" if unknown["ends"] in ("open", "open-upper") else "]")
+    left = "(" if unknown["ends"] in ("open", "open-lower") else "["
+    right = ")" if unknown["ends"] in ("open", "open-upper") else "]"
     bracket = f"{left}{unknown['bracket'][0]}, {unknown['bracket'][1]}{right}"
-    lines = _table(f"Unknown, {_ROOT[unknown['root']]}", ("name", "bracket", "unit", "about"),
+    lines = _table(f"Unknown, the {unknown['root']} root in the bracket", ("name", "bracket", "unit", "about"),
                    [(unknown["name"], bracket, unknown["unit"], unknown["about"])])
     if unknown["start"]:
         lines[-1:] = _labelled("    start", unknown["start"]) + [""]
     rows = [(item["name"], f"{item['range'][0]} to {item['range'][1]}", item["unit"], item["spread"],
-             item["about"] + ("" if item["differentiate"] else " (not differentiated)")) for item in facts["parameters"]]
+             item["about"] + ("" if item["differentiate"] else " (not differentiated)"))
+            for item in facts["parameters"]]
     lines += _table("Parameters", ("name", "range", "unit", "spread", "about"), rows)
     if facts["domain"]:
         lines += ["Meant for", ""] + [line for text in facts["domain"] for line in _wrapped(text, "    ", " "*8)] + [""]
@@ -165,8 +166,8 @@ def _quantities(facts):
 
 
 def _table(title, head, rows):
-    """A table without its empty columns, the last one wrapped; a row with a cell that is too wide runs over two lines. Nothing
-    without rows."""
+    """A table without its empty columns, the last one wrapped; a row with a cell that is too wide runs over two lines.
+    Nothing without rows."""
     if not rows:
         return []
     columns = [(name, [_plain(cell or "") for cell in column]) for name, column in zip(head, zip(*rows))]
@@ -190,14 +191,16 @@ def _row(cells, widths):
 def _derivatives(facts):
     x, parameters = facts["unknown"]["name"], [item["name"] for item in facts["parameters"] if item["differentiate"]]
     (g, of_residual), *of_outputs = facts["derivatives"].items()
-    names = {x, *(item["name"] for group in ("parameters", "constants", "definitions", "outputs") for item in facts[group])}
+    groups = ("parameters", "constants", "definitions", "outputs")
+    names = {x, *(item["name"] for group in groups for item in facts[group])}
     theta = next(name for name in ("P", "theta", "parameter", "any_parameter") if name not in names)
-    meaning = "the equation's left side minus its right side" if "=" in facts["equation"] else "the expression that is to be zero"
+    meaning = "the equation's left side minus its right side" if "=" in facts["equation"] else \
+        "the expression that is to be zero"
     lines = ["Derivatives", ""]
     if not parameters:
         return lines + ["    none: no parameter is differentiated", ""]
-    lines += _wrapped(f"d{x}/d{theta} = -{g}_{theta}/{g}_{x} for every parameter {theta}, by the implicit function theorem; {g} is "
-                      f"{meaning}; what is not listed is zero.", "  ")
+    lines += _wrapped(f"d{x}/d{theta} = -{g}_{theta}/{g}_{x} for every parameter {theta}, by the implicit function "
+                      f"theorem; {g} is {meaning}; what is not listed is zero.", "  ")
     lines += [""] + [line for name, text in of_residual.items() for line in _formula(f"{name} = {text}")] + [""]
     for output, formulas in of_outputs:
         along = _along(formulas, output, x)
@@ -217,10 +220,13 @@ def _points(facts):
     if not facts["points"]:
         return ["Solved points", "", "    none: no sampled point of the ranges meets every requirement", ""]
     results = [facts["unknown"]["name"], *(item["name"] for item in facts["outputs"])]
-    rows = [[clipped(item["name"], _NAME), *(f"{point['given'][item['name']]:.6g}" for point in facts["points"])] for item in facts["parameters"]]
+    points = facts["points"]
+    rows = [[clipped(item["name"], _NAME), *(f"{point['given'][item['name']]:.6g}" for point in points)]
+            for item in facts["parameters"]]
     rows.append(None)
-    rows += [[clipped(name, _NAME), *(f"{point['results'][name]:.8g}" if point["results"] else "-" for point in facts["points"])] for name in results]
-    rows.append(["status", *(point["status"] for point in facts["points"])])
+    rows += [[clipped(name, _NAME), *(f"{point['results'][name]:.8g}" if point["results"] else "-" for point in points)]
+             for name in results]
+    rows.append(["status", *(point["status"] for point in points)])
     widths = [max(len(row[k]) for row in rows if row) for k in range(len(rows[0]))]
     while sum(widths) + 2*len(widths) + 2 > WIDTH:
         widths.pop()

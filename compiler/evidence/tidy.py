@@ -1,19 +1,18 @@
-"""Instructions as a formula on paper: factors of a product gathered and equal ones made powers, equal terms of a sum added,
-quotients written with one stroke. For reading only; what is computed is printed by `emit/`.
+"""Instructions as a formula on paper: factors of a product gathered and equal ones made powers, equal terms of a sum
+added, quotients written with one stroke. For reading only; what is computed is printed by `emit/`.
 """
 
 from dataclasses import dataclass, field
 from fractions import Fraction
 
 from rootwright.calculus.program import needed
-from rootwright.operations import OPERATIONS
 
 LONGEST = 400                    # characters; a longer formula is not written out
 TOO_LONG = "(long; the emitted module has it in full)"
 
 _MOST = 40                       # terms of a sum or factors of a product
 _CUT = "..."
-_COMPARISONS = {key: row.c.split()[1] for key, row in OPERATIONS.items() if row.kind == "comparison" and key != "ordered"}
+_COMPARISONS = {"lt": "<", "le": "<=", "gt": ">", "ge": ">="}
 
 
 def formula(graph, node, forms):
@@ -54,9 +53,13 @@ class _Product:
             if abs(exponent) == 2 and base.startswith("sqrt(") and _is_enclosed(base[4:]):      # sqrt(a)^2 = a
                 del factors[base]
                 inside = base[5:-1]
-                squared = _Product(Fraction(inside)) if inside.isdecimal() else _Product(factors={_enclosed(inside): Fraction(1)})
+                squared = _Product(Fraction(inside)) if inside.isdecimal() else _factor(_enclosed(inside))
                 return product.times(squared, 1 if exponent > 0 else -1)
-        return product if len(factors) <= _MOST else _Product(factors={_CUT: Fraction(1)})
+        return product if len(factors) <= _MOST else _factor(_CUT)
+
+
+def _factor(text):
+    return _Product(factors={text: Fraction(1)})
 
 
 class _Power(str):
@@ -72,7 +75,8 @@ class _Form:
     def text(self):
         if not self.terms:
             return "0"
-        terms = sorted(self.terms, key=lambda term: term is not next((t for t in self.terms if t.coefficient > 0), None))
+        leading = next((term for term in self.terms if term.coefficient > 0), None)
+        terms = sorted(self.terms, key=lambda term: term is not leading)
         if len(terms) == 1 and terms[0].coefficient == 1 and _is_enclosed(terms[0].text()):
             return terms[0].text()[1:-1]
         signs = ["-" if term.coefficient < 0 else "+" for term in terms]
@@ -83,7 +87,7 @@ class _Form:
         """The form as one product: a sum becomes a factor in parentheses."""
         if len(self.terms) == 1:
             return self.terms[0]
-        return _Product(factors={f"({self.text()})": Fraction(1)}) if self.terms else _Product(Fraction(0))
+        return _factor(f"({self.text()})") if self.terms else _Product(Fraction(0))
 
     def plus(self, other, sign):
         sums = {frozenset(term.factors.items()): term for term in self.terms}
@@ -141,7 +145,7 @@ def _form(graph, instruction, forms):
 
 
 def _is_guard(graph, choice):
-    """True for a choice that only settles what NaN or an exact zero does: NaN otherwise, or the condition a < 0 or a > 0."""
+    """True for a choice that only settles what NaN or an exact zero does: else NaN, or condition a < 0 or a > 0."""
     condition = graph.instructions[choice.args[0]]
     sides = [graph.instructions[arg] for arg in condition.args]
     return graph.instructions[choice.args[2]].op == "nan" or (
@@ -150,11 +154,11 @@ def _is_guard(graph, choice):
 
 
 def _atom(text):
-    return _Form(_Product(factors={_clip(text): Fraction(1)}))
+    return _Form(_factor(_clip(text)))
 
 
 def _raised(base, exponent):
-    """A power that is no repeated multiplication. Exponents are multiplied only where that holds for every real base."""
+    """A power that is no repeated multiplication. Exponents multiply only where that holds for every real base."""
     inside, power = base.product(), exponent.product()
     if not power.factors and inside.coefficient == 1 and list(inside.factors.values()) == [1]:
         return _Form(_Product(factors={next(iter(inside.factors)): power.coefficient}))
@@ -170,9 +174,10 @@ def _power(base, exponent):
 
 
 def _ratio(value, thirds_only=False):
-    """(numerator, denominator) as texts: a short fraction (thirds_only: where no short decimal does), or a decimal over 1."""
+    """(numerator, denominator) as texts: a short fraction (thirds_only: unless a decimal is short), else a decimal."""
     decimal = 1000 % value.denominator == 0 and value.denominator > 1
-    if value.denominator <= 12 and value.numerator < 1000 and not (decimal and (thirds_only or value.denominator % 5 == 0)):
+    better = decimal and (thirds_only or value.denominator % 5 == 0)
+    if value.denominator <= 12 and value.numerator < 1000 and not better:
         return str(value.numerator), str(value.denominator)
     try:
         return repr(float(value)).removesuffix(".0"), "1"

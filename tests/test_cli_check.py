@@ -228,6 +228,16 @@ def test_a_spec_that_is_not_there_exits_2_and_lists_the_shipped_ones(spec, capsy
     assert captured.out == "" and "kepler" in captured.err and "Traceback" not in captured.err
 
 
+def test_the_page_finds_names_of_its_own_whatever_names_the_author_took(tmp_path, capsys):
+    taken = ["g", "G", "residual", "P", "theta", "parameter", "g_x", "x_g"]
+    path = Path(write(tmp_path, equation="x^2 = " + " + ".join(taken)))
+    ranges = "".join(f"{name} = {{ range = [0.1, 0.2] }}\n" for name in taken)
+    path.write_text(path.read_text().replace("a = { range = [0.5, 2.0] }\n", ranges))
+    assert cli.main(["check", str(path)]) == 0
+    page = capsys.readouterr().out
+    assert "dx/dP__ = -g___P__/g___x for every parameter P__" in page and "g___x = 2*x" in page
+
+
 def test_the_sample_of_points_reads_well_and_lies_in_the_operating_range(shipped):
     closure, module = shipped
     points = sample_points(closure)

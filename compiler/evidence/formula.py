@@ -24,9 +24,9 @@ def derivative_lines(model):
 
 
 def residual_name(model):
-    """`g`, or another name where the author uses that."""
+    """`g`, or another name where the author uses that (none of theirs has two underscores)."""
     taken = _declared(model)
-    return next(name for name in ("g", "G", "h", "r", "residual", "the_residual") if name not in taken)
+    return next(name for name in ("g", "G", "residual", "g__") if name not in taken)
 
 
 def _declared(model):

@@ -8,7 +8,7 @@ from rootwright.calculus.doubles import Doubles
 from rootwright.calculus.program import interpret
 from rootwright.calculus.soundness import between
 from rootwright.evidence.evaluate import word
-from rootwright.evidence.formula import derivative_lines, residual_name
+from rootwright.evidence.formula import derivative_lines
 from rootwright.spec.diagnostics import harmless
 from rootwright.spec.names import clipped
 
@@ -193,7 +193,7 @@ def _derivatives(facts):
     (g, of_residual), *of_outputs = facts["derivatives"].items()
     groups = ("parameters", "constants", "definitions", "outputs")
     names = {x, *(item["name"] for group in groups for item in facts[group])}
-    theta = next(name for name in ("P", "theta", "parameter", "any_parameter") if name not in names)
+    theta = next(name for name in ("P", "theta", "parameter", "P__") if name not in names)
     meaning = "the equation's left side minus its right side" if "=" in facts["equation"] else \
         "the expression that is to be zero"
     lines = ["Derivatives", ""]

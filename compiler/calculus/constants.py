@@ -9,6 +9,8 @@ from rootwright.calculus.balls import Balls, precision
 from rootwright.calculus.program import evaluate
 
 _PRECISIONS = (160, 640, 2560)      # bits; the last also resolves the smallest subnormals
+_OVERFLOW = flint.arb(2) ** 1025
+_UNDERFLOW = flint.arb(2) ** -1080
 
 
 class NotReal(ValueError):
@@ -38,7 +40,12 @@ def _evaluate(graph, node):
     for bits in _PRECISIONS:
         with precision(bits):
             value = evaluate(graph.instructions, [node], Balls(), {})[node]
-            if not value.is_finite():
+            size = abs(value)
+            if not value.is_finite() or size > _OVERFLOW:   # no Fraction of what may have a billion digits
+                continue
+            if size < _UNDERFLOW:
+                return 0.0, 0.0 if value.is_zero() else math.inf
+            if size.upper() > _OVERFLOW:
                 continue
             low, high = (_fraction(end) for end in (value.lower(), value.upper()))
             try:
@@ -46,8 +53,6 @@ def _evaluate(graph, node):
                     return _of_fraction((low + high) / 2)
             except OverflowError:
                 continue
-    if value.is_finite() and value.contains(0) and value.rad() < flint.arb(2) ** -1080:
-        return 0.0, 0.0
     raise NotReal
 
 

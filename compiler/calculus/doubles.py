@@ -12,7 +12,7 @@ class Doubles:
         try:
             return float(value)
         except OverflowError:
-            return math.copysign(math.inf, value)
+            return math.inf if value > 0 else -math.inf
 
     def pi(self):
         return math.pi

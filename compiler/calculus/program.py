@@ -185,8 +185,12 @@ class Graph:
             return instruction.args[0]
         if instruction.op == "sub":
             return self.apply("sub", *reversed(instruction.args))
-        if instruction.op in ("mul", "div") and self.literal(instruction.args[0]) is not None:
-            return self.apply(instruction.op, self.number(-self.literal(instruction.args[0])), instruction.args[1])
+        if instruction.op in ("mul", "div"):
+            first, second = instruction.args
+            if self.literal(first) is not None:
+                return self.apply(instruction.op, self.number(-self.literal(first)), second)
+            if self.instructions[first].op == "neg":
+                return self.apply(instruction.op, self.instructions[first].args[0], second)
         return self.apply("neg", a)
 
     def mul(self, a, b):

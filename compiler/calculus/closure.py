@@ -19,7 +19,7 @@ from fractions import Fraction
 
 from rootwright.calculus.constants import NotReal, nearest
 from rootwright.calculus.differentiate import gated, partials, sweep
-from rootwright.calculus.lower import COMPARISONS, Lowering
+from rootwright.calculus.lower import Lowering, comparisons
 from rootwright.calculus.magnitude import Magnitudes
 from rootwright.calculus.program import Graph, Program
 from rootwright.calculus.rounding import Rounding
@@ -172,15 +172,9 @@ class _Closing:
                 elif instruction.op in ("abs", "sign"):
                     switches[(guard, instruction.args[0], graph.number(0))] = None
                 elif instruction.op == "where" and graph.instructions[instruction.args[2]].op != "nan":
-                    for left, right in self._comparisons(instruction.args[0]):
+                    for left, right in comparisons(graph, instruction.args[0]):
                         switches[(guard, left, right)] = None
         return list(switches)
-
-    def _comparisons(self, condition):
-        instruction = self.graph.instructions[condition]
-        if instruction.op in COMPARISONS:
-            return [instruction.args]
-        return [pair for arg in instruction.args for pair in self._comparisons(arg)]
 
     def _kink(self, results, rounding):
         """Condition: at some switch, |left - right| is within its rounding error and what the root's error bound moves it by."""
@@ -206,7 +200,7 @@ def _touch(graph, node):
     except NotReal:
         exact = graph.literal(node)
         if exact is not None:
-            graph.constants[node] = (math.copysign(math.inf, exact), 0.0)
+            graph.constants[node] = (math.inf if exact > 0 else -math.inf, 0.0)
 
 
 def limit(lower, upper):

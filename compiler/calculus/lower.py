@@ -7,6 +7,18 @@ from rootwright.spec.expression import Name, Number
 COMPARISONS = ("lt", "le", "gt", "ge")
 
 
+def comparisons(graph, condition):
+    """What a condition compares: (left, right) of each comparison in it, from left to right."""
+    pairs, pending = [], [condition]
+    while pending:
+        instruction = graph.instructions[pending.pop()]
+        if instruction.op in COMPARISONS:
+            pairs.append(instruction.args)
+        else:
+            pending.extend(reversed(instruction.args))
+    return pairs
+
+
 class Lowering:
     """Lowers the expressions of one Model into one Graph. Names resolve to inputs, constants and definitions."""
 
@@ -58,16 +70,10 @@ class Lowering:
         """A choice; where an operand of a comparison could be NaN, a NaN there makes the result NaN."""
         graph = self.graph
         chosen = graph.enter("where", (condition, a, b))
-        for left, right in self._comparisons(condition):
+        for left, right in comparisons(graph, condition):
             if not (self._finite(left) and self._finite(right)):
                 chosen = graph.enter("where", (graph.apply("ordered", left, right), chosen, graph.nan()))
         return chosen
-
-    def _comparisons(self, condition):
-        instruction = self.graph.instructions[condition]
-        if instruction.op in COMPARISONS:
-            return [instruction.args]
-        return [pair for arg in instruction.args for pair in self._comparisons(arg)]
 
     def _finite(self, node):
         """Inputs are checked to be finite before anything is evaluated, constants at compile time."""

@@ -5,7 +5,8 @@ how it is spelled in each target, how accurate the library function is, and what
 rounding bounds, interpreters and printers all read this table and hold no list of operations of their own.
 
 A pullback `(g, adj, args, v) -> contributions` is the derivative rule: given the adjoint `adj` of the value `v`, it
-returns what flows to each argument, written with the graph builder `g` (see `calculus/program.py`). None means nothing.
+returns what flows to each argument, written with the graph builder `g` (see `calculus/program.py`). None means nothing;
+`Gated` means only where a condition holds, so that nothing of an argument that was not chosen is ever used.
 """
 
 from dataclasses import dataclass
@@ -24,6 +25,13 @@ class Operation:
     cost: int                       # in multiplications, roughly
 
 
+@dataclass(frozen=True, slots=True)
+class Gated:
+    """What flows to an argument while a condition holds, and only then."""
+    part: int
+    condition: int
+
+
 def _where_positive(g, adj, args, v):
     """Adjoints of a**b with a variable exponent: b*a**(b-1), and a**b*log(a), which tends to 0 with a where b > 0."""
     a, b = args
@@ -39,9 +47,11 @@ def _hypotenuse(g, adj, args, v):
 
 
 def _arctangent(g, adj, args, v):
+    """x/r^2 and -y/r^2, with no square of r, which would leave the range of doubles long before the derivatives do."""
     y, x = args
-    scaled = g.div(adj, g.add(g.mul(x, x), g.mul(y, y)))
-    return g.mul(scaled, x), g.neg(g.mul(scaled, y))
+    radius = g.hypot(y, x)
+    scaled = g.div(adj, radius)
+    return g.mul(scaled, g.div(x, radius)), g.neg(g.mul(scaled, g.div(y, radius)))
 
 
 def _quotient(g, adj, args, v):
@@ -49,12 +59,24 @@ def _quotient(g, adj, args, v):
     return scaled, g.neg(g.mul(scaled, v))
 
 
-def _chosen(test):
+def _extreme(test):
     """Adjoint of min and max: all of it to the argument that was chosen."""
     def pullback(g, adj, args, v):
         first = getattr(g, test)(args[0], args[1])
-        return g.where(first, adj, g.number(0)), g.where(first, g.number(0), adj)
+        return Gated(adj, first), Gated(adj, g.not_(first))
     return pullback
+
+
+def _choice(g, adj, args, v):
+    condition = args[0]
+    return None, Gated(adj, condition), Gated(adj, g.not_(condition))
+
+
+def _hyperbolic_secant_squared(g, adj, args, v):
+    """1/cosh(a)^2 as 4*e/(1 + e)^2 with e = exp(-2*abs(a)): no overflow, and no cancellation where tanh is close to 1."""
+    decay = g.exp(g.mul(-2, g.abs_(args[0])))
+    above = g.add(1, decay)
+    return (g.mul(adj, g.div(g.mul(4, decay), g.mul(above, above))),)
 
 
 def _one_minus_square(g, a):
@@ -101,11 +123,11 @@ OPERATIONS: dict[str, Operation] = {
     "and": Operation("logic", (2, 2), "everywhere", "{0} && {1}", "{0} and {1}", None, 0.0, 1),
     "or": Operation("logic", (2, 2), "everywhere", "{0} || {1}", "{0} or {1}", None, 0.0, 1),
     "not": Operation("logic", (1, 1), "everywhere", "!{0}", "not {0}", None, 0.0, 0),
-    "where": Operation("choice", (3, 3), "the branch chosen", "{0} ? {1} : {2}", "{1} if {0} else {2}", None, 0.0, 1),
+    "where": Operation("choice", (3, 3), "the branch chosen", "{0} ? {1} : {2}", "{1} if {0} else {2}", _choice, 0.0, 1),
     "sqrt": _function(0.5, 10, lambda g, adj, a, v: (g.div(adj, g.mul(2, v)),), "sqrt", "a >= 0", "_sqrt"),
     "cbrt": _function(4.0, 20, lambda g, adj, a, v: (g.div(adj, g.mul(3, g.mul(v, v))),), "cbrt"),
     "exp": _function(1.0, 15, lambda g, adj, a, v: (g.mul(adj, v),), "exp", "a < 709.78", "_exp"),
-    "expm1": _function(1.0, 20, lambda g, adj, a, v: (g.mul(adj, g.add(v, 1)),), "expm1", "a < 709.78", "_expm1"),
+    "expm1": _function(1.0, 20, lambda g, adj, a, v: (g.mul(adj, g.exp(a[0])),), "expm1", "a < 709.78", "_expm1"),
     "log": _function(1.0, 15, lambda g, adj, a, v: (g.div(adj, a[0]),), "log", "a > 0", "_log"),
     "log10": _function(2.0, 20, _logarithm(10), "log10", "a > 0", "_log10"),
     "log2": _function(1.0, 15, _logarithm(2), "log2", "a > 0", "_log2"),
@@ -119,9 +141,9 @@ OPERATIONS: dict[str, Operation] = {
     "atan2": _function(1.0, 30, _arctangent, "atan2", "not both 0", arity=2),
     "sinh": _function(3.0, 25, lambda g, adj, a, v: (g.mul(adj, g.cosh(a[0])),), "sinh", "abs(a) < 710.47", "_sinh"),
     "cosh": _function(3.0, 25, lambda g, adj, a, v: (g.mul(adj, g.sinh(a[0])),), "cosh", "abs(a) < 710.47", "_cosh"),
-    "tanh": _function(3.0, 25, lambda g, adj, a, v: (g.mul(adj, _one_minus_square(g, v)),), "tanh"),
+    "tanh": _function(3.0, 25, _hyperbolic_secant_squared, "tanh"),
     "asinh": _function(3.0, 30, lambda g, adj, a, v: (g.div(adj, g.hypot(g.number(1), a[0])),), "asinh"),
-    "acosh": _function(3.0, 30, lambda g, adj, a, v: (g.div(adj, g.sqrt(g.mul(g.sub(a[0], 1), g.add(a[0], 1)))),), "acosh", "a >= 1", "_acosh"),
+    "acosh": _function(3.0, 30, lambda g, adj, a, v: (g.div(adj, g.mul(g.sqrt(g.sub(a[0], 1)), g.sqrt(g.add(a[0], 1)))),), "acosh", "a >= 1", "_acosh"),
     "atanh": _function(3.0, 30, lambda g, adj, a, v: (g.div(adj, _one_minus_square(g, a[0])),), "atanh", "-1 < a < 1", "_atanh"),
     "erf": _function(1.0, 25, _gauss(1), "erf"),
     "erfc": _function(6.0, 30, _gauss(-1), "erfc"),
@@ -129,6 +151,6 @@ OPERATIONS: dict[str, Operation] = {
     "abs": Operation("function", (1, 1), "everywhere", "fabs({0})", "abs({0})",
                      lambda g, adj, a, v: (g.where(g.lt(a[0], 0), g.neg(adj), adj),), 0.0, 1),
     "sign": Operation("function", (1, 1), "everywhere", "rw_sign({0})", "_sign({0})", None, 0.0, 1),
-    "min": Operation("function", (2, None), "everywhere", "rw_min({0}, {1})", "_min({0}, {1})", _chosen("le"), 0.0, 1),
-    "max": Operation("function", (2, None), "everywhere", "rw_max({0}, {1})", "_max({0}, {1})", _chosen("ge"), 0.0, 1),
+    "min": Operation("function", (2, None), "everywhere", "rw_min({0}, {1})", "_min({0}, {1})", _extreme("le"), 0.0, 1),
+    "max": Operation("function", (2, None), "everywhere", "rw_max({0}, {1})", "_max({0}, {1})", _extreme("ge"), 0.0, 1),
 }

@@ -8,14 +8,14 @@ chain rule on paper. Every rule comes from the operation table.
 from heapq import heappop, heappush
 
 from rootwright.calculus.program import Node
-from rootwright.operations import OPERATIONS
+from rootwright.operations import OPERATIONS, Gated
 
 
 def sweep(graph, result):
     """Adjoint and guard of every value that `result` depends on: {node: (derivative of result, guard)}.
 
     The guard is None, or a condition outside of which the value belongs to a branch that was not chosen: its local derivatives
-    may then be NaN, so nothing of it may be used unguarded. Branches are gated where they leave `where`, never multiplied by 0.
+    may then be NaN, so nothing of it may be used unguarded. Branches are gated where they leave `where`, `min` and `max`, never multiplied by 0.
     """
     adjoints = {result: (graph.number(1), None)}
     pending = [-result]                     # a heap: every value is visited after all that use it
@@ -43,17 +43,16 @@ def gated(graph, value, guard):
 
 def _contributions(graph, node, adjoint, guard):
     instruction = graph.instructions[node]
-    if instruction.op == "where":
-        condition, a, b = instruction.args
-        if graph.instructions[b].op == "nan":       # the guard against NaN operands: a NaN value needs no derivative
-            return [(a, adjoint, guard)]
-        flows = [(a, adjoint, _both(graph, guard, condition)),
-                 (b, adjoint, _both(graph, guard, graph.not_(condition)))]
-    elif instruction.op in OPERATIONS and OPERATIONS[instruction.op].pullback is not None:
+    if instruction.op == "where" and graph.instructions[instruction.args[2]].op == "nan":
+        return [(instruction.args[1], adjoint, guard)]      # the guard against NaN operands: a NaN needs no derivative
+    flows = []
+    if instruction.op in OPERATIONS and OPERATIONS[instruction.op].pullback is not None:
         parts = OPERATIONS[instruction.op].pullback(graph, adjoint, instruction.args, node)
-        flows = [(arg, part, guard) for arg, part in zip(instruction.args, parts) if part is not None]
-    else:
-        flows = []
+        for arg, part in zip(instruction.args, parts):
+            if isinstance(part, Gated):
+                flows.append((arg, part.part, _both(graph, guard, part.condition)))
+            elif part is not None:
+                flows.append((arg, part, guard))
     return [flow for flow in flows if not graph.is_constant(flow[0])]
 
 

@@ -14,7 +14,7 @@ a logarithm is itself uncertain; the rest is covered by `UNIT`, which is 8 % abo
 """
 
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from fractions import Fraction
 
 from rootwright.calculus.constants import NotReal, nearest, nearest_rounding
@@ -122,9 +122,12 @@ class Rounding:
 
     def _constant(self, node):
         try:
-            return Error(relative=nearest_rounding(self.graph, node))
+            relative = nearest_rounding(self.graph, node)
         except NotReal:             # a constant of a derivative that overflows: infinite, and not in error
             return Error()
+        if relative <= 1.0:
+            return Error(relative=relative)
+        return Error(absolute=_SUBNORMAL)       # subnormal, or zero for a constant that is not
 
     def _underflow(self, node):
         return 0.0 if smallest(self.magnitudes.of(node)) > _SMALL else _SUBNORMAL
@@ -151,7 +154,7 @@ class Rounding:
     def _mul(self, node, a, b):
         one, other = self.error(a), self.error(b)
         for factor, rest in ((a, other), (b, one)):
-            if self.graph.is_constant(factor) and _power_of_two(nearest(self.graph, factor)):
+            if self.graph.is_constant(factor) and _power_of_two(nearest(self.graph, factor)) and not self.error(factor).relative:
                 scale = abs(nearest(self.graph, factor))
                 return Error(rest.relative, rest.absolute * scale + self._underflow(node),
                              None if rest.running is None else self._scaled(scale, rest.running))
@@ -181,9 +184,13 @@ class Rounding:
         Just |a| where its error is of no account over the whole operating range.
         """
         graph = self.graph
-        if largest(self.magnitudes.of(units)) <= 2.0 ** 43 * smallest(self.magnitudes.of(node)):
+        if not self._is_near_zero(node, units):
             return self._magnitude(node)
         return graph.max_(graph.sub(self._magnitude(node), graph.mul(graph.number(UNIT), units)), graph.number(_TINIEST))
+
+    def _is_near_zero(self, node, units):
+        """True where the value may come so near to zero in the operating range that its error, in units of u, is no longer small beside it."""
+        return largest(self.magnitudes.of(units)) > 2.0 ** 43 * smallest(self.magnitudes.of(node))
 
     def _where(self, node, condition, a, b):
         if self.graph.instructions[b].op == "nan":
@@ -193,11 +200,21 @@ class Rounding:
             return Error(max(one.relative, other.relative))
         return Error(running=self.graph.where(condition, self._units(a), self._units(b)))
 
+    def _extreme(self, node, first, a, b):
+        """The error of the argument chosen; or, near a tie, what is left of the other's when the distance is taken off."""
+        graph, one, other = self.graph, self.error(a), self.error(b)
+        if one.running is None and other.running is None and one.absolute == other.absolute == 0.0:
+            return Error(max(one.relative, other.relative))
+        units, distance = (self._units(a), self._units(b)), graph.div(graph.abs_(graph.sub(a, b)), graph.number(UNIT))
+        chosen = [mine if graph.literal(its) == 0 else graph.max_(mine, graph.sub(its, distance))
+                  for mine, its in (units, reversed(units))]
+        return Error(running=graph.where(first, *chosen))
+
     def _min(self, node, a, b):
-        return self._where(node, self.graph.le(a, b), a, b)
+        return self._extreme(node, self.graph.le(a, b), a, b)
 
     def _max(self, node, a, b):
-        return self._where(node, self.graph.ge(a, b), a, b)
+        return self._extreme(node, self.graph.ge(a, b), a, b)
 
     def _sign(self, node, a):
         return Error()
@@ -214,6 +231,8 @@ class Rounding:
 
     def _exp(self, node, a):
         run, absolute = self._parts(a)
+        if run is not None and self._coarse(run):
+            run = self.graph.div(self.graph.expm1(self.graph.mul(self.graph.number(UNIT), run)), self.graph.number(UNIT))
         return Error(2.0 * OPERATIONS["exp"].ulps + absolute, self._underflow(node),
                      None if run is None else self.graph.mul(node, run))
 
@@ -258,8 +277,18 @@ class Rounding:
                 parts.append(graph.mul(self._magnitude(logarithm), exponent))
         carried = self._sum(*parts)
         if carried is not None:
-            running = graph.mul(self._magnitude(node), carried)
+            running = graph.mul(self._steepest_power(node, a, b, units), carried)
+            if self._is_near_zero(a, units) and graph.is_constant(b) and nearest(graph, b) > 0.0:
+                error = graph.mul(graph.number(UNIT), units)        # where a itself is within its error: at most (2*error)^b
+                running = graph.where(graph.lt(error, a), running, graph.div(graph.apply("pow", graph.mul(2, error), b), graph.number(UNIT)))
         return Error(relative, self._underflow(node), running)
+
+    def _steepest_power(self, node, a, b, units):
+        """The power itself; or, with a negative exponent, at what is certain of a base near 0."""
+        graph = self.graph
+        if self._is_near_zero(a, units) and graph.is_constant(b) and nearest(graph, b) < 0.0:
+            return graph.apply("pow", self._certain(a, units), b)
+        return self._magnitude(node)
 
     def _bounded_slope(self, node, a):
         """sin and cos change by no more than their argument does."""
@@ -268,17 +297,103 @@ class Rounding:
 
     _sin = _cos = _bounded_slope
 
+    def _function(self, node, a, carry):
+        """A function beside a singularity: `carry(units, e)` bounds what the argument's error, e in size, becomes."""
+        graph, op = self.graph, self.graph.instructions[node].op
+        units = self._units(a)
+        error = Error(2.0 * OPERATIONS[op].ulps, self._underflow(node))
+        if graph.literal(units) == 0:
+            return error
+        distance = graph.max_(graph.mul(graph.number(UNIT), units), graph.number(_TINIEST))
+        return replace(error, running=carry(units, distance))
+
+    def _arc(self, node, a):
+        """Beside 1 these are like square roots: |f(a) - f(b)| <= 2*e/sqrt(max(|1 - a^2|, e)) for |a - b| <= e."""
+        graph = self.graph
+        left = graph.abs_(graph.mul(graph.sub(1, a), graph.add(1, a)))
+        return self._function(node, a, lambda units, e: graph.div(graph.mul(2, units), graph.sqrt(graph.max_(left, e))))
+
+    _asin = _acos = _acosh = _arc
+
+    def _cbrt(self, node, a):
+        """|cbrt(a) - cbrt(b)| <= 2^(2/3)*e/max(|a|, e)^(2/3) for |a - b| <= e."""
+        graph, error = self.graph, self.error(a)
+        units = self._total(Error(0.0, error.absolute, error.running), a)
+        running = None
+        if graph.literal(units) != 0:
+            root = graph.cbrt(graph.max_(graph.abs_(a), graph.max_(graph.mul(graph.number(UNIT), units), graph.number(_TINIEST))))
+            running = graph.div(self._scaled(1.588, units), graph.mul(root, root))
+        return Error(error.relative / 3.0 + 2.0 * OPERATIONS["cbrt"].ulps, 0.0, running)
+
+    def _log1p(self, node, a):
+        graph = self.graph
+        return self._function(node, a, lambda units, e: graph.div(units, graph.max_(
+            graph.sub(graph.add(1, a), e), graph.number(_TINIEST))))
+
+    def _atanh(self, node, a):
+        graph = self.graph
+        left = graph.mul(graph.sub(1, a), graph.add(1, a))
+        return self._function(node, a, lambda units, e: graph.div(units, graph.max_(
+            graph.sub(left, graph.mul(2, e)), graph.number(_TINIEST))))
+
+    def _tan(self, node, a):
+        """tan(a + e) - tan(a) = tan(e)*(1 + tan(a)^2)/(1 - tan(a)*tan(e))."""
+        graph = self.graph
+        return self._function(node, a, lambda units, e: graph.div(graph.mul(units, graph.add(1, graph.mul(node, node))), graph.max_(
+            graph.sub(1, graph.mul(graph.abs_(node), e)), graph.number(_TINIEST))))
+
+    def _hypot(self, node, a, b):
+        """No longer than the errors of both arguments; and as relative as they are."""
+        one, other = self.error(a), self.error(b)
+        parts = [self._total(Error(0.0, error.absolute, error.running), arg) for error, arg in ((one, a), (other, b))]
+        running = self._sum(*(part for part in parts if self.graph.literal(part) != 0))
+        return Error(max(one.relative, other.relative) + 2.0 * OPERATIONS["hypot"].ulps, self._underflow(node), running)
+
+    def _atan2(self, node, a, b):
+        """The error across the radius, over what is left of it."""
+        graph = self.graph
+        units = [self._units(a), self._units(b)]
+        running = None
+        if any(graph.literal(part) != 0 for part in units):
+            error = graph.max_(graph.mul(graph.number(UNIT), graph.add(*units)), graph.number(_TINIEST))
+            radius = graph.max_(graph.hypot(a, b), error)
+            levers = [graph.div(graph.max_(graph.abs_(side), error), radius) for side in (b, a)]
+            across = graph.add(graph.mul(levers[0], units[0]), graph.mul(levers[1], units[1]))
+            running = graph.div(across, graph.max_(graph.sub(radius, error), graph.number(_TINIEST)))
+        return Error(2.0 * OPERATIONS["atan2"].ulps, self._underflow(node), running)
+
+    def _coarse(self, units):
+        """True where an error may be as large as 2^-10 somewhere in the operating range: not small beside 1."""
+        return largest(self.magnitudes.of(units)) > 2.0 ** 43
+
     def _general(self, node, instruction):
-        """Any other function: the error of each argument times the slope there."""
+        """Any other function, all of one argument: its error times the steepest slope within that error."""
         graph, operation = self.graph, OPERATIONS[instruction.op]
-        slopes = operation.pullback(graph, graph.number(1), instruction.args, node)
-        parts = []
-        for arg, slope in zip(instruction.args, slopes):
-            error = self.error(arg)
-            units = self._total(error, arg)
-            if slope is not None and graph.literal(units) != 0:
-                parts.append(graph.mul(graph.abs_(slope), units))
-        return Error(2.0 * operation.ulps, self._underflow(node), self._sum(*parts))
+        (a,) = instruction.args
+        units = self._units(a)
+        if graph.literal(units) == 0:
+            return Error(2.0 * operation.ulps, self._underflow(node))
+        steepest, there = a, node
+        if self._coarse(units):
+            steepest = _STEEPEST[instruction.op](graph, a, graph.mul(graph.number(UNIT), units))
+            there = graph.apply(instruction.op, steepest)
+        (slope,) = operation.pullback(graph, graph.number(1), (steepest,), there)
+        return Error(2.0 * operation.ulps, self._underflow(node), graph.mul(graph.abs_(slope), units))
+
+
+def _inward(graph, a, error):
+    return graph.max_(graph.sub(graph.abs_(a), error), graph.number(0))
+
+
+def _outward(graph, a, error):
+    return graph.add(graph.abs_(a), error)
+
+
+# Where within `error` of the argument a function is steepest.
+_STEEPEST = {
+    "tanh": _inward, "erf": _inward, "atan": _inward, "asinh": _inward, "sinh": _outward, "cosh": _outward,
+    "expm1": lambda graph, a, error: graph.add(a, error), "erfc": _inward,
+}
 
 
 def _power_of_two(value):

@@ -18,7 +18,9 @@ def _pow(a, b):
     except OverflowError:
         return -math.inf if a < 0.0 and b % 2.0 == 1.0 else math.inf
     except ValueError:
-        return math.inf if a == 0.0 else math.nan
+        if a != 0.0:
+            return math.nan
+        return math.copysign(math.inf, a) if b % 2.0 == 1.0 else math.inf
 
 
 def _ordered(a, b):

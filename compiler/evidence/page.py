@@ -17,7 +17,7 @@ POINTS = 5
 
 _STAY = "\0"                     # a space at which no line ends
 _NAME = 24                       # longest name beside the solved points
-_CELL = 36                       # widest cell of a table but for the last column
+_CELL = 44                       # widest cell of a table but for the last column
 _TRIES = 500                     # points looked at for some that meet every requirement
 _DIMENSIONS = {"checked": "checked: the equation and all definitions agree in dimension",
                "label": "labels only: the formula is empirical, its dimensions are not checked",
@@ -149,7 +149,7 @@ def _quantities(facts):
     left = "(" if unknown["ends"] in ("open", "open-lower") else "["
     right = ")" if unknown["ends"] in ("open", "open-upper") else "]"
     bracket = f"{left}{unknown['bracket'][0]}, {unknown['bracket'][1]}{right}"
-    lines = _table(f"Unknown, the {unknown['root']} root in the bracket", ("name", "bracket", "unit", "about"),
+    lines = _table(f"Unknown, declared to be the {unknown['root']} root in its bracket", ("name", "bracket", "unit", "about"),
                    [(unknown["name"], bracket, unknown["unit"], unknown["about"])])
     if unknown["start"]:
         lines[-1:] = _labelled("    start", unknown["start"]) + [""]
@@ -166,8 +166,8 @@ def _quantities(facts):
 
 
 def _table(title, head, rows):
-    """A table without its empty columns, the last one wrapped; a row with a cell that is too wide runs over two lines.
-    Nothing without rows."""
+    """A table without its empty columns, the last one wrapped; what follows a cell that is too wide goes to the
+    next line. Nothing without rows."""
     if not rows:
         return []
     columns = [(name, [_plain(cell or "") for cell in column]) for name, column in zip(head, zip(*rows))]
@@ -176,12 +176,22 @@ def _table(title, head, rows):
     widths[-1] = max(_CELL, WIDTH - 4 - sum(widths[:-1]) - 2*(len(widths) - 1))
     lines = [title, "", _row(head, widths)]
     for row in zip(*columns):
-        if all(len(cell) <= width for cell, width in zip(row[:-1], widths)):
-            first, *more = textwrap.wrap(row[-1], widths[-1]) or [""]
-            lines += [_row((*row[:-1], first), widths), *(_row(("",)*len(row[:-1]) + (text,), widths) for text in more)]
-        else:
-            lines += _wrapped("  ".join(filter(None, row)), "    ", " "*8)
+        start = 0
+        for k, cell in enumerate(row):
+            if k < len(row) - 1 and len(cell) > widths[k]:
+                before = "".join(f"{text:{width}}  " for text, width in zip(row[start:k], widths[start:k]))
+                lines += _wrapped(before.replace(" ", _STAY) + cell, " "*_place(start, widths), " "*8)
+                start = k + 1
+        first, *more = textwrap.wrap(row[-1], widths[-1]) or [""]
+        if any((*row[start:-1], first)):
+            lines.append(_row((*("",)*start, *row[start:-1], first), widths))
+        lines += [" "*_place(len(row) - 1, widths) + text for text in more]
     return lines + [""]
+
+
+def _place(k, widths):
+    """Column of the page where column k of a table begins."""
+    return 4 + sum(widths[:k]) + 2*k
 
 
 def _row(cells, widths):

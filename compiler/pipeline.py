@@ -5,6 +5,7 @@ from pathlib import Path
 
 from rootwright.spec.diagnostics import ERROR, Diagnostic
 from rootwright.spec.reader import read
+from rootwright.spec.source import MAX_BYTES
 
 
 class SpecError(Exception):
@@ -27,7 +28,8 @@ def find(spec):
     if spec in shipped() and not path.is_file():
         return resources.files("rootwright.specs").joinpath(f"{spec}.toml").read_bytes(), f"{spec}.toml"
     try:
-        return path.read_bytes(), spec
+        with path.open("rb") as stream:
+            return stream.read(MAX_BYTES + 1), spec         # the reader refuses what is longer
     except OSError as error:
         reason = "is a directory" if path.is_dir() else "no such file, and no shipped spec of that name" \
             if isinstance(error, FileNotFoundError) else "cannot be read"

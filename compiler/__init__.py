@@ -1,3 +1,5 @@
 """Rootwright: a compiler from one scalar equation to a standalone solver with exact derivatives of its root."""
 
-__version__ = "0.1.0"
+from rootwright.version import __version__
+
+__all__ = ["__version__"]

@@ -8,7 +8,7 @@ import os
 import sys
 from pathlib import Path
 
-from rootwright import __version__
+from rootwright.version import __version__
 
 OK, FOUND, WRONG, INTERRUPTED = 0, 1, 2, 130
 

@@ -82,8 +82,16 @@ def test_a_derivative_at_the_edge_of_the_domain_is_taken_from_one_side():
     assert found["x", "a"].value == pytest.approx(3.0, abs=1e-15)
 
 
+@pytest.mark.parametrize("equation", ["x = 1 + a^2", "x = 1 + 0.5*a*tanh(a)", "x = 1 + a*abs(a)"])
+def test_a_derivative_that_is_zero_is_no_kink(equation):
+    reference = _reference(equation, ("0", "9"), {"a": (-1, 1)})
+    found = reference.derivatives({"a": 0.0}, reference.root({"a": 0.0}).mid)
+    assert found["x", "a"].value == pytest.approx(0.0, abs=1e-25)
+
+
 @pytest.mark.parametrize("equation, why", [
-    ("x = 2 + abs(a)", "kink"), ("x = 2 + sqrt(a)", "unbounded"), ("x = 2 + a^1.1", "undefined")])
+    ("x = 2 + abs(a)", "kink"), ("x = 2 + sqrt(a)", "unbounded"), ("x = 2 + cbrt(a)", "unbounded"),
+    ("x = 2 + sqrt(abs(a))", "unbounded"), ("x = 2 + a^1.1", "undefined")])
 def test_where_there_is_no_derivative_the_reference_says_why(equation, why):
     reference = _reference(equation, ("0", "9"), {"a": (-1, 1)})
     derivative = reference.derivatives({"a": 0.0}, reference.root({"a": 0.0}).mid)["x", "a"]

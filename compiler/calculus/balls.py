@@ -79,6 +79,8 @@ class Balls:
         return abs(a)
 
     def sign(self, a):
+        if a.is_nan():
+            return a
         return flint.arb(1) if a > 0 else flint.arb(-1) if a < 0 else flint.arb(0) if a.is_zero() else flint.arb(0, 1)
 
     def min_(self, a, b):
@@ -112,7 +114,7 @@ class Balls:
         return a.log() / flint.arb(2).log()
 
     def atan2(self, a, b):
-        return flint.arb.atan2(a, b)
+        return flint.arb("nan") if a.is_nan() or b.is_nan() else flint.arb.atan2(a, b)
 
     def hypot(self, a, b):
         return (a * a + b * b).sqrt()

@@ -8,6 +8,7 @@ DERIVATIVE = 1e-8           # largest error of a first derivative dY/dP, against
 DERIVATIVE_GOAL = 1e-12     # where nearly all of them should lie
 SCALE_SHARE = 1e-6          # scale of dY/dP: |dY/dP|, but at least this share of |Y|/|P|
 SCALE_WIDTH = 1e-3          # ... where |P| counts as at least this share of the width of its range
+SCALE_TINY = 1e-30          # ... and at least this share of the largest derivative with respect to the same parameter
 IDENTITY = 1e-13            # tangent against adjoint
 OVERESTIMATE = 20.0         # goal for the median of error_bound / (true error + half an ulp) over the shipped specs
 

@@ -143,7 +143,7 @@ class _Search:
     def _nearby(self, a, b, sign_a):
         """A part of the bracket around `near` with its change of sign; the bracket if there is none."""
         if self.near is not None:
-            size = max(abs(self.near), (b - a) * flint.arb(2) ** -80)
+            size = b - a if self.near.is_zero() else abs(self.near)
             for k in (-50, -44, -36, -24, -10):
                 low, high = self.near - size * flint.arb(2) ** k, self.near + size * flint.arb(2) ** k
                 low, high = (low if low > a else a), (high if high < b else b)
@@ -297,7 +297,8 @@ class _Differences:
 
     def _column(self, parameter, center):
         value = self.point[parameter.name]
-        h = (ball(abs(value)) if value else self._width(parameter)) * flint.arb(2) ** STEP
+        size = ball(abs(value)) if value else self._width(parameter)
+        h = size * flint.arb(2) ** STEP
         above, below = self._moved(parameter, h), self._moved(parameter, -h)
         column = {}
         for result in self.model.results:
@@ -306,7 +307,7 @@ class _Differences:
             if not middle.is_finite():
                 column[result] = Derivative(None, "undefined")
             elif up is not None and down is not None:
-                column[result] = self._central(up, middle, down, h)
+                column[result] = self._central(result, parameter, (up, middle, down), h, size)
             elif up is not None or down is not None:
                 side = h if up is not None else -h
                 column[result] = self._one_sided(result, parameter, middle, up if up is not None else down, side)
@@ -321,13 +322,23 @@ class _Differences:
         width = (nowhere.value(high, None, 64) - nowhere.value(low, None, 64)).mid()
         return width if 0 < width < 1 else flint.arb(1)
 
-    @staticmethod
-    def _central(up, middle, down, h):
+    def _central(self, result, parameter, values, h, size):
+        """Central difference. Where the one-sided ones disagree, or it is very large, twice the step tells why."""
+        up, middle, down = values
         forward, backward = (up - middle) / h, (middle - down) / h
-        natural = abs(middle.mid() / h) * flint.arb(2) ** (STEP - 20)
-        scale = max(abs(forward.mid()), abs(backward.mid()), natural)
-        if abs((forward - backward).mid()) > scale * KINK + abs((forward - backward).rad()) * 2:
-            return Derivative(None, "kink")
+        gap, slope = abs((forward - backward).mid()), abs((forward + backward).mid()) / 2
+        natural = max(abs(middle.mid()), self.size * flint.arb(2) ** -100) / size
+        smooth = gap <= max(slope, natural * flint.arb(2) ** -20) * KINK + abs((forward - backward).rad()) * 2
+        if not smooth or slope > natural * flint.arb(2) ** 40:
+            above, below = self._moved(parameter, 2 * h), self._moved(parameter, -2 * h)
+            if above is None or below is None:
+                return Derivative(None, "undefined")
+            forward, backward = (above[result] - middle) / (2 * h), (middle - below[result]) / (2 * h)
+            wider, flatter = abs((forward - backward).mid()), abs((forward + backward).mid()) / 2
+            if max(gap, slope) > max(wider, flatter) * 1.01:
+                return Derivative(None, "unbounded")
+            if not smooth and gap > wider * 0.51:
+                return Derivative(None, "kink" if gap > wider * 0.99 else "undefined")
         return _settled((up - down) / (2 * h), middle)
 
     def _one_sided(self, result, parameter, middle, near, h):

@@ -16,7 +16,7 @@ from rootwright.binding.build import NoCompiler
 from rootwright.binding.module import load
 from rootwright.emit.manual import STATUS
 from rootwright.evidence.evaluate import word
-from rootwright.evidence.limits import LIMITS, ROOT_NOISE, ROOT_ULPS, SCALE_SHARE, SCALE_WIDTH
+from rootwright.evidence.limits import LIMITS, ROOT_NOISE, ROOT_ULPS, SCALE_SHARE, SCALE_TINY, SCALE_WIDTH
 from rootwright.evidence.noise import noise, sensitivity
 from rootwright.evidence.points import choose, exact, in_range, published
 from rootwright.evidence.reference import FINE, NotSettled, Reference
@@ -194,13 +194,14 @@ class _Holding:
     def _outputs(self, place, r, target, point):
         for index, (name, step) in enumerate(self.reference.trees.outputs.items(), 1):
             value = place.value(step, ball(r.y[0]), FINE)
-            if not value.is_finite():
-                self.skipped["outputs that have no value at the root"] += 1
-                continue
             true = float(value.mid())
-            rounding, _ = sensitivity(place, ball(r.y[0]), step)
+            rounding, _ = sensitivity(place, ball(r.y[0]), step) if value.is_finite() else (math.nan, 0.0)
+            if not (math.isfinite(rounding) and math.isfinite(true)):
+                self.skipped["outputs without a finite value or noise at the root"] += 1
+                continue
             with precision(FINE):
-                error = float(abs(value - ball(r.y[index])).mid()) if math.isfinite(r.y[index]) else math.inf
+                off = abs(value - ball(r.y[index])) if math.isfinite(r.y[index]) else None
+                error = math.inf if off is None else max(float(off.mid() - off.rad()), 0.0)
             self.measured("output", error / (ROOT_ULPS * math.ulp(true) + ROOT_NOISE * rounding), target, name, point,
                           f"{r.y[index]!r}, exact {true!r}")
 
@@ -211,11 +212,11 @@ class _Holding:
             return
         module, p = self.built[target], list(point.values())
         v = [self.generator.uniform(-1.0, 1.0) * (abs(value) or self.widths[name]) for name, value in point.items()]
-        w = [self.generator.uniform(-1.0, 1.0) / (abs(value) or 1.0) for value in r.y]
-        along = math.fsum(a * b for a, b in zip(w, module.tangent(p, r.y[0], v)))
-        against = math.fsum(a * b for a, b in zip(module.adjoint(p, r.y[0], w, [0.0] * len(p)), v))
-        terms = math.fsum(abs(a * entry * b) for a, row in zip(w, jac) for entry, b in zip(row, v))
-        if 0.0 < terms < math.inf:
+        w = [self.generator.uniform(-1.0, 1.0) / (abs(value) if 1e-100 < abs(value) < 1e100 else 1.0) for value in r.y]
+        along = sum(a * b for a, b in zip(w, module.tangent(p, r.y[0], v)))
+        against = sum(a * b for a, b in zip(module.adjoint(p, r.y[0], w, [0.0] * len(p)), v))
+        terms = sum(abs(a * entry * b) for a, row in zip(w, jac) for entry, b in zip(row, v))
+        if 1e-280 < terms < math.inf:       # far from underflow
             self.measured("identity", abs(along - against) / terms, target, "w.(J v)", point,
                           f"tangent gives {along!r}, adjoint {against!r}")
 
@@ -242,6 +243,9 @@ class _Holding:
 
     def _compare(self, true, r, jac, target, point):
         moved = None
+        largest = dict.fromkeys(point, 0.0)
+        for (_, parameter), derivative in true.items():
+            largest[parameter] = max(largest[parameter], abs(derivative.value or 0.0))
         for i, result in enumerate(self.model.results):
             for k in self._differentiated():
                 parameter = self.model.parameters[k].name
@@ -249,7 +253,7 @@ class _Holding:
                 if derivative.value is None:
                     self._without(derivative.why, of, given, target, point)
                     continue
-                scale = self._scale(derivative.value, r.y[i], parameter, point)
+                scale = max(self._scale(derivative.value, r.y[i], parameter, point), SCALE_TINY * largest[parameter])
                 error = abs(given - derivative.value) / scale
                 what = f"{given!r}, exact {derivative.value!r}"
                 if not error <= LIMITS["derivative"].worst:
@@ -266,7 +270,7 @@ class _Holding:
 
     def _without(self, why, of, given, target, point):
         """The reference finds no derivative."""
-        if why == "kink":
+        if why == "kink" and math.isfinite(given):
             self.found("kink", target, f"{of} jumps there, but the status says no kink", point)
         elif why == "unbounded" and math.isfinite(given):
             self.found("derivative", target, f"{of}: {given!r}, but the derivative is unbounded", point)

@@ -339,6 +339,9 @@ class _Differences:
                 return Derivative(None, "unbounded")
             if not smooth and gap > wider * 0.51:
                 return Derivative(None, "kink" if gap > wider * 0.99 else "undefined")
+            lost = slope < natural * flint.arb(2) ** -90 and abs(middle.mid()) < self.size * flint.arb(2) ** -100
+            if lost:        # a result that is zero, and a derivative no larger than the truncation
+                return Derivative(None, "undefined")
         return _settled((up - down) / (2 * h), middle)
 
     def _one_sided(self, result, parameter, middle, near, h):

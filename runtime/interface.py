@@ -40,8 +40,8 @@ def tangent(p, root, p_dot):
     """y_dot of the M results for the direction p_dot of the N parameters."""
     y_dot = []
     for row in jacobian(p, root):
-        total = 0.0
-        for d, s in zip(row, p_dot):
+        total = row[0]*p_dot[0]
+        for d, s in zip(row[1:], p_dot[1:]):
             total += d*s
         y_dot.append(total)
     return y_dot

@@ -14,8 +14,8 @@ class CSpelling:
     nan = "(double)NAN"      # NAN is a float: without the cast it would be promoted
 
     def __init__(self, model):
-        self.names = Names(model, taken_in_c)
         self.prefix = model.name + "_"
+        self.names = Names(model, lambda name: taken_in_c(name) or name.startswith(self.prefix))     # functions and types of the module
 
     def number(self, value):
         multiple = value / 2.0 ** -1022
@@ -91,9 +91,9 @@ def _results(name, model, laid, formals):
             lines += statement(f"{formals['jac']}[{k}] = {text};", "    ")
         else:
             lines += statement(f"{_TARGETS[result].format(**formals)} = {text};", "    ")
-    unknown = model.unknown.name
-    if "{x}" in _SIGNATURES[name][1] and unknown not in laid.inputs:
-        lines.insert(0, f"    (void){formals['x']};")
+    for formal, read in (("error_bound", "error_bound"), ("x", model.unknown.name)):
+        if f"{{{formal}}}" in _SIGNATURES[name][1] and read not in laid.inputs:
+            lines.insert(0, f"    (void){formals[formal]};")
     if returned is not None:
         lines += statement(f"return {returned};", "    ")
     return lines

@@ -22,9 +22,10 @@ def taken_in_python(name):
 
 
 class Names:
-    """The names of one module in one target: `of(name)` for an author's name, `ours(name)` for one of ours."""
+    """The names of one module in one target: `of(name)` for an author's name or one made from it, `ours(name)` for one of ours."""
 
     def __init__(self, model, is_taken):
+        self.is_taken = is_taken
         self.author = {}
         declared = [item.name for group in (model.constants, model.parameters, model.definitions, model.outputs) for item in group]
         declared.append(model.unknown.name)
@@ -33,7 +34,9 @@ class Names:
         self.used = frozenset(self.author.values())
 
     def of(self, name):
-        return self.author.get(name, name)
+        if name in self.author:
+            return self.author[name]
+        return _free(name + "_", self.used) if self.is_taken(name) else name
 
     def ours(self, name):
         """A name for a formal argument of a kernel: as given, or with underscores where the author uses it."""

@@ -4,7 +4,7 @@ import textwrap
 
 from rootwright.spec.diagnostics import harmless as printable
 
-_MARKS = (("*/", "* /"), ("/*", "/ *"), ("??", "? ?"), ("\\", "/"), ('"""', "'''"))
+_MARKS = (("\\", "/"), ("*/", "* /"), ("/*", "/ *"), ("??", "? ?"), ('"""', "'''"))      # in this order: the first makes new ones
 
 
 def harmless(text):

@@ -11,6 +11,8 @@ with two numbers and one instruction, so that a product of ten factors costs the
 Decimal constants count with the rounding to the nearest double. Where a product or quotient can underflow inside
 the operating range, half the smallest subnormal is counted as well. Terms of second order are kept where a divisor or the argument of a root or
 a logarithm is itself uncertain; the rest is covered by `UNIT`, which is 8 % above 2^-53.
+Not counted: an overflow on the way to a finite value, and a comparison in `where` that falls out otherwise than for real
+numbers: the bound is that of the piece chosen, and the status says `kink`.
 """
 
 import math
@@ -154,7 +156,7 @@ class Rounding:
     def _mul(self, node, a, b):
         one, other = self.error(a), self.error(b)
         for factor, rest in ((a, other), (b, one)):
-            if self.graph.is_constant(factor) and _power_of_two(nearest(self.graph, factor)) and not self.error(factor).relative:
+            if self._is_power_of_two(factor):
                 scale = abs(nearest(self.graph, factor))
                 return Error(rest.relative, rest.absolute * scale + self._underflow(node),
                              None if rest.running is None else self._scaled(scale, rest.running))
@@ -163,6 +165,11 @@ class Rounding:
             carried = self._plus(carried, self.graph.mul(self.graph.number(UNIT),
                                                              self.graph.mul(one.running, other.running)))
         return Error(one.relative + other.relative + 1.0, self._underflow(node), carried)
+
+    def _is_power_of_two(self, node):
+        """True for a constant that is one exactly: multiplying by it makes no error."""
+        graph = self.graph
+        return graph.is_constant(node) and not self.error(node).relative and abs(math.frexp(nearest(graph, node))[0]) == 0.5
 
     def _carried(self, error, factor):
         """The non-relative error of one factor times the other factor."""
@@ -189,7 +196,7 @@ class Rounding:
         return graph.max_(graph.sub(self._magnitude(node), graph.mul(graph.number(UNIT), units)), graph.number(_TINIEST))
 
     def _is_near_zero(self, node, units):
-        """True where the value may come so near to zero in the operating range that its error, in units of u, is no longer small beside it."""
+        """True where the value may come so near to zero in the operating range that its error is no longer small beside it."""
         return largest(self.magnitudes.of(units)) > 2.0 ** 43 * smallest(self.magnitudes.of(node))
 
     def _where(self, node, condition, a, b):
@@ -232,7 +239,8 @@ class Rounding:
     def _exp(self, node, a):
         run, absolute = self._parts(a)
         if run is not None and self._coarse(run):
-            run = self.graph.div(self.graph.expm1(self.graph.mul(self.graph.number(UNIT), run)), self.graph.number(UNIT))
+            unit = self.graph.number(UNIT)
+            run = self.graph.div(self.graph.expm1(self.graph.mul(unit, run)), unit)
         return Error(2.0 * OPERATIONS["exp"].ulps + absolute, self._underflow(node),
                      None if run is None else self.graph.mul(node, run))
 
@@ -279,8 +287,10 @@ class Rounding:
         if carried is not None:
             running = graph.mul(self._steepest_power(node, a, b, units), carried)
             if self._is_near_zero(a, units) and graph.is_constant(b) and nearest(graph, b) > 0.0:
-                error = graph.mul(graph.number(UNIT), units)        # where a itself is within its error: at most (2*error)^b
-                running = graph.where(graph.lt(error, a), running, graph.div(graph.apply("pow", graph.mul(2, error), b), graph.number(UNIT)))
+                unit = graph.number(UNIT)           # where a itself is within its error: at most (2*error)^b
+                error = graph.mul(unit, units)
+                whole = graph.div(graph.apply("pow", graph.mul(2, error), b), unit)
+                running = graph.where(graph.lt(error, a), running, whole)
         return Error(relative, self._underflow(node), running)
 
     def _steepest_power(self, node, a, b, units):
@@ -321,7 +331,8 @@ class Rounding:
         units = self._total(Error(0.0, error.absolute, error.running), a)
         running = None
         if graph.literal(units) != 0:
-            root = graph.cbrt(graph.max_(graph.abs_(a), graph.max_(graph.mul(graph.number(UNIT), units), graph.number(_TINIEST))))
+            error = graph.max_(graph.mul(graph.number(UNIT), units), graph.number(_TINIEST))
+            root = graph.cbrt(graph.max_(graph.abs_(a), error))
             running = graph.div(self._scaled(1.588, units), graph.mul(root, root))
         return Error(error.relative / 3.0 + 2.0 * OPERATIONS["cbrt"].ulps, 0.0, running)
 
@@ -339,8 +350,12 @@ class Rounding:
     def _tan(self, node, a):
         """tan(a + e) - tan(a) = tan(e)*(1 + tan(a)^2)/(1 - tan(a)*tan(e))."""
         graph = self.graph
-        return self._function(node, a, lambda units, e: graph.div(graph.mul(units, graph.add(1, graph.mul(node, node))), graph.max_(
-            graph.sub(1, graph.mul(graph.abs_(node), e)), graph.number(_TINIEST))))
+
+        def carry(units, e):
+            left = graph.max_(graph.sub(1, graph.mul(graph.abs_(node), e)), graph.number(_TINIEST))
+            return graph.div(graph.mul(units, graph.add(1, graph.mul(node, node))), left)
+
+        return self._function(node, a, carry)
 
     def _hypot(self, node, a, b):
         """No longer than the errors of both arguments; and as relative as they are."""
@@ -394,10 +409,6 @@ _STEEPEST = {
     "tanh": _inward, "erf": _inward, "atan": _inward, "asinh": _inward, "sinh": _outward, "cosh": _outward,
     "expm1": lambda graph, a, error: graph.add(a, error), "erfc": _inward,
 }
-
-
-def _power_of_two(value):
-    return value != 0.0 and abs(math.frexp(value)[0]) == 0.5
 
 
 def _upper(factor):

@@ -1,5 +1,6 @@
 /* SPDX-License-Identifier: 0BSD */
 
+#if RW_JACOBIAN
 /* True where the root has no usable slope: derivatives there are NaN. Same test as in the solver. */
 static int rw_without_slope(const double p[], double root)
 {
@@ -8,6 +9,7 @@ static int rw_without_slope(const double p[], double root)
     const double rounding = rw_rounding(p, root, &slope_rounding, &curvature);
     return rw_is_flat(rw_bend(p, root, g, slope, rounding, slope_rounding, curvature));
 }
+#endif
 
 int rw_solve(const double p[RW_N], double start, rw_point *r)
 {
@@ -31,6 +33,7 @@ int rw_solve(const double p[RW_N], double start, rw_point *r)
     return status;
 }
 
+#if RW_JACOBIAN
 int rw_solve_jacobian(const double p[RW_N], double start, rw_point *r, double jac[RW_M*RW_N])
 {
     const int status = rw_solve(p, start, r);
@@ -81,18 +84,59 @@ void rw_adjoint(const double p[RW_N], double root, const double y_bar[RW_M], dou
         }
     }
 }
+#endif
+
+#if RW_HESSIAN
+void rw_hessian(const double p[RW_N], double root, double hess[RW_M*RW_N*RW_N])
+{
+    int k;
+    if (rw_without_slope(p, root)) {
+        for (k = 0; k < RW_M*RW_N*RW_N; k++) {
+            hess[k] = NAN;
+        }
+    } else {
+        rw_second_partials(p, root, hess);
+    }
+}
+
+void rw_tangent_adjoint(const double p[RW_N], double root, const double p_dot[RW_N], const double y_bar[RW_M],
+                        double p_bar_dot[RW_N])
+{
+    double hess[RW_M*RW_N*RW_N];
+    int i, j, k;
+    rw_hessian(p, root, hess);
+    for (i = 0; i < RW_N; i++) {
+        for (k = 0; k < RW_M; k++) {
+            double along = 0.0;
+            for (j = 0; j < RW_N; j++) {
+                along += hess[(RW_N*k + i)*RW_N + j]*p_dot[j];
+            }
+            p_bar_dot[i] += along*y_bar[k];
+        }
+    }
+}
+#endif
 
 size_t rw_solve_many(size_t n, const double *const p[RW_N], const ptrdiff_t stride[RW_N], const double *start,
+#if RW_JACOBIAN
                      double *const y[RW_M], double *error_bound, double *const jac[RW_M*RW_N], int *status)
+#else
+                     double *const y[RW_M], double *error_bound, int *status)
+#endif
 {
     size_t i, unsolved = 0;
     for (i = 0; i < n; i++) {
+#if RW_JACOBIAN
         double q[RW_N], d[RW_M*RW_N];
+#else
+        double q[RW_N];
+#endif
         rw_point r;
         int k;
         for (k = 0; k < RW_N; k++) {
             q[k] = p[k][(ptrdiff_t)i*stride[k]];
         }
+#if RW_JACOBIAN
         if (jac != NULL) {
             rw_solve_jacobian(q, start != NULL ? start[i] : (double)NAN, &r, d);
             for (k = 0; k < RW_M*RW_N; k++) {
@@ -103,6 +147,9 @@ size_t rw_solve_many(size_t n, const double *const p[RW_N], const ptrdiff_t stri
         } else {
             rw_solve(q, start != NULL ? start[i] : (double)NAN, &r);
         }
+#else
+        rw_solve(q, start != NULL ? start[i] : (double)NAN, &r);
+#endif
         for (k = 0; k < RW_M; k++) {
             if (y[k] != NULL) {
                 y[k][i] = r.y[k];

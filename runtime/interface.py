@@ -18,6 +18,7 @@ def solve(p, start=math.nan):
     return r
 
 
+#if JACOBIAN
 def solve_jacobian(p, start=math.nan):
     """A Point, and the jacobian as M rows of N; NaN where there is no root or no slope."""
     p = _parameters(p)
@@ -55,6 +56,31 @@ def adjoint(p, root, y_bar, p_bar):
     return p_bar
 
 
+#endif
+#if HESSIAN
+def hessian(p, root):
+    """Second derivatives of the M results with respect to the N parameters at a given root, as M matrices of N by N."""
+    p = _parameters(p)
+    g, slope = _residual(p, root)
+    if _is_flat(_bend(p, root, g, slope, *_rounding(p, root))):
+        return [[[math.nan]*N for _ in range(N)] for _ in range(M)]
+    return _second_partials(p, root)
+
+
+def tangent_adjoint(p, root, p_dot, y_bar, p_bar_dot):
+    """Adds the derivative of what `adjoint` adds, in the direction p_dot of the parameters, into the list p_bar_dot;
+    returns it."""
+    hess = hessian(p, root)
+    for i in range(N):
+        for matrix, weight in zip(hess, y_bar):
+            along = 0.0
+            for d, s in zip(matrix[i], p_dot):
+                along += d*s
+            p_bar_dot[i] += along*weight
+    return p_bar_dot
+
+
+#endif
 def _parameters(p):
     p = tuple(float(value) for value in p)
     if len(p) != N:

@@ -9,7 +9,8 @@ Kernels, and their results in order:
     kink       kink                           condition: the root lies on a switch (needs the input `error_bound`)
     start      start                          the author's start
     outputs    one a output
-    jacobian   M*N partial derivatives of the results, row-major
+    jacobian   M*N partial derivatives of the results, row-major (order 1 and 2)
+    hessian    M*N*N second derivatives of the results (order 2)
 """
 
 import math
@@ -23,6 +24,7 @@ from rootwright.calculus.lower import Lowering, comparisons
 from rootwright.calculus.magnitude import Magnitudes
 from rootwright.calculus.program import Graph, Program
 from rootwright.calculus.rounding import Rounding
+from rootwright.calculus.second_order import hessian
 from rootwright.spec.model import Model
 
 
@@ -35,16 +37,17 @@ class Closure:
     ranges: tuple[tuple[float, float], ...]     # nearest doubles of the parameters' ranges
     limit: int                                  # evaluations that always suffice
     constants: dict[int, tuple[float, float]]   # constant instruction -> nearest double, relative rounding in 2^-53
+    order: int                                  # derivatives up to this order: 0, 1 or 2
 
 
-def close(model):
-    """Closure of a checked Model. Raises NotReal where a constant is not a finite real number."""
-    return _Closing(model).closure()
+def close(model, order=1):
+    """Closure of a checked Model with derivatives up to `order`. Raises NotReal where a constant is not finite and real."""
+    return _Closing(model, order).closure()
 
 
 class _Closing:
-    def __init__(self, model):
-        self.model = model
+    def __init__(self, model, order):
+        self.model, self.order = model, order
         self.graph = graph = Graph()
         self.lowering = Lowering(graph)
         for constant in model.constants:
@@ -67,9 +70,14 @@ class _Closing:
 
     def _declare(self, name, node):
         self.lowering.declare(name, node)
-        self._label(node, name)
+        self._name(node, name)
 
-    def _label(self, node, name):
+    def label(self, node, name):
+        """Name what we derive, unless the name is the author's for something else."""
+        if name not in self.lowering.names:
+            self._name(node, name)
+
+    def _name(self, node, name):
         """Name an instruction, unless it has a name or needs none."""
         if self.graph.instructions[node].op not in ("input", "number", "named", "pi", "nan"):
             self.graph.labels.setdefault(node, name)
@@ -92,7 +100,7 @@ class _Closing:
         self.authored = len(graph.instructions)
         slope = self._derivatives("g", g)
         (curvature,) = partials(graph, slope, [self.unknown])
-        jacobian = self._jacobian(g, slope, outputs)
+        jacobian = self._jacobian(g, slope, outputs) if self.order >= 1 else {}
 
         parameters = Magnitudes(graph, self.ranges)
         hull = [parameters.of(end) for end in ends]
@@ -111,21 +119,25 @@ class _Closing:
             self._kernel("start", start=start)
         if outputs:
             self._kernel("outputs", **outputs)
-        self._kernel("jacobian", **jacobian)
+        if self.order >= 1:
+            self._kernel("jacobian", **jacobian)
+        if self.order == 2:
+            roots = list(jacobian.values())[:len(self.parameters)]
+            self._kernel("hessian", **hessian(self, g, slope, outputs, roots))
 
         for node in range(len(graph.instructions)):
             if graph.is_constant(node):
                 _touch(graph, node)
         program = Program(tuple(graph.instructions), dict(graph.labels), self.results)
         return Closure(model, program, self.kernels, tuple(self.ranges.values()), limit(*hull),
-                       dict(graph.constants))
+                       dict(graph.constants), self.order)
 
     def _derivatives(self, prefix, result):
         """Derivative with respect to the unknown; the adjoints of definitions and parameters get names."""
         adjoints = sweep(self.graph, result)
         for name, node in self.lowering.names.items():
             if node in adjoints and node != result and adjoints[node][0] >= self.authored:
-                self._label(gated(self.graph, *adjoints[node]), f"{prefix}_{name}")
+                self.label(gated(self.graph, *adjoints[node]), f"{prefix}_{name}")
         if self.unknown not in adjoints:
             return self.graph.number(0)
         return gated(self.graph, *adjoints[self.unknown])
@@ -139,7 +151,7 @@ class _Closing:
         roots = [graph.neg(graph.div(g_p, slope)) if want else graph.number(0)
                  for g_p, want in zip(partials(graph, g, nodes), wanted)]
         for name, root in zip(self.parameters, roots):
-            self._label(root, f"{unknown}_{name}")
+            self.label(root, f"{unknown}_{name}")
         entries[unknown] = roots
         for name, node in outputs.items():
             self._derivatives(name, node)

@@ -184,7 +184,7 @@ class Graph:
         if instruction.op == "neg":
             return instruction.args[0]
         if instruction.op == "sub":
-            return self.apply("sub", *reversed(instruction.args))
+            return self.sub(*reversed(instruction.args))
         if instruction.op in ("mul", "div"):
             first, second = instruction.args
             if self.literal(first) is not None:

@@ -14,7 +14,7 @@ from rootwright.spec.tables import Findings, TooMany
 SAMPLES = 200
 
 
-def examine(model, data, filename):
+def examine(model, data, filename, order=1):
     """(Closure, warnings) of a checked Model and the bytes it was read from; (None, diagnostics) where a check fails."""
     source, _, _ = load(data, filename)
     examination = _Examination(model, Findings(source))
@@ -24,7 +24,7 @@ def examine(model, data, filename):
         pass                        # as many as anyone wants to read
     if examination.findings.failed:
         return None, examination.findings.in_order()
-    closure = close(model)
+    closure = close(model, order)
     examination.check_slope(closure)
     examination.check_brackets(closure)
     return None if examination.findings.failed else closure, examination.findings.in_order()

@@ -10,7 +10,7 @@ from rootwright.emit import c, python
 from rootwright.emit.describe import comments
 from rootwright.emit.manual import STATUS, manual
 
-_KERNELS = ("bracket", "residual", "rounding", "outside", "kink", "start", "outputs", "jacobian")
+_KERNELS = ("bracket", "residual", "rounding", "outside", "kink", "start", "outputs", "jacobian", "hessian")
 
 
 def assemble(closure, target="c"):
@@ -24,7 +24,9 @@ def _assemble_c(closure):
 
     def runtime(name):
         text = resolve(_source(name), _features(closure))
-        for word, value in (("RW_M*RW_N", sizes["MN"]), ("RW_N", sizes["N"]), ("RW_M", sizes["M"]), ("RW_LIMIT", closure.limit)):
+        words = {"RW_M*RW_N*RW_N": sizes["MNN"], "RW_M*RW_N": sizes["MN"], "RW_N": sizes["N"], "RW_M": sizes["M"],
+                 "RW_LIMIT": closure.limit}
+        for word, value in words.items():
             text = re.sub(rf"\b{re.escape(word)}\b", str(value), text)
         return text.replace("rw_", f"{model.name}_").replace("RW_", f"{upper}_")
 
@@ -59,13 +61,14 @@ def _assemble_python(closure):
 
 def _sizes(closure):
     n, m = len(closure.model.parameters), len(closure.model.results)
-    return {"N": n, "M": m, "MN": m * n}
+    return {"N": n, "M": m, "MN": m * n, "MNN": m * n * n, "order": closure.order}
 
 
 def _features(closure):
     unknown = closure.model.unknown
     return {"OPEN_LOWER": unknown.open_lower, "OPEN_UPPER": unknown.open_upper, "SWITCHES": "kink" in closure.kernels,
-            "START": "start" in closure.kernels, "OUTPUTS": "outputs" in closure.kernels}
+            "START": "start" in closure.kernels, "OUTPUTS": "outputs" in closure.kernels,
+            "JACOBIAN": "jacobian" in closure.kernels, "HESSIAN": "hessian" in closure.kernels}
 
 
 def resolve(text, features):
@@ -140,8 +143,10 @@ def _example_c(closure):
     model = closure.model
     values = ", ".join(repr(value) for value in _example_point(closure))
     root, first = model.unknown.name, model.parameters[0].name
-    return [f"const double p[{len(model.parameters)}] = {{ {values} }};",
-            f"{model.name}_point r;",
+    point = [f"const double p[{len(model.parameters)}] = {{ {values} }};", f"{model.name}_point r;"]
+    if closure.order == 0:
+        return [*point, f"if ({model.name}_solve(p, NAN, &r) >= 0) {{", f"    const double {root} = r.y[0];", "}"]
+    return [*point,
             f"double jac[{len(model.results) * len(model.parameters)}];",
             f"if ({model.name}_solve_jacobian(p, NAN, &r, jac) >= 0) {{",
             f"    const double {root} = r.y[0], {root}_{first} = jac[0];",
@@ -152,6 +157,9 @@ def _example_python(closure):
     model = closure.model
     values = ", ".join(repr(value) for value in _example_point(closure))
     root, first = model.unknown.name, model.parameters[0].name
+    if closure.order == 0:
+        return [f"import {model.name}", f"r = {model.name}.solve([{values}])", "if r.status >= 0:",
+                f"    {root} = r.y[0]"]
     return [f"import {model.name}",
             f"r, jac = {model.name}.solve_jacobian([{values}])",
             "if r.status >= 0:",

@@ -39,13 +39,16 @@ _SIGNATURES = {
     "start": ("double", ""),
     "outputs": ("void", "double {x}, double {y}[]"),
     "jacobian": ("void", "double {x}, double {jac}[]"),
+    "hessian": ("void", "double {x}, double {hess}[]"),
 }
 _TARGETS = {
     "lower": "{end}[0]", "upper": "{end}[1]", "lower_rounding": "{rounding}[0]", "upper_rounding": "{rounding}[1]",
     "slope": "*{slope}", "slope_rounding": "*{slope_rounding}", "curvature": "*{curvature}",
 }
 _RETURNED = ("g", "rounding", "outside", "kink", "start")
-_FORMALS = ("p", "end", "rounding", "slope", "slope_rounding", "curvature", "error_bound", "y", "jac")
+_FORMALS = ("p", "end", "rounding", "slope", "slope_rounding", "curvature", "error_bound", "y", "jac", "hess")
+_FUNCTIONS = {"jacobian": "partials", "hessian": "second_partials"}      # where the kernel's name is the interface's
+_FLAT = {"jacobian": "jac", "hessian": "hess"}                          # kernels whose results are one array
 
 
 def kernel(closure, name, comment):
@@ -54,7 +57,7 @@ def kernel(closure, name, comment):
     spelling = CSpelling(model)
     formals = {formal: spelling.names.ours(formal) for formal in _FORMALS} | {"x": spelling.name(model.unknown.name)}
     kind, arguments = _SIGNATURES[name]
-    first = f"static {kind} {model.name}_{'partials' if name == 'jacobian' else name}(const double {formals['p']}[]"
+    first = f"static {kind} {model.name}_{_FUNCTIONS.get(name, name)}(const double {formals['p']}[]"
     signature = first + (", " + arguments.format(**formals) if arguments else "") + ")"
     taken = {*spelling.names.used, *formals.values()}
     laid = lay_out(closure, name, spelling, taken)
@@ -87,8 +90,8 @@ def _results(name, model, laid, formals):
             returned = text
         elif name == "outputs":
             lines += statement(f"{formals['y']}[{k + 1}] = {text};", "    ")
-        elif name == "jacobian":
-            lines += statement(f"{formals['jac']}[{k}] = {text};", "    ")
+        elif name in _FLAT:
+            lines += statement(f"{formals[_FLAT[name]]}[{k}] = {text};", "    ")
         else:
             lines += statement(f"{_TARGETS[result].format(**formals)} = {text};", "    ")
     for formal, read in (("error_bound", "error_bound"), ("x", model.unknown.name)):

@@ -19,5 +19,7 @@ def comments(closure):
         "outputs": "The outputs at the root.",
         "jacobian": f"Derivatives of {', '.join(model.results)} with respect to {', '.join(p.name for p in model.parameters)}, "
                     f"by the implicit function theorem: d{x}/dP = -g_P/g_{x}.",
+        "hessian": f"Second derivatives of {', '.join(model.results)}: d2{x}/dP/dQ = -(dg_P/dQ + d{x}/dP*dg_{x}/dQ)/g_{x}, "
+                   f"where d/dQ is the total derivative with respect to a parameter as {x} follows.",
     }
     return {kernel: paragraph(texts[kernel], 104) for kernel in closure.kernels}

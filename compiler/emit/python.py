@@ -28,7 +28,9 @@ class PythonSpelling:
         return OPERATIONS[op].python, strength
 
 
-_ARGUMENTS = {"residual": ("x",), "rounding": ("x",), "kink": ("x", "error_bound"), "outputs": ("x",), "jacobian": ("x",)}
+_ARGUMENTS = {"residual": ("x",), "rounding": ("x",), "kink": ("x", "error_bound"), "outputs": ("x",), "jacobian": ("x",),
+              "hessian": ("x",)}
+_FUNCTIONS = {"jacobian": "_partials", "hessian": "_second_partials"}
 _FORMALS = ("p", "error_bound")
 
 
@@ -39,7 +41,7 @@ def kernel(closure, name, comment):
     formals = {formal: spelling.names.ours(formal) for formal in _FORMALS} | {"x": spelling.name(model.unknown.name)}
     arguments = ", ".join(formals[formal] for formal in ("p", *_ARGUMENTS.get(name, ())))
     laid = lay_out(closure, name, spelling, {*spelling.names.used, *formals.values()})
-    lines = [f"def _{'partials' if name == 'jacobian' else name}({arguments}):"]
+    lines = [f"def {_FUNCTIONS.get(name, '_' + name)}({arguments}):"]
     lines += [f"    # {line}" for line in comment]
     lines += _unpack(model, laid, formals, spelling)
     for step in laid.statements:
@@ -48,12 +50,24 @@ def kernel(closure, name, comment):
     if name in ("outside", "kink", "start"):
         lines += _statement("return ", values[0])
     elif name == "jacobian":
-        columns = len(model.parameters)
-        rows = [", ".join(values[k:k + columns]) for k in range(0, len(values), columns)]
-        lines += ["    return ["] + [line for row in rows for line in statement(f"[{row}],", " " * 8)] + ["    ]"]
+        lines += _rows("return ", values, len(model.parameters), "    ")
+    elif name == "hessian":
+        size = len(model.parameters)**2
+        lines += ["    return ["]
+        for k in range(0, len(values), size):
+            lines += _rows("", values[k:k + size], len(model.parameters), " " * 8)
+            lines[-1] += ","
+        lines += ["    ]"]
     else:
         lines += _statement("return ", ", ".join(values) + ("," if len(values) == 1 else ""))
     return "\n".join(lines)
+
+
+def _rows(head, values, columns, indent):
+    """A list of lists, one row a line."""
+    rows = [", ".join(values[k:k + columns]) for k in range(0, len(values), columns)]
+    inner = [line for row in rows for line in statement(f"[{row}],", indent + "    ")]
+    return [f"{indent}{head}[", *inner, f"{indent}]"]
 
 
 def _statement(head, text):

@@ -331,8 +331,8 @@ class Rounding:
         units = self._total(Error(0.0, error.absolute, error.running), a)
         running = None
         if graph.literal(units) != 0:
-            error = graph.max_(graph.mul(graph.number(UNIT), units), graph.number(_TINIEST))
-            root = graph.cbrt(graph.max_(graph.abs_(a), error))
+            distance = graph.max_(graph.mul(graph.number(UNIT), units), graph.number(_TINIEST))
+            root = graph.cbrt(graph.max_(graph.abs_(a), distance))
             running = graph.div(self._scaled(1.588, units), graph.mul(root, root))
         return Error(error.relative / 3.0 + 2.0 * OPERATIONS["cbrt"].ulps, 0.0, running)
 

@@ -158,6 +158,16 @@ static double rw_aim(rw_sample best, rw_sample previous, rw_sample other, double
     return best.x + newton;
 }
 
+/* One side of an adjacent pair of doubles comes down to zero between them: its residual is zero up to rounding, or at
+   most slope * width, and below 64 times that for cube-root-like ones. Not so beside a step or a pole. */
+static int rw_descends(const double p[], rw_sample side, double rising, double width, double largest)
+{
+    double slope_rounding, curvature;
+    const double bound = rw_rounding(p, side.x, &slope_rounding, &curvature);
+    return rw_is_zero(side.g, bound, largest)
+           || (side.slope * rising > 0.0 && fabs(side.g) <= 64.0 * fabs(side.slope) * width);
+}
+
 /* Narrows the bracket between two samples of opposite signs down to a root, and leaves the root in best.
    Returns 0 or a status.
    The number of doubles between low and high at least halves over every three evaluations: two points from models of
@@ -174,9 +184,11 @@ static int rw_narrow(const double p[], rw_sample *low, rw_sample *high, rw_sampl
     int plain = 0;  /* the last point was the arithmetic middle */
     int holes = 0;  /* evaluations in a row that were not a number */
     int slow = 0;   /* the last model was poor: beside a simple pole Newton's step leaves half of the residual */
-    int closing = 0;
-    int fast, improved, zero;
+    int closing;    /* the next point is the last, by the model */
+    int zero;       /* and best is zero up to rounding */
+    int fast, improved;
     double x, step, bend, share, bound, slope_rounding, curvature;
+    double beside = 0.0; /* the residual one double beside the root, if nothing jumps there */
 
     *best = fabs(low->g) < fabs(high->g) ? *low : *high;
     previous = fabs(low->g) < fabs(high->g) ? *high : *low;
@@ -187,14 +199,12 @@ static int rw_narrow(const double p[], rw_sample *low, rw_sample *high, rw_sampl
             if (rw_is_zero(best->g, bound, largest)) {
                 return 0;
             }
-            /* A root's residual is at most slope * width here, and cube-root-like ones stay below 64 times that. */
-            if (best->slope * rising > 0.0
-                && fabs(best->g) <= 64.0 * fabs(best->slope) * (high->x - low->x)) {
-                return 0;
-            }
-            return RW_JUMP;
+            return rw_descends(p, *low, rising, high->x - low->x, largest)
+                    && rw_descends(p, *high, rising, high->x - low->x, largest) ? 0 : RW_JUMP;
         }
         x = best->x;
+        closing = 0;
+        zero = 0;
         if (rw_usable(*best, rising)) {
             step = -best->g / best->slope;
             if (fabs(step) <= 0x1p-26 * fabs(best->x)) {
@@ -206,14 +216,18 @@ static int rw_narrow(const double p[], rw_sample *low, rw_sample *high, rw_sampl
                 closing = bend <= 0.25 && (zero || bend * fabs(step) <= 0x1p-53 * fabs(best->x));
                 if (closing) {
                     x = best->x + step;
-                    if ((zero && fabs(step) <= 0x1p-50 * fabs(best->x)) || !rw_between(x, low->x, high->x)) {
+                    closing = rw_between(x, low->x, high->x);
+                    beside = fabs(best->g) + fabs(best->slope) * 0x1p-52 * fabs(best->x);
+                    zero = zero || !(fabs(x - best->x) > 0.0); /* or as near to it as doubles come */
+                    if (closing ? zero && fabs(step) <= 0x1p-50 * fabs(best->x)
+                                : zero || fabs(step < 0.0 ? low->g : high->g) <= beside) {
                         return 0;
                     }
                 }
             }
         }
         if (r->evaluations >= RW_LIMIT) {
-            return closing ? 0 : RW_ITERATION_LIMIT;
+            return closing && zero ? 0 : RW_ITERATION_LIMIT;
         }
 
         fast = closing;
@@ -240,7 +254,7 @@ static int rw_narrow(const double p[], rw_sample *low, rw_sample *high, rw_sampl
         tries += 1;
         if (isnan(latest.g)) {
             holes += 1;
-            if (closing) {
+            if (closing && zero) {
                 return 0;
             }
             if (holes > 8) {
@@ -254,7 +268,7 @@ static int rw_narrow(const double p[], rw_sample *low, rw_sample *high, rw_sampl
             *best = latest;
             return 0;
         }
-        if (closing) {
+        if (closing && (zero || fabs(latest.g) <= beside)) {
             return 0;
         }
         if (fast && !improved) {

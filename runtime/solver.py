@@ -127,6 +127,17 @@ def _aim(best, previous, other, rising, overshoot):
     return best.x + newton
 
 
+def _descends(p, side, rising, width, largest):
+    """One side of an adjacent pair of doubles comes down to zero between them.
+
+    Its residual is zero up to rounding, or at most slope * width, and below 64 times that for cube-root-like ones. Not
+    so beside a step or a pole.
+    """
+    bound = _rounding(p, side.x)[0]
+    return (_is_zero(side.g, bound, largest)
+            or (side.slope * rising > 0.0 and abs(side.g) <= 64.0 * abs(side.slope) * width))
+
+
 def _narrow(p, low, high, start, r):
     """Narrows the bracket between two samples of opposite signs down to a root: low, high, root, and 0 or a status.
 
@@ -142,7 +153,6 @@ def _narrow(p, low, high, start, r):
     plain = False  # the last point was the arithmetic middle
     holes = 0  # evaluations in a row that were not a number
     slow = False  # the last model was poor: beside a simple pole Newton's step leaves half of the residual
-    closing = False
 
     best = low if abs(low.g) < abs(high.g) else high
     previous = high if abs(low.g) < abs(high.g) else low
@@ -152,12 +162,12 @@ def _narrow(p, low, high, start, r):
             bound = _rounding(p, best.x)[0]
             if _is_zero(best.g, bound, largest):
                 return low, high, best, 0
-            # A root's residual is at most slope * width here, and cube-root-like ones stay below 64 times that.
-            if (best.slope * rising > 0.0
-                    and abs(best.g) <= 64.0 * abs(best.slope) * (high.x - low.x)):
-                return low, high, best, 0
-            return low, high, best, JUMP
+            descends = (_descends(p, low, rising, high.x - low.x, largest)
+                        and _descends(p, high, rising, high.x - low.x, largest))
+            return low, high, best, 0 if descends else JUMP
         x = best.x
+        closing = False  # the next point is the last, by the model
+        zero = False  # and best is zero up to rounding
         if _usable(best, rising):
             step = -best.g / best.slope
             if abs(step) <= 2.0**-26 * abs(best.x):
@@ -169,10 +179,15 @@ def _narrow(p, low, high, start, r):
                 closing = bend <= 0.25 and (zero or bend * abs(step) <= 2.0**-53 * abs(best.x))
                 if closing:
                     x = best.x + step
-                    if (zero and abs(step) <= 2.0**-50 * abs(best.x)) or not _between(x, low.x, high.x):
+                    closing = _between(x, low.x, high.x)
+                    # the residual one double beside the root, if nothing jumps there
+                    beside = abs(best.g) + abs(best.slope) * 2.0**-52 * abs(best.x)
+                    zero = zero or not abs(x - best.x) > 0.0  # or as near to it as doubles come
+                    if (zero and abs(step) <= 2.0**-50 * abs(best.x) if closing
+                            else zero or abs(low.g if step < 0.0 else high.g) <= beside):
                         return low, high, best, 0
         if r.evaluations >= LIMIT:
-            return low, high, best, 0 if closing else ITERATION_LIMIT
+            return low, high, best, 0 if closing and zero else ITERATION_LIMIT
 
         fast = closing
         if not closing and not slow and holes == 0 and tries < 2:
@@ -195,7 +210,7 @@ def _narrow(p, low, high, start, r):
         tries += 1
         if math.isnan(latest.g):
             holes += 1
-            if closing:
+            if closing and zero:
                 return low, high, best, 0
             if holes > 8:
                 return low, high, best, NOT_FINITE
@@ -204,7 +219,7 @@ def _narrow(p, low, high, start, r):
         improved = abs(latest.g) < abs(best.g)
         if not abs(latest.g) > 0.0 or (closing and improved):
             return low, high, latest, 0
-        if closing:
+        if closing and (zero or abs(latest.g) <= beside):
             return low, high, best, 0
         if fast and not improved:
             bound = _rounding(p, best.x)[0]
@@ -241,7 +256,7 @@ def _reach(p, x, end, negative, r):
     sure += 1  # 2^sure exceeds the distance of the end
     while sure - unsure > 1 and r.evaluations < LIMIT:
         k = unsure + (sure - unsure) // 2
-        x_probe = x + math.copysign(math.ldexp(1.0, k), end - x)
+        x_probe = x + math.copysign(math.ldexp(1.0, k) if k < 1024 else math.inf, end - x)
         if not _between(x_probe, x, end):
             sure = k
             continue

@@ -409,3 +409,10 @@ def test_flatness_is_judged_from_the_slope_s_rounding_and_the_bend():
         assert is_flat(0.0, bad, 1e-16, 1e-16, 1.0)
         assert is_flat(0.0, 1.0, bad, 1e-16, 1.0)
         assert is_flat(0.0, 1.0, 1e-16, 1e-16, 1.0) == is_flat(0.0, 1.0, 1e-16, 1e-16, bad)     # a line is straight
+
+
+@pytest.mark.parametrize("scale", [1.0, 1e-6, 1e8])
+def test_zero_reached_on_one_side_of_a_step_only_is_a_jump(scale):
+    """The curve comes down to zero at 1, where it steps to -scale: there is no root, and nothing near it is taken for one."""
+    one_sided = Problem(-3.0, 3.0, lambda x: (x - 1.0, 1.0) if x > 1.0 else (-scale, 0.0), lambda x: (1e-16*abs(x - 1.0), 0.0, 0.0))
+    assert solve(one_sided).status == STATUS["JUMP"]

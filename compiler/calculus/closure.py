@@ -170,6 +170,9 @@ class _Closing:
                 beyond = graph.apply(test, node, graph.number(Fraction(end)))
                 outside = beyond if outside is None else graph.or_(outside, beyond)
         for condition in require:
+            for left, right in comparisons(graph, condition):
+                if not (self.lowering.is_finite(left) and self.lowering.is_finite(right)):
+                    outside = graph.or_(outside, graph.not_(graph.apply("ordered", left, right)))
             outside = graph.or_(outside, graph.not_(condition))
         return outside
 

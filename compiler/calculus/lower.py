@@ -71,10 +71,10 @@ class Lowering:
         graph = self.graph
         chosen = graph.enter("where", (condition, a, b))
         for left, right in comparisons(graph, condition):
-            if not (self._finite(left) and self._finite(right)):
+            if not (self.is_finite(left) and self.is_finite(right)):
                 chosen = graph.enter("where", (graph.apply("ordered", left, right), chosen, graph.nan()))
         return chosen
 
-    def _finite(self, node):
+    def is_finite(self, node):
         """Inputs are checked to be finite before anything is evaluated, constants at compile time."""
         return self.graph.is_constant(node) or self.graph.instructions[node].op == "input"

@@ -1,13 +1,13 @@
 """Numeric checks of a Model: what can be seen to be wrong before anything is compiled, with the place in the spec."""
 
 import math
-import random
 
 from rootwright.calculus.closure import close
 from rootwright.calculus.constants import NotReal, nearest
 from rootwright.calculus.doubles import Doubles
 from rootwright.calculus.lower import Lowering
 from rootwright.calculus.program import Graph, interpret
+from rootwright.calculus.sampling import sample
 from rootwright.spec.source import load
 from rootwright.spec.tables import Findings, TooMany
 
@@ -129,24 +129,3 @@ class _Examination:
 
 def _result(closure, name, point):
     return interpret(closure.program, Doubles(), point, [name])[name]
-
-
-def sample(closure, count):
-    """Points {parameter: double} of the box of ranges: corners first, then a fixed pseudo-random sequence, in `spread` coordinates."""
-    parameters = closure.model.parameters
-    corners = min(2 ** len(parameters), count // 4)
-    generator = random.Random(1)
-    for k in range(count):
-        point = {}
-        for bit, (parameter, (low, high)) in enumerate(zip(parameters, closure.ranges)):
-            share = float(k >> bit & 1) if k < corners else generator.random()
-            point[parameter.name] = between(low, high, share, parameter.spread)
-        yield point
-
-
-def between(low, high, share, spread):
-    """The double at a share (0 to 1) of a range, in the coordinate that its spread says."""
-    if share in (0.0, 1.0):
-        return high if share else low
-    value = low * (high / low) ** share if spread == "log" else low + (high - low) * share
-    return min(max(value, low), high)

@@ -6,6 +6,9 @@ from importlib import resources
 import jinja2
 
 from rootwright.calculus.constants import nearest
+from rootwright.calculus.lower import Lowering
+from rootwright.calculus.program import Graph
+from rootwright.calculus.sampling import between
 from rootwright.emit import c, python
 from rootwright.emit.describe import comments
 from rootwright.emit.manual import STATUS, manual
@@ -124,13 +127,9 @@ def _render(template, context):
 
 def _example_point(closure):
     """A point inside the operating range to show: the first published one, else the middle of the ranges."""
-    from rootwright.calculus.lower import Lowering
-    from rootwright.calculus.program import Graph
-
     model = closure.model
     if not model.published:
-        return [(low + high) / 2 if parameter.spread != "log" else (low * high) ** 0.5
-                for parameter, (low, high) in zip(model.parameters, closure.ranges)]
+        return [between(low, high, 0.5, parameter.spread) for parameter, (low, high) in zip(model.parameters, closure.ranges)]
     graph = Graph()
     lowering = Lowering(graph)
     for constant in model.constants:

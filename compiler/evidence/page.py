@@ -6,7 +6,7 @@ import textwrap
 
 from rootwright.calculus.doubles import Doubles
 from rootwright.calculus.program import interpret
-from rootwright.calculus.soundness import between
+from rootwright.calculus.sampling import between
 from rootwright.evidence.evaluate import word
 from rootwright.evidence.formula import derivative_lines
 from rootwright.spec.diagnostics import harmless

@@ -4,7 +4,7 @@ import random
 
 from rootwright.calculus.doubles import Doubles
 from rootwright.calculus.program import interpret
-from rootwright.calculus.soundness import between
+from rootwright.calculus.sampling import between
 from rootwright.evidence.trees import Place
 
 TRIES = 200                     # points looked at for each one that meets every requirement

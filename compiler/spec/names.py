@@ -28,7 +28,12 @@ _FUNCTIONS_OF_C = frozenset(
     "pow fabs fmin fmax fma copysign isfinite isnan isinf signbit nextafter ldexp frexp".split())
 _EMITTED = frozenset(
     "solve solve_jacobian tangent adjoint jacobian hessian tangent_adjoint solve_many".split())
-_IMPORTED = frozenset(["math", "struct", "sys"])
+# A module of such a name would stand in the way of the headers and modules that it, or its users, include.
+_IMPORTED = frozenset("""
+    assert complex ctype errno fenv inttypes limits locale math setjmp signal stdarg stdbool stddef stdint stdio stdlib
+    string tgmath time
+    uchar wchar wctype struct sys types builtins
+""".split())
 _EVAL_COLUMNS = frozenset("status iterations error_bound".split())
 
 # What people write who come from another language or from handwriting.
@@ -74,7 +79,7 @@ def refusal(name, is_module=False):
         return "has two underscores in a row", f"single underscores are fine: {tidy(name)}"
     if len(name) > MAX_NAME_LENGTH:
         return f"has more than {MAX_NAME_LENGTH} characters", "choose a shorter name"
-    taken = "is a module of Python's library" if is_module and name in _IMPORTED else _taken_by(name)
+    taken = "is a standard header or module" if is_module and name in _IMPORTED else _taken_by(name)
     if taken:
         return taken, f"choose another name, for example {name}_" + ("value" if name in PREDEFINED else "1")
     return None

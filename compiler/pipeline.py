@@ -1,9 +1,11 @@
 """The stages composed: spec text -> checked Model -> Closure -> files -> loaded module. The only module that knows them all."""
 
+import functools
+import warnings
 from importlib import resources
 from pathlib import Path
 
-from rootwright.spec.diagnostics import ERROR, Diagnostic
+from rootwright.spec.diagnostics import ERROR, Diagnostic, render
 from rootwright.spec.reader import read
 from rootwright.spec.source import MAX_BYTES
 
@@ -12,7 +14,7 @@ class SpecError(Exception):
     """A spec that cannot be used; `diagnostics` say why."""
 
     def __init__(self, diagnostics):
-        super().__init__(f"{len(diagnostics)} problems")
+        super().__init__("\n" + "".join(render(diagnostic) for diagnostic in diagnostics))
         self.diagnostics = diagnostics
 
 
@@ -44,12 +46,12 @@ def model(data, filename):
     return checked, diagnostics
 
 
-def closure(data, filename):
-    """Closure of a spec's bytes, and warnings. Raises SpecError."""
+def closure(data, filename, order=1):
+    """Closure of a spec's bytes, with derivatives up to an order (0, 1 or 2), and warnings. Raises SpecError."""
     from rootwright.calculus.soundness import examine
 
     checked, warnings = model(data, filename)
-    closed, found = examine(checked, data, filename)
+    closed, found = examine(checked, data, filename, order)
     if closed is None:
         raise SpecError([*warnings, *found])
     return closed, (*warnings, *found)
@@ -62,9 +64,56 @@ def emit(closed, target="c"):
     return assemble(closed, target)
 
 
-def load(spec, target="c"):
+def load(spec, target="c", order=1):
     """Compile a spec (a file, or a shipped spec's name) and load it: an object with the functions of the emitted module."""
     from rootwright.binding.module import load as load_module
 
-    closed, _ = closure(*find(str(spec)))
+    closed, _ = closure(*find(str(spec)), order)
     return load_module(closed, emit(closed, target), target)
+
+
+def array_closure(data, filename, target=None, order=1):
+    """ArrayClosure of a spec's bytes, built or taken from the cache.
+
+    target: "c", "python", or None for C where there is a compiler, else Python.
+    Raises SpecError, NoCompiler and BuildFailed (target "c"), ValueError for options that there are not.
+    """
+    from rootwright.binding.arrays import ArrayClosure
+    from rootwright.binding.build import BuildFailed, NoCompiler
+
+    if target not in (None, "c", "python"):
+        raise ValueError(f'target is {target!r}; it can be "c", "python" or None')
+    if order not in (0, 1, 2):
+        raise ValueError(f"order is {order!r}; it can be 0, 1 or 2")
+    checked, _ = model(data, filename)
+    try:
+        module = _cached(checked, data, filename, target or "c", order)
+    except (NoCompiler, BuildFailed) as error:
+        if target is not None:
+            raise
+        _say_slower(str(error).splitlines()[0])
+        module = _cached(checked, data, filename, "python", order)
+    return ArrayClosure(module, checked, (array_closure, (data, filename, target, order)))
+
+
+def _cached(checked, data, filename, target, order):
+    from rootwright.binding.build import FLAGS, compiler_version, find_compiler
+    from rootwright.binding.cache import fetch, key
+    from rootwright.binding.module import make, open_module
+
+    def made():
+        closed, _ = closure(data, filename, order)
+        return make(checked, emit(closed, target), target, order)
+
+    shaping = [checked.digest, target, str(order)]
+    if target == "c":
+        compiler = find_compiler()
+        shaping += [compiler, compiler_version(compiler), *FLAGS]
+    suffix = ".so" if target == "c" else ".py"
+    return fetch(key(*shaping), suffix, made, lambda path: open_module(path, checked, target, order))
+
+
+@functools.cache
+def _say_slower(reason):
+    """Say once in a process that arrays go through the Python target."""
+    warnings.warn(f"{reason}; closures run in Python, which is some hundred times slower", RuntimeWarning, stacklevel=4)

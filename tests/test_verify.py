@@ -366,3 +366,11 @@ def test_progress_is_reported_and_cleared():
     closure = _shipped("lambert_w")
     hold(closure, {"python": _python(closure)}, points=4, progress=lines.append)
     assert lines[0].startswith("lambert_w: 0 of ") and lines[-1] == ""
+
+
+def test_a_spec_without_a_point_to_try_is_not_said_to_hold():
+    text = b'format = 1\nname = "nowhere"\n[parameters]\na = { range = [1, 2] }\n[domain]\nrequire = ["a > 3"]\n' \
+           b'[unknown]\nname = "x"\nbracket = ["0", "5"]\n[residual]\nequation = "x = a"\n'
+    closed, _ = pipeline.closure(text, "nowhere.toml")
+    report = verify(closed, points=20)
+    assert report.failed and "nothing to verify" in render(report)

@@ -66,8 +66,14 @@ class Report:
     failures: int                               # all of them
 
     @property
+    def tried(self):
+        """Points that were solved, over all targets."""
+        return sum(count for words in self.statuses.values() for count in words.values())
+
+    @property
     def failed(self):
-        return self.failures > 0
+        """Something was found wrong, or nothing could be tried, which promises nothing."""
+        return self.failures > 0 or self.tried == 0
 
 
 def to_json(report):
@@ -137,6 +143,8 @@ def _findings(report):
 
 
 def _verdict(report):
+    if report.tried == 0:
+        return "  FAILED: there was nothing to verify"
     if not report.failed:
         return "  everything holds"
     more = report.failures - len(report.findings)

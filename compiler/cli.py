@@ -75,9 +75,7 @@ def _parser():
                           help="c: NAME.h and NAME.c (default); python: NAME.py")
     compile_.add_argument("--precision", type=_precision, default="double", metavar="double",
                           help="arithmetic of the module")
-    compile_.add_argument("--order", type=_order, default=1, metavar="0|1",
-                          help="highest derivatives asked for (default 1); a module always has first derivatives, so "
-                               "both write the same")
+    _add_order(compile_, "derivatives in the module: 0 none, 1 first (default), 2 with hessian and tangent_adjoint")
 
     evaluate = _command(
         commands, "eval", _eval,
@@ -88,8 +86,7 @@ def _parser():
     evaluate.add_argument("--points", metavar="IN.csv", required=True, help="points to solve at; - for standard input")
     evaluate.add_argument("--out", metavar="OUT.csv", default="-",
                           help="where to write; - for standard output (default)")
-    evaluate.add_argument("--order", type=_order, default=1, metavar="0|1",
-                          help="1: with derivatives (default); 0: without")
+    _add_order(evaluate, "derivatives in the table: 0 none, 1 first (default), 2 first and second")
     evaluate.add_argument("--target", choices=("c", "python"), default="c",
                           help="which module solves (default c; python where there is no C compiler)")
 
@@ -98,6 +95,7 @@ def _parser():
     verify.add_argument("--points", type=_count, default=200, metavar="N",
                         help="points of the operating range (default 200)")
     verify.add_argument("--seed", type=int, default=1, metavar="S", help="seed of the random points (default 1)")
+    _add_order(verify, "derivatives to hold against the reference: 0 none, 1 first (default), 2 first and second")
     _add_json(verify)
 
     _command(commands, "demo", _demo, "a whole job on an invented water main, start to end")
@@ -119,11 +117,14 @@ def _add_json(command):
                          help="print one JSON object; for several specs its one member `specs` lists their objects")
 
 
+def _add_order(command, text):
+    command.add_argument("--order", type=_order, default=1, metavar="0|1|2", help=text)
+
+
 def _order(text):
-    if text in ("0", "1"):
+    if text in ("0", "1", "2"):
         return int(text)
-    raise argparse.ArgumentTypeError("second derivatives are not available yet; ask for 0 or 1" if text == "2"
-                                     else f"{text!r} is not 0 or 1")
+    raise argparse.ArgumentTypeError(f"{text!r} is not 0, 1 or 2")
 
 
 def _precision(text):
@@ -162,14 +163,14 @@ def _verify(arguments):
             report = verify(closure, points=arguments.points, seed=arguments.seed, progress=progress)
         return to_json(report), "" if arguments.json else render(report), FOUND if report.failed else OK
 
-    return _each(arguments, show)
+    return _each(arguments, show, arguments.order)
 
 
-def _each(arguments, show):
+def _each(arguments, show, order=1):
     """Run `show(closure) -> (JSON data, text, status)` on every spec and print what it found: worst status."""
     found, worst = [], OK
     for k, spec in enumerate(arguments.specs):
-        closure, diagnostics = _closure(spec)
+        closure, diagnostics = _closure(spec, order)
         data, text, status = ({}, "", WRONG) if closure is None else show(closure)
         worst = max(worst, status)
         found.append({"spec": spec, "valid": closure is not None} | data | {"diagnostics": diagnostics})
@@ -195,7 +196,7 @@ def _compile(arguments):
 
     worst, written = OK, {}
     for spec in arguments.specs:
-        closure, _ = _closure(spec)
+        closure, _ = _closure(spec, arguments.order)
         if closure is None:
             worst = WRONG
             continue
@@ -225,7 +226,7 @@ def _make(folder):
 def _eval(arguments):
     from rootwright.evidence.evaluate import TableError, evaluate, is_rootless
 
-    closure, _ = _closure(arguments.spec)
+    closure, _ = _closure(arguments.spec, arguments.order)
     if closure is None:
         return WRONG
     module = _load(closure, arguments.target)
@@ -256,7 +257,7 @@ def _demo(arguments):
 # -- specs, files, streams
 
 
-def _closure(spec):
+def _closure(spec, order=1):
     """(Closure or None, diagnostics as data); what is wrong goes to stderr."""
     from rootwright import pipeline
     from rootwright.spec.diagnostics import harmless, render
@@ -268,7 +269,7 @@ def _closure(spec):
             print(f"{harmless(spec)}: {diagnostic.message}\n  {diagnostic.help}", file=sys.stderr)
         return None, [_as_data(diagnostic) for diagnostic in error.diagnostics]
     try:
-        closure, diagnostics = pipeline.closure(data, filename)
+        closure, diagnostics = pipeline.closure(data, filename, order)
     except pipeline.SpecError as error:
         closure, diagnostics = None, error.diagnostics
     print("\n".join(render(diagnostic) for diagnostic in diagnostics), end="", file=sys.stderr)

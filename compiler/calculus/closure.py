@@ -123,7 +123,7 @@ class _Closing:
             self._kernel("jacobian", **jacobian)
         if self.order == 2:
             roots = list(jacobian.values())[:len(self.parameters)]
-            self._kernel("hessian", **hessian(self, g, slope, outputs, roots))
+            self._kernel("hessian", **hessian(self, g, slope, outputs, roots, rounding.magnitudes))
 
         for node in range(len(graph.instructions)):
             if graph.is_constant(node):

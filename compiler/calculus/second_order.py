@@ -14,15 +14,16 @@ is formed once, before anything large is multiplied with it.
 from itertools import combinations_with_replacement
 
 from rootwright.calculus.differentiate import partials
+from rootwright.calculus.magnitude import smallest
 from rootwright.calculus.program import needed
 from rootwright.operations import OPERATIONS, Gated
 
 
-def hessian(closing, g, slope, outputs, roots):
+def hessian(closing, g, slope, outputs, roots, magnitudes):
     """{"d2Y/dP/dQ": instruction} of all results and all pairs of parameters, symmetric, 0 where not differentiated.
 
     `closing` has `graph`, `model`, `unknown`, `parameters` and `label`; `outputs` maps names to instructions, `roots`
-    are dx/dP.
+    are dx/dP, `magnitudes` tells which values can be 0 in the operating range.
     """
     graph, model, parameters = closing.graph, closing.model, list(closing.parameters.values())
     first = len(graph.instructions)
@@ -34,16 +35,19 @@ def hessian(closing, g, slope, outputs, roots):
     zero = graph.number(0)
     entries = {f"d2{result}/d{p}/d{q}": zero for result in model.results for p in names for q in names}
     differentiated = [k for k, parameter in enumerate(model.parameters) if parameter.differentiate]
-    effort = [len(needed(graph.instructions, [direct[k] for _, direct in rows.values()])) for k in range(len(names))]
+    # Of a pair, the formula of one is differentiated along the other. Beside a parameter that can be 0 second derivatives
+    # may grow without limit: rather keep to its formula, and take the simpler one otherwise.
+    order = [(smallest(magnitudes.of(parameters[k])) > 0.0,
+              len(needed(graph.instructions, [direct[k] for _, direct in rows.values()]))) for k in range(len(names))]
 
     def label(node, name):
         if node >= first:                       # what only second derivatives use
             closing.label(node, name)
 
-    following = [_AlongRoot(graph, name, {closing.unknown: roots[k], parameters[k]: graph.number(1)}, label)
+    following = [_AlongRoot(graph, name, {closing.unknown: roots[k], parameters[k]: graph.number(1)}, label, magnitudes)
                  for k, name in enumerate(names)]
     for a, b in combinations_with_replacement(differentiated, 2):
-        p, q = sorted((a, b), key=effort.__getitem__)       # the simpler formula is differentiated again
+        p, q = sorted((a, b), key=order.__getitem__)
         root = None
         for result, (along, direct) in rows.items():
             change = graph.add(following[q].of(direct[p]), graph.mul(following[q].of(along), roots[p]))
@@ -59,8 +63,8 @@ def hessian(closing, g, slope, outputs, roots):
 class _AlongRoot:
     """Total derivatives with respect to one parameter, carried forward through the instructions."""
 
-    def __init__(self, graph, name, seeds, label):
-        self.graph, self.name, self.label = graph, name, label
+    def __init__(self, graph, name, seeds, label, magnitudes):
+        self.graph, self.name, self.label, self.magnitudes = graph, name, label, magnitudes
         self.known = dict(seeds)
 
     def of(self, node):
@@ -80,6 +84,8 @@ class _AlongRoot:
             return self._unless_nan(*instruction.args)
         if instruction.op == "div":
             return self._quotient(node, *instruction.args)
+        if instruction.op == "pow" and self._steep_at_zero(*instruction.args):
+            return self._steep_power(node, *instruction.args)
         gates = []
         for k, arg in enumerate(instruction.args):
             moved = self.known[arg]
@@ -93,6 +99,19 @@ class _AlongRoot:
     def _quotient(self, node, a, b):
         graph = self.graph
         return graph.div(graph.sub(self.known[a], graph.mul(self.known[b], node)), b)
+
+    def _steep_at_zero(self, a, b):
+        """A power below 1 of what can be 0: a**0.3, or what a**1.3 has become in a first derivative."""
+        exponent = self.graph.rational(b)
+        return exponent is not None and 0 < exponent < 1 and not smallest(self.magnitudes.of(a)) > 0.0
+
+    def _steep_power(self, node, a, b):
+        """Infinite at 0 where a moves, but 0 where it stays: then it stays 0 however the other parameters go."""
+        graph, moved = self.graph, self.known[a]
+        if graph.literal(moved) == 0:
+            return moved
+        part, _ = OPERATIONS["pow"].pullback(graph, moved, (a, b), node)
+        return graph.where(graph.le(graph.abs_(moved), 0), 0, part)
 
     def _unless_nan(self, condition, a, nan):
         """A derivative stays NaN where it is; a value that is NaN for want of order needs no derivative."""

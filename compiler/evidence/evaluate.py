@@ -4,7 +4,7 @@ import csv
 import io
 import re
 from collections import Counter
-from itertools import islice
+from itertools import combinations_with_replacement, islice
 
 from rootwright.emit.manual import STATUS
 from rootwright.spec.names import nearest
@@ -31,10 +31,11 @@ def is_rootless(status_word):
 
 
 def columns(model, order):
-    """Names of the columns that `evaluate` adds."""
-    derivatives = [f"d{result}/d{parameter.name}" for result in model.results for parameter in model.parameters
-                   if parameter.differentiate]
-    return [*model.results, "status", "iterations", "error_bound", *(derivatives if order else [])]
+    """Names of the columns that `evaluate` adds: results, first derivatives, second ones for P at or before Q."""
+    names = [parameter.name for parameter in model.parameters if parameter.differentiate]
+    first = [f"d{result}/d{name}" for result in model.results for name in names]
+    second = [f"d2{result}/d{p}/d{q}" for result in model.results for p, q in combinations_with_replacement(names, 2)]
+    return [*model.results, "status", "iterations", "error_bound", *first*(order >= 1), *second*(order == 2)]
 
 
 def evaluate(model, module, source, sink, order=1, progress=None):
@@ -72,7 +73,9 @@ class _Evaluation:
         self.places = self._places()
         self.sink = sink
         self.end = "\r\n" if lines.last.endswith("\r\n") else "\n"
-        self.differentiated = [k for k, parameter in enumerate(model.parameters) if parameter.differentiate]
+        differentiated = [k for k, parameter in enumerate(model.parameters) if parameter.differentiate]
+        self.first = differentiated
+        self.second = tuple(zip(*combinations_with_replacement(differentiated, 2)))
         self.words = {}
 
     def run(self, progress):
@@ -147,9 +150,7 @@ class _Evaluation:
         for k in bad:
             words[k] = BAD_INPUT
         counts.update(words)
-        derivatives = [()]*len(rows)
-        if self.order:
-            derivatives = out["jac"][:, :, self.differentiated].reshape(len(rows), -1).tolist()
+        derivatives = self._derivatives(points, out)
         plain = not _SPECIAL.search("\t".join(map("\t".join, rows)))
         before, after = ","*len(self.model.results), ","*(len(self.added) - len(self.model.results) - 1)
         numbers = (out[field].tolist() for field in ("y", "iterations", "error_bound"))
@@ -159,6 +160,19 @@ class _Evaluation:
                 yield f"{cells}{before},{name}{after}"
             else:
                 yield ",".join([cells, *map(repr, y), name, str(iterations), repr(bound), *map(repr, slopes)])
+
+    def _derivatives(self, points, out):
+        """The derivatives of every row in the order of their columns."""
+        import numpy as np
+
+        parts = []
+        if self.order >= 1:
+            parts.append(out["jac"][:, :, self.first])
+        if self.order == 2 and self.second:
+            hess = np.array([self.module.hessian(p, root) for p, root in zip(points, out["y"][:, 0].tolist())])
+            parts.append(hess[:, :, self.second[0], self.second[1]])
+        flat = [part.reshape(len(points), -1) for part in parts]
+        return np.concatenate(flat, axis=1).tolist() if flat else [()]*len(points)
 
     def _write(self, lines):
         """Write and pass on, so that who reads from a pipe sees every chunk when it is done."""

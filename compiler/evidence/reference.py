@@ -69,7 +69,7 @@ class Reference:
 
         x is the root; or any number near it: then the root of the residual less its value at x is differentiated.
         """
-        return _Differences(self, point, x).all()
+        return Differences(self, point, x).all()
 
 
 def sign(value):
@@ -240,18 +240,16 @@ class _Search:
         raise NotSettled("the residual has one sign at both ends of the bracket")
 
 
-class _Differences:
+class Differences:
+    """Derivatives of the results near one root by differences of roots solved again."""
+
     def __init__(self, reference, point, x):
         self.model, self.trees = reference.model, reference.trees
         self.point, self.x = point, x
 
     def all(self):
         with precision(FINE):
-            here = self._place({})
-            self.size = abs(self.x) if not self.x.is_zero() else flint.arb(1)
-            self.level = here.residual(self.x, FINE).mid()
-            self.slope = self._slope(here)
-            center = None if self.slope is None else self._results(here)
+            center = self._center()
             found = {}
             for parameter in self.model.parameters:
                 if parameter.differentiate:
@@ -259,6 +257,14 @@ class _Differences:
                     for result in self.model.results:
                         found[result, parameter.name] = column.get(result, Derivative(None, "undefined"))
             return found
+
+    def _center(self):
+        """Balls of the results at the point itself, or None where they are undefined."""
+        here = self._place({})
+        self.size = abs(self.x) if not self.x.is_zero() else flint.arb(1)
+        self.level = here.residual(self.x, FINE).mid()
+        self.slope = self._slope(here)
+        return None if self.slope is None else self._results(here)
 
     def _place(self, shift):
         values = {name: ball(value) for name, value in self.point.items()}
@@ -296,8 +302,7 @@ class _Differences:
         return self._results(self._place({parameter.name: ball(self.point[parameter.name]) + h}))
 
     def _column(self, parameter, center):
-        value = self.point[parameter.name]
-        size = ball(abs(value)) if value else self._width(parameter)
+        size = self._size(parameter)
         h = size * flint.arb(2) ** STEP
         above, below = self._moved(parameter, h), self._moved(parameter, -h)
         column = {}
@@ -314,6 +319,10 @@ class _Differences:
             else:
                 column[result] = Derivative(None, "undefined")
         return column
+
+    def _size(self, parameter):
+        value = self.point[parameter.name]
+        return ball(abs(value)) if value else self._width(parameter)
 
     def _width(self, parameter):
         """What scales the shift of a parameter that is zero: the width of its range, or 1 if that is less."""

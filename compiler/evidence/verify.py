@@ -1,7 +1,7 @@
 """Hold a compiled module against a reference that shares nothing with it, and against its published values.
 
-Roots: certified enclosures in ball arithmetic from the author's trees (`evidence/reference.py`). Derivatives:
-high-precision differences of roots solved again. Tangent against adjoint: w.(J v) = (J' w).v. C against Python. The
+Roots: certified enclosures in ball arithmetic from the author's trees (`evidence/reference.py`). Derivatives, first and
+second: high-precision differences of roots solved again. Tangent against adjoint: w.(J v) = (J' w).v. C against Python. The
 limits are in `limits.py`.
 """
 
@@ -21,6 +21,7 @@ from rootwright.evidence.noise import noise, sensitivity
 from rootwright.evidence.points import choose, exact, in_range, published
 from rootwright.evidence.reference import FINE, NotSettled, Reference
 from rootwright.evidence.report import Finding, Measure, Report, Value, render, to_json
+from rootwright.evidence.second_order import SecondOrder
 
 __all__ = ["hold", "modules", "render", "to_json", "verify"]
 
@@ -98,6 +99,7 @@ class _Holding:
         self.ulps, self.overestimates = 0.0, []
         self.widths = {parameter.name: high - low
                        for parameter, (low, high) in zip(self.model.parameters, closure.ranges)}
+        self.second = SecondOrder(self) if closure.order == 2 else None
 
     # -- collecting
 
@@ -116,7 +118,10 @@ class _Holding:
     # -- one point
 
     def try_point(self, point):
-        solved = {target: module.solve_jacobian(list(point.values())) for target, module in self.built.items()}
+        solve = "solve_jacobian" if self.closure.order else "solve"
+        solved = {target: getattr(module, solve)(list(point.values())) for target, module in self.built.items()}
+        if not self.closure.order:
+            solved = {target: (r, None) for target, r in solved.items()}
         for target, (r, _) in solved.items():
             self.statuses[target][word(r.status)] += 1
         roots = {target: r for target, (r, _) in solved.items() if r.status >= 0 and self._is_number(r, target, point)}
@@ -135,12 +140,14 @@ class _Holding:
         for target, r in roots.items():
             self._root_error(root, r, allowed, target, point)
             self._outputs(place, r, target, point)
-            self._identity(solved[target], target, point)
+            if self.closure.order:
+                self._identity(solved[target], target, point)
         if len(roots) == 2 and math.isfinite(allowed):
             c, python = roots["c"], roots["python"]
             self.measured("targets", abs(c.y[0] - python.y[0]) / allowed, "c", self.model.unknown.name, point,
                           f"C gives {c.y[0]!r}, Python {python.y[0]!r}")
-        self._derivatives(root, {target: solved[target] for target in roots}, point)
+        if self.closure.order:
+            self._derivatives(root, {target: solved[target] for target in roots}, point)
 
     def _same_status(self, solved, point):
         words = {target: word(r.status) for target, (r, _) in solved.items()}
@@ -211,14 +218,19 @@ class _Holding:
         if not all(math.isfinite(entry) for row in jac for entry in row):
             return
         module, p = self.built[target], list(point.values())
-        v = [self.generator.uniform(-1.0, 1.0) * (abs(value) or self.widths[name]) for name, value in point.items()]
-        w = [self.generator.uniform(-1.0, 1.0) / (abs(value) if 1e-100 < abs(value) < 1e100 else 1.0) for value in r.y]
+        v, w = self.directions(point, r)
         along = sum(a * b for a, b in zip(w, module.tangent(p, r.y[0], v)))
         against = sum(a * b for a, b in zip(module.adjoint(p, r.y[0], w, [0.0] * len(p)), v))
         terms = sum(abs(a * entry * b) for a, row in zip(w, jac) for entry, b in zip(row, v))
         if 1e-280 < terms < math.inf:       # far from underflow
             self.measured("identity", abs(along - against) / terms, target, "w.(J v)", point,
                           f"tangent gives {along!r}, adjoint {against!r}")
+
+    def directions(self, point, r):
+        """A random direction of the sizes of the parameters, and random weights against the sizes of the results."""
+        v = [self.generator.uniform(-1.0, 1.0) * (abs(value) or self.widths[name]) for name, value in point.items()]
+        w = [self.generator.uniform(-1.0, 1.0) / (abs(value) if 1e-100 < abs(value) < 1e100 else 1.0) for value in r.y]
+        return v, w
 
     # -- derivatives
 
@@ -229,6 +241,8 @@ class _Holding:
                 self.skipped["points with a flat root, without derivatives"] += 1
                 if not all(math.isnan(jac[i][k]) for i in range(len(jac)) for k in self._differentiated()):
                     self.found("derivative", target, "a flat root has derivatives that are numbers", point)
+                if self.second:
+                    self.second.flat(r, target, point)
             elif r.status & CAVEATS["kink"]:
                 self.skipped["points with a root on a kink, derivatives not compared"] += 1
             else:
@@ -237,6 +251,8 @@ class _Holding:
             true = self.reference.derivatives(point, root.mid)
             for target, (r, jac) in compared.items():
                 self._compare(true, r, jac, target, point)
+            if self.second:
+                self.second.hold(root, compared, point)
 
     def _differentiated(self):
         return [k for k, parameter in enumerate(self.model.parameters) if parameter.differentiate]

@@ -12,13 +12,17 @@ from rootwright.calculus.sampling import between
 from rootwright.emit import c, python
 from rootwright.emit.describe import comments
 from rootwright.emit.manual import STATUS, manual
+from rootwright.emit.provenance import provenance, seal
 
 _KERNELS = ("bracket", "residual", "rounding", "outside", "kink", "start", "outputs", "jacobian", "hessian")
+
+_LICENCE = "SPDX-License-Identifier: 0BSD (no conditions; no warranty)"
 
 
 def assemble(closure, target="c"):
     """Files of the module, {file name: text}: header and source for "c", one file for "python"."""
-    return {"c": _assemble_c, "python": _assemble_python}[target](closure)
+    files = {"c": _assemble_c, "python": _assemble_python}[target](closure)
+    return {name: seal(text) for name, text in files.items()}
 
 
 def _assemble_c(closure):
@@ -37,9 +41,10 @@ def _assemble_c(closure):
     solver, interface = runtime("solver.c"), runtime("interface.c")
     helpers = _used(runtime("arithmetic.c"), kernels + solver + interface, r"^static \w+ (\w+)\(")
     page = manual(closure, _example_c(closure), [
-        f"Interface: p[{sizes['N']}] holds the parameters, y[{sizes['M']}] the results, each in the order above. No heap, no globals, re-entrant."])
+        f"Interface: p[{sizes['N']}] holds the parameters, y[{sizes['M']}] the results, each in the order above. No heap, "
+        "no globals, re-entrant."], _origin(closure, "c"))
     context = sizes | {"name": model.name, "upper": upper, "status": [(code, word) for code, word, _ in STATUS],
-                       "results": ", ".join(model.results), "manual": page, "provenance": page[-3:]}
+                       "results": ", ".join(model.results), "manual": page, "provenance": _origin(closure, "c")}
     source = context | {"helpers": "".join(f"{text}\n\n" for text in helpers), "kernels": kernels, "solver": solver, "interface": interface}
     return {f"{model.name}.h": _render("module.h.j2", context), f"{model.name}.c": _render("module.c.j2", source)}
 
@@ -55,11 +60,16 @@ def _assemble_python(closure):
     solver, interface = runtime("solver.py"), runtime("interface.py")
     helpers = _used(runtime("arithmetic.py"), kernels + solver + interface, r"^def (\w+)\(")
     page = manual(closure, _example_python(closure), [
-        f"Interface: p is a sequence of the {sizes['N']} parameters, y a list of the {sizes['M']} results, each in the order above."])
+        f"Interface: p is a sequence of the {sizes['N']} parameters, y a list of the {sizes['M']} results, each in the "
+        "order above."], _origin(closure, "python"))
     context = sizes | {"status": [(code, word) for code, word, _ in STATUS], "parameters": ", ".join(p.name for p in model.parameters),
                        "results": ", ".join(model.results), "manual": page, "kernels": kernels, "solver": solver,
                        "interface": interface, "helpers": "".join(f"{text}\n\n\n" for text in helpers)}
     return {f"{model.name}.py": _render("module.py.j2", context)}
+
+
+def _origin(closure, target):
+    return [*provenance(closure.model, {"target": target, "order": closure.order}), _LICENCE]
 
 
 def _sizes(closure):

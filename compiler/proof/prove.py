@@ -1,0 +1,164 @@
+"""Closure to Certificate: which claims hold for every point of the operating range.
+
+Over the real numbers, with the decimals that the author wrote:
+
+- the bracket is in order, and the residual's signs at its ends differ, over every box of parameters (`judge_ends`);
+- over every box of parameters and of the share of the bracket, the residual is defined, and either has one sign or is continuous with
+  a derivative of one sign (`judge_inside`). Between two zeros of a continuous function whose slope has one sign wherever it
+  may be 0 there is no other, and a jump from one sign to the other cannot hide in a box whose enclosure leaves out 0.
+
+What is not proved is looked at point by point for a refutation. What is neither is open, with its share of the range.
+"""
+
+import numpy as np
+
+from rootwright.calculus.lower import Lowering
+from rootwright.proof.advice import advise
+from rootwright.proof.certificate import Certificate, Claim
+from rootwright.proof.chart import Chart
+from rootwright.proof.numbers import doubles_are_finite, slope_bound
+from rootwright.proof.ranges import as_ball, exact_ends
+from rootwright.proof.refute import Examiner
+from rootwright.proof.scaling import symmetries
+from rootwright.proof.settle import Domain, Limit, Outcome, search_ends, search_inside, share
+from rootwright.proof.switches import refute_kink
+
+BOXES = 60_000
+_ENDS, _INSIDE = 0.4, 0.9           # of the boxes that may be spent, by the end of each search
+_NEEDS = {                          # what is asked of the boxes for each claim
+    "defined": ("ordered", "defined"),
+    "exists": ("ordered", "change", "continuous"),
+    "unique": ("ordered", "change", "unique"),
+    "slope": ("ordered", "change", "unique"),
+    "kink": ("kink",),
+    "iterations": ("ordered", "change", "continuous"),
+}
+
+
+def prove(closure, boxes=BOXES, seconds=None, progress=None, seen=None):
+    """Certificate of a Closure.
+
+    `boxes` limits the boxes looked at, the same way on every machine; `seconds` stops after the wave at hand. `progress(stage, boxes,
+    waiting)` is called after every wave. `seen` is the most iterations of a solve that the caller has seen.
+    """
+    return _Proof(closure, Limit(boxes, seconds, progress)).certificate(seen)
+
+
+class _Proof:
+    def __init__(self, closure, limit):
+        self.closure, self.model, self.limit = closure, closure.model, limit
+        self.plain = Domain(self.model)
+        scaling = relative(self.plain.lower)
+        self.domain = Domain(self.model, scaling) if scaling else self.plain
+        self.outcome = Outcome()
+
+    def certificate(self, seen):
+        boxes = self.limit.boxes
+        search_ends(self.domain, self.limit, _ENDS * boxes, self.outcome)
+        for index in range(len(self.domain.charts)):
+            ceiling = _INSIDE * boxes if index == len(self.domain.charts) - 1 else 0.5 * (_ENDS + _INSIDE) * boxes
+            search_inside(self.domain, index, self.limit, ceiling, self.outcome, ("defined", "continuous", "unique", "kink"))
+        proved = {claim for claim, needs in _NEEDS.items() if not any(need in self.outcome.open for need in needs)}
+        if len(self.outcome.rises) > 1:
+            if self.model.unknown.root == "only":
+                proved -= {"unique"}
+        slope = slope_bound(self.domain, self.outcome, self.limit) if "slope" in proved else 0.0
+        if not slope > 0.0:
+            proved -= {"slope"}
+        witnesses = self._refutations(set(_NEEDS) - proved)
+        finite = doubles_are_finite(self.plain, self.closure, self.limit)
+        claims = tuple(self._claim(name, proved, witnesses, slope, finite, seen) for name in _NEEDS)
+        return Certificate(self.model.name, self.model.digest,
+                           tuple((p.name, p.low.text, p.high.text) for p in self.model.parameters),
+                           tuple(condition.text for condition in self.model.require), self._relative(),
+                           self.limit.spent, claims, advise(self, proved, witnesses))
+
+    def _refutations(self, open_claims):
+        if not open_claims:
+            return {}
+        examiner = Examiner(self.plain)
+        for values in examiner.corners():
+            examiner.examine(values, open_claims)
+        if "unique" in open_claims:
+            for values in examiner.from_turns(self.domain, self.outcome):
+                examiner.examine(values, open_claims)
+        lefts = [left for need, boxes in self.outcome.open.items() if need != "kink" for left in boxes]
+        for left in lefts[:12]:
+            shares = _shares(self.domain, left)
+            for values in examiner.from_boxes(self.domain, left.low, left.high):
+                examiner.examine(values, open_claims, shares)
+        if "kink" in open_claims and self.plain.lower.switches:
+            witness = refute_kink(self.plain, examiner)
+            if witness:
+                examiner.found["kink"] = witness
+        return {claim: witness for claim, witness in examiner.found.items() if claim in open_claims}
+
+    def _claim(self, name, proved, witnesses, slope, finite, seen):
+        verdict = "refuted" if name in witnesses else "proved" if name in proved else "open"
+        lefts = [left for need in _NEEDS[name] for left in self.outcome.open.get(need, [])]
+        reason, numbers, doubles, left_open = "", [], "", 0.0
+        failed = next((other for other in ("defined", "exists") if other in witnesses and other != name), None)
+        if verdict == "open":
+            left_open = share(self.domain, lefts, self.outcome.inside_range)
+            if failed and name != "kink":
+                reason, left_open = f"without meaning where `{failed}` fails", 1.0
+            elif name == "unique" and len(self.outcome.rises) > 1 and not lefts:
+                reason, left_open = "the slope has different signs in different parts of the range", 1.0
+            elif name == "slope" and not lefts:
+                reason, left_open = "no positive bound was found", 1.0
+        if name == "slope" and verdict == "proved":
+            numbers.append(("least_slope", slope))
+        if name == "iterations":
+            numbers.append(("limit", float(self.closure.limit)))
+            if seen is not None:
+                numbers.append(("seen", float(seen)))
+        if verdict == "proved" and name in ("defined", "exists", "iterations"):
+            doubles = "proved" if finite else "open"
+        return Claim(name, verdict, doubles, left_open, reason, witnesses.get(name),
+                     self._worst(lefts) if verdict == "open" and not failed else (), tuple(numbers))
+
+    def _worst(self, lefts):
+        """The largest box that is left, in the variables of the proof."""
+        if not lefts:
+            return ()
+        low, high = (np.concatenate([getattr(left, end) for left in lefts]) for end in ("low", "high"))
+        row = int(np.argmax(self.domain.ranges.volume(low, high)))
+        names = dict(self._relative())
+        return tuple((names.get(name, name), float(low[row, k]), float(high[row, k]))
+                     for k, name in enumerate(self.domain.ranges.names[:-1]))
+
+    def _relative(self):
+        """((parameter, what stands for it), ...): `sag/L` for `sag`."""
+        if not self.domain.scaling:
+            return ()
+        words = []
+        for name in self.domain.ranges.names[:-1]:
+            powers = self.domain.scaling.powers.get(name, {})
+            if powers:
+                words.append((name, name + "".join(f"*{p}^({-power})" if power != 1 else f"/{p}" for p, power in sorted(powers.items()))))
+        return tuple(words)
+
+
+def relative(chart):
+    """The scaling that leaves the fewest variables, or None."""
+    model, graph = chart.model, chart.graph
+    lowering = chart._lowering((), graph.input(model.unknown.name))
+    residual = lowering.lower(model.residual)
+    switches = [form.nodes[0] for _, form in chart.switches]
+    if switches:
+        return None
+    exact = exact_ends(model)
+    positive = [name for name in chart.variables[:-1] if as_ball(exact[name][0]) > 0]
+    positive.sort(key=lambda name: (float(as_ball(exact[name][1]) / as_ball(exact[name][0])), name))
+    scaling = symmetries(graph.instructions, [residual, *chart.requirements], [form.nodes[0] for form in chart.bracket],
+                         model.unknown.name, positive)
+    return scaling if scaling.pivots else None
+
+
+def _shares(domain, left):
+    """Places in the bracket that boxes left open point to."""
+    from fractions import Fraction
+    if left.chart:
+        return ()
+    places = np.unique(np.concatenate([left.low[:6, -1], left.high[:6, -1], 0.5 * (left.low[:6, -1] + left.high[:6, -1])]))
+    return tuple(Fraction(float(place)) for place in places)

@@ -1,0 +1,266 @@
+"""Branch and bound over boxes: what is settled is put aside, the rest is cut in two where it matters most (Moore; W. Tucker, Validated
+Numerics, 2011, chapter 5).
+
+Two searches. `judge_ends` takes boxes of parameters and asks for the bracket and the signs at its ends. `judge_inside` takes boxes of parameters
+and of the share of the bracket, and asks where a zero may lie, and of what kind it is. Both return plain arrays, one entry a box.
+"""
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from rootwright.proof.chart import SHARE, Form
+
+NEAR = (2.0 ** -6, 2.0 ** -20, 2.0 ** -50)     # shares of the bracket within which the sign next to an open end is asked for
+CHUNK = 1024                                    # boxes a wave
+
+
+@dataclass
+class Ends:
+    """Outcome of `judge_ends`."""
+    outside: np.ndarray         # no point of the box is in the operating range
+    ordered: np.ndarray         # bracket ends are finite, and lower < upper
+    change: np.ndarray          # signs at the ends differ, or one is 0
+    smear: np.ndarray           # (boxes, variables): how much each variable moves what is not settled
+
+
+@dataclass
+class Inside:
+    """Outcome of `judge_inside`."""
+    outside: np.ndarray
+    undefined: np.ndarray       # the residual may have no value
+    active: np.ndarray          # it may be 0
+    jump: np.ndarray            # it may be discontinuous
+    rise: np.ndarray            # sign of g_x: 1, -1, or 0 where it is not settled
+    switch: np.ndarray          # a switch may be here
+    smear: np.ndarray
+
+
+def judge_ends(near_lower, near_upper, model, low, high):
+    """`near_lower` and `near_upper` are the charts that count t from those ends (the same one for closed ends)."""
+    chart = near_lower
+    size = len(low)
+    outcome = Ends(*(np.zeros(size, bool) for _ in range(3)), np.zeros(low.shape))
+    outcome.outside = outside(chart, low, high)
+    at = np.nonzero(~outcome.outside)[0]
+    if not len(at):
+        return outcome
+    low, high = low[at], high[at]
+    width, smear = _signed(chart, chart.width, low, high)
+    bounds = [chart.natural(form, low, high) for form in chart.bracket]
+    ordered = (width > 0) & ~bounds[0].undefined & ~bounds[1].undefined
+    signs = []
+    for end, opened, own in (("lower", model.unknown.open_lower, near_lower), ("upper", model.unknown.open_upper, near_upper)):
+        if opened:
+            sign, part = _next_to(own, low, high)
+        else:
+            sign, part = _at_end(chart, end, low, high)
+        signs.append(sign)
+        smear = smear + part
+    (rise, fall), (rise_above, fall_above) = signs
+    change = fall & rise_above | rise & fall_above
+    outcome.ordered[at], outcome.change[at], outcome.smear[at] = ordered, change, smear
+    return outcome
+
+
+def outside(chart, low, high):
+    """True where some requirement fails in the whole box."""
+    result = np.zeros(len(low), bool)
+    if chart.requirements:
+        values = chart.evaluate(chart.requirements, low, high)
+        for node in chart.requirements:
+            result |= ~np.broadcast_to(values[node].yes, result.shape)
+    return result
+
+
+def _signed(chart, form, low, high, opened=False):
+    """Strict sign of a form over boxes (1, -1, 0: not settled), and the smear of it."""
+    values = chart.natural(form, low, high, opened)
+    sign = _strict(values)
+    smear = np.zeros(low.shape)
+    at = np.nonzero(sign == 0)[0]
+    if len(at):
+        smear[at] = 1.0
+        at = at[~values.undefined[at] & ~values.jump[at]]
+    if len(at):
+        first, last, below, above = chart.sharp(form, low[at], high[at], opened)
+        sign[at] = np.where(first > 0, 1, np.where(last < 0, -1, 0))
+        smear[at] = normalised(below, above, low[at], high[at])
+    return sign, smear
+
+
+def _strict(values):
+    definite = values.definite()
+    return np.where(definite & (values.low >= 0), 1, np.where(definite & (values.high <= 0), -1, 0))
+
+
+def _weak(low, high):
+    return low >= 0, high <= 0
+
+
+def _at_end(chart, end, low, high):
+    """((g >= 0, g <= 0), smear) at a closed end."""
+    form = chart.at_lower if end == "lower" else chart.at_upper
+    values = chart.natural(form, low, high)
+    first, last = values.low.copy(), values.high.copy()
+    for sign, relaxed in chart.relaxed[end]:
+        part = chart.natural(relaxed, low, high)
+        if sign < 0:
+            first = np.where(part.undefined, first, np.maximum(first, part.low))
+        else:
+            last = np.where(part.undefined, last, np.minimum(last, part.high))
+    smear = np.zeros(low.shape)
+    open_ = ~((first >= 0) | (last <= 0)) | values.undefined
+    smear[open_] = 1.0
+    at = np.nonzero(open_ & ~values.undefined & ~values.jump)[0]
+    if len(at):
+        bottom, top, below, above = chart.sharp(form, low[at], high[at])
+        smear[at] = normalised(below, above, low[at], high[at])
+        bottom, top = np.maximum(bottom, first[at]), np.minimum(top, last[at])
+        left = np.nonzero(~((bottom >= 0) | (top <= 0)))[0]
+        if len(left) and chart.slack_forms:
+            bottom[left], top[left] = _within_range(chart, form, low[at][left], high[at][left], below[left], above[left],
+                                                    bottom[left], top[left])
+        first[at], last[at] = bottom, top
+    defined = ~values.undefined
+    rise, fall = _weak(first, last)
+    return (rise & defined, fall & defined), smear
+
+
+def _within_range(chart, form, low, high, below, above, bottom, top):
+    """Bounds of a form over the part of the boxes in the operating range, by Lagrange's multipliers.
+
+    Where a slack c is not negative, g >= g - m*c and g <= g + m*c for every m >= 0. m is chosen to cancel the slope in one
+    variable; the mean-value form of g - m*c is then bounded over the whole box.
+    """
+    centre = low + 0.5 * (high - low)
+    centre = np.clip(centre, low, high)
+    at_centre = chart.natural(form, centre, centre)
+    reach = 0.5 * (high - low)
+    for slack in chart.slack_forms:
+        whole = chart.natural(slack, low, high)
+        usable = ~whole.undefined & ~whole.jump
+        c_below, c_above = chart.slopes(slack, low, high)
+        c_centre = chart.natural(slack, centre, centre)
+        with np.errstate(all="ignore"):
+            middle, c_middle = 0.5 * (below + above), 0.5 * (c_below + c_above)
+            for k in range(low.shape[1] - 1):
+                for sign in (1.0, -1.0):
+                    factor = sign * middle[:, k] / c_middle[:, k]
+                    good = usable & np.isfinite(factor) & (factor > 0)
+                    if not good.any():
+                        continue
+                    m = np.where(good, factor, 0.0)
+                    bound = _relaxed_bound(at_centre, c_centre, (below, above), (c_below, c_above), sign * m, low, high, centre)
+                    if sign > 0:
+                        bottom = np.where(good & (bound[0] > bottom), bound[0], bottom)
+                    else:
+                        top = np.where(good & (bound[1] < top), bound[1], top)
+    return bottom, top
+
+
+def _relaxed_bound(value, slack, slopes, slack_slopes, m, low, high, centre):
+    """Mean-value enclosure of value - m*slack; m is an array of either sign, one a box."""
+    from rootwright.proof.chart import mean_value
+    from rootwright.proof.intervals import Interval, Intervals
+    arithmetic = Intervals()
+    factor = Interval(m, m)
+    start = arithmetic.sub(Interval(value.low, value.high), arithmetic.mul(factor, Interval(slack.low, slack.high)))
+    column = Interval(m[:, None], m[:, None])
+    combined = arithmetic.sub(Interval(*slopes), arithmetic.mul(column, Interval(*slack_slopes)))
+    reach = mean_value(combined.low, combined.high, low, high, centre)
+    total = arithmetic.add(start, Interval(*reach))
+    undefined = value.undefined | slack.undefined
+    return np.where(undefined, -np.inf, total.low), np.where(undefined, np.inf, total.high)
+
+
+def _next_to(chart, low, high):
+    """((g > 0, g < 0), smear) in some half-open interval of the bracket next to an open end."""
+    sign, smear = np.zeros(len(low), int), np.zeros(low.shape)
+    for near in NEAR:
+        left = np.nonzero(sign == 0)[0]
+        if len(left):
+            inside_low, inside_high = low[left].copy(), high[left].copy()
+            inside_low[:, -1], inside_high[:, -1] = 0.0, near
+            sign[left], smear[left] = _signed(chart, chart.residual, inside_low, inside_high, True)
+    smear[:, -1] = 0.0
+    return (sign > 0, sign < 0), smear
+
+
+def judge_inside(chart, low, high, opened):
+    """`opened`: the boxes leave out t = 0."""
+    size = len(low)
+    flags = [np.zeros(size, bool) for _ in range(4)]
+    outcome = Inside(outside(chart, low, high), *flags, np.zeros(size, int), np.zeros(low.shape))
+    outcome.rise, outcome.switch = np.zeros(size, int), np.zeros(size, bool)
+    at = np.nonzero(~outcome.outside)[0]
+    if not len(at):
+        return outcome
+    low, high = low[at], high[at]
+    values = chart.natural(chart.residual, low, high, opened)
+    active, smear = ~values.definite(), np.zeros(low.shape)
+    smooth = np.nonzero(active & ~values.undefined & ~values.jump)[0]
+    smear[active] = 1.0
+    if len(smooth):
+        first, last, below, above = chart.sharp(chart.residual, low[smooth], high[smooth], opened)
+        active[smooth] = ~((first > 0) | (last < 0))
+        smear[smooth] = normalised(below, above, low[smooth], high[smooth])
+    rise = np.zeros(len(at), int)
+    left = smooth[active[smooth]]
+    if len(left):
+        inner = left
+        rise[inner], part = _signed(chart, chart.slope, low[inner], high[inner], opened)
+        smear[inner] += part
+    switch = np.zeros(len(at), bool)
+    left = np.nonzero(active)[0]
+    if len(left) and chart.switches:
+        touched, part = _on_switch(chart, low[left], high[left], opened)
+        switch[left] = touched
+        smear[left] += part
+    outcome.undefined[at], outcome.active[at], outcome.jump[at] = values.undefined, active, values.jump
+    outcome.rise[at], outcome.switch[at], outcome.smear[at] = rise, switch, smear
+    return outcome
+
+
+def _on_switch(chart, low, high, opened):
+    touched, smear = np.zeros(len(low), bool), np.zeros(low.shape)
+    for guard, form in chart.switches:
+        sign, part = _signed(chart, form, low, high, opened)
+        near = sign == 0
+        if guard is not None:
+            near &= np.broadcast_to(chart.evaluate([guard], low, high, opened)[guard].yes, near.shape)
+        touched |= near
+        smear += np.where(near[:, None], part, 0.0)
+    return touched, smear
+
+
+def normalised(below, above, low, high):
+    """Maximal smear (R. B. Kearfott, Rigorous Global Search, 1996): slope times width, each box's largest 1; widths alone where infinite."""
+    with np.errstate(all="ignore"):
+        smear = np.maximum(np.abs(below), np.abs(above)) * (high - low)
+        total = smear.max(axis=1, keepdims=True)
+        return np.where(np.isfinite(total) & (total > 0), smear / total, 1.0)
+
+
+def split(low, high, smear, widths, logs, finest=2.0 ** -160):
+    """Halves of boxes, cut in the variable of the largest smear; `widths` (boxes, variables) are shares of the range, which break ties.
+
+    Returns (low, high) of twice as many boxes, and where a box is too thin to cut: its share of the bracket below `finest`, or its
+    ends next to each other.
+    """
+    choice = np.argmax(np.where(high > low, (smear + 1e-3) * np.sqrt(widths) + 0.05 * widths, -np.inf), axis=1)
+    rows = np.arange(len(low))
+    a, b = low[rows, choice], high[rows, choice]
+    with np.errstate(all="ignore"):
+        middle = np.where(logs[choice] & (a > 0), np.sqrt(a) * np.sqrt(b), 0.5 * a + 0.5 * b)
+    stuck = ~((middle > a) & (middle < b)) | (choice == low.shape[1] - 1) & (b - a < finest)
+    first_high, second_low = high.copy(), low.copy()
+    first_high[rows, choice], second_low[rows, choice] = middle, middle
+    return np.concatenate([low, second_low]), np.concatenate([first_high, high]), stuck
+
+
+def at_share(low, high, value):
+    """Boxes with the share of the bracket set to one value."""
+    low, high = low.copy(), high.copy()
+    low[:, -1] = high[:, -1] = value
+    return low, high

@@ -1,0 +1,163 @@
+"""The two searches over the whole operating range: what is settled, what is left, and where."""
+
+import time
+from dataclasses import dataclass, field
+
+import numpy as np
+
+from rootwright.proof.chart import Chart
+from rootwright.proof.ranges import ranges
+from rootwright.proof.search import CHUNK, judge_ends, judge_inside, split
+
+
+@dataclass
+class Left:
+    """Boxes left open, one row of the arrays a box."""
+    low: np.ndarray
+    high: np.ndarray
+    chart: int
+
+
+@dataclass
+class Outcome:
+    """`open` maps what is asked for (`needs_of`, and `ordered` and `change` of the bracket) to the boxes where it is not settled."""
+    open: dict = field(default_factory=dict)
+    active: list = field(default_factory=list)      # (chart, low, high, sign of slope): boxes that may hold a zero
+    rises: set = field(default_factory=set)         # signs of g_x in them
+    inside_range: float = 1.0                       # share of the ranges that meets the requirements, from above
+
+
+class Limit:
+    """How much work may be done: a number of boxes, and a time that is looked at between waves only."""
+
+    def __init__(self, boxes, seconds=None, progress=None):
+        self.boxes, self.progress = boxes, progress
+        self.waves = 0
+        self.until = None if seconds is None else time.monotonic() + seconds
+        self.spent = 0
+
+    def take(self, count, stage, waiting):
+        self.spent += count
+        self.waves += 1
+        if self.progress:
+            self.progress(stage, self.spent, waiting)
+
+    def reached(self, ceiling):
+        return self.spent >= ceiling or self.until is not None and time.monotonic() > self.until
+
+
+class Domain:
+    """Charts of one model, plain or relative to the pivots of a scaling, with their ranges."""
+
+    def __init__(self, model, scaling=None):
+        self.model, self.scaling = model, scaling
+        fixed = scaling.pivots if scaling else ()
+        self.lower = Chart(model, fixed)
+        self.charts = [self.lower]
+        if model.unknown.open_upper:
+            self.charts.append(Chart(model, fixed, from_upper=True))
+        self.upper = self.charts[-1]
+        self.ranges = ranges(model, self.lower.variables, scaling)
+        self.opened = [model.unknown.open_lower, True]
+
+    def whole(self):
+        """The box of everything that each chart has to look after."""
+        high = self.ranges.high.copy()
+        high[-1] = 1.0 if len(self.charts) == 1 else 0.5
+        return self.ranges.low[None, :].copy(), high[None, :]
+
+
+def search_ends(domain, limit, ceiling, outcome):
+    """Cuts boxes of parameters until the bracket is in order and the signs differ at its ends; fills the outcome."""
+    low, high = domain.ranges.low[None, :].copy(), domain.ranges.high[None, :].copy()
+    low[:, -1] = high[:, -1] = 0.0
+    kept, beyond = [], 0.0
+    while len(low) and not limit.reached(ceiling):
+        now, low, high = (low[:CHUNK], high[:CHUNK]), low[CHUNK:], high[CHUNK:]
+        limit.take(len(now[0]), "ends", len(low))
+        judged = judge_ends(domain.lower, domain.upper, domain.model, *now)
+        beyond += domain.ranges.volume(*now)[judged.outside].sum()
+        open_ = ~judged.outside & ~(judged.ordered & judged.change)
+        low, high = _append(domain, now, open_, judged.smear, low, high, kept)
+    outcome.inside_range = max(1.0 - beyond, 0.0)
+    kept.append((low, high))
+    low, high = np.concatenate([k[0] for k in kept]), np.concatenate([k[1] for k in kept])
+    for start in range(0, len(low), CHUNK):
+        now = low[start:start + CHUNK], high[start:start + CHUNK]
+        judged = judge_ends(domain.lower, domain.upper, domain.model, *now)
+        for claim, good in (("ordered", judged.ordered), ("change", judged.change)):
+            need = ~judged.outside & ~good
+            if need.any():
+                outcome.open.setdefault(claim, []).append(Left(now[0][need], now[1][need], 0))
+
+
+def search_inside(domain, index, limit, ceiling, outcome, wanted, low=None, high=None, share_only=False):
+    """Cuts boxes of parameters and share until nothing that the claims in `wanted` need is open; fills the outcome.
+
+    `share_only`: the boxes hold single points of the parameters, whose rounding is not worth a cut.
+    """
+    chart = domain.charts[index]
+    opened = domain.opened[index]
+    direction = -1 if index else 1          # the second chart counts the share from the upper end
+    if low is None:
+        low, high = domain.whole()
+    kept = []
+    while len(low) and not limit.reached(ceiling):
+        now, low, high = (low[:CHUNK], high[:CHUNK]), low[CHUNK:], high[CHUNK:]
+        limit.take(len(now[0]), "inside", len(low))
+        judged = judge_inside(chart, *now, opened)
+        needs = needs_of(judged)
+        open_ = np.zeros(len(now[0]), bool)
+        for claim in wanted:
+            open_ |= needs[claim]
+        done = judged.active & ~open_ & ~judged.outside
+        outcome.rises |= {direction * rise for rise in judged.rise[done].tolist()}
+        if done.any():
+            outcome.active.append((index, now[0][done], now[1][done], judged.rise[done]))
+        if share_only:
+            judged.smear[:, :-1] = -1e9
+        low, high = _append(domain, now, open_, judged.smear, low, high, kept, 2.0 ** (-48 if share_only else -160))
+    kept.append((low, high))
+    low, high = np.concatenate([k[0] for k in kept]), np.concatenate([k[1] for k in kept])
+    for start in range(0, len(low), CHUNK):
+        now = low[start:start + CHUNK], high[start:start + CHUNK]
+        judged = judge_inside(chart, *now, opened)
+        for claim, need in needs_of(judged).items():
+            if need.any():
+                outcome.open.setdefault(claim, []).append(Left(now[0][need], now[1][need], index))
+        active = judged.active & ~judged.outside
+        outcome.rises |= {direction * rise for rise in judged.rise[active].tolist() if rise}
+        outcome.active.append((index, now[0][active], now[1][active], judged.rise[active]))
+
+
+def needs_of(judged):
+    """Claim -> where it is not settled."""
+    here = ~judged.outside
+    active = here & judged.active
+    return {"defined": here & judged.undefined,
+            "continuous": here & judged.undefined | active & judged.jump,
+            "unique": here & judged.undefined | active & (judged.jump | (judged.rise == 0)),
+            "kink": active & judged.switch}
+
+
+def _append(domain, now, open_, smear, low, high, kept, finest=0.0):
+    if not open_.any():
+        return low, high
+    a, b = now[0][open_], now[1][open_]
+    pieces = split(a, b, smear[open_], domain.ranges.widths(a, b), domain.ranges.logs, finest)
+    stuck = pieces[2]
+    if stuck.any():
+        kept.append((a[stuck], b[stuck]))
+    fresh = np.tile(~stuck, 2)
+    return np.concatenate([low, pieces[0][fresh]]), np.concatenate([high, pieces[1][fresh]])
+
+
+def share(domain, lefts, inside_range):
+    """Share of the operating range that boxes left open hold, in the coordinates of the spreads; the unknown is left out."""
+    if not lefts:
+        return 0.0
+    low, high = (np.concatenate([getattr(left, end)[:, :-1] for left in lefts]) for end in ("low", "high"))
+    boxes = np.unique(np.concatenate([low, high], axis=1), axis=0)
+    half, pad = low.shape[1], np.zeros((len(boxes), 1))
+    volume = domain.ranges.volume(np.concatenate([boxes[:, :half], pad], 1), np.concatenate([boxes[:, half:], pad], 1))
+    return float(min(1.0, volume.sum() / max(inside_range, 1e-300)))

@@ -42,7 +42,7 @@ int rw_solve_jacobian(const double p[RW_N], double start, rw_point *r, double ja
         rw_partials(p, r->y[0], jac);
     } else {
         for (k = 0; k < RW_M*RW_N; k++) {
-            jac[k] = NAN;
+            jac[k] = (double)NAN;
         }
     }
     return status;
@@ -53,7 +53,7 @@ void rw_jacobian(const double p[RW_N], double root, double jac[RW_M*RW_N])
     int k;
     if (rw_without_slope(p, root)) {
         for (k = 0; k < RW_M*RW_N; k++) {
-            jac[k] = NAN;
+            jac[k] = (double)NAN;
         }
     } else {
         rw_partials(p, root, jac);
@@ -92,7 +92,7 @@ void rw_hessian(const double p[RW_N], double root, double hess[RW_M*RW_N*RW_N])
     int k;
     if (rw_without_slope(p, root)) {
         for (k = 0; k < RW_M*RW_N*RW_N; k++) {
-            hess[k] = NAN;
+            hess[k] = (double)NAN;
         }
     } else {
         rw_second_partials(p, root, hess);

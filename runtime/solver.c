@@ -17,13 +17,13 @@ static void rw_clear(rw_point *r)
 {
     int k;
     for (k = 0; k < RW_M; k++) {
-        r->y[k] = NAN;
+        r->y[k] = (double)NAN;
     }
-    r->residual = NAN;
-    r->slope = NAN;
-    r->error_bound = NAN;
-    r->lower = NAN;
-    r->upper = NAN;
+    r->residual = (double)NAN;
+    r->slope = (double)NAN;
+    r->error_bound = (double)NAN;
+    r->lower = (double)NAN;
+    r->upper = (double)NAN;
     r->iterations = 0;
     r->evaluations = 0;
     r->status = RW_NOT_FINITE;
@@ -341,7 +341,7 @@ static double rw_bend(const double p[], double x, double g, double slope, double
     const double error = (fabs(g) + rounding) / least;
     double before, after;
     if (!(least > 0.0 && isfinite(least))) {
-        return INFINITY;
+        return (double)INFINITY;
     }
     if (isfinite(curvature)) {
         return fabs(curvature) * error / least;
@@ -414,7 +414,7 @@ static int rw_locate(const double p[], double start, rw_point *r)
 
     rw_bracket(p, end, rounding);
     if (!isfinite(end[0]) || !isfinite(end[1])) {
-        return rw_fail(r, RW_NOT_FINITE, NAN, NAN);
+        return rw_fail(r, RW_NOT_FINITE, (double)NAN, (double)NAN);
     }
     for (i = 0; i < 2; i++) { /* an unbounded rounding error says nothing about where a root may be */
         if (!isfinite(rounding[i])) {
@@ -423,7 +423,7 @@ static int rw_locate(const double p[], double start, rw_point *r)
     }
     if (end[0] > end[1]) { /* ends that cross by no more than their rounding are equal */
         if (!(end[0] - end[1] <= rounding[0] + rounding[1])) {
-            return rw_fail(r, RW_BAD_BRACKET, NAN, NAN);
+            return rw_fail(r, RW_BAD_BRACKET, (double)NAN, (double)NAN);
         }
         swap = end[0];
         end[0] = end[1];

@@ -40,11 +40,11 @@ AWKWARD = ("e", "I", "p", "r", "x", "t1", "jac", "root", "slope", "lower", "uppe
            "memcpy")
 
 
-def sources(texts, target="c"):
+def sources(texts, target="c", order=1):
     """Files of the modules of some spec texts."""
     files = {}
     for text in texts:
-        files |= emit(closure(text.encode(), "test.toml")[0], target)
+        files |= emit(closure(text.encode(), "test.toml", order)[0], target)
     return files
 
 
@@ -355,22 +355,26 @@ def test_harmless_text_is_one_line_that_no_language_reads(text):
     assert harmless(line) == line
 
 
-INTERFACE = {"solve", "solve_jacobian", "tangent", "adjoint", "jacobian", "solve_many"}
+INTERFACE = ({"solve", "solve_many"}, {"solve_jacobian", "tangent", "adjoint", "jacobian"},     # by order
+             {"hessian", "tangent_adjoint"})
 MATHS = {row.c.split("(")[0] for row in OPERATIONS.values() if row.kind == "function"
          and not row.c.startswith("rw_")} | {
     "pow", "fabs", "copysign", "nextafter", "ldexp", "frexp", "fmin", "fmax", "memcpy", "sincos",
              "_GLOBAL_OFFSET_TABLE_"}
 
 
-@pytest.mark.parametrize("optimization", ["-O0", "-O2"])
-def test_an_object_exports_its_interface_and_imports_maths_alone(optimization, tmp_path):
-    write(tmp_path, sources([EVERYTHING]))
-    run([GCC, "-std=c99", optimization, "-c", "everything.c"], tmp_path)
-    symbols = [line.split()[-2:] for line in run(["nm", "everything.o"], tmp_path).splitlines()]
-    assert {name for kind, name in symbols if kind.isupper() and kind != "U"} == {f"everything_{name}"
-        for name in INTERFACE}
-    assert {name for kind, name in symbols if kind == "U"} <= MATHS
-    assert not [name for kind, name in symbols if kind in "dDbBC"]
+@pytest.mark.parametrize("order", [0, 1, 2])
+@pytest.mark.parametrize("compiler", ["gcc", pytest.param("clang", marks=pytest.mark.skipif(
+    shutil.which("clang") is None, reason="clang is not installed"))])
+def test_an_object_exports_its_interface_and_imports_maths_alone(compiler, order, tmp_path):
+    write(tmp_path, sources([EVERYTHING], order=order))
+    exported = {f"everything_{name}" for names in INTERFACE[:order + 1] for name in names}
+    for optimization in ("-O0", "-O2"):
+        run([compiler, "-std=c99", optimization, "-c", "everything.c"], tmp_path)
+        symbols = [line.split()[-2:] for line in run(["nm", "everything.o"], tmp_path).splitlines()]
+        assert {name for kind, name in symbols if kind.isupper() and kind != "U"} == exported
+        assert {name for kind, name in symbols if kind == "U"} <= MATHS
+        assert not [name for kind, name in symbols if kind in "dDbBC"]
 
 
 def test_a_header_twice_two_modules_and_cpp_link_into_one_program(tmp_path):

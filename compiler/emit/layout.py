@@ -115,7 +115,8 @@ class _Layout:
         name = self.target.name(label)
         if name in self.target.names.used and name not in self.stated or name not in self.taken:
             return name
-        return next(f"{name}_{k}" for k in count(2) if f"{name}_{k}" not in self.taken)
+        stem = name.rstrip("_")
+        return next(f"{stem}_{k}" for k in count(2) if f"{stem}_{k}" not in self.taken)
 
     def _spell(self, node, instruction):
         op = instruction.op

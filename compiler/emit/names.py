@@ -36,14 +36,15 @@ class Names:
     def of(self, name):
         if name in self.author:
             return self.author[name]
-        return _free(name + "_", self.used) if self.is_taken(name) else name
+        made = re.sub("__+", "_", name)                  # C++ reserves every name with two underscores in a row
+        return _free(made + "_" if self.is_taken(made) else made, self.used)
 
     def ours(self, name):
         """A name for a formal argument of a kernel: as given, or with underscores where the author uses it."""
-        return _free(name, self.used) if name in self.used else name
+        return _free(name, self.used)
 
 
 def _free(name, taken):
-    while name in taken:
-        name += "_"
-    return name
+    """The name, or a free one made from it."""
+    stem = name.rstrip("_")
+    return next(free for free in (name, f"{stem}_", *(f"{stem}_{k}" for k in range(2, len(taken) + 4))) if free not in taken)

@@ -5,6 +5,7 @@ import contextlib
 import io
 import json
 import os
+import shlex
 import sys
 from pathlib import Path
 
@@ -97,6 +98,24 @@ def _parser():
     verify.add_argument("--seed", type=int, default=1, metavar="S", help="seed of the random points (default 1)")
     _add_order(verify, "derivatives to hold against the reference: 0 none, 1 first (default), 2 first and second")
     _add_json(verify)
+
+    fresh = _command(
+        commands, "fresh", _fresh, "tell whether the emitted files in a tree still match their specs and this compiler",
+        details="Every file that says it was made by rootwright is made again, in memory, with its own options, and "
+                "compared: fresh, stale (the spec or the compiler has changed), edited (by hand), orphaned (no spec of "
+                "its name in the tree or among the shipped ones). Exits 1 unless all are fresh. Hidden folders are "
+                "left out.")
+    fresh.add_argument("folders", metavar="DIR", nargs="*", default=["."],
+                       help="folders to walk, for emitted files and specs (default: the current one)")
+    _add_json(fresh)
+
+    new = _command(commands, "new", _new, "write a commented spec to start from",
+                   details="It solves already, and passes check. No file is overwritten.")
+    new.add_argument("name", metavar="NAME", help="name of the closure; the file is NAME.toml")
+    new.add_argument("--into", metavar="DIR", default=".",
+                     help="folder to write to, made where it is missing (default: the current one)")
+
+    _command(commands, "schema", _schema, "print the JSON Schema (draft 2020-12) of a spec, for editors")
 
     _command(commands, "demo", _demo, "a whole job on an invented water main, start to end")
     return parser
@@ -242,6 +261,45 @@ def _eval(arguments):
     words = ", ".join(f"{count:,} {word}" for word, count in counts.items())
     print(f"{total:,} row{'s'*(total != 1)}" + (f": {words}" if words else ""), file=sys.stderr)
     return FOUND if any(is_rootless(word) for word in counts) else OK
+
+
+def _fresh(arguments):
+    from rootwright import pipeline
+    from rootwright.evidence.freshness import FRESH, counts, render, survey, to_json
+
+    for folder in arguments.folders:
+        if not os.path.isdir(folder):
+            raise Refusal(f"{folder}: not a folder; name the folders that hold emitted files and their specs")
+    shipped = {name: pipeline.shipped_spec(name) for name in pipeline.shipped()}
+    findings = survey(arguments.folders, shipped, pipeline.remake)
+    print(json.dumps(to_json(findings), indent=2) if arguments.json else render(findings))
+    return OK if set(counts(findings)) <= {FRESH} else FOUND
+
+
+def _new(arguments):
+    from rootwright.spec.names import quoted, refusal
+    from rootwright.spec.starter import starter
+
+    refused = refusal(arguments.name, is_module=True)
+    if refused:
+        raise Refusal(f"the name {quoted(arguments.name)} {refused[0]}; {refused[1]}")
+    folder = Path(arguments.into)
+    _make(folder)
+    path = folder/f"{arguments.name}.toml"
+    try:
+        with open(path, "x", encoding="utf-8", newline="\n") as stream:
+            stream.write(starter(arguments.name))
+    except FileExistsError:
+        raise Refusal(f"{path} is there already; choose another name, or take the file away") from None
+    print(f"{path}\nnext: rootwright check {shlex.quote(str(path))}")
+    return OK
+
+
+def _schema(arguments):
+    from rootwright import pipeline
+
+    print(pipeline.schema(), end="")
+    return OK
 
 
 def _demo(arguments):

@@ -24,11 +24,21 @@ def shipped():
                   if path.name.endswith(".toml"))
 
 
+def shipped_spec(name):
+    """Bytes of a shipped spec."""
+    return resources.files("rootwright.specs").joinpath(f"{name}.toml").read_bytes()
+
+
+def schema():
+    """Text of the JSON Schema of a spec."""
+    return resources.files("rootwright.specs").joinpath("schema.json").read_text(encoding="utf-8")
+
+
 def find(spec):
     """(bytes, name to show) of a spec: a file, or a shipped spec's bare name. Raises SpecError."""
     path = Path(spec)
     if spec in shipped() and not path.is_file():
-        return resources.files("rootwright.specs").joinpath(f"{spec}.toml").read_bytes(), f"{spec}.toml"
+        return shipped_spec(spec), f"{spec}.toml"
     try:
         with path.open("rb") as stream:
             return stream.read(MAX_BYTES + 1), spec         # the reader refuses what is longer
@@ -70,6 +80,16 @@ def load(spec, target="c", order=1):
 
     closed, _ = closure(*find(str(spec)), order)
     return load_module(closed, emit(closed, target), target)
+
+
+def remake(data, filename, options):
+    """Texts that this compiler emits for a spec with the options that an emitted file names; None where it cannot."""
+    others = {name: value for name, value in options.items() if name != "order"}
+    try:
+        closed, _ = closure(data, filename, int(options.get("order", 1)))
+        return tuple(emit(closed, **others).values())
+    except (SpecError, LookupError, TypeError, ValueError):
+        return None
 
 
 def array_closure(data, filename, target=None, order=1):

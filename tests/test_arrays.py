@@ -335,6 +335,18 @@ def test_without_a_compiler_it_works_through_python_and_says_so_once(monkeypatch
         rootwright.load("kepler", target="c")
 
 
+def test_a_compiler_that_fails_is_no_obstacle_either(monkeypatch, tmp_path):
+    (tmp_path/"broken").write_text("#!/bin/sh\necho no headers here >&2; exit 1\n")
+    (tmp_path/"broken").chmod(0o755)
+    monkeypatch.setenv("CC", str(tmp_path/"broken"))
+    pipeline._say_slower.cache_clear()
+    with pytest.warns(RuntimeWarning, match="no headers here"):
+        closure = rootwright.load("lambert_w")
+    assert closure.target == "python" and abs(closure(1.0).w - lambertw(1.0).real) < 1e-15
+    with pytest.raises(build.BuildFailed):
+        rootwright.load("lambert_w", target="c")
+
+
 # -- with SciPy
 
 

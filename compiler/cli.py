@@ -74,6 +74,8 @@ def _parser():
                           help="folder to write to, made where it is missing (default: the current one)")
     compile_.add_argument("--target", choices=("c", "python"), default="c",
                           help="c: NAME.h and NAME.c (default); python: NAME.py")
+    compile_.add_argument("--single-header", action="store_true",
+                          help="c: all in NAME.h; one source file defines NAME_IMPLEMENTATION before it includes it")
     compile_.add_argument("--precision", type=_precision, default="double", metavar="double",
                           help="arithmetic of the module")
     _add_order(compile_, "derivatives in the module: 0 none, 1 first (default), 2 with hessian and tangent_adjoint")
@@ -214,12 +216,15 @@ def _compile(arguments):
     from rootwright.files import replacing
 
     worst, written = OK, {}
+    options = {name: True for name in ("single_header",) if getattr(arguments, name)}
+    if options and arguments.target != "c":
+        raise Refusal(f"--{next(iter(options)).replace('_', '-')} is for the C target; leave it or --target out")
     for spec in arguments.specs:
         closure, _ = _closure(spec, arguments.order)
         if closure is None:
             worst = WRONG
             continue
-        files = pipeline.emit(closure, arguments.target)
+        files = pipeline.emit(closure, arguments.target, **options)
         clash = next((name for name in files if name in written), None)
         if clash:
             raise Refusal(f"{spec}: {clash} was just written for {written[clash]}; give the specs different names, or "

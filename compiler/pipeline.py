@@ -67,11 +67,11 @@ def closure(data, filename, order=1):
     return closed, (*warnings, *found)
 
 
-def emit(closed, target="c"):
-    """Files of the module, {name: text}."""
+def emit(closed, target="c", **options):
+    """Files of the module, {name: text}. Options of the target "c": single_header, one header that holds all."""
     from rootwright.emit.assemble import assemble
 
-    return assemble(closed, target)
+    return assemble(closed, target, **options)
 
 
 def load(spec, target="c", order=1):
@@ -84,7 +84,7 @@ def load(spec, target="c", order=1):
 
 def remake(data, filename, options):
     """Texts that this compiler emits for a spec with the options that an emitted file names; None where it cannot."""
-    others = {name: value for name, value in options.items() if name != "order"}
+    others = {name.replace("-", "_"): value or True for name, value in options.items() if name != "order"}
     try:
         closed, _ = closure(data, filename, int(options.get("order", 1)))
         return tuple(emit(closed, **others).values())

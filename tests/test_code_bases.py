@@ -4,9 +4,10 @@ import math
 import shutil
 
 import pytest
-from test_emission import (EVERYTHING, NEGATIVE, SUBNORMAL, SWITCH, WARNINGS, awkward_specs, random_problems,  # noqa: F401
+from test_emission import (EVERYTHING, INTERFACE, NEGATIVE, SUBNORMAL, SWITCH, WARNINGS, awkward_specs, random_problems,  # noqa: F401
                            run, sources, together, write)
 
+from rootwright import cli
 from rootwright.pipeline import closure, emit, find
 
 SHIPPED = ("pipe_friction", "if97_temperature", "plastic_multiplier", "implied_volatility", "platinum_thermometer",
@@ -28,6 +29,7 @@ CLANG = pytest.mark.skipif(shutil.which("clang++") is None, reason="clang++ is n
 
 
 def shipped(name, order=1, **options):
+    """Files of the module of a shipped spec."""
     return emit(closure(*find(name), order)[0], **options)
 
 
@@ -117,3 +119,69 @@ def test_many_modules_live_in_many_translation_units_of_one_program(tmp_path):
     orbit, peak, factor = map(float.fromhex, words[:3])
     assert abs(math.degrees(orbit) - 5.554589) < 5e-7
     assert abs(peak - 4.965114231744276) < 2e-15 and abs(factor - 0.018513866077471648) < 4e-17
+
+
+# -- one header
+
+
+@pytest.mark.parametrize("line", LINES)
+def test_single_headers_are_clean_of_warnings_with_and_without_their_implementation(line, tmp_path):
+    write(tmp_path, shipped("kepler", 2, single_header=True) | shipped("plastic_multiplier", 0, single_header=True)
+          | {"user.c": '#include "kepler.h"\n#define PLASTIC_MULTIPLIER_IMPLEMENTATION\n#include "plastic_multiplier.h"\n'
+                       '#define KEPLER_IMPLEMENTATION\n#include "kepler.h"\n#include "kepler.h"\n',
+             "other.c": '#include "kepler.h"\n#include "plastic_multiplier.h"\nextern const int other;\n'
+                        'const int other = KEPLER_SOLVED;\n'})
+    run([*line, "-fsyntax-only", "user.c"], tmp_path)
+    run([*line, "-fsyntax-only", "other.c"], tmp_path)
+
+
+@pytest.mark.parametrize("standard", ["c99", "c++17"])
+def test_single_headers_make_the_program_that_header_and_source_make(standard, tmp_path):
+    """Declared in many units and implemented in one, the same numbers come out, to the last bit."""
+    names = ("kepler", "wien_peak", "pipe_friction")
+    line = [*GCC_LINES[standard], "-ffp-contract=off", "-O2"]
+    said = []
+    for single in (False, True):
+        folder = tmp_path / str(single)
+        folder.mkdir()
+        files = {}
+        for name in names:
+            files |= shipped(name, single_header=single)
+        if single:
+            files["all.c"] = "".join(f'#define {name.upper()}_IMPLEMENTATION\n#include "{name}.h"\n' for name in names)
+        write(folder, files | {"main.c": MAIN, "unit.c": UNIT})
+        built = [name for name in files if name.endswith(".c")]
+        run([*line, "-DUNIT=first", "-c", "unit.c", "-o", "first.o"], folder)
+        run([*line, "-DUNIT=second", "-c", "unit.c", "-o", "second.o"], folder)
+        for name in (*built, "main.c"):
+            run([*(GCC_LINES["c99"] if name == "main.c" else line), "-O2", "-c", name], folder)
+        run(["g++", *(f"{name.removesuffix('.c')}.o" for name in (*built, "main.c")), "first.o", "second.o", "-o", "main",
+             "-lm"], folder)
+        said.append(run([folder / "main"], folder))
+    assert said[0] == said[1] and said[0].startswith("0 0x1.")
+
+
+def test_a_single_header_exports_its_interface_from_one_unit_and_nothing_from_the_others(tmp_path):
+    write(tmp_path, shipped("kepler", single_header=True) | {
+        "in.c": "#define KEPLER_IMPLEMENTATION\n#include \"kepler.h\"\n", "out.c": '#include "kepler.h"\n'})
+    run(["gcc", "-std=c99", "-c", "in.c", "out.c"], tmp_path)
+    exported = {line.split()[2] for line in run(["nm", "in.o"], tmp_path).splitlines() if line.split()[-2] == "T"}
+    assert exported == {f"kepler_{name}" for names in INTERFACE[:2] for name in names}
+    assert run(["nm", "out.o"], tmp_path) == ""
+
+
+def test_the_single_header_option_writes_one_file_that_is_told_fresh(tmp_path, capsys):
+    assert cli.main(["compile", "kepler", "--single-header", "--into", str(tmp_path)]) == 0
+    assert [path.name for path in tmp_path.iterdir()] == ["kepler.h"]
+    assert "rootwright compile kepler --target c --order 1 --single-header\n" in (tmp_path / "kepler.h").read_text()
+    assert cli.main(["fresh", str(tmp_path)]) == 0
+    (tmp_path / "kepler.h").write_text((tmp_path / "kepler.h").read_text().replace("wright 0.1.0", "wright 0.0.9"))
+    capsys.readouterr()
+    assert cli.main(["fresh", str(tmp_path)]) == 1
+    assert "kepler --target c --order 1 --single-header --into" in capsys.readouterr().out
+
+
+def test_an_option_of_the_c_target_is_refused_for_another(tmp_path, capsys):
+    for option in ("--single-header",):
+        assert cli.main(["compile", "kepler", option, "--target", "python", "--into", str(tmp_path)]) == 2
+        assert f"{option} is for the C target" in capsys.readouterr().err and not list(tmp_path.iterdir())

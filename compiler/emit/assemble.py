@@ -13,19 +13,23 @@ from rootwright.emit import c, python
 from rootwright.emit.describe import comments
 from rootwright.emit.manual import STATUS, manual
 from rootwright.emit.provenance import provenance, seal
+from rootwright.emit.text import paragraph
 
 _KERNELS = ("bracket", "residual", "rounding", "outside", "kink", "start", "outputs", "jacobian", "hessian")
 
 _LICENCE = "SPDX-License-Identifier: 0BSD (no conditions; no warranty)"
 
 
-def assemble(closure, target="c"):
-    """Files of the module, {file name: text}: header and source for "c", one file for "python"."""
-    files = {"c": _assemble_c, "python": _assemble_python}[target](closure)
+def assemble(closure, target="c", **options):
+    """Files of the module, {file name: text}: header and source for "c", one file for "python".
+
+    Options of "c": single_header, one header that holds the source, too.
+    """
+    files = {"c": _assemble_c, "python": _assemble_python}[target](closure, **options)
     return {name: seal(text) for name, text in files.items()}
 
 
-def _assemble_c(closure):
+def _assemble_c(closure, single_header=False):
     model, sizes = closure.model, _sizes(closure)
     upper = model.name.upper()
 
@@ -40,13 +44,28 @@ def _assemble_c(closure):
     kernels = "\n\n".join(c.kernel(closure, name, comments(closure)[name]) for name in _KERNELS if name in closure.kernels)
     solver, interface = runtime("solver.c"), runtime("interface.c")
     helpers = _used(runtime("arithmetic.c"), kernels + solver + interface, r"^static \w+ (\w+)\(")
-    page = manual(closure, _example_c(closure), [
-        f"Interface: p[{sizes['N']}] holds the parameters, y[{sizes['M']}] the results, each in the order above. No heap, "
-        "no globals, re-entrant."], _origin(closure, "c"))
+    origin = _origin(closure, "c", {"single-header": ""} if single_header else {})
+    page = manual(closure, _example_c(closure), _interface_c(closure, single_header), origin)
+    parts = {"name": model.name, "helpers": "".join(f"{text}\n\n" for text in helpers), "kernels": kernels,
+             "solver": solver, "interface": interface}
+    source = _render("implementation.c.j2", parts)
     context = sizes | {"name": model.name, "upper": upper, "status": [(code, word) for code, word, _ in STATUS],
-                       "results": ", ".join(model.results), "manual": page, "provenance": _origin(closure, "c")}
-    source = context | {"helpers": "".join(f"{text}\n\n" for text in helpers), "kernels": kernels, "solver": solver, "interface": interface}
-    return {f"{model.name}.h": _render("module.h.j2", context), f"{model.name}.c": _render("module.c.j2", source)}
+                       "results": ", ".join(model.results), "manual": page, "implementation": source if single_header else ""}
+    header = {f"{model.name}.h": _render("module.h.j2", context)}
+    if single_header:
+        return header
+    return header | {f"{model.name}.c": _render("module.c.j2", {"name": model.name, "provenance": origin, "implementation": source})}
+
+
+def _interface_c(closure, single_header):
+    model = closure.model
+    lines = paragraph(f"Interface: p[{len(model.parameters)}] holds the parameters, y[{len(model.results)}] the results, each in "
+                      "the order above. No heap, no globals, re-entrant.")
+    if single_header:
+        lines += paragraph(f"One source file of a program, in C or in C++, defines {model.name.upper()}_IMPLEMENTATION before it "
+                           "includes this header; the others include it alone.")
+    return lines + paragraph("Compile without contraction (-ffp-contract=off) where results are to agree to the last bit across "
+                             "compilers.")
 
 
 def _assemble_python(closure):
@@ -61,15 +80,16 @@ def _assemble_python(closure):
     helpers = _used(runtime("arithmetic.py"), kernels + solver + interface, r"^def (\w+)\(")
     page = manual(closure, _example_python(closure), [
         f"Interface: p is a sequence of the {sizes['N']} parameters, y a list of the {sizes['M']} results, each in the "
-        "order above."], _origin(closure, "python"))
+        "order above."], _origin(closure, "python", {}))
     context = sizes | {"status": [(code, word) for code, word, _ in STATUS], "parameters": ", ".join(p.name for p in model.parameters),
                        "results": ", ".join(model.results), "manual": page, "kernels": kernels, "solver": solver,
                        "interface": interface, "helpers": "".join(f"{text}\n\n\n" for text in helpers)}
     return {f"{model.name}.py": _render("module.py.j2", context)}
 
 
-def _origin(closure, target):
-    return [*provenance(closure.model, {"target": target, "order": closure.order}), _LICENCE]
+def _origin(closure, target, flags):
+    """The lines that say where a file comes from; flags: the options that shaped it besides."""
+    return [*provenance(closure.model, {"target": target, "order": closure.order} | flags), _LICENCE]
 
 
 def _sizes(closure):

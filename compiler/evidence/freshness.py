@@ -105,7 +105,7 @@ class _Judge:
         return self.made[key]
 
     def command(self, file, found, spec):
-        options = [word for name, value in found.options.items() for word in (f"--{name}", value)]
+        options = [word for name, value in found.options.items() for word in (f"--{name}", value) if word]
         return shlex.join(["rootwright", "compile", spec.place, *options, "--into", os.path.dirname(file) or "."])
 
 

@@ -47,16 +47,23 @@ def test_two_specs_of_one_name_do_not_overwrite_each_other(tmp_path, capsys):
 
 
 @pytest.mark.parametrize("option, value, word", [("--precision", "single", "single precision is not available yet"),
-                                                 ("--order", "2", "second derivatives are not available yet")])
+                                                 ("--order", "3", "'3' is not 0, 1 or 2")])
 def test_what_is_not_there_yet_is_refused_in_words(option, value, word, tmp_path, capsys):
     assert cli.main(["compile", "kepler", option, value, "--into", str(tmp_path)]) == 2
     assert word in capsys.readouterr().err and not list(tmp_path.iterdir())
 
 
-def test_order_0_writes_the_module_of_order_1(tmp_path):
-    for order in "01":
-        assert cli.main(["compile", "kepler", "--order", order, "--into", str(tmp_path/order)]) == 0
-    assert (tmp_path/"0"/"kepler.c").read_bytes() == (tmp_path/"1"/"kepler.c").read_bytes()
+@pytest.mark.parametrize("target, file", [("c", "kepler.h"), ("python", "kepler.py")])
+def test_a_module_has_the_derivatives_up_to_its_order_and_no_others(target, file, tmp_path):
+    for order, first, second in (("0", False, False), ("1", True, False), ("2", True, True)):
+        into = tmp_path/order
+        assert cli.main(["compile", "kepler", "--order", order, "--target", target, "--into", str(into)]) == 0
+        text = (into/file).read_text()
+        for function in ("solve_jacobian", "jacobian", "tangent", "adjoint"):
+            assert (re.search(rf"\b(kepler_)?{function}\(", text) is not None) == first, (order, function)
+        for function in ("hessian", "tangent_adjoint"):
+            assert (re.search(rf"\b(kepler_)?{function}\(", text) is not None) == second, (order, function)
+        assert re.search(r"\b(kepler_)?solve\(", text) and f"--order {order}" in text
 
 
 def test_a_folder_that_cannot_be_made_is_told_in_one_line(tmp_path, capsys):

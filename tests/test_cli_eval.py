@@ -55,9 +55,27 @@ def test_order_0_leaves_the_derivatives_out(run):
     assert text.splitlines()[0] == "Re,rel,y,f,status,iterations,error_bound"
 
 
-def test_order_2_is_refused_in_words(run):
-    status, text, error = run("Re,rel\n1e5,1e-4\n", "pipe_friction", "--order", "2")
-    assert (status, text) == (2, None) and "second derivatives are not available yet" in error
+@pytest.mark.parametrize("target", ["c", "python"])
+def test_order_2_adds_the_columns_of_second_derivatives(target, run):
+    _, text, _ = run("Re,rel\n1e5,1e-4\nx,0\n", "pipe_friction", "--order", "2", target=target)
+    row, bad = table(text)
+    assert list(row)[9:] == ["df/dRe", "df/drel", "d2y/dRe/dRe", "d2y/dRe/drel", "d2y/drel/drel", "d2f/dRe/dRe",
+                             "d2f/dRe/drel", "d2f/drel/drel"]
+    steps = {"Re": (1e2, 0.0), "rel": (0.0, 1e-7)}
+    for p, q in (("Re", "Re"), ("Re", "rel"), ("rel", "rel")):      # against differences of the first derivatives
+        points = "".join(f"{1e5 + side*steps[q][0]!r},{1e-4 + side*steps[q][1]!r}\n" for side in (1, -1))
+        _, near, _ = run(f"Re,rel\n{points}", "pipe_friction", target=target)
+        above, below = table(near)
+        difference = (float(above[f"df/d{p}"]) - float(below[f"df/d{p}"]))/(2*sum(steps[q]))
+        assert float(row[f"d2f/d{p}/d{q}"]) == pytest.approx(difference, rel=1e-4)
+    assert bad["status"] == "bad_input" and not any(bad[name] for name in row if name.startswith("d"))
+
+
+def test_second_derivatives_come_for_pairs_of_differentiated_parameters_in_their_order():
+    model, _ = pipeline.model(*pipeline.find("orifice_flow"))
+    first, second = columns(model, 1), columns(model, 2)
+    assert second[:len(first)] == first and len(second) == len(first) + 3*28
+    assert second[len(first):][:3] == ["d2C/dD/dD", "d2C/dD/dd", "d2C/dD/dp1"] and second[-1] == "d2Re_D/dkappa/dkappa"
 
 
 def test_derivatives_are_named_by_result_then_differentiated_parameter():

@@ -35,8 +35,8 @@ def hessian(closing, g, slope, outputs, roots, magnitudes):
     zero = graph.number(0)
     entries = {f"d2{result}/d{p}/d{q}": zero for result in model.results for p in names for q in names}
     differentiated = [k for k, parameter in enumerate(model.parameters) if parameter.differentiate]
-    # Of a pair, the formula of one is differentiated along the other. Beside a parameter that can be 0 second derivatives
-    # may grow without limit: rather keep to its formula, and take the simpler one otherwise.
+    # Of a pair, the formula of one is differentiated along the other. Along a parameter that can be 0 a derivative may
+    # grow without limit there: differentiate its formula rather; otherwise the simpler one.
     order = [(smallest(magnitudes.of(parameters[k])) > 0.0,
               len(needed(graph.instructions, [direct[k] for _, direct in rows.values()]))) for k in range(len(names))]
 

@@ -40,8 +40,8 @@ LIMITS = {limit.key: limit for limit in (
           f"w.(J v) by tangent and (J' w).v by adjoint agree within {IDENTITY:g} of the sum of their terms' sizes"),
     Limit("second", "second derivative: error / scale", SECOND, SECOND_GOAL,
           f"a second derivative lies within {SECOND:g} of the exact one, against its size or {SCALE_SHARE:g} "
-          "|result/parameter/parameter| or |first derivative/parameter| if one is more; where the root's own error moves it "
-          "further than that, of the exact one at the root given"),
+          "|result/parameter/parameter| or |first derivative/parameter| if one is more; where the root's own error "
+          "moves it further than that, of the exact one at the root given"),
     Limit("product", "tangent_adjoint against hessian", IDENTITY, None,
           f"tangent_adjoint and the sum over the hessian agree within {IDENTITY:g} of the sum of its terms' sizes"),
     Limit("targets", f"C against Python / ({ALLOWED})", 1.0, None,

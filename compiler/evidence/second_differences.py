@@ -1,7 +1,7 @@
 """Second derivatives for reference: second differences of roots solved again, with no symbolic derivative anywhere.
 
-With shifts of 2^-120 of a parameter's size and values good to 2^-348, a second difference is good to 2^-108 of the result
-over the parameters' sizes; its truncation is 2^-120 of the third derivative or better.
+With shifts of 2^-120 of a parameter's size and values good to 2^-348, a second difference is good to 2^-108 of the
+result over the parameters' sizes; its truncation is 2^-120 of the third derivative or better.
 """
 
 from itertools import combinations_with_replacement
@@ -18,8 +18,8 @@ _UNDEFINED = Derivative(None, "undefined")
 def second_derivatives(reference, point, x):
     """{(result, parameter, parameter): Derivative} for the pairs of differentiated parameters, the earlier one first.
 
-    `point` and `x` as for `Reference.derivatives`. `why` there is none: "kink" where the second differences of both sides
-    disagree, "unbounded" where they grow as the step shrinks, "undefined" for anything else.
+    `point` and `x` as for `Reference.derivatives`. `why` there is none: "kink" where the second differences of both
+    sides disagree, "unbounded" where they grow as the step shrinks, "undefined" for anything else.
     """
     return _SecondDifferences(reference, point, x).all()
 
@@ -31,6 +31,7 @@ class _SecondDifferences(Differences):
             self.moved = {(): center}
             parameters = [parameter for parameter in self.model.parameters if parameter.differentiate]
             self.steps = {parameter.name: self._size(parameter) * flint.arb(2) ** STEP for parameter in parameters}
+            self.reach = {parameter.name: self._reach(parameter) for parameter in parameters}
             found = {}
             for p, q in combinations_with_replacement([parameter.name for parameter in parameters], 2):
                 for result in self.model.results:
@@ -75,7 +76,8 @@ class _SecondDifferences(Differences):
 
         def quadrant(j, k):
             corner, one, other = (self._value(result, **steps) for steps in ({p: j, q: k}, {p: j}, {q: k}))
-            return None if corner is None or one is None or other is None else (corner - one - other + middle) / (j * k * area)
+            missing = corner is None or one is None or other is None
+            return None if missing else (corner - one - other + middle) / (j * k * area)
 
         above, below = quadrant(1, 1), quadrant(-1, -1)
         if above is not None and below is not None:
@@ -88,13 +90,19 @@ class _SecondDifferences(Differences):
 
     def _floor(self, result, p, q):
         """A second derivative below this is nothing against the result and its slopes: 2^-20 of what would change them
-        by as much as they are over the parameters' sizes."""
+        by as much as they are over the reach of the parameters."""
         middle = self._value(result)
         heights = [abs(middle.mid())]
         for name in (p, q):
-            sides = [self._value(result, **{name: side}) for side in (1, -1)]
-            heights += [abs((side - middle).mid()) / flint.arb(2) ** STEP for side in sides if side is not None]
-        return max(heights) / (self.steps[p] * self.steps[q]) * flint.arb(2) ** (2 * STEP - 20)
+            for side in (self._value(result, **{name: 1}), self._value(result, **{name: -1})):
+                if side is not None:
+                    heights.append(abs(((side - middle) / self.steps[name]).mid()) * self.reach[name])
+        return max(heights) / (self.reach[p] * self.reach[q]) * flint.arb(2) ** -20
+
+    def _reach(self, parameter):
+        """By how much a parameter changes: its size, or a share of its range where that is measured by differences."""
+        size = self._size(parameter)
+        return size if parameter.spread == "log" else max(size, self._width(parameter) / 1024)
 
 
 def _agree(one, other, floor):
@@ -111,7 +119,7 @@ def _converged(fine, coarse, floor):
 
 
 def _settled(value, floor):
-    """The derivative, if its ball is small against it or against the floor; 0 where the ball holds nothing else to see."""
+    """The derivative, if its ball is small against it or against the floor; 0 where the ball holds 0."""
     if not value.is_finite() or value.rad() > max(abs(value.mid()), floor) * flint.arb(2) ** -60:
         return _UNDEFINED
     return Derivative(0.0 if value.contains(0) else float(value.mid()))

@@ -1,4 +1,4 @@
-"""What `verify` holds second derivatives to: a reference of second differences, symmetry, and the Hessian-vector product."""
+"""What `verify` holds second derivatives to: second differences for reference, symmetry, the Hessian-vector product."""
 
 import math
 from itertools import combinations_with_replacement
@@ -6,6 +6,8 @@ from itertools import combinations_with_replacement
 from rootwright.calculus.balls import ball
 from rootwright.evidence.limits import LIMITS, SCALE_SHARE, SCALE_WIDTH
 from rootwright.evidence.second_differences import second_derivatives
+
+MOVED = "second derivatives that the root's own error moves further than the limit"
 
 
 class SecondOrder:
@@ -43,7 +45,7 @@ class SecondOrder:
                     if entry != mirrored and not (math.isnan(entry) and math.isnan(mirrored)):
                         self.holding.found("second", target, f"{of}: {entry!r}, but {mirrored!r} the other way", point)
                     if not {i, j} <= set(self.differentiated) and entry != 0.0:
-                        self.holding.found("second", target, f"{of}: {entry!r} for one that is not differentiated", point)
+                        self.holding.found("second", target, f"{of}: {entry!r}, but that is not differentiated", point)
 
     def _compare(self, true, r, jac, hess, target, point):
         limit, moved = LIMITS["second"].worst, None
@@ -54,18 +56,22 @@ class SecondOrder:
                 if derivative.value is None:
                     self._without(derivative.why, of, given, target, point)
                     continue
+                if math.isinf(derivative.value):
+                    self.holding.skipped["second derivatives beyond the largest double"] += 1
+                    continue
                 scale = self._scale(derivative.value, r.y[k], jac[k], (i, j), point)
                 error = abs(given - derivative.value) / scale
                 if not error <= limit:
                     moved = moved or second_derivatives(self.reference, point, ball(r.y[0]))
                     at_root = moved[key].value
                     if at_root is not None and abs(given - at_root) / scale <= limit:
-                        self.holding.skipped["second derivatives that the root's own error moves further than the limit"] += 1
+                        self.holding.skipped[MOVED] += 1
                         error = abs(given - at_root) / scale
-                self.holding.measured("second", error, target, of, point, f"{given!r}, exact {derivative.value!r}")
+                what = f"{given!r}, exact {derivative.value!r}"
+                self.holding.measured("second", error, target, of, point, what)
 
     def _scale(self, derivative, result, first, pair, point):
-        """Size of a second derivative, or a share of what the result and the first derivatives are over the parameters."""
+        """Size of a second derivative, or a share of the result and its first derivatives over the parameters."""
         i, j = pair
         one, other = self._reach(i, point), self._reach(j, point)
         natural = max(abs(result) / one / other, abs(first[i]) / other, abs(first[j]) / one)
@@ -73,8 +79,9 @@ class SecondOrder:
 
     def _reach(self, k, point):
         """What a parameter changes by: its size, and a share of its range where that is measured by differences."""
-        parameter, size = self.model.parameters[k], abs(point[self.names[k]])
-        return max(size, 0.0 if parameter.spread == "log" else SCALE_WIDTH * self.holding.widths[parameter.name], 5e-324)
+        name = self.names[k]
+        share = 0.0 if self.model.parameters[k].spread == "log" else SCALE_WIDTH * self.holding.widths[name]
+        return max(abs(point[name]), share, 5e-324)
 
     def _without(self, why, of, given, target, point):
         """The reference finds no second derivative."""
@@ -95,5 +102,5 @@ class SecondOrder:
             terms = [weight * entry * along for weight, matrix in zip(w, hess) for entry, along in zip(matrix[i], v)]
             size = sum(map(abs, terms))
             if 1e-280 < size < math.inf:        # far from underflow
-                self.holding.measured("product", abs(added[i] - sum(terms)) / size, target, f"(w.H v) for {name}", point,
-                                      f"tangent_adjoint gives {added[i]!r}, the hessian {sum(terms)!r}")
+                what = f"tangent_adjoint gives {added[i]!r}, the hessian {sum(terms)!r}"
+                holding.measured("product", abs(added[i] - sum(terms)) / size, target, f"w.H v, {name}", point, what)

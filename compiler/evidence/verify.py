@@ -1,8 +1,8 @@
 """Hold a compiled module against a reference that shares nothing with it, and against its published values.
 
-Roots: certified enclosures in ball arithmetic from the author's trees (`evidence/reference.py`). Derivatives, first and
-second: high-precision differences of roots solved again. Tangent against adjoint: w.(J v) = (J' w).v. C against Python. The
-limits are in `limits.py`.
+Roots: certified enclosures in ball arithmetic from the author's trees (`evidence/reference.py`). Derivatives, first
+and second: high-precision differences of roots solved again. Tangent against adjoint: w.(J v) = (J' w).v. C against
+Python. The limits are in `limits.py`.
 """
 
 import math

@@ -76,6 +76,8 @@ def _parser():
                           help="c: NAME.h and NAME.c (default); python: NAME.py")
     compile_.add_argument("--single-header", action="store_true",
                           help="c: all in NAME.h; one source file defines NAME_IMPLEMENTATION before it includes it")
+    compile_.add_argument("--fortran", action="store_true",
+                          help="c: NAME_module.f90 besides, the interface for Fortran (iso_c_binding)")
     compile_.add_argument("--precision", type=_precision, default="double", metavar="double",
                           help="arithmetic of the module")
     _add_order(compile_, "derivatives in the module: 0 none, 1 first (default), 2 with hessian and tangent_adjoint")
@@ -213,10 +215,11 @@ def _finite(data):
 
 def _compile(arguments):
     from rootwright import pipeline
+    from rootwright.emit.assemble import Unsuitable
     from rootwright.files import replacing
 
     worst, written = OK, {}
-    options = {name: True for name in ("single_header",) if getattr(arguments, name)}
+    options = {name: True for name in ("single_header", "fortran") if getattr(arguments, name)}
     if options and arguments.target != "c":
         raise Refusal(f"--{next(iter(options)).replace('_', '-')} is for the C target; leave it or --target out")
     for spec in arguments.specs:
@@ -224,7 +227,10 @@ def _compile(arguments):
         if closure is None:
             worst = WRONG
             continue
-        files = pipeline.emit(closure, arguments.target, **options)
+        try:
+            files = pipeline.emit(closure, arguments.target, **options)
+        except Unsuitable as error:
+            raise Refusal(f"{spec}: {error}") from None
         clash = next((name for name in files if name in written), None)
         if clash:
             raise Refusal(f"{spec}: {clash} was just written for {written[clash]}; give the specs different names, or "

@@ -68,7 +68,7 @@ def closure(data, filename, order=1):
 
 
 def emit(closed, target="c", **options):
-    """Files of the module, {name: text}. Options of the target "c": single_header, one header that holds all."""
+    """Files of the module, {name: text}. options: `assemble` lists them; raises its Unsuitable."""
     from rootwright.emit.assemble import assemble
 
     return assemble(closed, target, **options)

@@ -182,6 +182,6 @@ def test_the_single_header_option_writes_one_file_that_is_told_fresh(tmp_path, c
 
 
 def test_an_option_of_the_c_target_is_refused_for_another(tmp_path, capsys):
-    for option in ("--single-header",):
+    for option in ("--single-header", "--fortran"):
         assert cli.main(["compile", "kepler", option, "--target", "python", "--into", str(tmp_path)]) == 2
         assert f"{option} is for the C target" in capsys.readouterr().err and not list(tmp_path.iterdir())

@@ -20,16 +20,23 @@ _KERNELS = ("bracket", "residual", "rounding", "outside", "kink", "start", "outp
 _LICENCE = "SPDX-License-Identifier: 0BSD (no conditions; no warranty)"
 
 
+_LONGEST_IN_FORTRAN = 63 - len("_tangent_adjoint")
+
+
+class Unsuitable(ValueError):
+    """An option that this module cannot have; the message is one line that says why."""
+
+
 def assemble(closure, target="c", **options):
     """Files of the module, {file name: text}: header and source for "c", one file for "python".
 
-    Options of "c": single_header, one header that holds the source, too.
+    Options of "c": single_header, one header that holds the source, too; fortran, the interface as a Fortran module besides. Raises Unsuitable.
     """
     files = {"c": _assemble_c, "python": _assemble_python}[target](closure, **options)
     return {name: seal(text) for name, text in files.items()}
 
 
-def _assemble_c(closure, single_header=False):
+def _assemble_c(closure, single_header=False, fortran=False):
     model, sizes = closure.model, _sizes(closure)
     upper = model.name.upper()
 
@@ -51,10 +58,28 @@ def _assemble_c(closure, single_header=False):
     source = _render("implementation.c.j2", parts)
     context = sizes | {"name": model.name, "upper": upper, "status": [(code, word) for code, word, _ in STATUS],
                        "results": ", ".join(model.results), "manual": page, "implementation": source if single_header else ""}
-    header = {f"{model.name}.h": _render("module.h.j2", context)}
-    if single_header:
-        return header
-    return header | {f"{model.name}.c": _render("module.c.j2", {"name": model.name, "provenance": origin, "implementation": source})}
+    files = {f"{model.name}.h": _render("module.h.j2", context)}
+    if not single_header:
+        files[f"{model.name}.c"] = _render("module.c.j2", {"name": model.name, "provenance": origin, "implementation": source})
+    if fortran:
+        files[f"{model.name}_module.f90"] = _assemble_fortran(closure)
+    return files
+
+
+def _assemble_fortran(closure):
+    model = closure.model
+    if len(model.name) > _LONGEST_IN_FORTRAN:
+        raise Unsuitable(f"names in Fortran have at most 63 characters, which leaves {_LONGEST_IN_FORTRAN} for the module's own; "
+                         f"{model.name} has {len(model.name)}")
+    lines = [*paragraph(f"{model.name}_module: interface to the C module {model.name}, whose manual is in {model.name}.h"), "",
+             *paragraph(f"Parameters p({len(model.parameters)}): {', '.join(p.name for p in model.parameters)}", hang="    "),
+             *paragraph(f"Results y({len(model.results)}): {', '.join(model.results)}", hang="    "), ""]
+    if model.caution:
+        lines += [*paragraph(f"Caution: {model.caution}", hang="    "), ""]
+    lines += ["Example:", "", *(f"    {line}" for line in _example_fortran(closure)), ""]
+    origin = _origin(closure, "c", {"fortran": ""})
+    return _render("module.f90.j2", _sizes(closure) | {
+        "name": model.name, "status": [(code, word) for code, word, _ in STATUS], "manual": lines + origin})
 
 
 def _interface_c(closure, single_header):
@@ -180,6 +205,14 @@ def _example_c(closure):
             f"if ({model.name}_solve_jacobian(p, NAN, &r, jac) >= 0) {{",
             f"    const double {root} = r.y[0], {root}_{first} = jac[0];",
             "}"]
+
+
+def _example_fortran(closure):
+    model = closure.model
+    point = [repr(value).replace("e", "d") if "e" in repr(value) else repr(value) + "d0" for value in _example_point(closure)]
+    return [f"real(c_double) :: p({len(point)}) = [ {', '.join(point)} ]",
+            f"type({model.name}_point) :: r",
+            f"if ({model.name}_solve(p, ieee_value(1d0, ieee_quiet_nan), r) >= 0) print *, r%y(1)"]
 
 
 def _example_python(closure):

@@ -69,6 +69,19 @@ def _parser():
     check = _command(commands, "check", _check, "read and validate specs; print each like a page of a handbook", _SPECS)
     _add_json(check)
 
+    prove = _command(
+        commands, "prove", _prove, "settle, over the whole operating range, what holds", _SPECS,
+        "Each claim is proved, refuted with a witness, or open with the share of the range that is left. Exits 1 when a claim is "
+        "refuted (with --strict, also when one is open).")
+    prove.add_argument("--boxes", type=_number_of("boxes"), metavar="N", help="boxes to look at for each spec, the same on every machine")
+    prove.add_argument("--seconds", type=_seconds, metavar="S", help="stop each spec after the wave at hand when S seconds are over")
+    prove.add_argument("--workers", type=_number_of("workers"), default=1, metavar="N",
+                       help="processes that prove specs side by side; the results do not depend on it (default 1)")
+    prove.add_argument("--strict", action="store_true", help="exit 1 unless every claim is proved")
+    prove.add_argument("--save", action="store_true", help="write the certificate beside the spec, as NAME.proof; compile reads it")
+    prove.add_argument("--replay", metavar="OUT.csv", help="write the witnesses as a table of points that eval takes (one spec)")
+    _add_json(prove)
+
     compile_ = _command(commands, "compile", _compile, "write a standalone module for each spec", _SPECS)
     compile_.add_argument("--into", metavar="DIR", default=".",
                           help="folder to write to, made where it is missing (default: the current one)")
@@ -80,6 +93,8 @@ def _parser():
                           help="c: NAME_module.f90 besides, the interface for Fortran (iso_c_binding)")
     compile_.add_argument("--precision", type=_precision, default="double", metavar="double",
                           help="arithmetic of the module")
+    compile_.add_argument("--require-proof", action="store_true",
+                          help="write nothing unless existence and uniqueness of the root are proved for this very spec")
     _add_order(compile_, "derivatives in the module: 0 none, 1 first (default), 2 with hessian and tangent_adjoint")
 
     evaluate = _command(
@@ -97,7 +112,7 @@ def _parser():
 
     verify = _command(commands, "verify", _verify,
                       "hold modules against a high-precision reference and the published values", _SPECS)
-    verify.add_argument("--points", type=_count, default=200, metavar="N",
+    verify.add_argument("--points", type=_number_of("points"), default=200, metavar="N",
                         help="points of the operating range (default 200)")
     verify.add_argument("--seed", type=int, default=1, metavar="S", help="seed of the random points (default 1)")
     _add_order(verify, "derivatives to hold against the reference: 0 none, 1 first (default), 2 first and second")
@@ -157,10 +172,22 @@ def _precision(text):
                                      if text == "single" else f"{text!r} is not a precision; leave the option out")
 
 
-def _count(text):
-    if text.isdecimal() and 0 < int(text) <= 10**7:
-        return int(text)
-    raise argparse.ArgumentTypeError(f"{text!r} is not a number of points; give one from 1 to 10000000")
+def _number_of(what):
+    def number(text):
+        if text.isdecimal() and 0 < int(text) <= 10**7:
+            return int(text)
+        raise argparse.ArgumentTypeError(f"{text!r} is not a number of {what}; give one from 1 to 10000000")
+    return number
+
+
+def _seconds(text):
+    try:
+        seconds = float(text)
+    except ValueError:
+        seconds = 0.0
+    if 0.0 < seconds < 1e9:
+        return seconds
+    raise argparse.ArgumentTypeError(f"{text!r} is not a time in seconds; give one above 0")
 
 
 # -- commands
@@ -187,6 +214,49 @@ def _verify(arguments):
         return to_json(report), "" if arguments.json else render(report), FOUND if report.failed else OK
 
     return _each(arguments, show, arguments.order)
+
+
+def _prove(arguments):
+    from rootwright import pipeline
+    from rootwright.evidence.proving import failed, in_processes, table, write_replay
+    from rootwright.proof.certificate import dump, render, to_json
+
+    if arguments.replay and len(arguments.specs) > 1:
+        raise Refusal("--replay takes one spec at a time")
+    closures = [(spec, *_closure(spec)) for spec in arguments.specs]
+    jobs = [(spec, arguments.boxes, arguments.seconds) for spec, closure, _ in closures if closure is not None]
+    certificates, found, worst = {}, [], OK
+    with _progress() as progress:
+        for (spec, *_), certificate in zip(jobs, in_processes(pipeline.prove, jobs, arguments.workers)):
+            certificates[spec] = certificate
+            if progress:
+                progress(f"{len(certificates)} of {len(jobs)} specs proved: {spec}")
+    for spec, closure, diagnostics in closures:
+        certificate = certificates.get(spec)
+        worst = max(worst, WRONG if certificate is None else FOUND if failed(certificate, arguments.strict) else OK)
+        found.append({"spec": spec, "valid": closure is not None} | (to_json(certificate) if certificate else {})
+                     | {"diagnostics": diagnostics})
+        if certificate and arguments.save:
+            _write(pipeline.certificate_path(spec), dump(certificate), arguments.json)
+        if certificate and arguments.replay:
+            with _sink(arguments.replay) as stream:
+                write_replay(stream, certificate)
+    if arguments.json:
+        print(json.dumps(_finite(found[0] if len(found) == 1 else {"specs": found}), indent=2))
+    elif len(certificates) == 1:
+        print(render(*certificates.values()))
+    elif certificates:
+        print("\n".join(table(list(certificates.values()))))
+    return worst
+
+
+def _write(path, text, quiet):
+    from rootwright.files import replacing
+
+    with replacing(path) as stream:
+        stream.write(text.encode("utf-8"))
+    if not quiet:
+        print(f"{path}  {len(text.encode('utf-8')):,} bytes")
 
 
 def _each(arguments, show, order=1):
@@ -226,6 +296,15 @@ def _compile(arguments):
         closure, _ = _closure(spec, arguments.order)
         if closure is None:
             worst = WRONG
+            continue
+        closure, lacking = pipeline.promised(closure, spec)
+        if lacking:
+            print(f"{spec}: its certificate counts for nothing: {lacking}; prove it again with: rootwright prove --save {spec}",
+                  file=sys.stderr)
+        if arguments.require_proof and not pipeline.has_root_proved(closure):
+            print(f"{spec}: existence and uniqueness of the root are not proved; nothing is written\n"
+                  f"  prove them with: rootwright prove --save {spec}", file=sys.stderr)
+            worst = max(worst, FOUND)
             continue
         try:
             files = pipeline.emit(closure, arguments.target, **options)

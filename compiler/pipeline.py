@@ -2,6 +2,7 @@
 
 import functools
 import warnings
+from dataclasses import replace
 from importlib import resources
 from pathlib import Path
 
@@ -67,6 +68,50 @@ def closure(data, filename, order=1):
     return closed, (*warnings, *found)
 
 
+def certificate_path(spec):
+    """Where the certificate of a spec lies: beside it, NAME.proof for NAME.toml."""
+    return Path(spec).with_suffix(".proof")
+
+
+def certificate(spec):
+    """Text of the certificate beside a spec (a file, or a shipped spec's name); None where there is none."""
+    if spec in shipped() and not Path(spec).is_file():
+        resource = resources.files("rootwright.specs").joinpath(f"{spec}.proof")
+        return resource.read_text(encoding="utf-8") if resource.is_file() else None
+    try:
+        return certificate_path(spec).read_text(encoding="utf-8")
+    except (OSError, UnicodeDecodeError):
+        return None
+
+
+def promised(closed, spec):
+    """(Closure with what the certificate beside its spec proves, reason why that counts for nothing or "")."""
+    from rootwright.proof.promise import promise
+
+    text = certificate(spec)
+    if text is None:
+        return closed, ""
+    try:
+        return replace(closed, promise=promise(text, closed.model)), ""
+    except ValueError as error:
+        return closed, str(error)
+
+
+def has_root_proved(closed):
+    """True where the certificate that came along proves that there is a root, and only one."""
+    return closed.promise is not None and {"exists", "unique"} <= set(closed.promise.proved)
+
+
+def prove(job):
+    """Certificate of a job (spec, boxes or None, seconds or None); a spec that is known to be valid."""
+    from rootwright.evidence.proving import certify
+
+    spec, boxes, seconds = job
+    closed, _ = closure(*find(spec))
+    limits = {name: value for name, value in (("boxes", boxes), ("seconds", seconds)) if value is not None}
+    return certify(closed, load(spec, "python"), **limits)
+
+
 def emit(closed, target="c", **options):
     """Files of the module, {name: text}. options: `assemble` lists them; raises its Unsuitable."""
     from rootwright.emit.assemble import assemble
@@ -87,6 +132,7 @@ def remake(data, filename, options):
     others = {name.replace("-", "_"): value or True for name, value in options.items() if name != "order"}
     try:
         closed, _ = closure(data, filename, int(options.get("order", 1)))
+        closed, _ = promised(closed, filename)
         return tuple(emit(closed, **others).values())
     except (SpecError, LookupError, TypeError, ValueError):
         return None

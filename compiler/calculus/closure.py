@@ -28,6 +28,14 @@ from rootwright.calculus.second_order import hessian
 from rootwright.spec.model import Model
 
 
+@dataclass(frozen=True, slots=True)
+class Promise:
+    """What was proved over the operating range, in plain lines; the claims proved; the SHA-256 of the certificate that says so."""
+    lines: tuple[str, ...]
+    proved: tuple[str, ...]
+    digest: str
+
+
 @dataclass(frozen=True)
 class Closure:
     """A Model with all it computes. `kernels` maps a kernel to its results, which are results of the Program."""
@@ -38,6 +46,7 @@ class Closure:
     limit: int                                  # evaluations that always suffice
     constants: dict[int, tuple[float, float]]   # constant instruction -> nearest double, relative rounding in 2^-53
     order: int                                  # derivatives up to this order: 0, 1 or 2
+    promise: Promise | None = None              # set where a certificate came along
 
 
 def close(model, order=1):

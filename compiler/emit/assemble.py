@@ -114,7 +114,8 @@ def _assemble_python(closure):
 
 def _origin(closure, target, flags):
     """The lines that say where a file comes from; flags: the options that shaped it besides."""
-    return [*provenance(closure.model, {"target": target, "order": closure.order} | flags), _LICENCE]
+    certificate = closure.promise.digest if closure.promise else None
+    return [*provenance(closure.model, {"target": target, "order": closure.order} | flags, certificate), _LICENCE]
 
 
 def _sizes(closure):

@@ -16,6 +16,8 @@ STATUS = (
     (-5, "jump", "the sign changes across a step or a pole, where there is no root"),
 )
 
+_UNPROVED = ("Proved over the operating range: nothing yet. Every solve checks its own point and reports what it finds.",)
+
 
 def manual(closure, example, interface, origin):
     """Lines of the manual. `example` is a list of lines in the target language, `interface` names its conventions,
@@ -30,7 +32,7 @@ def manual(closure, example, interface, origin):
         lines += paragraph(f"Caution: {model.caution}", hang="    ") + [""]
     lines += interface + [""]
     lines += _status() + _accuracy(closure)
-    lines += ["Proved over the operating range: nothing yet. Every solve checks its own point and reports what it finds.", ""]
+    lines += [*(closure.promise.lines if closure.promise else _UNPROVED), ""]
     lines += ["Example:", ""] + [f"    {line}" for line in example] + [""]
     return [harmless(line) for line in lines] + origin
 

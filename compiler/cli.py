@@ -136,6 +136,11 @@ def _parser():
 
     _command(commands, "schema", _schema, "print the JSON Schema (draft 2020-12) of a spec, for editors")
 
+    bench = _command(commands, "bench", _bench,
+                     "time modules against derivatives taped through the iterations, differences, and general solvers", _SPECS)
+    bench.add_argument("--plot", metavar="DIR", help="folder to write a picture NAME.png to (needs matplotlib)")
+    _add_json(bench)
+
     _command(commands, "demo", _demo, "a whole job on an invented water main, start to end")
     return parser
 
@@ -257,6 +262,30 @@ def _write(path, text, quiet):
         stream.write(text.encode("utf-8"))
     if not quiet:
         print(f"{path}  {len(text.encode('utf-8')):,} bytes")
+
+
+def _bench(arguments):
+    from rootwright.binding.build import NoCompiler
+    from rootwright.evidence.bench.benchmark import SECONDS, NotMeasured, benchmark
+    from rootwright.evidence.bench.page import render
+    from rootwright.evidence.bench.plot import available, plot
+
+    if arguments.plot is not None:
+        if not available():
+            raise Refusal("--plot needs matplotlib: install rootwright[plots], or leave the option out")
+        _make(Path(arguments.plot))
+
+    def show(closure):
+        try:
+            with _progress() as progress:
+                facts = benchmark(closure, SECONDS*min(1.0, 3.0/len(arguments.specs)), progress=progress)
+        except (NoCompiler, NotMeasured) as error:
+            raise Refusal(f"{closure.model.name}: {error}") from None
+        if arguments.plot is not None:
+            plot(facts, Path(arguments.plot)/f"{closure.model.name}.png")
+        return facts, "" if arguments.json else render(facts), FOUND if facts["module_failures"] else OK
+
+    return _each(arguments, show)
 
 
 def _each(arguments, show, order=1):

@@ -1,0 +1,111 @@
+"""The benchmark of a closure: build, check, time, compare. Returns plain data, for `page.py`, `plot.py` and JSON."""
+
+import os
+import platform
+import statistics
+import tempfile
+from importlib import metadata
+
+from rootwright.binding.build import FLAGS, compiler_version, find_compiler
+from rootwright.evidence.bench.build import build
+from rootwright.evidence.bench.goals import goals
+from rootwright.evidence.bench.judge import KEPT, judge
+from rootwright.evidence.bench.measure import processes
+from rootwright.evidence.bench.pitfalls import pitfalls
+from rootwright.evidence.bench.problem import CHECKED, POINTS, pose
+from rootwright.evidence.bench.rows import BASE, LIMIT, ROWS, SOLVE, TAPE, TERMS, solver
+from rootwright.evidence.bench.statistics import ratio, spread
+
+PROCESSES = 5
+SECONDS = 2.0                    # of timing in each process; divided among many specs
+LIBRARIES = ("numpy", "scipy", "autograd", "jax")
+
+
+class NotMeasured(Exception):
+    """There is nothing to measure; the message says why."""
+
+
+def benchmark(closure, seconds=SECONDS, count=PROCESSES, points=POINTS, checked=CHECKED, progress=None):
+    """Facts about a Closure of order 1 or more: every row's time, ratios, errors; see `page.render`.
+
+    progress is called with a line of text now and then. Raises NoCompiler, BuildFailed, NotMeasured.
+    """
+    def say(text):
+        if progress is not None:
+            progress(f"{closure.model.name}: {text}")
+
+    with tempfile.TemporaryDirectory(prefix="rootwright-bench-") as folder:
+        say("building the rows in C and C++")
+        built = build(closure, folder)
+        say("certified roots and derivatives")
+        problem = pose(closure, solver(built, closure), points, checked)
+        if not len(problem.roots):
+            raise NotMeasured("no point of the operating range was found at which the reference settles a root")
+        judged = judge(problem, built, progress)
+        times = processes(problem, built, count, seconds, progress)
+        say("where the iterate-through approach goes wrong")
+        wrong = pitfalls(problem, built)
+    say("")
+    evaluations = judged[SOLVE].counts
+    facts = {
+        "name": closure.model.name, "title": closure.model.title, "digest": closure.model.digest,
+        "terms": TERMS, "environment": _environment(times, problem),
+        "rows": [_row(row, judged[row.key], times) for row in ROWS],
+        "evaluations": {"median": statistics.median(evaluations), "worst": max(evaluations)},
+        "tape": {"evaluations": list(evaluations[:KEPT]), "operations": list(judged[TAPE].counts[:KEPT])},
+        "pitfalls": wrong, "module_failures": judged[BASE].failures,
+    }
+    return facts | {"goals": goals(facts)}
+
+
+def _row(row, judged, times):
+    facts = {"key": row.key, "group": row.group, "title": row.title, "setting": row.setting, "absent": judged.absent or None}
+    if not judged.absent and all(row.key in process.throughput for process in times):
+        facts |= _timed(row.key, times)
+    elif not judged.absent:
+        facts["absent"] = "not timed: a process could not run it"
+    return facts | {
+        "derivative_error": {"median": judged.median, "worst": judged.worst} if row.jacobian else None,
+        "root_error": judged.root, "failures": judged.failures, "failures_of": judged.points,
+        "operations": statistics.median(judged.counts) if row.taped and judged.counts else None, "bytes": judged.bytes}
+
+
+def _timed(key, times):
+    own = [process.throughput[key] for process in times]
+    facts = {"ns": statistics.median(own), "spread": spread(own), "points": min(process.points[key] for process in times)}
+    facts |= {"to_module": _ratio(own, [process.throughput[BASE] for process in times]),
+              "to_limit": _ratio(own, [process.throughput[LIMIT] for process in times]), "latency": None}
+    if key in times[0].latency:
+        chained = [process.latency[key] for process in times]
+        facts["latency"] = {"ns": statistics.median(chained), "spread": spread(chained),
+                            "to_module": _ratio(chained, [process.latency[BASE] for process in times]),
+                            "to_limit": _ratio(chained, [process.latency[LIMIT] for process in times])}
+    return facts
+
+
+def _ratio(above, below):
+    value, low, high = ratio(above, below)
+    return {"value": value, "low": low, "high": high}
+
+
+def _environment(times, problem):
+    return {"processor": _processor(), "cores": os.cpu_count(), "load": [round(load, 2) for load in getattr(os, "getloadavg", tuple)()],
+            "compiler": compiler_version(find_compiler()).splitlines()[0], "flags": " ".join(FLAGS),
+            "python": platform.python_version(), "libraries": {name: _version(name) for name in LIBRARIES},
+            "processes": len(times), "rounds": min(process.rounds for process in times), "points": len(problem.points),
+            "checked": len(problem.roots)}
+
+
+def _processor():
+    try:
+        with open("/proc/cpuinfo", encoding="utf-8", errors="replace") as lines:
+            return next(line.partition(":")[2].strip() for line in lines if line.startswith("model name"))
+    except (OSError, StopIteration):
+        return platform.processor() or platform.machine()
+
+
+def _version(name):
+    try:
+        return metadata.version(name)
+    except metadata.PackageNotFoundError:
+        return None

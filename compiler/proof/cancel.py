@@ -16,6 +16,7 @@ from rootwright.calculus.program import CONDITIONS, LEAVES, Node, needed
 
 _TERMS = 80             # a polynomial of more terms is left as it is
 _DEGREE = 64
+_EXPONENTS = 8          # terms of an exponent, and powers of an exponential
 _RATIONAL = ("add", "sub", "mul", "div", "neg")
 _AT_ZERO = {"exp": 1, "expm1": 0, "log1p": 0, "sin": 0, "cos": 1, "tan": 0, "asin": 0, "atan": 0, "sinh": 0, "cosh": 1,
             "tanh": 0, "asinh": 0, "atanh": 0, "erf": 0, "erfc": 1, "sqrt": 0, "cbrt": 0, "abs": 0}
@@ -29,18 +30,22 @@ class _Full(Exception):
 
 
 class Cancelling:
-    """Simplified twins of the nodes of one graph, kept: `of(node)` is the twin of a node."""
+    """Simplified twins of the nodes of one graph, kept: `of(node)` is the twin of a node.
 
-    def __init__(self, graph, roots):
-        self.graph = graph
+    With `exponentials` the exponential of a sum is a product, which cancels more and encloses less sharply.
+    """
+
+    def __init__(self, graph, roots, exponentials=False):
+        self.graph, self.exponentials = graph, exponentials
         self.twins = {}
         count = sum(graph.instructions[node].op not in _RATIONAL + ("number",) for node in needed(graph.instructions, roots))
-        names = [f"a{k}" for k in range(2 * count + 8)]
+        names = [f"a{k}" for k in range(3 * count + 16)]
         self.context = flint.fmpq_mpoly_ctx.get(names, "lex")
         self.generators = self.context.gens()
         self.one = self.context.from_dict({(0,) * len(names): 1})
         self.atoms = {}         # node -> index of its generator
         self.nodes = []         # index -> node
+        self.bases = {}         # exponent -> factors of it that have an atom
         self.fractions = {}     # node -> (numerator, denominator)
 
     def of(self, node):
@@ -97,6 +102,13 @@ class Cancelling:
             exact = graph.rational(step)
             if exact is not None:
                 self.fractions[step] = self.one * flint.fmpq(exact.numerator, exact.denominator), self.one
+            elif self.exponentials and graph.instructions[step].op in ("exp", "expm1"):
+                power = self._exponential(self.fraction(graph.instructions[step].args[0]))
+                if power is None:
+                    power = self._atom(step)
+                elif graph.instructions[step].op == "expm1":
+                    power = self._combined("sub", power, (self.one, self.one)) or self._atom(step)
+                self.fractions[step] = power
             elif graph.instructions[step].op in _RATIONAL:
                 parts = [self.fractions[arg] for arg in graph.instructions[step].args]
                 self.fractions[step] = self._combined(graph.instructions[step].op, *parts) or self._atom(step)
@@ -111,6 +123,61 @@ class Cancelling:
             self.atoms[node] = len(self.nodes)
             self.nodes.append(Node(node))
         return self.generators[self.atoms[node]], self.one
+
+    def _exponential(self, exponent):
+        """exp of a sum as the product of exp of its terms, so that exp(a + b) - exp(a) is exp(a)*(exp(b) - 1); None where it is too large."""
+        numerator, denominator = exponent
+        if len(numerator) > _EXPONENTS:
+            return None
+        above, below = self.one, self.one
+        for exponents, coefficient in numerator.terms():
+            unit, under = self._reduced(self.context.from_dict({exponents: 1}), denominator)
+            scale = unit.leading_coefficient()
+            unit, factor = unit / scale, coefficient * scale
+            (top, bottom), power = self._base((unit, under), factor)
+            if abs(power) > _EXPONENTS:
+                return None
+            top, bottom = (top, bottom) if power > 0 else (bottom, top)
+            above, below = above * top ** abs(power), below * bottom ** abs(power)
+        return self._reduced(above, below)
+
+    def _base(self, unit, factor):
+        """(fraction, whole power) that is exp(factor*unit)."""
+        graph = self.graph
+        node = self._build(*unit)
+        inner = graph.instructions[node]
+        if inner.op == "log" and factor.q in (1, 2):
+            if factor.q == 1:
+                return self.fraction(inner.args[0]), int(factor.p)
+            return self._atom(graph.sqrt(inner.args[0])), int(factor.p)
+        for known in self.bases.get(node, ()):
+            power = factor / known
+            if power.q == 1 and abs(power.p) <= _EXPONENTS:
+                return self._atom(graph.exp(graph.mul(graph.number(_exact(known)), node))), int(power.p)
+        half = abs(factor) / 2          # so that the square root of what comes first is a power as well
+        self.bases.setdefault(node, []).append(half)
+        return self._atom(graph.exp(graph.mul(graph.number(_exact(half)), node))), 2 if factor > 0 else -2
+
+    def expanded(self, node):
+        """The value as one reduced fraction in factors, however long, with sums nested and with sums in pairs; [] where it is too large."""
+        try:
+            fraction = self.fraction(node)
+            if fraction == self._atom(node):
+                return []
+            return list(dict.fromkeys([self._build(*fraction), self._build(*fraction, self._paired)]))
+        except _Full:
+            return []
+
+    def ratios(self, node, other):
+        """Factors m, at most a few, with which node - m*other loses a term of its numerator."""
+        try:
+            (top, under), (other_top, other_under) = self.fraction(node), self.fraction(other)
+            if len(top) * len(other_under) > 4 * _TERMS or len(other_top) * len(under) > 4 * _TERMS:
+                return []
+            here, there = (top * other_under).to_dict(), (other_top * under).to_dict()
+        except _Full:
+            return []
+        return [_exact(here[term] / there[term]) for term in here if term in there]
 
     def _combined(self, op, a, b=None):
         if op == "neg":
@@ -160,27 +227,41 @@ class Cancelling:
 
     # -- back to instructions
 
-    def _build(self, numerator, denominator):
-        above, below = self._factored(numerator), self._factored(denominator)
+    def _build(self, numerator, denominator, written=None):
+        """`written` spells a sum from its terms: Horner's scheme by default."""
+        above, below = (self._factored(part, written or self._horner) for part in (numerator, denominator))
         return self.graph.div(above, below)
 
-    def _factored(self, polynomial):
+    def _factored(self, polynomial, written):
         graph = self.graph
         if polynomial == 0:
             return graph.number(0)
         unit, factors = polynomial.factor()
         result = None
         for factor, multiplicity in factors:
-            part = graph.power(self._nested(factor), graph.number(int(multiplicity)))
+            terms = {tuple(map(int, exponents)): _exact(value) for exponents, value in factor.terms()}
+            part = graph.power(written(terms), graph.number(int(multiplicity)))
             result = part if result is None else graph.mul(result, part)
         unit = _exact(unit)
         return graph.number(unit) if result is None else graph.mul(graph.number(unit), result)
 
-    def _nested(self, polynomial):
-        """Horner's scheme: the atom of most terms taken out first."""
-        return self._horner({tuple(map(int, exponents)): _exact(value) for exponents, value in polynomial.terms()})
+    def _paired(self, terms):
+        """Terms of different signs brought together where they have most in common: a*(b - c) + d for a*b + d - a*c."""
+        graph, rest, total = self.graph, dict(sorted(terms.items())), None
+        for negative in [term for term, value in rest.items() if value < 0]:
+            partners = [(sum(map(min, negative, term)), term) for term, value in rest.items() if value > 0]
+            shared, partner = max(partners, default=(0, None))
+            if shared:
+                group = self._horner({term: rest.pop(term) for term in (negative, partner)})
+                total = group if total is None else graph.add(total, group)
+        for sign in (1, -1):
+            part = {term: value for term, value in rest.items() if value * sign > 0}
+            if part:
+                total = self._horner(part) if total is None else graph.add(total, self._horner(part))
+        return total
 
     def _horner(self, terms):
+        """Horner's scheme: what all terms have in common taken out, then the atom of most terms."""
         graph = self.graph
         counts = [0] * len(self.nodes)
         for exponents in terms:
@@ -206,23 +287,63 @@ def _exact(value):
     return Fraction(int(value.p), int(value.q))
 
 
+def factors(graph, node):
+    """(constant, {factor: multiplicity}) of a product or quotient, which has the sign of the product of them all."""
+    constant, counts, pending = graph.number(1), {}, [node]
+    while pending:
+        node = pending.pop()
+        instruction = graph.instructions[node]
+        if graph.is_constant(node):
+            constant = graph.mul(constant, node)
+        elif instruction.op in ("mul", "div"):
+            pending.extend(map(Node, instruction.args))
+        elif instruction.op == "neg":
+            constant = graph.neg(constant)
+            pending.append(Node(instruction.args[0]))
+        else:
+            counts[node] = counts.get(node, 0) + 1
+    return constant, dict(sorted(counts.items()))
+
+
+def substituted(graph, node, name, value):
+    """The node with another node in the place of an input."""
+    twins = {}
+    for step in needed(graph.instructions, [node]):
+        instruction = graph.instructions[step]
+        if instruction.op == "input" and instruction.value == name:
+            twins[step] = value
+        else:
+            twins[step] = graph.enter(instruction.op, [twins[arg] for arg in instruction.args], instruction.value)
+    return twins[node]
+
+
 def domain(graph, node):
-    """[(kind, node)] of everything that must hold for `node` to have a value: `nonzero`, `positive` or `not negative`, `inside`.
+    """[(kind, node)] of everything that must hold for `node` to have a value: `nonzero`, `positive`, `not negative`.
 
     None where the expression chooses between branches, whose domains do not hold at once, or has a function whose domain is not said here.
     """
     conditions = []
     for step in needed(graph.instructions, [node]):
         instruction = graph.instructions[step]
-        kind = {"div": "nonzero", "log": "positive", "log10": "positive", "log2": "positive", "sqrt": "not negative"}.get(instruction.op)
-        if kind is not None:
-            conditions.append((kind, instruction.args[1 if instruction.op == "div" else 0]))
-        elif instruction.op == "pow":
-            exponent = graph.rational(instruction.args[1])
-            if exponent is None:
-                conditions.append(("positive", instruction.args[0]))
-            else:
-                conditions.append(("not negative" if exponent > 0 else "positive", instruction.args[0]))
-        elif instruction.op in ("where", "log1p", "tan", "asin", "acos", "acosh", "atanh", "atan2", "nan"):
+        op, args = instruction.op, instruction.args
+        if op in ("where", "atan2", "nan"):
             return None
+        if op == "div":
+            conditions.append(("nonzero", args[1]))
+        elif op in ("log", "log10", "log2"):
+            conditions.append(("positive", args[0]))
+        elif op == "sqrt":
+            conditions.append(("not negative", args[0]))
+        elif op == "log1p":
+            conditions.append(("positive", graph.add(1, args[0])))
+        elif op in ("asin", "acos", "atanh"):
+            kind = "positive" if op == "atanh" else "not negative"
+            conditions += [(kind, graph.sub(1, args[0])), (kind, graph.add(1, args[0]))]
+        elif op == "acosh":
+            conditions.append(("not negative", graph.sub(args[0], 1)))
+        elif op == "tan":
+            conditions.append(("nonzero", graph.cos(args[0])))
+        elif op == "pow":
+            exponent = graph.rational(args[1])
+            conditions.append(("not negative" if exponent is not None and exponent > 0 else "positive", args[0]))
     return list(dict.fromkeys(conditions))

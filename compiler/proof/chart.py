@@ -16,12 +16,14 @@ from rootwright.calculus.balls import Balls, precision
 from rootwright.calculus.differentiate import partials, sweep
 from rootwright.calculus.lower import COMPARISONS, Lowering
 from rootwright.calculus.program import Graph, evaluate, needed
-from rootwright.proof.cancel import Cancelling, domain
+from rootwright.proof.cancel import Cancelling, domain, factors, substituted
 from rootwright.proof.functions import ends
 from rootwright.proof.intervals import Interval, Intervals
 
 SHARE = "_share"            # the input t: names of a spec begin with a letter
 _BITS = 200
+_LONGEST = 200              # operations of a relaxed form
+_RATIOS = 3                 # multiples of a slack that are tried
 
 
 @dataclass(frozen=True)
@@ -29,6 +31,13 @@ class Form:
     """Equal expressions of one function, as the author wrote it first; the last is differentiated. `domain` as of `cancel.domain`."""
     nodes: tuple[int, ...]
     domain: tuple | None
+
+
+@dataclass(frozen=True)
+class Factor:
+    form: Form
+    count: int
+    relaxed: tuple              # (sign, Form): see `Chart._relaxed`
 
 
 @dataclass(frozen=True)
@@ -68,8 +77,10 @@ class Chart:
         self.slacks = [graph.sub(*reversed(pair)) for condition in self.requirements for pair in self._at_most(condition)]
         switches = self._switches([residuals[0], *outputs])
         roots = [*residuals, width, lower, upper, *self.slacks, *(node for _, node in switches)]
-        self.cancelling = Cancelling(graph, roots)
-        self.residual, self.at_lower, self.at_upper, self.width = (self._form(node) for node in (*residuals, width))
+        roots.append(free.lower(model.residual))
+        self.cancelling, self.expanding = Cancelling(graph, roots), Cancelling(graph, roots, exponentials=True)
+        self.residual = self._form(residuals[0])
+        self.at_lower, self.at_upper, self.width = (self._form(node, True) for node in (*residuals[1:], width))
         self.bracket = [self._form(lower), self._form(upper)]
         self.slack_forms = [self._form(node) for node in self.slacks]
         self.switches = [(guard, self._form(node)) for guard, node in switches]
@@ -77,8 +88,9 @@ class Chart:
         names = {graph.instructions[node].value for node in used if graph.instructions[node].op == "input"}
         self.variables = [p.name for p in model.parameters if p.name in names and p.name not in fixed] + [SHARE]
         self.gradients = {}
-        self.slope = Form((self._gradient(self.residual.nodes[-1])[-1],), None)
-        self.relaxed = {end: self._relaxed(form) for end, form in (("lower", self.at_lower), ("upper", self.at_upper))}
+        self.slope = self._slope(free.lower(model.residual), inside, -1 if from_upper else 1)
+        self.products = {name: self._product(form) for name, form in
+                         (("lower", self.at_lower), ("upper", self.at_upper), ("width", self.width))}
 
     def _lowering(self, fixed, unknown):
         graph, model = self.graph, self.model
@@ -92,12 +104,28 @@ class Chart:
             lowering.declare(definition.name, lowering.lower(definition.expression))
         return lowering
 
-    def _form(self, node):
+    def _form(self, node, expand=False):
         twin = self.cancelling.of(node)
+        expanded = self._expanded(node) if expand else []
         conditions = domain(self.graph, node)
         if conditions is not None:
             conditions = tuple((kind, self.cancelling.of(arg)) for kind, arg in conditions)
-        return Form((node,) if twin == node else (node, twin), conditions)
+        others = [other for other in dict.fromkeys(expanded) if other not in (node, twin)]
+        return Form((node, *others, twin) if twin != node else (node, *others), conditions)
+
+    def _slope(self, free, inside, direction):
+        """The residual's derivative with respect to the unknown: taken before the share comes in, and by the share over the width.
+
+        Wherever the residual is defined and continuous an enclosure holds for all difference quotients, infinite slopes included.
+        """
+        graph, name = self.graph, self.model.unknown.name
+        (node,) = partials(graph, free, [graph.input(name)])
+        along = self._gradient(self.residual.nodes[-1])[-1]
+        forms = [node, self.cancelling.of(node), *self._expanded(node)]
+        forms = [substituted(graph, form, name, inside) for form in forms]
+        forms += [self.cancelling.of(forms[0]), graph.div(along, graph.mul(direction, self.width.nodes[-1]))]
+        others = sorted(dict.fromkeys(forms[1:]), key=lambda form: (-self._cost(form), form))
+        return Form((forms[0], *(form for form in others if form != forms[0])), ())
 
     def _at_most(self, condition):
         """(a, b) of every a <= b or a < b that must hold for the condition to hold."""
@@ -130,16 +158,27 @@ class Chart:
             return [instruction.args]
         return [pair for arg in instruction.args for pair in self._comparisons(arg)]
 
-    def _relaxed(self, form):
-        """[(sign, form)]: the residual at an end less or plus a slack, where that cancels. With slack >= 0 it bounds the residual."""
-        graph, node = self.graph, form.nodes[-1]
-        found = []
+    def _product(self, form):
+        """(the form itself, its constant factor, the others)."""
+        constant, counts = factors(self.graph, (self._expanded(form.nodes[-1]) or form.nodes)[-1])
+        whole = Factor(form, 1, self._relaxed(form.nodes[-1]))
+        return whole, constant, [Factor(Form((node,), ()), count, ()) for node, count in counts.items()]
+
+    def _relaxed(self, node):
+        """[(sign, form)]: the node less a multiple m of a slack. With slack >= 0 it bounds the node from below for m > 0, else from above."""
+        graph, found = self.graph, []
         for slack in self.slack_forms:
-            for sign, other in ((-1, graph.sub(node, slack.nodes[-1])), (1, graph.add(node, slack.nodes[-1]))):
-                twin = self.cancelling.of(other)
-                if self._cost(twin) < self._cost(node):
-                    found.append((sign, Form((twin,), None)))
-        return found
+            ratios = self.expanding.ratios(node, slack.nodes[-1])
+            for ratio in sorted(set(ratios), key=lambda ratio: (-ratios.count(ratio), ratio))[:_RATIOS]:
+                other = graph.sub(node, graph.mul(graph.number(ratio), slack.nodes[-1]))
+                nodes = dict.fromkeys([self.cancelling.of(other), *self._expanded(other)])
+                nodes = tuple(twin for twin in nodes if self._cost(twin) <= _LONGEST)
+                if nodes and ratio:
+                    found.append((-1 if ratio > 0 else 1, Form(nodes, ())))
+        return tuple(found)
+
+    def _expanded(self, node):
+        return self.expanding.expanded(self.cancelling.of(node))
 
     def _cost(self, node):
         return len(needed(self.graph.instructions, [node]))
@@ -193,13 +232,35 @@ class Chart:
         return Values(bottom, top, undefined, jump, nonzero)
 
     def _in_domain(self, form, low, high, opened):
-        values = self.evaluate([node for _, node in form.domain], low, high, opened)
+        """True where every condition on the domain holds all over the box."""
         fine = np.ones(len(low), bool)
         for kind, node in form.domain:
-            value = values[node]
-            fine &= value.apart() if kind == "nonzero" else \
-                (value.low > 0) | (value.low >= 0) & value.nonzero if kind == "positive" else value.low >= 0
+            left = np.nonzero(fine)[0]
+            fine[left] = self._holds(kind, node, low[left], high[left], opened)[0]
         return fine
+
+    def _holds(self, kind, node, low, high, opened):
+        """(where a condition holds all over the box, slopes of its left side where that had to be asked: boxes, low, high)."""
+        value = self.evaluate([node], low, high, opened)[node]
+        size = len(low)
+        bottom, top = np.broadcast_to(value.low, size).copy(), np.broadcast_to(value.high, size).copy()
+        nonzero = np.broadcast_to(value.nonzero, size)
+        left = np.nonzero(~_met(kind, bottom, top, nonzero) & ~np.broadcast_to(value.jump, size))[0]
+        slopes = None
+        if len(left):
+            bottom[left], top[left], *slopes = self.sharp(Form((node,), None), low[left], high[left], opened)
+        return _met(kind, bottom, top, nonzero), (left, slopes)
+
+    def trouble(self, form, low, high, opened=False):
+        """How much each variable moves the conditions on the domain that do not hold: (boxes, variables), ones where it is not known."""
+        smear = np.zeros(low.shape)
+        for kind, node in form.domain or ():
+            holds, (left, slopes) = self._holds(kind, node, low, high, opened)
+            if slopes:
+                part = normalised(*slopes, low[left], high[left])
+                part[holds[left]] = 0.0
+                smear[left] += part
+        return np.where(smear.max(axis=1, keepdims=True) > 0, smear, 1.0)
 
     def slopes(self, form, low, high, opened=False):
         """Enclosures (low, high) of the partial derivatives, arrays (boxes, variables)."""
@@ -232,6 +293,20 @@ class Chart:
         first = np.where(np.isnan(first), values.low[:size], first)
         last = np.where(np.isnan(last), values.high[size:2 * size], last)
         return first, last, below, above
+
+
+def _met(kind, low, high, nonzero):
+    if kind == "nonzero":
+        return nonzero | (low > 0) | (high < 0)
+    return low >= 0 if kind == "not negative" else (low > 0) | (low >= 0) & nonzero
+
+
+def normalised(below, above, low, high):
+    """Maximal smear (R. B. Kearfott, Rigorous Global Search, 1996): slope times width, each box's largest 1; ones where infinite."""
+    with np.errstate(all="ignore"):
+        smear = np.maximum(np.abs(below), np.abs(above)) * (high - low)
+        total = smear.max(axis=1, keepdims=True)
+        return np.where(np.isfinite(total) & (total > 0), smear / total, 1.0)
 
 
 def mean_value(below, above, low, high, centre):

@@ -97,7 +97,7 @@ class Function:
                 self.table = np.concatenate([self.table, np.zeros_like(self.table)])
             self.table[len(self.rows)] = self._row(key)
             self.rows[key] = len(self.rows)
-        return np.array([self.rows[key] for key in keys.tolist()])
+        return np.array([self.rows[key] for key in keys.tolist()], dtype=np.intp)
 
     def _row(self, key):
         """Coefficients, remainder's coefficient (-1: no polynomial here), sum of |c_k| r^(k-1) for k > 0, and the middle."""

@@ -1,9 +1,13 @@
 """Bounds that come along with the proof: the least slope at a zero, and whether the module's doubles stay finite."""
 
+import flint
 import numpy as np
 
+from rootwright.calculus.balls import ball, precision
 from rootwright.calculus.program import evaluate, needed
+from rootwright.proof.functions import ends
 from rootwright.proof.intervals import Interval
+from rootwright.proof.ranges import as_ball, exact_ends
 from rootwright.proof.search import CHUNK, outside, split
 
 _LARGEST = 1e307                # a value below it in exact arithmetic is finite in doubles, rounding included
@@ -18,21 +22,31 @@ def slope_bound(domain, outcome, limit):
             at = slice(start, start + CHUNK)
             if len(low[at]):
                 least = min(least, float(_slopes(domain, index, low[at], high[at]).min()))
-    return least if np.isfinite(least) else 0.0
+    return _in_units(domain, least) if np.isfinite(least) else 0.0
+
+
+def _in_units(domain, least):
+    """A bound relative to the pivots of a scaling, over all of their ranges."""
+    if domain.scaling:
+        exact = exact_ends(domain.model)
+        with precision(100):
+            bound = flint.arb(least)
+            for pivot, power in domain.scaling.slope.items():
+                bound *= as_ball(exact[pivot][0 if power > 0 else 1]) ** ball(power)
+            least = max(ends(bound)[0], 0.0)
+    return least
 
 
 def _slopes(domain, index, low, high):
     """|g_x| from below, one a box, in the units of the spec."""
     chart, opened = domain.charts[index], domain.opened[index]
     slope = chart.natural(chart.slope, low, high, opened)
-    width = chart.natural(chart.width, low, high)
     first, last = slope.low.copy(), slope.high.copy()
     at = np.nonzero((first <= 0.0) & (last >= 0.0) & ~slope.undefined)[0]
     if len(at):
         first[at], last[at], _, _ = chart.sharp(chart.slope, low[at], high[at], opened)
     below = np.maximum(np.maximum(first, -last), 0.0)
-    with np.errstate(all="ignore"):
-        return np.nextafter(below / width.high, 0.0)
+    return below
 
 
 def doubles_are_finite(domain, closure, limit, boxes=4000):

@@ -88,7 +88,7 @@ class _Proof:
             for values in examiner.from_boxes(self.domain, left.low, left.high):
                 examiner.examine(values, open_claims, shares)
         if "kink" in open_claims and self.plain.lower.switches:
-            witness = refute_kink(self.plain, examiner)
+            witness = refute_kink(examiner)
             if witness:
                 examiner.found["kink"] = witness
         return {claim: witness for claim, witness in examiner.found.items() if claim in open_claims}

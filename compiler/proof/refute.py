@@ -13,6 +13,7 @@ import random
 import numpy as np
 
 from rootwright.calculus.balls import ball, precision
+from rootwright.proof.cancel import factors
 from rootwright.proof.chart import SHARE
 from rootwright.proof.exact import BITS, UNDEFINED, decimal, sign, value_at
 from rootwright.proof.functions import ends
@@ -22,7 +23,7 @@ from rootwright.proof.settle import Limit, Outcome, search_inside
 
 SHARES = tuple(Fraction(k, 16) for k in range(17))
 _EFFORT = 400               # boxes at one point
-_WAVES = 500                # waves at all points together
+_WAVES = 250                # waves at all points together
 
 
 @dataclass(frozen=True)
@@ -70,6 +71,8 @@ class Examiner:
         bounds = {name: (low[0], high[1]) for name, (low, high) in ranges.items()}
         for corner in islice(product((0, 1), repeat=len(bounds)), count):
             yield {name: pair[side] for (name, pair), side in zip(bounds.items(), corner)}
+        yield {name: _between(pair, 0.5) for name, pair in bounds.items()}
+        yield {name: 0.5 * (pair[0] + pair[1]) for name, pair in bounds.items()}
         generator = random.Random(2)
         for _ in range(count):
             yield {name: _between(pair, generator.random()) for name, pair in bounds.items()}
@@ -98,10 +101,10 @@ class Examiner:
                 yield self._absolute(domain, {name: float(value) for name, value in values.items()})
 
     def _rarer(self, outcome):
-        counts = {sign: sum(int((rise * (-1 if index else 1) == sign).sum()) for index, _, _, rise in outcome.active) for sign in (1, -1)}
+        counts = {sign: sum(int((rise == sign).sum()) for *_, rise in outcome.active) for sign in (1, -1)}
         rarer = min((1, -1), key=lambda sign: counts[sign])
         for index, low, high, rise in outcome.active:
-            at = rise * (-1 if index else 1) == rarer
+            at = rise == rarer
             if at.any():
                 yield index, low[at], high[at], rise[at]
 
@@ -136,7 +139,7 @@ class Examiner:
         if point is None:
             return
         key = tuple(point.items())
-        if key in self.seen or not self._in_range(point):
+        if key in self.seen or not self.in_range(point):
             return
         self.seen.add(key)
         if not self._bracket(point) or not self._values(point, shares):
@@ -147,20 +150,20 @@ class Examiner:
     def _refute(self, claim, point, reason):
         self.found.setdefault(claim, Witness(tuple((name, decimal(value)) for name, value in point.items()), reason))
 
-    def _at(self, chart, nodes, point, share=Fraction(0)):
+    def at(self, chart, nodes, point, share=Fraction(0)):
         names = {name: value for name, value in point.items()} | {SHARE: share, self.model.unknown.name: UNDEFINED}
         return value_at(chart.graph.instructions, nodes, names)
 
-    def _in_range(self, point):
+    def in_range(self, point):
         chart = self.domain.lower
-        values = self._at(chart, chart.requirements, point)
+        values = self.at(chart, chart.requirements, point)
         return all(values[node] is True for node in chart.requirements)
 
     def _bracket(self, point):
         chart = self.domain.lower
         lower, upper = (form.nodes[0] for form in chart.bracket)
         width = chart.width.nodes[-1]
-        values = self._at(chart, [lower, upper, width], point)
+        values = self.at(chart, [lower, upper, width], point)
         for name, node in (("lower", lower), ("upper", upper)):
             if values[node] is UNDEFINED:
                 self._refute("defined", point, f"the {name} end of the bracket has no value")
@@ -182,7 +185,7 @@ class Examiner:
                 signs.append(None)
                 continue
             conditions = [node for _, node in form.domain or ()]
-            values = self._at(chart, [*form.nodes, *conditions], point)
+            values = self.at(chart, [*form.nodes, *conditions], point)
             broken = any(_fails(kind, values[node]) for kind, node in form.domain or ())
             if values[form.nodes[0]] is UNDEFINED or broken:
                 self._refute("defined", point, f"the residual has no value at the {name} end of the bracket")
@@ -191,14 +194,28 @@ class Examiner:
         for share in (*SHARES, *shares):
             if 0 < share < 1 and self._undefined_at(chart, point, share):
                 return False
+        self._flat(chart, point, shares)
         if signs[0] and signs[0] == signs[1]:
             self._refute("exists", point, f"the residual is {'positive' if signs[0] > 0 else 'negative'} at both ends of the bracket")
         return True
 
+    def _flat(self, chart, point, shares):
+        """A zero at an exact place whose slope is exactly 0."""
+        unknown = self.model.unknown
+        nodes = [chart.residual.nodes[0], *chart.slope.nodes]
+        for share in dict.fromkeys((*SHARES, *(share.limit_denominator(1000) for share in shares))):
+            if share == 0 and unknown.open_lower or share == 1 and unknown.open_upper:
+                continue
+            values = self.at(chart, nodes[:1], point, share)
+            if sign(values[nodes[0]]) == 0:
+                slopes = self.at(chart, nodes[1:], point, share)
+                if any(sign(slopes[node]) == 0 for node in nodes[1:]):
+                    self._refute("slope", point, f"the zero at {self._place(chart, point, share)} has slope 0")
+
     def _undefined_at(self, chart, point, share):
         form = chart.residual
         conditions = form.domain or ()
-        values = self._at(chart, [form.nodes[0], *(node for _, node in conditions)], point, share)
+        values = self.at(chart, [form.nodes[0], *(node for _, node in conditions)], point, share)
         if values[form.nodes[0]] is UNDEFINED or any(_fails(kind, values[node]) for kind, node in conditions):
             self._refute("defined", point, f"the residual has no value at {self._place(chart, point, share)}")
             return True
@@ -206,7 +223,7 @@ class Examiner:
 
     def _place(self, chart, point, share):
         node = chart.graph.add(chart.bracket[0].nodes[0], chart.graph.mul(chart.graph.input(SHARE), chart.width.nodes[0]))
-        value = self._at(chart, [node], point, share)[node]
+        value = self.at(chart, [node], point, share)[node]
         return f"{self.model.unknown.name} = {_digits(value)}"
 
     def _zeros(self, point, wanted):
@@ -240,11 +257,11 @@ class Examiner:
         for kind, node in chart.residual.domain or ():
             if kind != "nonzero":
                 continue
-            for factor in _factors(chart.graph, node):
+            for factor in factors(chart.graph, node)[1]:
                 for left in undefined:
                     for a, b in _merged(left.low[:, -1], left.high[:, -1]):
                         a, b = max(a - 1e-9 * (b - a + 1e-9), 0.0), min(b + 1e-9 * (b - a + 1e-9), 1.0)
-                        signs = [sign(self._at(chart, [factor], point, Fraction(share))[factor]) for share in (a, b)]
+                        signs = [sign(self.at(chart, [factor], point, Fraction(share))[factor]) for share in (a, b)]
                         if None in signs or signs[0] * signs[1] >= 0:
                             continue
                         box = low.copy(), high.copy()
@@ -276,7 +293,7 @@ class Examiner:
                 end = "at_lower" if share == 0.0 else "at_upper" if share == 1.0 else None
                 form = getattr(chart, end) if end else chart.residual
                 node = form.nodes[-1]
-                signs.append(None if share == 0.0 and opened else sign(self._at(chart, [node], point, Fraction(float(share)))[node]))
+                signs.append(None if share == 0.0 and opened else sign(self.at(chart, [node], point, Fraction(float(share)))[node]))
             if None in signs or signs[0] * signs[1] >= 0:
                 continue
             pieces = np.linspace(a, b, 17)
@@ -294,15 +311,6 @@ def _fails(kind, value):
         return True
     known = sign(value)
     return known == 0 if kind == "nonzero" else known in (0, -1) if kind == "positive" else known == -1
-
-
-def _factors(graph, node):
-    instruction = graph.instructions[node]
-    if instruction.op in ("mul", "neg", "sqrt", "abs"):
-        return [factor for arg in dict.fromkeys(instruction.args) for factor in _factors(graph, arg)]
-    if instruction.op == "div":
-        return _factors(graph, instruction.args[0])
-    return [] if graph.is_constant(node) else [node]
 
 
 def _merged(low, high):

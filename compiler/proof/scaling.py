@@ -21,6 +21,7 @@ class Scaling:
     """`pivots` are parameters to set to 1; `powers[name][pivot]` is the power of the pivot by which a parameter is divided."""
     pivots: tuple[str, ...]
     powers: dict[str, dict[str, Fraction]]
+    slope: dict[str, Fraction]          # powers of the pivots in the scale of g_x
 
     def of(self, weight):
         """Powers of the pivots in the scale of a value with a weight {input: factor}."""
@@ -31,7 +32,7 @@ class Scaling:
 
 
 def symmetries(instructions, roots, same, unknown, pivots):
-    """Scaling under which all of `roots` keep their form, and the nodes `same` have the weight of the unknown.
+    """Scaling under which all of `roots` (the residual first) keep their form, and the nodes `same` have the weight of the unknown.
 
     `pivots` are the parameters that may be set to 1, in order of preference.
     """
@@ -40,7 +41,10 @@ def symmetries(instructions, roots, same, unknown, pivots):
         system.enter(node, instructions[node], instructions)
     for node in same:
         system.equal(system.weight(node), {unknown: Fraction(1)})
-    return system.scaling(unknown, pivots)
+    pivots, powers = system.scaling(unknown, pivots)
+    scaling = Scaling(pivots, powers, {})
+    slope = scaling.of(_combine(system.weight(roots[0]) or {}, 1, {unknown: Fraction(1)}, -1))
+    return Scaling(pivots, powers, slope)
 
 
 class _Weights:
@@ -133,7 +137,7 @@ class _Weights:
         if stuck:                           # weights of inputs that cannot be pivots are set to 0
             self.rows += [{name: Fraction(1)} for name in stuck]
             return self.scaling(unknown, pivots)
-        return Scaling(tuple(free), {name: power for name, power in powers.items()})
+        return tuple(free), powers
 
 
 def _combine(a, factor, b, other):

@@ -9,7 +9,8 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from rootwright.proof.chart import SHARE, Form
+from rootwright.proof.chart import mean_value, normalised
+from rootwright.proof.intervals import Interval, Intervals
 
 NEAR = (2.0 ** -6, 2.0 ** -20, 2.0 ** -50)     # shares of the bracket within which the sign next to an open end is asked for
 CHUNK = 1024                                    # boxes a wave
@@ -46,15 +47,20 @@ def judge_ends(near_lower, near_upper, model, low, high):
     if not len(at):
         return outcome
     low, high = low[at], high[at]
-    width, smear = _signed(chart, chart.width, low, high)
-    bounds = [chart.natural(form, low, high) for form in chart.bracket]
-    ordered = (width > 0) & ~bounds[0].undefined & ~bounds[1].undefined
+    (_, _, wide, _), smear = _at_end(chart, "width", low, high)
+    ordered = wide
+    for form in chart.bracket:
+        undefined = chart.natural(form, low, high).undefined
+        ordered &= ~undefined
+        broken = np.nonzero(undefined)[0]
+        if len(broken):
+            smear[broken] += chart.trouble(form, low[broken], high[broken])
     signs = []
     for end, opened, own in (("lower", model.unknown.open_lower, near_lower), ("upper", model.unknown.open_upper, near_upper)):
         if opened:
             sign, part = _next_to(own, low, high)
         else:
-            sign, part = _at_end(chart, end, low, high)
+            (*sign, _, _), part = _at_end(chart, end, low, high)
         signs.append(sign)
         smear = smear + part
     (rise, fall), (rise_above, fall_above) = signs
@@ -70,6 +76,12 @@ def outside(chart, low, high):
         values = chart.evaluate(chart.requirements, low, high)
         for node in chart.requirements:
             result |= ~np.broadcast_to(values[node].yes, result.shape)
+    for slack in chart.slack_forms:
+        at = np.nonzero(~result)[0]
+        values = chart.natural(slack, low[at], high[at])
+        at = at[(values.low < 0) & ~values.undefined & ~values.jump]
+        if len(at):
+            result[at] = chart.sharp(slack, low[at], high[at])[1] < 0
     return result
 
 
@@ -81,6 +93,9 @@ def _signed(chart, form, low, high, opened=False):
     at = np.nonzero(sign == 0)[0]
     if len(at):
         smear[at] = 1.0
+        broken = at[values.undefined[at]]
+        if len(broken):
+            smear[broken] = chart.trouble(form, low[broken], high[broken], opened)
         at = at[~values.undefined[at] & ~values.jump[at]]
     if len(at):
         first, last, below, above = chart.sharp(form, low[at], high[at], opened)
@@ -94,44 +109,79 @@ def _strict(values):
     return np.where(definite & (values.low >= 0), 1, np.where(definite & (values.high <= 0), -1, 0))
 
 
-def _weak(low, high):
-    return low >= 0, high <= 0
-
-
-def _at_end(chart, end, low, high):
-    """((g >= 0, g <= 0), smear) at a closed end."""
-    form = chart.at_lower if end == "lower" else chart.at_upper
+def _at_end(chart, name, low, high):
+    """((>= 0, <= 0, > 0, < 0), smear) of the residual at a closed end, or of the bracket's width, from the signs of its factors."""
+    form = {"lower": chart.at_lower, "upper": chart.at_upper, "width": chart.width}[name]
     values = chart.natural(form, low, high)
-    first, last = values.low.copy(), values.high.copy()
-    for sign, relaxed in chart.relaxed[end]:
-        part = chart.natural(relaxed, low, high)
-        if sign < 0:
-            first = np.where(part.undefined, first, np.maximum(first, part.low))
-        else:
-            last = np.where(part.undefined, last, np.minimum(last, part.high))
+    known = [values.low >= 0, values.high <= 0, values.low > 0, values.high < 0]
     smear = np.zeros(low.shape)
-    open_ = ~((first >= 0) | (last <= 0)) | values.undefined
-    smear[open_] = 1.0
-    at = np.nonzero(open_ & ~values.undefined & ~values.jump)[0]
-    if len(at):
-        bottom, top, below, above = chart.sharp(form, low[at], high[at])
-        smear[at] = normalised(below, above, low[at], high[at])
-        bottom, top = np.maximum(bottom, first[at]), np.minimum(top, last[at])
-        left = np.nonzero(~((bottom >= 0) | (top <= 0)))[0]
-        if len(left) and chart.slack_forms:
-            bottom[left], top[left] = _within_range(chart, form, low[at][left], high[at][left], below[left], above[left],
-                                                    bottom[left], top[left])
-        first[at], last[at] = bottom, top
-    defined = ~values.undefined
-    rise, fall = _weak(first, last)
-    return (rise & defined, fall & defined), smear
+    broken = np.nonzero(values.undefined)[0]
+    if len(broken):
+        smear[broken] = chart.trouble(form, low[broken], high[broken])
+    left = np.nonzero(~values.undefined & ~values.jump & ~(known[2] if name == "width" else known[0] | known[1]))[0]
+    if len(left):
+        signs, smear[left] = _product(chart, chart.products[name], low[left], high[left])
+        for have, new in zip(known, signs):
+            have[left] |= new
+        open_ = left[~known[2][left] if name == "width" else ~(known[0][left] | known[1][left])]
+        if len(open_):
+            (bottom, top), part = _factor(chart, chart.products[name][0], low[open_], high[open_])
+            smear[open_] = part
+            for have, new in zip(known, (bottom >= 0, top <= 0, bottom > 0, top < 0)):
+                have[open_] |= new
+    return tuple(part & ~values.undefined for part in known), smear
+
+
+def _product(chart, product, low, high):
+    _, constant, parts = product
+    value = chart.evaluate([constant], low[:1], high[:1])[constant]
+    size = len(low)
+    signs = [np.full(size, bool(part)) for part in (value.low[0] >= 0, value.high[0] <= 0, value.low[0] > 0, value.high[0] < 0)]
+    smear = np.zeros(low.shape)
+    for factor in parts:
+        (bottom, top), part = _factor(chart, factor, low, high)
+        ge, le, gt, lt = bottom >= 0, top <= 0, bottom > 0, top < 0
+        if factor.count % 2 == 0:
+            ge, le, gt, lt = np.ones(size, bool), np.zeros(size, bool), gt | lt, np.zeros(size, bool)
+        a, b, c, d = signs
+        signs = [a & ge | b & le, a & le | b & ge, c & gt | d & lt, c & lt | d & gt]
+        smear += part
+    return signs, smear
+
+
+def _factor(chart, factor, low, high):
+    """((low, high), smear) of a factor over the part of the boxes in the operating range."""
+    values = chart.natural(factor.form, low, high)
+    bottom, top = values.low.copy(), values.high.copy()
+    smear = np.zeros(low.shape)
+    left = np.nonzero(~((bottom > 0) | (top < 0)))[0]
+    for sign, relaxed in factor.relaxed if len(left) else ():
+        part = chart.natural(relaxed, low[left], high[left])
+        first, last = part.low.copy(), part.high.copy()
+        open_ = np.nonzero(~((first >= 0) if sign < 0 else (last <= 0)) & ~part.jump)[0]
+        if len(open_):
+            first[open_], last[open_], _, _ = chart.sharp(relaxed, low[left[open_]], high[left[open_]])
+        if sign < 0:
+            bottom[left] = np.maximum(bottom[left], first)
+        else:
+            top[left] = np.minimum(top[left], last)
+    left = left[~((bottom[left] > 0) | (top[left] < 0)) & ~values.jump[left]]
+    if len(left):
+        first, last, below, above = chart.sharp(factor.form, low[left], high[left])
+        smear[left] = normalised(below, above, low[left], high[left])
+        bottom[left], top[left] = np.maximum(bottom[left], first), np.minimum(top[left], last)
+        rest = np.nonzero(~((bottom[left] >= 0) | (top[left] <= 0)))[0]
+        if len(rest) and chart.slack_forms:
+            at = left[rest]
+            bottom[at], top[at] = _within_range(chart, factor.form, low[at], high[at], below[rest], above[rest], bottom[at], top[at])
+    return (bottom, top), smear
 
 
 def _within_range(chart, form, low, high, below, above, bottom, top):
     """Bounds of a form over the part of the boxes in the operating range, by Lagrange's multipliers.
 
-    Where a slack c is not negative, g >= g - m*c and g <= g + m*c for every m >= 0. m is chosen to cancel the slope in one
-    variable; the mean-value form of g - m*c is then bounded over the whole box.
+    Where a slack c is not negative, g >= g - m*c for m >= 0 and g <= g - m*c for m <= 0. m is chosen to cancel the slope in the
+    variable that moves c most; the mean-value form of g - m*c is then bounded over the whole box.
     """
     centre = low + 0.5 * (high - low)
     centre = np.clip(centre, low, high)
@@ -142,27 +192,22 @@ def _within_range(chart, form, low, high, below, above, bottom, top):
         usable = ~whole.undefined & ~whole.jump
         c_below, c_above = chart.slopes(slack, low, high)
         c_centre = chart.natural(slack, centre, centre)
+        rows = np.arange(len(low))
         with np.errstate(all="ignore"):
             middle, c_middle = 0.5 * (below + above), 0.5 * (c_below + c_above)
-            for k in range(low.shape[1] - 1):
-                for sign in (1.0, -1.0):
-                    factor = sign * middle[:, k] / c_middle[:, k]
-                    good = usable & np.isfinite(factor) & (factor > 0)
-                    if not good.any():
-                        continue
-                    m = np.where(good, factor, 0.0)
-                    bound = _relaxed_bound(at_centre, c_centre, (below, above), (c_below, c_above), sign * m, low, high, centre)
-                    if sign > 0:
-                        bottom = np.where(good & (bound[0] > bottom), bound[0], bottom)
-                    else:
-                        top = np.where(good & (bound[1] < top), bound[1], top)
+            most = np.argmax(np.where(np.isfinite(c_middle), np.abs(c_middle) * (high - low), -1.0), axis=1)
+            factor = middle[rows, most] / c_middle[rows, most]
+            good = usable & np.isfinite(factor) & (factor != 0.0)
+            if not good.any():
+                continue
+            bound = _relaxed_bound(at_centre, c_centre, (below, above), (c_below, c_above), np.where(good, factor, 0.0), low, high, centre)
+            bottom = np.where(good & (factor > 0) & (bound[0] > bottom), bound[0], bottom)
+            top = np.where(good & (factor < 0) & (bound[1] < top), bound[1], top)
     return bottom, top
 
 
 def _relaxed_bound(value, slack, slopes, slack_slopes, m, low, high, centre):
     """Mean-value enclosure of value - m*slack; m is an array of either sign, one a box."""
-    from rootwright.proof.chart import mean_value
-    from rootwright.proof.intervals import Interval, Intervals
     arithmetic = Intervals()
     factor = Interval(m, m)
     start = arithmetic.sub(Interval(value.low, value.high), arithmetic.mul(factor, Interval(slack.low, slack.high)))
@@ -201,6 +246,9 @@ def judge_inside(chart, low, high, opened):
     active, smear = ~values.definite(), np.zeros(low.shape)
     smooth = np.nonzero(active & ~values.undefined & ~values.jump)[0]
     smear[active] = 1.0
+    broken = np.nonzero(values.undefined)[0]
+    if len(broken):
+        smear[broken] = chart.trouble(chart.residual, low[broken], high[broken], opened)
     if len(smooth):
         first, last, below, above = chart.sharp(chart.residual, low[smooth], high[smooth], opened)
         active[smooth] = ~((first > 0) | (last < 0))
@@ -232,14 +280,6 @@ def _on_switch(chart, low, high, opened):
         touched |= near
         smear += np.where(near[:, None], part, 0.0)
     return touched, smear
-
-
-def normalised(below, above, low, high):
-    """Maximal smear (R. B. Kearfott, Rigorous Global Search, 1996): slope times width, each box's largest 1; widths alone where infinite."""
-    with np.errstate(all="ignore"):
-        smear = np.maximum(np.abs(below), np.abs(above)) * (high - low)
-        total = smear.max(axis=1, keepdims=True)
-        return np.where(np.isfinite(total) & (total > 0), smear / total, 1.0)
 
 
 def split(low, high, smear, widths, logs, finest=2.0 ** -160):

@@ -98,7 +98,6 @@ def search_inside(domain, index, limit, ceiling, outcome, wanted, low=None, high
     """
     chart = domain.charts[index]
     opened = domain.opened[index]
-    direction = -1 if index else 1          # the second chart counts the share from the upper end
     if low is None:
         low, high = domain.whole()
     kept = []
@@ -111,7 +110,7 @@ def search_inside(domain, index, limit, ceiling, outcome, wanted, low=None, high
         for claim in wanted:
             open_ |= needs[claim]
         done = judged.active & ~open_ & ~judged.outside
-        outcome.rises |= {direction * rise for rise in judged.rise[done].tolist()}
+        outcome.rises |= set(judged.rise[done].tolist())
         if done.any():
             outcome.active.append((index, now[0][done], now[1][done], judged.rise[done]))
         if share_only:
@@ -126,7 +125,7 @@ def search_inside(domain, index, limit, ceiling, outcome, wanted, low=None, high
             if need.any():
                 outcome.open.setdefault(claim, []).append(Left(now[0][need], now[1][need], index))
         active = judged.active & ~judged.outside
-        outcome.rises |= {direction * rise for rise in judged.rise[active].tolist() if rise}
+        outcome.rises |= set(judged.rise[active & (judged.rise != 0)].tolist())
         outcome.active.append((index, now[0][active], now[1][active], judged.rise[active]))
 
 

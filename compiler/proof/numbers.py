@@ -5,10 +5,11 @@ import numpy as np
 
 from rootwright.calculus.balls import ball, precision
 from rootwright.calculus.program import evaluate, needed
+from rootwright.proof.crew import CHUNK
 from rootwright.proof.functions import ends
 from rootwright.proof.intervals import Interval
 from rootwright.proof.ranges import as_ball, exact_ends
-from rootwright.proof.search import CHUNK, outside, split
+from rootwright.proof.search import outside, split
 
 _LARGEST = 1e307                # a value below it in exact arithmetic is finite in doubles, rounding included
 _ROUNDS = 40

@@ -15,7 +15,7 @@ import numpy as np
 from rootwright.calculus.lower import Lowering
 from rootwright.proof.advice import advise
 from rootwright.proof.certificate import Certificate, Claim
-from rootwright.proof.chart import Chart
+from rootwright.proof.crew import Crew
 from rootwright.proof.numbers import doubles_are_finite, slope_bound
 from rootwright.proof.ranges import as_ball, exact_ends
 from rootwright.proof.refute import Examiner
@@ -35,18 +35,19 @@ _NEEDS = {                          # what is asked of the boxes for each claim
 }
 
 
-def prove(closure, boxes=BOXES, seconds=None, progress=None, seen=None):
+def prove(closure, boxes=BOXES, seconds=None, workers=1, progress=None, seen=None):
     """Certificate of a Closure.
 
-    `boxes` limits the boxes looked at, the same way on every machine; `seconds` stops after the wave at hand. `progress(stage, boxes,
-    waiting)` is called after every wave. `seen` is the most iterations of a solve that the caller has seen.
+    `boxes` limits the boxes looked at, the same way on every machine and for every number of `workers` (processes); `seconds` stops
+    after the wave at hand. `progress(stage, boxes, waiting)` is called after every wave. `seen` is the most iterations of a solve
+    that the caller has seen.
     """
-    return _Proof(closure, Limit(boxes, seconds, progress)).certificate(seen)
+    return _Proof(closure, Limit(boxes, seconds, progress), workers).certificate(seen)
 
 
 class _Proof:
-    def __init__(self, closure, limit):
-        self.closure, self.model, self.limit = closure, closure.model, limit
+    def __init__(self, closure, limit, workers):
+        self.closure, self.model, self.limit, self.workers = closure, closure.model, limit, workers
         self.plain = Domain(self.model)
         scaling = relative(self.plain.lower)
         self.domain = Domain(self.model, scaling) if scaling else self.plain
@@ -54,10 +55,12 @@ class _Proof:
 
     def certificate(self, seen):
         boxes = self.limit.boxes
-        search_ends(self.domain, self.limit, _ENDS * boxes, self.outcome)
-        for index in range(len(self.domain.charts)):
-            ceiling = _INSIDE * boxes if index == len(self.domain.charts) - 1 else 0.5 * (_ENDS + _INSIDE) * boxes
-            search_inside(self.domain, index, self.limit, ceiling, self.outcome, ("defined", "continuous", "unique", "kink"))
+        with Crew(self.domain.judges(), self.workers) as crew:
+            search_ends(self.domain, crew, self.limit, _ENDS * boxes, self.outcome)
+            for index in range(len(self.domain.charts)):
+                last = index == len(self.domain.charts) - 1
+                ceiling = (_INSIDE if last else 0.5 * (_ENDS + _INSIDE)) * boxes
+                search_inside(self.domain, index, crew, self.limit, ceiling, self.outcome, ("defined", "continuous", "unique", "kink"))
         proved = {claim for claim, needs in _NEEDS.items() if not any(need in self.outcome.open for need in needs)}
         if len(self.outcome.rises) > 1:
             if self.model.unknown.root == "only":

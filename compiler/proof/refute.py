@@ -15,6 +15,7 @@ import numpy as np
 from rootwright.calculus.balls import ball, precision
 from rootwright.proof.cancel import factors
 from rootwright.proof.chart import SHARE
+from rootwright.proof.crew import Crew
 from rootwright.proof.exact import BITS, UNDEFINED, decimal, sign, value_at
 from rootwright.proof.functions import ends
 from rootwright.proof.ranges import as_ball, exact_ends
@@ -42,6 +43,7 @@ class Examiner:
         self.found = {}
         self.seen = set()
         self.limit = Limit(10 ** 9)
+        self.crew = Crew(domain.judges())
 
     # -- points
 
@@ -236,7 +238,7 @@ class Examiner:
         if self.model.unknown.open_upper:
             high[0, -1] = 1.0 - 2.0 ** -20
         outcome = Outcome()
-        search_inside(self.domain, 0, self.limit, self.limit.spent + _EFFORT, outcome, ("unique",), low, high, share_only=True)
+        search_inside(self.domain, 0, self.crew, self.limit, self.limit.spent + _EFFORT, outcome, ("unique",), low, high, share_only=True)
         undefined = outcome.open.get("defined", [])
         if undefined:
             places = np.concatenate([left.low[:, -1] for left in undefined] + [left.high[:, -1] for left in undefined])

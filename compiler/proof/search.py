@@ -13,7 +13,6 @@ from rootwright.proof.chart import mean_value, normalised
 from rootwright.proof.intervals import Interval, Intervals
 
 NEAR = (2.0 ** -6, 2.0 ** -20, 2.0 ** -50)     # shares of the bracket within which the sign next to an open end is asked for
-CHUNK = 1024                                    # boxes a wave
 
 
 @dataclass

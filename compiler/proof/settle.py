@@ -2,12 +2,14 @@
 
 import time
 from dataclasses import dataclass, field
+from functools import partial
 
 import numpy as np
 
 from rootwright.proof.chart import Chart
+from rootwright.proof.crew import WAVE
 from rootwright.proof.ranges import ranges
-from rootwright.proof.search import CHUNK, judge_ends, judge_inside, split
+from rootwright.proof.search import judge_ends, judge_inside, split
 
 
 @dataclass
@@ -25,6 +27,17 @@ class Outcome:
     active: list = field(default_factory=list)      # (chart, low, high, sign of slope): boxes that may hold a zero
     rises: set = field(default_factory=set)         # signs of g_x in them
     inside_range: float = 1.0                       # share of the ranges that meets the requirements, from above
+
+    def leave(self, claim, need, low, high, index):
+        if need.any():
+            self.open.setdefault(claim, []).append(Left(low[need], high[need], index))
+
+    def keep(self, judged, done, low, high, index):
+        """Notes the boxes that are done with and may hold a zero."""
+        active = judged.active & ~judged.outside & done
+        if active.any():
+            self.rises |= set(judged.rise[active & (judged.rise != 0)].tolist())
+            self.active.append((index, low[active], high[active], judged.rise[active]))
 
 
 class Limit:
@@ -67,66 +80,57 @@ class Domain:
         return self.ranges.low[None, :].copy(), high[None, :]
 
 
-def search_ends(domain, limit, ceiling, outcome):
+    def judges(self):
+        """{name: function of arrays (low, high)} for a Crew."""
+        inside = {f"inside {index}": partial(judge_inside, chart, opened=opened)
+                  for index, (chart, opened) in enumerate(zip(self.charts, self.opened))}
+        return {"ends": partial(judge_ends, self.lower, self.upper, self.model)} | inside
+
+
+def search_ends(domain, crew, limit, ceiling, outcome):
     """Cuts boxes of parameters until the bracket is in order and the signs differ at its ends; fills the outcome."""
     low, high = domain.ranges.low[None, :].copy(), domain.ranges.high[None, :].copy()
     low[:, -1] = high[:, -1] = 0.0
     kept, beyond = [], 0.0
     while len(low) and not limit.reached(ceiling):
-        now, low, high = (low[:CHUNK], high[:CHUNK]), low[CHUNK:], high[CHUNK:]
+        now, low, high = (low[:WAVE], high[:WAVE]), low[WAVE:], high[WAVE:]
+        judged = crew.judge("ends", *now)
         limit.take(len(now[0]), "ends", len(low))
-        judged = judge_ends(domain.lower, domain.upper, domain.model, *now)
         beyond += domain.ranges.volume(*now)[judged.outside].sum()
         open_ = ~judged.outside & ~(judged.ordered & judged.change)
         low, high = _append(domain, now, open_, judged.smear, low, high, kept)
     outcome.inside_range = max(1.0 - beyond, 0.0)
-    kept.append((low, high))
-    low, high = np.concatenate([k[0] for k in kept]), np.concatenate([k[1] for k in kept])
-    for start in range(0, len(low), CHUNK):
-        now = low[start:start + CHUNK], high[start:start + CHUNK]
-        judged = judge_ends(domain.lower, domain.upper, domain.model, *now)
+    low, high = _together(kept, low, high)
+    if len(low):
+        judged = crew.judge("ends", low, high)
         for claim, good in (("ordered", judged.ordered), ("change", judged.change)):
-            need = ~judged.outside & ~good
-            if need.any():
-                outcome.open.setdefault(claim, []).append(Left(now[0][need], now[1][need], 0))
+            outcome.leave(claim, ~judged.outside & ~good, low, high, 0)
 
 
-def search_inside(domain, index, limit, ceiling, outcome, wanted, low=None, high=None, share_only=False):
+def search_inside(domain, index, crew, limit, ceiling, outcome, wanted, low=None, high=None, share_only=False):
     """Cuts boxes of parameters and share until nothing that the claims in `wanted` need is open; fills the outcome.
 
     `share_only`: the boxes hold single points of the parameters, whose rounding is not worth a cut.
     """
-    chart = domain.charts[index]
-    opened = domain.opened[index]
     if low is None:
         low, high = domain.whole()
     kept = []
     while len(low) and not limit.reached(ceiling):
-        now, low, high = (low[:CHUNK], high[:CHUNK]), low[CHUNK:], high[CHUNK:]
+        now, low, high = (low[:WAVE], high[:WAVE]), low[WAVE:], high[WAVE:]
+        judged = crew.judge(f"inside {index}", *now)
         limit.take(len(now[0]), "inside", len(low))
-        judged = judge_inside(chart, *now, opened)
         needs = needs_of(judged)
-        open_ = np.zeros(len(now[0]), bool)
-        for claim in wanted:
-            open_ |= needs[claim]
-        done = judged.active & ~open_ & ~judged.outside
-        outcome.rises |= set(judged.rise[done].tolist())
-        if done.any():
-            outcome.active.append((index, now[0][done], now[1][done], judged.rise[done]))
+        open_ = np.logical_or.reduce([needs[claim] for claim in wanted])
+        outcome.keep(judged, ~open_, *now, index)
         if share_only:
             judged.smear[:, :-1] = -1e9
         low, high = _append(domain, now, open_, judged.smear, low, high, kept, 2.0 ** (-48 if share_only else -160))
-    kept.append((low, high))
-    low, high = np.concatenate([k[0] for k in kept]), np.concatenate([k[1] for k in kept])
-    for start in range(0, len(low), CHUNK):
-        now = low[start:start + CHUNK], high[start:start + CHUNK]
-        judged = judge_inside(chart, *now, opened)
+    low, high = _together(kept, low, high)
+    if len(low):
+        judged = crew.judge(f"inside {index}", low, high)
         for claim, need in needs_of(judged).items():
-            if need.any():
-                outcome.open.setdefault(claim, []).append(Left(now[0][need], now[1][need], index))
-        active = judged.active & ~judged.outside
-        outcome.rises |= set(judged.rise[active & (judged.rise != 0)].tolist())
-        outcome.active.append((index, now[0][active], now[1][active], judged.rise[active]))
+            outcome.leave(claim, need, low, high, index)
+        outcome.keep(judged, np.ones(len(low), bool), low, high, index)
 
 
 def needs_of(judged):
@@ -137,6 +141,11 @@ def needs_of(judged):
             "continuous": here & judged.undefined | active & judged.jump,
             "unique": here & judged.undefined | active & (judged.jump | (judged.rise == 0)),
             "kink": active & judged.switch}
+
+
+def _together(kept, low, high):
+    parts = [*kept, (low, high)]
+    return np.concatenate([part[0] for part in parts]), np.concatenate([part[1] for part in parts])
 
 
 def _append(domain, now, open_, smear, low, high, kept, finest=0.0):

@@ -1,7 +1,8 @@
 /* SPDX-License-Identifier: 0BSD */
 /* The operations of an emitted C module over a number that carries derivatives.
 
-   Include it after the definition of `real`: a number with a member `value`, made from a double by a constructor, and by
+   Include it after the definition of `real`: a number with a member `value`, made from a double by a constructor, and
+   by
        rw_make(value, a, da)           the value of a function of a, with its derivative da
        rw_make(value, a, da, b, db)    the value of a function of a and b, with its derivatives da and db
    Then `#define double real` and the text of a module make the very same solver over that number: values, comparisons

@@ -1,6 +1,6 @@
 /* SPDX-License-Identifier: 0BSD */
-/* An operation tape: every operation on a `real` adds one record of the two operands and the derivatives with respect to
-   them; the derivatives of results are then swept back to the inputs, or on from the inputs.
+/* An operation tape: every operation on a `real` adds one record of its two operands and of the derivatives with
+   respect to them; the derivatives of results are then swept back to the inputs, or on from the inputs.
 
    One tape in one thread. Record 0 stands for every constant; the inputs come next. An operation on constants leaves no
    record. Nothing but the sweeps looks at the records, so their cost is that of reading them once. */

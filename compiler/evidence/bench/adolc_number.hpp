@@ -15,7 +15,10 @@ inline adouble copysign(const adouble &a, const adouble &b)
 {
     return std::signbit(a.value()) == std::signbit(b.value()) ? adouble(a) : adouble(-a);
 }
-inline adouble nextafter(const adouble &a, const adouble &b) { return a + (std::nextafter(a.value(), b.value()) - a.value()); }
+inline adouble nextafter(const adouble &a, const adouble &b)
+{
+    return a + (std::nextafter(a.value(), b.value()) - a.value());
+}
 inline adouble ldexp(const adouble &a, int n) { return a * std::ldexp(1.0, n); }
 inline adouble frexp(const adouble &a, int *n) { return adouble(std::frexp(a.value(), n)); }
 inline adouble log2(const adouble &a) { return log(a) * 1.4426950408889634074; }

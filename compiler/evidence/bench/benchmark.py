@@ -45,7 +45,6 @@ def benchmark(closure, seconds=SECONDS, count=PROCESSES, points=POINTS, checked=
         times = processes(problem, built, count, seconds, progress)
         say("where the iterate-through approach goes wrong")
         wrong = pitfalls(problem, built)
-    say("")
     evaluations = judged[SOLVE].counts
     facts = {
         "name": closure.model.name, "title": closure.model.title, "digest": closure.model.digest,
@@ -53,13 +52,14 @@ def benchmark(closure, seconds=SECONDS, count=PROCESSES, points=POINTS, checked=
         "rows": [_row(row, judged[row.key], times) for row in ROWS],
         "evaluations": {"median": statistics.median(evaluations), "worst": max(evaluations)},
         "tape": {"evaluations": list(evaluations[:KEPT]), "operations": list(judged[TAPE].counts[:KEPT])},
-        "pitfalls": wrong, "module_failures": judged[BASE].failures,
+        "pitfalls": wrong, "module_failures": judged[SOLVE].failures,
     }
     return facts | {"goals": goals(facts)}
 
 
 def _row(row, judged, times):
-    facts = {"key": row.key, "group": row.group, "title": row.title, "setting": row.setting, "absent": judged.absent or None}
+    facts = {"key": row.key, "group": row.group, "title": row.title, "setting": row.setting,
+             "absent": judged.absent or None}
     if not judged.absent and all(row.key in process.throughput for process in times):
         facts |= _timed(row.key, times)
     elif not judged.absent:
@@ -72,7 +72,8 @@ def _row(row, judged, times):
 
 def _timed(key, times):
     own = [process.throughput[key] for process in times]
-    facts = {"ns": statistics.median(own), "spread": spread(own), "points": min(process.points[key] for process in times)}
+    facts = {"ns": statistics.median(own), "spread": spread(own),
+             "points": min(process.points[key] for process in times)}
     facts |= {"to_module": _ratio(own, [process.throughput[BASE] for process in times]),
               "to_limit": _ratio(own, [process.throughput[LIMIT] for process in times]), "latency": None}
     if key in times[0].latency:
@@ -89,7 +90,8 @@ def _ratio(above, below):
 
 
 def _environment(times, problem):
-    return {"processor": _processor(), "cores": os.cpu_count(), "load": [round(load, 2) for load in getattr(os, "getloadavg", tuple)()],
+    load = getattr(os, "getloadavg", tuple)()            # not on every system
+    return {"processor": _processor(), "cores": os.cpu_count(), "load": [round(value, 2) for value in load],
             "compiler": compiler_version(find_compiler()).splitlines()[0], "flags": " ".join(FLAGS),
             "python": platform.python_version(), "libraries": {name: _version(name) for name in LIBRARIES},
             "processes": len(times), "rounds": min(process.rounds for process in times), "points": len(problem.points),

@@ -22,7 +22,8 @@ ROWS = {                                 # library: (source, header of its numbe
     "dual": ("through.cpp", "dual_number.hpp", ("loop", "textbook")),
     "adolc": ("through.cpp", "adolc_number.hpp", ("loop", "textbook")),
 }
-_SHAPE = "(size_t n, const double *p, const double *start, int dependent, double *y, double *jac, int *failed, long *count);"
+_SHAPE = """(size_t n, const double *p, const double *start, int dependent,
+             double *y, double *jac, int *failed, long *count);"""
 
 
 @dataclass(frozen=True)
@@ -33,7 +34,7 @@ class Built:
 
 
 def build(closure, folder):
-    """Built libraries of a Closure in a folder. Raises NoCompiler; BuildFailed where the module's own does not build."""
+    """Built libraries of a Closure in a folder. Raises NoCompiler, and BuildFailed where the module itself fails."""
     folder = Path(folder)
     name = closure.model.name
     files = assemble(closure, "c")
@@ -51,7 +52,8 @@ def build(closure, folder):
 
     with ThreadPoolExecutor(2) as pool:
         made = list(pool.map(make, ROWS))
-    built = Built({library: path for library, path, _ in made if path}, {library: why for library, path, why in made if not path})
+    built = Built({library: path for library, path, _ in made if path},
+                  {library: why for library, path, why in made if not path})
     for library in ("module", "byhand"):
         if library in built.missing:
             raise BuildFailed(built.missing[library])
@@ -79,8 +81,8 @@ def _compile(closure, folder, library, source, number, compiler):
         "OPEN_UPPER": int(model.unknown.open_upper), "START": int("start" in closure.kernels),
         "SWITCHES": int("kink" in closure.kernels), "NUMBER": f'"{number}"'}
     output = folder/f"{library}.so"
-    command = [compiler, *(FLAGS if number is None else CXX_FLAGS), *(f"-DRW_{word}={value}" for word, value in words.items()),
-               f"-I{folder}", f"-I{here}", f"-I{runtime}", f"{here}/{source}", "-o", str(output),
+    command = [compiler, *(FLAGS if number is None else CXX_FLAGS), f"-I{folder}", f"-I{here}", f"-I{runtime}",
+               *(f"-DRW_{word}={value}" for word, value in words.items()), f"{here}/{source}", "-o", str(output),
                *(["-ladolc"] if library == "adolc" else []), "-lm"]
     done = subprocess.run(command, cwd=folder, capture_output=True, text=True, errors="replace", check=False)
     if done.returncode:
@@ -90,8 +92,8 @@ def _compile(closure, folder, library, source, number, compiler):
 
 
 def _has_header(compiler, header):
-    done = subprocess.run([compiler, "-E", "-x", "c++", "-"], input=f"#include <{header}>\n", capture_output=True, text=True,
-                          errors="replace", check=False)
+    done = subprocess.run([compiler, "-E", "-x", "c++", "-"], input=f"#include <{header}>\n", capture_output=True,
+                          text=True, errors="replace", check=False)
     return done.returncode == 0
 
 
@@ -103,5 +105,6 @@ def open_rows(path, library):
         ffi.cdef(f"void rw_row_{row}{_SHAPE}")
     if library == "tape":
         ffi.cdef("long rw_tape_bytes(long operations);")
-        ffi.cdef("void rw_pitfall(int what, int steps, size_t n, const double *p, double *y, double *jac, double *implicit);")
+        ffi.cdef("""void rw_pitfall(int what, int steps, size_t n, const double *p,
+                                    double *y, double *jac, double *implicit);""")
     return ffi, ffi.dlopen(path)

@@ -1,5 +1,7 @@
 """What the module is to reach, and whether the interval of a ratio clears it."""
 
+import math
+
 from rootwright.evidence.bench.rows import BRENT_PYTHON, SOLVE, TAPE
 
 JACOBIAN = 1.15                  # at most: solve with jacobian, of the solve
@@ -9,13 +11,14 @@ MEDIAN, WORST = 3, 24            # evaluations a solve, from cold
 
 
 def goals(facts):
-    """List of {goal, at_most or at_least, value, low, high, verdict}: "met" where the whole interval clears it, "missed"
-    where none of it does, "open" between."""
+    """List of {goal, at_most, at_least (one is None), value, low, high, verdict}: "met" where the whole interval clears
+    the goal, "missed" where none of it does, "open" between."""
     rows = {row["key"]: row for row in facts["rows"]}
     found = []
     solve = rows[SOLVE].get("to_module")
     if solve:
-        inverse = {"value": 1.0/solve["value"], "low": 1.0/solve["high"], "high": 1.0/solve["low"] if solve["low"] else float("inf")}
+        inverse = {"value": 1.0/solve["value"], "low": 1.0/solve["high"],
+                   "high": 1.0/solve["low"] if solve["low"] else math.inf}
         found.append(_judge("solve with jacobian, of the solve", inverse, at_most=JACOBIAN))
     for key, least, text in ((TAPE, TAPES, "tape, reverse, of the module"),
                              (BRENT_PYTHON, BRENT, "SciPy brentq from Python, of the module")):
@@ -23,7 +26,8 @@ def goals(facts):
             found.append(_judge(text, rows[key]["to_module"], at_least=least))
     for key, most in (("median", MEDIAN), ("worst", WORST)):
         value = facts["evaluations"][key]
-        found.append(_judge(f"evaluations a solve from cold, {key}", {"value": value, "low": value, "high": value}, at_most=most))
+        exact = {"value": value, "low": value, "high": value}
+        found.append(_judge(f"evaluations a solve from cold, {key}", exact, at_most=most))
     return found
 
 

@@ -6,9 +6,10 @@ from dataclasses import dataclass
 import numpy as np
 
 from rootwright.evidence.bench.rivals import Absent
-from rootwright.evidence.bench.rows import ROWS, SOLVE, Compiled, make
+from rootwright.evidence.bench.rows import ROWS, Compiled, make
 
 SAME = 1e-6                      # a root further than this from the module's, relatively, is another root or none
+SMALL = 1e-9                     # ... where a root counts as at least this share of the median one
 KEPT = 512                       # points whose tape sizes are kept for the plot
 
 
@@ -46,21 +47,21 @@ def _judged(row, problem, runner):
     compiled, checked = isinstance(runner, Compiled), len(problem.roots)
     n = len(problem.points) if compiled else checked
     outcome = runner.outcome(n)
-    failed = outcome.failed | ~(np.abs(outcome.y[:, 0] - problem.solved[:n]) <= SAME*np.abs(problem.solved[:n]) + 1e-300)
-    roots = np.abs(outcome.y[:checked, 0] - problem.roots)/np.maximum(np.abs(problem.roots), 1e-300)
+    size = np.maximum(np.abs(problem.solved[:n]), SMALL*np.nanmedian(np.abs(problem.solved)))
+    failed = outcome.failed | ~(np.abs(outcome.y[:, 0] - problem.solved[:n]) <= SAME*size)
+    roots = np.abs(outcome.y[:checked, 0] - problem.roots)/size[:checked]
     median = worst = np.nan
     if row.jacobian:
         wanted = np.array(problem.wanted)
         known = np.isfinite(problem.derivatives)
         errors = np.abs(outcome.jac[:checked] - problem.derivatives)/problem.scales
-        if row.key != SOLVE:
-            number = np.isfinite(outcome.jac[:, :, wanted]).all(axis=(1, 2))
-            number[:checked] |= ~known[:, :, wanted].any(axis=(1, 2))
-            failed = failed | ~number
+        number = np.isfinite(outcome.jac[:, :, wanted]).all(axis=(1, 2))
+        number[:checked] |= ~known[:, :, wanted].any(axis=(1, 2))
+        failed = failed | ~number
         errors = errors[known & ~failed[:checked, None, None]]
         if errors.size:
             median, worst = float(np.median(errors)), float(np.max(errors))
     good = roots[~failed[:checked]]
     counts = () if outcome.count is None else tuple(int(count) for count in outcome.count)
-    size = runner.bytes(int(np.median(outcome.count))) if row.taped else None
-    return Judged("", median, worst, float(good.max()) if good.size else np.nan, int(failed.sum()), n, counts, size)
+    held = runner.bytes(int(np.median(outcome.count))) if row.taped else None
+    return Judged("", median, worst, float(good.max()) if good.size else np.nan, int(failed.sum()), n, counts, held)

@@ -1,9 +1,9 @@
 /* SPDX-License-Identifier: 0BSD */
 /* A row of the benchmark: one way to a root and its jacobian, over n points.
 
-   A row is defined by a function `int point(const double q[], double start, double y[], double jac[])` that returns 0, or
-   1 where it fails, and leaves a count in rw_count. RW_ROW makes of it a function over many points, alone or one after
-   another: then each point waits for the root of the one before, by a number that is always zero. */
+   A row is defined by a function `int point(const double q[], double start, double y[], double jac[])` that returns 0,
+   or 1 where it fails, and leaves a count in rw_count. RW_ROW makes of it a function over many points, independent or
+   one after another: then each point waits for the root of the one before, by a number that is always zero. */
 #ifndef RW_LOOP_H
 #define RW_LOOP_H
 
@@ -48,8 +48,8 @@ RW_EXPORT void rw_prepare(const double *floor, const double *middle, const int *
     }
 
 #define RW_ROW(point) \
-    RW_EXPORT void rw_row_##point(size_t n, const double *p, const double *start, int dependent, double *y, double *jac, \
-                                  int *failed, long *count) \
+    RW_EXPORT void rw_row_##point(size_t n, const double *p, const double *start, int dependent, double *y, \
+                                  double *jac, int *failed, long *count) \
     { \
         double carry = 0.0; \
         size_t i; \

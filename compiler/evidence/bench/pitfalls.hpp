@@ -55,8 +55,9 @@ static int rw_held(const real p[], int steps, real *root)
     return isnan(x);
 }
 
-// what: 0 bisection, 1 Newton's method stopped after `steps` steps, 2 and 3 a fixed number of secants, swept back and on.
-RW_EXPORT void rw_pitfall(int what, int steps, size_t n, const double *p, double *y, double *jac, double *implicit)
+// what: 0 bisection; 1 Newton's method stopped after so many steps; 2 and 3 so many secants, swept back and on.
+RW_EXPORT void rw_pitfall(int what, int steps, size_t n, const double *p, double *y, double *jac,
+                          double *implicit)
 {
     for (size_t i = 0; i < n; i++) {
         real q[RW_N], root, results[RW_M];

@@ -40,7 +40,8 @@ class _Loops:
         return {"root_median": _median(roots), "root_worst": _worst(roots),
                 "through_median": _median(of_root), "through_worst": _worst(of_root),
                 "implicit_median": _median(of_rule), "implicit_worst": _worst(of_rule),
-                "derivatives": int(known.sum()), "zero": int(zero.sum()), "not_a_number": int((~np.isfinite(of_root)).sum())}
+                "derivatives": int(known.sum()), "zero": int(zero.sum()),
+                "not_a_number": int((~np.isfinite(of_root)).sum())}
 
 
 def _median(values):

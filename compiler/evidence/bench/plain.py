@@ -12,27 +12,31 @@ from rootwright.operations import OPERATIONS
 
 _INFIX = {"add": "({0} + {1})", "sub": "({0} - {1})", "mul": "({0}*{1})", "div": "({0}/{1})", "neg": "(-{0})",
           "pow": "({0}**{1})", "lt": "({0} < {1})", "le": "({0} <= {1})", "gt": "({0} > {1})", "ge": "({0} >= {1})"}
-_SCALAR = {"where": "({1} if {0} else {2})", "and": "({0} and {1})", "or": "({0} or {1})", "not": "(not {0})", "abs": "abs({0})",
-           "min": "min({0}, {1})", "max": "max({0}, {1})", "sign": "(({0} > 0.0) - ({0} < 0.0))",
+_SCALAR = {"where": "({1} if {0} else {2})", "and": "({0} and {1})", "or": "({0} or {1})", "not": "(not {0})",
+           "abs": "abs({0})", "min": "min({0}, {1})", "max": "max({0}, {1})",
+           "sign": "(({0} > 0.0) - ({0} < 0.0))",
            "ordered": "({0} == {0} and {1} == {1})"}
-_ARRAY = {"where": "m.where({0}, {1}, {2})", "and": "({0} & {1})", "or": "({0} | {1})", "not": "(~{0})", "abs": "m.abs({0})",
-          "min": "m.minimum({0}, {1})", "max": "m.maximum({0}, {1})", "ordered": "(({0} == {0}) & ({1} == {1}))",
+_ARRAY = {"where": "m.where({0}, {1}, {2})", "and": "({0} & {1})", "or": "({0} | {1})", "not": "(~{0})",
+          "abs": "m.abs({0})", "min": "m.minimum({0}, {1})", "max": "m.maximum({0}, {1})",
+          "ordered": "(({0} == {0}) & ({1} == {1}))",
           "asin": "m.arcsin({0})", "acos": "m.arccos({0})", "atan": "m.arctan({0})", "atan2": "m.arctan2({0}, {1})",
           "asinh": "m.arcsinh({0})", "acosh": "m.arccosh({0})", "atanh": "m.arctanh({0})",
           "erf": "special.erf({0})", "erfc": "special.erfc({0})"}
 _SPELLINGS = {"math": _SCALAR, "numpy": _ARRAY, "jax": _ARRAY, "autograd": _ARRAY | {"where": _SCALAR["where"],
               "and": _SCALAR["and"], "or": _SCALAR["or"], "not": _SCALAR["not"]}}
-FUNCTIONS = {                    # function: kernels whose results it returns as a tuple; all but bracket and start take x
-    "bracket": ("bracket",), "start": ("start",), "g": ("residual",), "residual": ("residual",), "outputs": ("outputs",),
-    "jacobian": ("jacobian",)}
+_FUNCTIONS = {                   # function: the kernel whose results it returns; all but bracket and start take x
+    "bracket": "bracket", "start": "start", "g": "residual", "residual": "residual", "outputs": "outputs",
+    "jacobian": "jacobian"}
 
 
 def spell(closure, library):
-    """Source of the functions bracket(*p), start(*p) or None, g(x, *p), residual(x, *p), outputs(x, *p), jacobian(x, *p).
+    """Source of functions: bracket(*p), start(*p), g(x, *p), residual(x, *p), outputs(x, *p), jacobian(x, *p).
 
-    residual gives the slope too; outputs may be an empty tuple; the jacobian comes flat, row-major.
+    start gives None where the spec has none; residual gives the slope too; outputs may be an empty tuple; the jacobian
+    comes flat, row-major.
     """
-    return "\n\n".join(_function(closure, name, kernel, _SPELLINGS[library]) for name, (kernel,) in FUNCTIONS.items()) + "\n"
+    spelling = _SPELLINGS[library]
+    return "\n\n".join(_function(closure, name, kernel, spelling) for name, kernel in _FUNCTIONS.items()) + "\n"
 
 
 def _function(closure, name, kernel, spelling):

@@ -2,7 +2,8 @@
 
 import math
 
-_MARKS = {"limit": "_", "module": "*", "through": "o", "differences": "^", "hand": "s"}
+_MARKS = {"limit": ("D", "0.4"), "module": ("*", "C3"), "through": ("o", "C0"), "differences": ("^", "C1"),
+          "hand": ("s", "C2")}
 _EXACT = 1e-17                   # an error of zero is drawn here
 
 
@@ -20,8 +21,9 @@ def plot(facts, path):
     matplotlib.use("Agg")
     from matplotlib import pyplot
 
-    figure, (cost, tape) = pyplot.subplots(1, 2, figsize=(13.0, 5.5), constrained_layout=True)
-    _cost(cost, facts)
+    figure, (cost, names, tape) = pyplot.subplots(1, 3, figsize=(15.0, 6.0), width_ratios=(5, 2.2, 3.5),
+                                                  layout="constrained")
+    _cost(cost, names, facts)
     _tape(tape, facts)
     figure.suptitle(f"{facts['name']}: cost of a root with its derivatives")
     try:
@@ -30,17 +32,25 @@ def plot(facts, path):
         pyplot.close(figure)
 
 
-def _cost(axes, facts):
-    for row in facts["rows"]:
-        if row["absent"] or row["derivative_error"] is None or not math.isfinite(row["derivative_error"]["median"]):
-            continue
-        x, y = row["to_module"]["value"], max(row["derivative_error"]["median"], _EXACT)
-        worst = max(row["derivative_error"]["worst"], _EXACT)
-        axes.plot([x, x], [y, worst], color="0.8", linewidth=1.0, zorder=1)
-        axes.plot(x, y, _MARKS[row["group"]], markersize=8, zorder=2)
-        axes.annotate(row["title"], (x, y), textcoords="offset points", xytext=(5, 3), fontsize=6, rotation=20)
+def _cost(axes, names, facts):
+    """A mark for each method, numbered from left to right; the names beside."""
+    rows = [row for row in facts["rows"] if not row["absent"] and row["derivative_error"] is not None
+            and math.isfinite(row["derivative_error"]["median"])]
+    rows.sort(key=lambda row: row["to_module"]["value"])
+    for k, row in enumerate(rows):
+        mark, color = _MARKS[row["group"]]
+        x, error = row["to_module"]["value"], row["derivative_error"]
+        y, worst = max(error["median"], _EXACT), max(error["worst"], _EXACT)
+        axes.plot([x, x], [y, worst], color=color, linewidth=1.0, alpha=0.5)
+        axes.plot(x, y, mark, color=color, markersize=8)
+        axes.annotate(str(k + 1), (x, y), textcoords="offset points", xytext=(0, -14 - 9*(k % 4)), ha="center",
+                      fontsize=7)
+        names.text(0.0, 1.0 - 0.04*k, f"{k + 1}", color=color, fontsize=8, transform=names.transAxes, va="top")
+        names.text(0.1, 1.0 - 0.04*k, row["title"], color=color, fontsize=8, transform=names.transAxes, va="top")
+    names.axis("off")
     axes.set(xscale="log", yscale="log", xlabel="time, in units of the module's solve with jacobian",
-             ylabel="derivative error: median (mark) to worst (line)")
+             ylabel="relative error of the derivatives: median (mark) to worst (line)")
+    axes.set_ylim(bottom=1e-18)
     axes.grid(True, which="major", color="0.93")
 
 
@@ -48,9 +58,10 @@ def _tape(axes, facts):
     evaluations, operations = facts["tape"]["evaluations"], facts["tape"]["operations"]
     axes.set(xlabel="evaluations of the residual", ylabel="operations on the tape")
     axes.grid(True, color="0.93")
+    axes.xaxis.get_major_locator().set_params(integer=True)
     if not operations:
         axes.text(0.5, 0.5, "no C++ compiler: no tape", ha="center", transform=axes.transAxes)
         return
     axes.plot(evaluations, operations, "o", markersize=3, alpha=0.4, label="reverse tape through the module's loop")
-    axes.axhline(0.0, color="C1", label="the module: nothing is recorded")
+    axes.axhline(0.0, color="C3", label="the module: nothing is recorded")
     axes.legend(fontsize=8)

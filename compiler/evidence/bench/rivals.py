@@ -123,7 +123,8 @@ def find_root(problem):
         raise Absent("needs SciPy 1.15") from None
 
     def find(formulas, columns, _):
-        low, high = (np.broadcast_to(end, len(columns[0])) for end in _entered(problem, *map(np.asarray, formulas["bracket"](*columns))))
+        ends = _entered(problem, *map(np.asarray, formulas["bracket"](*columns)))
+        low, high = (np.broadcast_to(end, len(columns[0])) for end in ends)
         found = elementwise.find_root(formulas["g"], (low, high), args=tuple(columns),
                                       tolerances={"xatol": 0.0, "xrtol": NEAR, "fatol": 0.0, "frtol": 0.0})
         return found.x, found.success

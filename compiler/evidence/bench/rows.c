@@ -1,6 +1,6 @@
 /* SPDX-License-Identifier: 0BSD */
-/* The module itself, the limit, and finite differences of the module. RW_SOURCE is the emitted C file, compiled with the
-   flags of a module; its kernels are in reach here. */
+/* The module itself, the limit, and finite differences of the module. RW_SOURCE is the emitted C file, compiled with
+   the flags of a module; its kernels are in reach here. */
 #include "loop.h"
 #include RW_SOURCE
 

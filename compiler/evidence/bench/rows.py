@@ -34,48 +34,61 @@ TERMS = {
 
 ROWS = (
     Row(LIMIT, "limit", "one evaluation at the root",
-        "residual, slope and jacobian once, at the root: the module's kernels, compiler and flags", ("module", "limit", ROOT)),
+        "residual, slope and jacobian once, at the root: the module's kernels, compiler and flags",
+        ("module", "limit", ROOT)),
     Row(SOLVE, "module", "solve", "root, outputs, error bound; cold", ("module", "solve", COLD), jacobian=False),
-    Row(BASE, "module", "solve with jacobian", "the same and the jacobian; cold: ratios are to this row", ("module", "jacobian", COLD)),
+    Row(BASE, "module", "solve with jacobian", "the same and the jacobian; cold: ratios are to this row",
+        ("module", "jacobian", COLD)),
     Row("warm", "module", "solve with jacobian, warm", "the same, warm", ("module", "jacobian", WARM)),
     Row(TAPE, "through", "tape, reverse: the module's loop",
-        "C++ over the module's own loop, operation for operation, on runtime/tape.hpp; bounds of rounding errors and checks of the "
-        "range are left off the tape; all results are swept back at once; cold", ("tape", "loop", COLD), taped=True),
-    Row("tape_forward", "through", "tape, forward: the module's loop", "the same tape swept forward, all parameters at once; cold",
-        ("tape", "loop_forward", COLD), taped=True),
-    Row(TAPE_LEAN, "through", "tape, reverse: textbook loop", "the leanest loop that is still safe; warm", ("tape", "textbook", WARM),
-        taped=True),
+        "C++ over the module's own loop, operation for operation, on runtime/tape.hpp; bounds of rounding errors and "
+        "checks of the range are left off the tape; all results are swept back at once; cold",
+        ("tape", "loop", COLD), taped=True),
+    Row("tape_forward", "through", "tape, forward: the module's loop",
+        "the same tape swept forward, all parameters at once; cold", ("tape", "loop_forward", COLD), taped=True),
+    Row(TAPE_LEAN, "through", "tape, reverse: textbook loop", "the leanest loop that is still safe; warm",
+        ("tape", "textbook", WARM), taped=True),
     Row("tape_last", "through", "tape, reverse: the last step only",
-        "the module solves without a tape, warm; one step of Newton's method at the root is taped. The best that a tape can do, "
-        "and no longer through the iterations", ("tape", "last_step", WARM), taped=True),
-    Row("adolc", "through", "ADOL-C, reverse: the module's loop", "the same loop on the tape of a C++ library; cold", ("adolc", "loop", COLD)),
+        "the module solves without a tape, warm; one step of Newton's method at the root is taped. The best that a "
+        "tape can do, and no longer through the iterations", ("tape", "last_step", WARM), taped=True),
+    Row("adolc", "through", "ADOL-C, reverse: the module's loop", "the same loop on the tape of a C++ library; cold",
+        ("adolc", "loop", COLD)),
     Row("adolc_textbook", "through", "ADOL-C, reverse: textbook loop", "warm", ("adolc", "textbook", WARM)),
-    Row("dual", "through", "dual numbers: the module's loop", "forward, all parameters at once, runtime/dual.hpp; cold", ("dual", "loop", COLD)),
+    Row("dual", "through", "dual numbers: the module's loop",
+        "forward, all parameters at once, runtime/dual.hpp; cold", ("dual", "loop", COLD)),
     Row("dual_textbook", "through", "dual numbers: textbook loop", "warm", ("dual", "textbook", WARM)),
-    Row("autograd", "through", "autograd, reverse: textbook loop", "a general-purpose tape in Python, point by point; warm", "autograd"),
-    Row("jax_forward", "through", "JAX, forward: textbook loop", "jitted, all points at once, double precision; warm", "jax_forward"),
+    Row("autograd", "through", "autograd, reverse: textbook loop",
+        "a general-purpose tape in Python, point by point; warm", "autograd"),
+    Row("jax_forward", "through", "JAX, forward: textbook loop",
+        "jitted, all points at once, double precision; warm", "jax_forward"),
     Row("one_sided", "differences", "one-sided differences",
-        "of the module: step 2^-26 of each parameter, into its range; every further solve warm from the root", ("module", "one_sided", WARM)),
+        "of the module: step 2^-26 of each parameter, into its range; every further solve warm from the root",
+        ("module", "one_sided", WARM)),
     Row("central", "differences", "central differences",
-        "of the module: step 6.1e-6 of each parameter; every further solve warm from the root", ("module", "central", WARM)),
-    Row("newton_c", "hand", "textbook loop in C", "implicit rule by the module's kernel; cold", ("byhand", "newton", COLD)),
+        "of the module: step 6.1e-6 of each parameter; every further solve warm from the root",
+        ("module", "central", WARM)),
+    Row("newton_c", "hand", "textbook loop in C", "implicit rule by the module's kernel; cold",
+        ("byhand", "newton", COLD)),
     Row("newton_c_warm", "hand", "textbook loop in C, warm", "the same, warm", ("byhand", "newton", WARM)),
-    Row("brent_c", "hand", "Brent's method in C", "to 4 ulp; implicit rule by the module's kernel; cold", ("byhand", "brent", COLD)),
+    Row("brent_c", "hand", "Brent's method in C", "to 4 ulp; implicit rule by the module's kernel; cold",
+        ("byhand", "brent", COLD)),
     Row(BRENT_PYTHON, "hand", "SciPy brentq, from Python",
         "point by point, residual in plain Python, to 4 ulp; implicit rule in plain Python; cold", "brentq"),
-    Row("newton_scalar", "hand", "SciPy newton, from Python", "the same with the slope given, unsafeguarded; warm", "newton_scalar"),
+    Row("newton_scalar", "hand", "SciPy newton, from Python",
+        "the same with the slope given, unsafeguarded; warm", "newton_scalar"),
     Row("newton_array", "hand", "SciPy newton over arrays",
         "all points at once in NumPy, unsafeguarded; implicit rule in NumPy; warm", "newton_array"),
-    Row("find_root", "hand", "SciPy elementwise.find_root", "all points at once in NumPy, bracketed, to 4 ulp; implicit rule in NumPy; cold",
-        "find_root"),
-    Row("jax_implicit", "hand", "JAX, implicit rule: textbook loop", "jitted, all points at once, double precision; warm", "jax_implicit"),
+    Row("find_root", "hand", "SciPy elementwise.find_root",
+        "all points at once in NumPy, bracketed, to 4 ulp; implicit rule in NumPy; cold", "find_root"),
+    Row("jax_implicit", "hand", "JAX, implicit rule: textbook loop",
+        "jitted, all points at once, double precision; warm", "jax_implicit"),
 )
 BY_KEY = {row.key: row for row in ROWS}
 
 
 @dataclass(frozen=True)
 class Outcome:
-    """What a row computed: y (n, M), jac (n, M, N), failed (n,), count (n,) or None: evaluations or taped operations."""
+    """What a row computed: y (n, M), jac (n, M, N), failed (n,); count (n,), evaluations or taped operations, or None."""
     y: np.ndarray
     jac: np.ndarray
     failed: np.ndarray
@@ -100,7 +113,8 @@ class Compiled:
         wanted = np.array(problem.wanted, np.intc)
         self.library.rw_prepare(self._of(problem.floors), self._of(problem.middles), self._of(wanted, "int"))
         self.arguments = [self._of(self.points), self._of(self.start)]
-        self.buffers = [self._of(self.y), self._of(self.jac), self._of(self.failed, "int"), self._of(self.count, "long")]
+        self.buffers = [self._of(self.y), self._of(self.jac), self._of(self.failed, "int"),
+                        self._of(self.count, "long")]
 
     def _of(self, array, kind="double"):
         return self.ffi.cast(f"{kind} *", array.ctypes.data)

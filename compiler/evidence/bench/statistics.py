@@ -8,7 +8,7 @@ _T = {1: 12.706, 2: 4.303, 3: 3.182, 4: 2.776, 5: 2.571, 6: 2.447, 7: 2.365, 8: 
 
 
 def ratio(above, below):
-    """(ratio, lower, upper): geometric mean of the ratios of pairs of times, one pair a process, and its 95 % interval."""
+    """(ratio, lower, upper): geometric mean of the ratios of times, one pair a process, and its 95 % interval."""
     logs = [math.log(a/b) for a, b in zip(above, below)]
     middle = statistics.fmean(logs)
     if len(logs) < 2:

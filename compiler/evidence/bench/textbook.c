@@ -1,6 +1,6 @@
 /* SPDX-License-Identifier: 0BSD */
-/* Newton's method kept inside its bracket by bisection, as it stands in textbooks: what a careful user writes by hand.
-   It has no error bound and no caveats, so it is leaner than the module's loop. Included with `double` as it is, or as a
+/* Newton's method kept inside its bracket by bisection, as textbooks have it: what a careful user writes by hand. It
+   has no error bound and no caveats, so it is leaner than the module's loop. Included with `double` as it is, or as a
    number that carries derivatives. */
 
 #define RW_NEAR 8.881784197001252e-16 /* a step of four units of the last place ends the iteration */

@@ -88,7 +88,7 @@ BY_KEY = {row.key: row for row in ROWS}
 
 @dataclass(frozen=True)
 class Outcome:
-    """What a row computed: y (n, M), jac (n, M, N), failed (n,); count (n,), evaluations or taped operations, or None."""
+    """What a row computed: y (n, M), jac (n, M, N), failed (n,), and count (n,), of evaluations or taped operations."""
     y: np.ndarray
     jac: np.ndarray
     failed: np.ndarray

@@ -118,7 +118,7 @@ def test_what_certainly_has_no_value_is_told_from_what_is_only_imprecise():
 
 @pytest.mark.parametrize("case", cases(), ids=lambda case: case.id)
 def test_no_verdict_contradicts_what_is_known(case):
-    verdicts = certificate(case.text)
+    verdicts = certificate(case.text, 2000)
     for claim in CLAIMS:
         verdict = verdicts.claim(claim).verdict
         assert not (case.truth[claim] is True and verdict == "refuted"), claim
@@ -152,6 +152,38 @@ def test_a_shipped_spec_is_proved(name):
     assert set(prove(closed, boxes=FEW).verdicts.values()) == {"proved"}
 
 
+def test_a_zero_on_a_switch_is_refuted_between_two_points():
+    claim = certificate(next(case.text for case in cases() if case.id == "kink_at_root")).claim("kink")
+    assert claim.verdict == "refuted" and abs(float(dict(claim.witness.point)["a"])) < 1e-6
+
+
+def test_a_flat_zero_is_refuted_at_its_place():
+    claim = certificate(next(case.text for case in cases() if case.id == "triple_root")).claim("slope")
+    assert claim.verdict == "refuted" and claim.witness.point[0][0] == "a"
+
+
+def test_bounds_of_slope_and_sensitivities_hold_and_are_sharp():
+    # x^2 = a over [1, 9]: slope 2*sqrt(a) from 2 up, dx/da = 1/(2*sqrt(a)) up to 1/2.
+    numbers = dict(certificate(spec("square", "x^2 = a", ("0.5", "4"), {"a": (1, 9)})).claim("slope").numbers)
+    assert 1.0 <= numbers["least_slope"] <= 2.0
+    assert 0.5 <= numbers["dx/da"] <= 0.6
+
+
+def test_a_bound_relative_to_a_pivot_holds_in_the_units_of_the_spec():
+    # The slope of a*x - b is a, at least 3.
+    numbers = dict(certificate(spec("product", "a*x = b", ("0", "4*b/a"), {"a": (3, 30), "b": (1, 2)})).claim("slope").numbers)
+    assert 1.0 <= numbers["least_slope"] <= 3.0
+
+
+def test_a_requirement_that_makes_the_proof_go_through_is_proposed():
+    text = spec("branch", "x^2 = a", ("0", "2"), {"a": (0, 4)})
+    found = certificate(text, 3000)
+    assert found.claim("slope").verdict != "proved"
+    assert any("a >= " in line for line in found.advice)
+    limit = found.advice[0].split("a >= ")[1].split('"')[0]
+    assert certificate(spec("branch", "x^2 = a", ("0", "2"), {"a": (0, 4)}, require=(f"a >= {limit}",)), 20_000).claim("unique").verdict == "proved"
+
+
 # -- the certificate
 
 def test_a_certificate_survives_its_text():
@@ -170,3 +202,8 @@ def test_a_text_that_is_no_certificate_is_refused():
 def test_the_same_boxes_give_the_same_certificate():
     text = next(case.text for case in cases() if case.id == "fold_in_a_sliver")
     assert dump(certificate(text, 500)) == dump(certificate(text, 500))
+
+
+def test_the_number_of_workers_changes_nothing():
+    text = spec("many_boxes", "x + sin(9*x*b)/10 = a", ("-2", "2"), {"a": (-1, 1), "b": (0, 1)})
+    assert dump(certificate(text, 6000, workers=1)) == dump(certificate(text, 6000, workers=3))

@@ -173,7 +173,8 @@ class Chart:
                 other = graph.sub(node, graph.mul(graph.number(ratio), slack.nodes[-1]))
                 nodes = dict.fromkeys([self.cancelling.of(other), *self._expanded(other)])
                 nodes = tuple(twin for twin in nodes if self._cost(twin) <= _LONGEST)
-                if nodes and ratio:
+                cancelled = min(map(self._cost, nodes), default=_LONGEST) < self._cost(node) + self._cost(slack.nodes[-1])
+                if cancelled and ratio:
                     found.append((-1 if ratio > 0 else 1, Form(nodes, ())))
         return tuple(found)
 

@@ -5,7 +5,7 @@ from dataclasses import fields
 
 import numpy as np
 
-CHUNK = 1024            # boxes judged at once
+CHUNK = 512             # boxes judged at once
 WAVE = 4 * CHUNK        # boxes of a wave
 
 _judges = {}            # name -> function of arrays (low, high), in this process and in those forked from it

@@ -45,11 +45,11 @@ class Function:
     """One real function f of one variable. `image` maps an array of points to arrays (low, high) around the values.
 
     `ball` maps an `arb` or an `arb_series` to its image. Cells have the absolute width `grid`, or, where grid is None, cut every binade
-    into 64. `exact` holds points with values that are doubles.
+    into 64. `exact` holds points with values that are doubles, `tails` (from, to, low, high) where the function is all but constant.
     """
 
-    def __init__(self, ball, grid=None, exact=(), low=-math.inf, high=math.inf):
-        self.ball, self.grid, self.exact, self.low, self.high = ball, grid, exact, low, high
+    def __init__(self, ball, grid=None, exact=(), low=-math.inf, high=math.inf, tails=()):
+        self.ball, self.grid, self.exact, self.low, self.high, self.tails = ball, grid, exact, low, high, tails
         self.rows = {}
         self.table = np.zeros((64, TERMS + 3))
 
@@ -72,10 +72,14 @@ class Function:
         polynomial = within & (row[..., TERMS] >= 0.0) & (error <= _SHARP * np.abs(value) + _TINY)
         low = np.where(polynomial, down(value - error), low)
         high = np.where(polynomial, up(value + error), high)
-        left, places = np.unique(x[~polynomial & np.isfinite(x)], return_inverse=True)
+        rest = ~polynomial & np.isfinite(x)
+        for start, stop, bottom, top in self.tails:
+            tail = (x >= start) & (x <= stop)
+            low, high, rest = np.where(tail, bottom, low), np.where(tail, top, high), rest & ~tail
+        left, places = np.unique(x[rest], return_inverse=True)
         if left.size:
             values = np.array([self.direct(float(point)) for point in left])[places.ravel()]
-            low[~polynomial & np.isfinite(x)], high[~polynomial & np.isfinite(x)] = values[:, 0], values[:, 1]
+            low[rest], high[rest] = values[:, 0], values[:, 1]
         for point, at in self.exact:
             low, high = np.where(x == point, at, low), np.where(x == point, at, high)
         return np.maximum(low, self.low), np.minimum(high, self.high)
@@ -150,7 +154,7 @@ def power(exponent):
 
 _HALF_TURN = float(up(math.pi / 2))
 FUNCTIONS = {
-    "exp": Function(_method("exp"), 2.0 ** -6, ((0.0, 1.0),), low=0.0),
+    "exp": Function(_method("exp"), 2.0 ** -6, ((0.0, 1.0),), low=0.0, tails=((-1e300, -746.0, 0.0, 5e-324),)),
     "expm1": Function(_method("expm1") if hasattr(flint.arb_series, "expm1") else
                       (lambda x: x.exp() - 1 if isinstance(x, flint.arb_series) else x.expm1()), 2.0 ** -6, ((0.0, 0.0),), low=-1.0),
     "log": Function(_method("log"), None, ((1.0, 0.0),)),
@@ -172,7 +176,8 @@ FUNCTIONS = {
     "acosh": Function(lambda x: (x + (x * x - 1).sqrt()).log() if isinstance(x, flint.arb_series) else x.acosh(), None, ((1.0, 0.0),),
                       low=0.0),
     "atanh": Function(lambda x: ((1 + x).log() - (1 - x).log()) / 2 if isinstance(x, flint.arb_series) else x.atanh(), None, ((0.0, 0.0),)),
-    "erf": Function(_method("erf"), 2.0 ** -6, ((0.0, 0.0),), -1.0, 1.0),
-    "erfc": Function(_method("erfc"), 2.0 ** -8, ((0.0, 1.0),), 0.0, 2.0),
+    "erf": Function(_method("erf"), 2.0 ** -6, ((0.0, 0.0),), -1.0, 1.0, ((6.0, 1e300, 1.0 - 2.0 ** -53, 1.0), (-1e300, -6.0, -1.0, 2.0 ** -53 - 1.0))),
+    # erfc(x) < exp(-x^2)/(x*sqrt(pi)), and erfc(-x) = 2 - erfc(x).
+    "erfc": Function(_method("erfc"), 2.0 ** -8, ((0.0, 1.0),), 0.0, 2.0, ((27.5, 1e300, 0.0, 5e-324), (-1e300, -6.0, 2.0 - 2.0 ** -52, 2.0))),
     "cbrt": Function(_cbrt, None, ((0.0, 0.0), (1.0, 1.0), (-1.0, -1.0))),
 }

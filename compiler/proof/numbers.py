@@ -10,6 +10,7 @@ from rootwright.proof.functions import ends
 from rootwright.proof.intervals import Interval
 from rootwright.proof.ranges import as_ball, exact_ends
 from rootwright.proof.search import outside, split
+from rootwright.proof.sensitivities import program_inputs
 
 _LARGEST = 1e307                # a value below it in exact arithmetic is finite in doubles, rounding included
 _ROUNDS = 40
@@ -80,18 +81,9 @@ def doubles_are_finite(domain, closure, limit, boxes=4000):
 
 
 def _finite(domain, program, roots, order, low, high):
-    chart = domain.lower
-    inputs = {name: Interval(low[:, k], high[:, k]) for k, name in enumerate(chart.variables[:-1])}
-    for parameter in domain.model.parameters:
-        inputs.setdefault(parameter.name, Interval(np.array([0.0]), np.array([0.0])))
-    lower, upper = (chart.natural(form, low, high) for form in chart.bracket)
+    inputs = program_inputs(domain, low, high)
     with np.errstate(all="ignore"):
-        share_low, share_high = low[:, -1], high[:, -1]
-        bottom = lower.low + share_low * np.maximum(upper.low - lower.low, 0.0)
-        top = np.minimum(upper.high, lower.high + share_high * (upper.high - lower.low))
-        margin = 1e-12 * np.maximum(np.abs(bottom), np.abs(top))
-        inputs[domain.model.unknown.name] = Interval(bottom - margin, top + margin)
-        values = evaluate(program.instructions, roots, chart.arithmetic, inputs)
+        values = evaluate(program.instructions, roots, domain.lower.arithmetic, inputs)
     fine = np.ones(len(low), bool)
     for node in order:
         value = values[node]

@@ -10,21 +10,26 @@ Over the real numbers, with the decimals that the author wrote:
 What is not proved is looked at point by point for a refutation. What is neither is open, with its share of the range.
 """
 
+import json
+from dataclasses import replace
+
 import numpy as np
 
 from rootwright.calculus.lower import Lowering
-from rootwright.proof.advice import advise
+from rootwright.proof.advice import proposals, relative_name, with_requirement
 from rootwright.proof.certificate import Certificate, Claim
 from rootwright.proof.crew import Crew
 from rootwright.proof.numbers import doubles_are_finite, slope_bound
 from rootwright.proof.ranges import as_ball, exact_ends
 from rootwright.proof.refute import Examiner
 from rootwright.proof.scaling import symmetries
+from rootwright.proof.sensitivities import sensitivity_bounds
 from rootwright.proof.settle import Domain, Limit, Outcome, search_ends, search_inside, share
 from rootwright.proof.switches import refute_kink
 
 BOXES = 60_000
 _ENDS, _INSIDE = 0.4, 0.9           # of the boxes that may be spent, by the end of each search
+_TRIAL = 20_000                     # boxes for trying a proposal
 _NEEDS = {                          # what is asked of the boxes for each claim
     "defined": ("ordered", "defined"),
     "exists": ("ordered", "change", "continuous"),
@@ -53,7 +58,8 @@ class _Proof:
         self.domain = Domain(self.model, scaling) if scaling else self.plain
         self.outcome = Outcome()
 
-    def certificate(self, seen):
+    def search(self):
+        """Both searches, as far as the limit goes."""
         boxes = self.limit.boxes
         with Crew(self.domain.judges(), self.workers) as crew:
             search_ends(self.domain, crew, self.limit, _ENDS * boxes, self.outcome)
@@ -61,6 +67,9 @@ class _Proof:
                 last = index == len(self.domain.charts) - 1
                 ceiling = (_INSIDE if last else 0.5 * (_ENDS + _INSIDE)) * boxes
                 search_inside(self.domain, index, crew, self.limit, ceiling, self.outcome, ("defined", "continuous", "unique", "kink"))
+
+    def certificate(self, seen):
+        self.search()
         proved = {claim for claim, needs in _NEEDS.items() if not any(need in self.outcome.open for need in needs)}
         if len(self.outcome.rises) > 1:
             if self.model.unknown.root == "only":
@@ -69,12 +78,13 @@ class _Proof:
         if not slope > 0.0:
             proved -= {"slope"}
         witnesses = self._refutations(set(_NEEDS) - proved)
+        sensitivities = sensitivity_bounds(self.plain, self.closure, self.limit) if "slope" in proved else {}
         finite = doubles_are_finite(self.plain, self.closure, self.limit)
-        claims = tuple(self._claim(name, proved, witnesses, slope, finite, seen) for name in _NEEDS)
+        claims = tuple(self._claim(name, proved, witnesses, slope, sensitivities, finite, seen) for name in _NEEDS)
         return Certificate(self.model.name, self.model.digest,
                            tuple((p.name, p.low.text, p.high.text) for p in self.model.parameters),
                            tuple(condition.text for condition in self.model.require), self._relative(),
-                           self.limit.spent, claims, advise(self, proved, witnesses))
+                           self.limit.spent, claims, self._advice())
 
     def _refutations(self, open_claims):
         if not open_claims:
@@ -96,7 +106,7 @@ class _Proof:
                 examiner.found["kink"] = witness
         return {claim: witness for claim, witness in examiner.found.items() if claim in open_claims}
 
-    def _claim(self, name, proved, witnesses, slope, finite, seen):
+    def _claim(self, name, proved, witnesses, slope, sensitivities, finite, seen):
         verdict = "refuted" if name in witnesses else "proved" if name in proved else "open"
         lefts = [left for need in _NEEDS[name] for left in self.outcome.open.get(need, [])]
         reason, numbers, doubles, left_open = "", [], "", 0.0
@@ -110,7 +120,7 @@ class _Proof:
             elif name == "slope" and not lefts:
                 reason, left_open = "no positive bound was found", 1.0
         if name == "slope" and verdict == "proved":
-            numbers.append(("least_slope", slope))
+            numbers += [("least_slope", slope), *sensitivities.items()]
         if name == "iterations":
             numbers.append(("limit", float(self.closure.limit)))
             if seen is not None:
@@ -132,14 +142,21 @@ class _Proof:
 
     def _relative(self):
         """((parameter, what stands for it), ...): `sag/L` for `sag`."""
-        if not self.domain.scaling:
-            return ()
-        words = []
-        for name in self.domain.ranges.names[:-1]:
-            powers = self.domain.scaling.powers.get(name, {})
-            if powers:
-                words.append((name, name + "".join(f"*{p}^({-power})" if power != 1 else f"/{p}" for p, power in sorted(powers.items()))))
-        return tuple(words)
+        names = ((name, relative_name(self.domain, name)) for name in self.domain.ranges.names[:-1])
+        return tuple((name, text) for name, text in names if name != text)
+
+    def _advice(self):
+        """The first proposal with which nothing is left open."""
+        for condition in proposals(self.domain, self.outcome)[:2]:
+            model = with_requirement(self.model, condition)
+            limit = Limit(min(self.limit.boxes, _TRIAL))
+            limit.until = self.limit.until
+            trial = _Proof(replace(self.closure, model=model), limit, self.workers)
+            trial.search()
+            if not any(need != "kink" for need in trial.outcome.open) and len(trial.outcome.rises) == 1:
+                require = ", ".join(json.dumps(text) for text in (*(condition.text for condition in self.model.require), condition))
+                return (f"with this under [domain] the proof goes through: require = [{require}]",)
+        return ()
 
 
 def relative(chart):

@@ -153,27 +153,33 @@ def _factor(chart, factor, low, high):
     values = chart.natural(factor.form, low, high)
     bottom, top = values.low.copy(), values.high.copy()
     smear = np.zeros(low.shape)
-    left = np.nonzero(~((bottom > 0) | (top < 0)))[0]
-    for sign, relaxed in factor.relaxed if len(left) else ():
-        part = chart.natural(relaxed, low[left], high[left])
-        first, last = part.low.copy(), part.high.copy()
-        open_ = np.nonzero(~((first >= 0) if sign < 0 else (last <= 0)) & ~part.jump)[0]
-        if len(open_):
-            first[open_], last[open_], _, _ = chart.sharp(relaxed, low[left[open_]], high[left[open_]])
-        if sign < 0:
-            bottom[left] = np.maximum(bottom[left], first)
-        else:
-            top[left] = np.minimum(top[left], last)
-    left = left[~((bottom[left] > 0) | (top[left] < 0)) & ~values.jump[left]]
+    left = np.nonzero(~((bottom > 0) | (top < 0)) & ~values.jump)[0]
     if len(left):
         first, last, below, above = chart.sharp(factor.form, low[left], high[left])
         smear[left] = normalised(below, above, low[left], high[left])
         bottom[left], top[left] = np.maximum(bottom[left], first), np.minimum(top[left], last)
-        rest = np.nonzero(~((bottom[left] >= 0) | (top[left] <= 0)))[0]
-        if len(rest) and chart.slack_forms:
-            at = left[rest]
-            bottom[at], top[at] = _within_range(chart, factor.form, low[at], high[at], below[rest], above[rest], bottom[at], top[at])
+        open_ = ~((bottom[left] > 0) | (top[left] <= 0))
+        rest = left[open_]
+        for sign, relaxed in factor.relaxed if len(rest) else ():
+            _relax(chart, sign, relaxed, low, high, bottom, top, rest)
+        keep = np.nonzero(open_ & ~((bottom[left] >= 0) | (top[left] <= 0)))[0]
+        if len(keep) and chart.slack_forms:
+            at = left[keep]
+            bottom[at], top[at] = _within_range(chart, factor.form, low[at], high[at], below[keep], above[keep], bottom[at], top[at])
     return (bottom, top), smear
+
+
+def _relax(chart, sign, relaxed, low, high, bottom, top, at):
+    """Bounds from a form less a multiple of a slack, into `bottom` and `top` of the boxes `at`."""
+    part = chart.natural(relaxed, low[at], high[at])
+    first, last = part.low.copy(), part.high.copy()
+    open_ = np.nonzero(~((first >= 0) if sign < 0 else (last <= 0)) & ~part.jump)[0]
+    if len(open_):
+        first[open_], last[open_], _, _ = chart.sharp(relaxed, low[at[open_]], high[at[open_]])
+    if sign < 0:
+        bottom[at] = np.maximum(bottom[at], first)
+    else:
+        top[at] = np.minimum(top[at], last)
 
 
 def _within_range(chart, form, low, high, below, above, bottom, top):

@@ -8,7 +8,8 @@ import numpy as np
 
 from rootwright.proof.chart import Chart
 from rootwright.proof.crew import WAVE
-from rootwright.proof.ranges import ranges
+from rootwright.proof.functions import ends
+from rootwright.proof.ranges import as_ball, exact_ends, ranges
 from rootwright.proof.search import judge_ends, judge_inside, split
 
 
@@ -72,6 +73,7 @@ class Domain:
         self.upper = self.charts[-1]
         self.ranges = ranges(model, self.lower.variables, scaling)
         self.opened = [model.unknown.open_lower, True]
+        self.bounds = [(ends(as_ball(low))[0], ends(as_ball(high))[1]) for low, high in exact_ends(model).values()]
 
     def whole(self):
         """The box of everything that each chart has to look after."""

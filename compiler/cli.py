@@ -91,8 +91,8 @@ def _parser():
                           help="c: all in NAME.h; one source file defines NAME_IMPLEMENTATION before it includes it")
     compile_.add_argument("--fortran", action="store_true",
                           help="c: NAME_module.f90 besides, the interface for Fortran (iso_c_binding)")
-    compile_.add_argument("--precision", type=_precision, default="double", metavar="double",
-                          help="arithmetic of the module")
+    compile_.add_argument("--precision", choices=("double", "single"), default="double",
+                          help="arithmetic of the module: double (default); c: single, float throughout")
     compile_.add_argument("--require-proof", action="store_true",
                           help="write nothing unless existence and uniqueness of the root are proved for this very spec")
     _add_order(compile_, "derivatives in the module: 0 none, 1 first (default), 2 with hessian and tangent_adjoint")
@@ -168,13 +168,6 @@ def _order(text):
     if text in ("0", "1", "2"):
         return int(text)
     raise argparse.ArgumentTypeError(f"{text!r} is not 0, 1 or 2")
-
-
-def _precision(text):
-    if text == "double":
-        return text
-    raise argparse.ArgumentTypeError("single precision is not available yet; leave the option out"
-                                     if text == "single" else f"{text!r} is not a precision; leave the option out")
 
 
 def _number_of(what):
@@ -319,10 +312,11 @@ def _compile(arguments):
 
     worst, written = OK, {}
     options = {name: True for name in ("single_header", "fortran") if getattr(arguments, name)}
-    if options and arguments.target != "c":
-        raise Refusal(f"--{next(iter(options)).replace('_', '-')} is for the C target; leave it or --target out")
+    of_c = [f"--{name.replace('_', '-')}" for name in options] + ["--precision single"]*(arguments.precision == "single")
+    if of_c and arguments.target != "c":
+        raise Refusal(f"{of_c[0]} is for the C target; leave it or --target out")
     for spec in arguments.specs:
-        closure, _ = _closure(spec, arguments.order)
+        closure, _ = _closure(spec, arguments.order, arguments.precision)
         if closure is None:
             worst = WRONG
             continue
@@ -434,7 +428,7 @@ def _demo(arguments):
 # -- specs, files, streams
 
 
-def _closure(spec, order=1):
+def _closure(spec, order=1, precision="double"):
     """(Closure or None, diagnostics as data); what is wrong goes to stderr."""
     from rootwright import pipeline
     from rootwright.spec.diagnostics import harmless, render
@@ -446,7 +440,7 @@ def _closure(spec, order=1):
             print(f"{harmless(spec)}: {diagnostic.message}\n  {diagnostic.help}", file=sys.stderr)
         return None, [_as_data(diagnostic) for diagnostic in error.diagnostics]
     try:
-        closure, diagnostics = pipeline.closure(data, filename, order)
+        closure, diagnostics = pipeline.closure(data, filename, order, precision)
     except pipeline.SpecError as error:
         closure, diagnostics = None, error.diagnostics
     print("\n".join(render(diagnostic) for diagnostic in diagnostics), end="", file=sys.stderr)

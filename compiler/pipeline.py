@@ -57,12 +57,16 @@ def model(data, filename):
     return checked, diagnostics
 
 
-def closure(data, filename, order=1):
-    """Closure of a spec's bytes, with derivatives up to an order (0, 1 or 2), and warnings. Raises SpecError."""
+def closure(data, filename, order=1, precision="double"):
+    """Closure of a spec's bytes, with derivatives up to an order (0, 1 or 2), and warnings. Raises SpecError.
+
+    precision: "double", or "single" for the target "c".
+    """
+    from rootwright.calculus.precision import PRECISIONS
     from rootwright.calculus.soundness import examine
 
     checked, warnings = model(data, filename)
-    closed, found = examine(checked, data, filename, order)
+    closed, found = examine(checked, data, filename, order, PRECISIONS[precision])
     if closed is None:
         raise SpecError([*warnings, *found])
     return closed, (*warnings, *found)
@@ -129,9 +133,10 @@ def load(spec, target="c", order=1):
 
 def remake(data, filename, options):
     """Texts that this compiler emits for a spec with the options that an emitted file names; None where it cannot."""
-    others = {name.replace("-", "_"): value or True for name, value in options.items() if name != "order"}
+    others = {name.replace("-", "_"): value or True for name, value in options.items()}
+    shaping = {"order": int(others.pop("order", 1)), "precision": others.pop("precision", "double")}
     try:
-        closed, _ = closure(data, filename, int(options.get("order", 1)))
+        closed, _ = closure(data, filename, **shaping)
         closed, _ = promised(closed, filename)
         return tuple(emit(closed, **others).values())
     except (SpecError, LookupError, TypeError, ValueError):

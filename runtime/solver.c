@@ -53,7 +53,7 @@ static double rw_from_ordinal(int64_t n)
     return x;
 }
 
-/* How many steps from double to double lead from a up to b: at most 2^64 - 2^53, so it needs all 64 bits. */
+/* How many steps from double to double lead from a up to b: so many that it needs all bits. */
 static uint64_t rw_gap(double a, double b)
 {
     return (uint64_t)rw_ordinal(b) - (uint64_t)rw_ordinal(a);
@@ -171,9 +171,9 @@ static int rw_descends(const double p[], rw_sample side, double rising, double w
 /* Narrows the bracket between two samples of opposite signs down to a root, and leaves the root in best.
    Returns 0 or a status.
    The number of doubles between low and high at least halves over every three evaluations: two points from models of
-   the residual, or one of them the arithmetic middle, then the middle double. There are less than 2^64 doubles, so
-   the ends become adjacent within 3*64 evaluations, but for those at which the residual is not a number. A last step
-   of Newton's may follow, for its accuracy. */
+   the residual, or one of them the arithmetic middle, then the middle double. So the
+   ends become adjacent within three evaluations for every bit of a double, but for those at which the residual is not
+   a number. A last step of Newton's may follow, for its accuracy. */
 static int rw_narrow(const double p[], rw_sample *low, rw_sample *high, rw_sample *best, double start, rw_point *r)
 {
     const double rising = high->g > 0.0 ? 1.0 : -1.0;
@@ -207,19 +207,19 @@ static int rw_narrow(const double p[], rw_sample *low, rw_sample *high, rw_sampl
         zero = 0;
         if (rw_usable(*best, rising)) {
             step = -best->g / best->slope;
-            if (fabs(step) <= 0x1p-26 * fabs(best->x)) {
+            if (fabs(step) <= sqrt(DBL_EPSILON) * fabs(best->x)) {
                 /* Newton's step leaves the error bend/2 * step. It is the last one if that is below half an ulp, or if
                    the rest is rounding. Beside a pole at an open end, where the step is as small, bend is 1 or more. */
                 bound = rw_rounding(p, best->x, &slope_rounding, &curvature);
                 bend = fabs(curvature * step / best->slope);
                 zero = rw_is_zero(best->g, bound, largest);
-                closing = bend <= 0.25 && (zero || bend * fabs(step) <= 0x1p-53 * fabs(best->x));
+                closing = bend <= 0.25 && (zero || bend * fabs(step) <= 0.5 * DBL_EPSILON * fabs(best->x));
                 if (closing) {
                     x = best->x + step;
                     closing = rw_between(x, low->x, high->x);
-                    beside = fabs(best->g) + fabs(best->slope) * 0x1p-52 * fabs(best->x);
+                    beside = fabs(best->g) + fabs(best->slope) * DBL_EPSILON * fabs(best->x);
                     zero = zero || !(fabs(x - best->x) > 0.0); /* or as near to it as doubles come */
-                    if (closing ? zero && fabs(step) <= 0x1p-50 * fabs(best->x)
+                    if (closing ? zero && fabs(step) <= 4.0 * DBL_EPSILON * fabs(best->x)
                                 : zero || fabs(step < 0.0 ? low->g : high->g) <= beside) {
                         return 0;
                     }
@@ -308,8 +308,8 @@ static double rw_reach(const double p[], double x, double end, int negative, rw_
     if (!(reach > 0.0)) {
         return 0.0;
     }
-    (void)frexp(fmax(fabs(x), 0x1p-1022), &unsure);
-    unsure -= 54; /* half the spacing of doubles at x */
+    (void)frexp(fmax(fabs(x), DBL_MIN), &unsure);
+    unsure -= DBL_MANT_DIG + 1; /* half the spacing of doubles at x */
     (void)frexp(0.5 * end - 0.5 * x, &sure);
     sure += 1; /* 2^sure exceeds the distance of the end */
     while (sure - unsure > 1 && r->evaluations < RW_LIMIT) {
@@ -380,7 +380,7 @@ static int rw_certify(const double p[], rw_sample root, const double end[2], con
         }
     }
     if (fabs(root.g) + bound > 0.0) { /* not exact, even where the bound underflows */
-        error = fmax(error, 0x1p-1074);
+        error = fmax(error, DBL_MIN * DBL_EPSILON);
     }
     error += at_end;
     farthest = fmax(root.x - end[0] + rounding[0], end[1] - root.x + rounding[1]);

@@ -90,6 +90,7 @@ def solve(problem, start=NAN):
 # -- the C core
 
 _POINT = r"""
+#include <float.h>
 #include <math.h>
 #include <stddef.h>
 #include <stdint.h>

@@ -22,6 +22,7 @@ from rootwright.calculus.constants import NotReal, nearest
 from rootwright.calculus.differentiate import gated, partials, sweep
 from rootwright.calculus.lower import Lowering, comparisons
 from rootwright.calculus.magnitude import Magnitudes
+from rootwright.calculus.precision import DOUBLE, Precision
 from rootwright.calculus.program import Graph, Program
 from rootwright.calculus.rounding import Rounding
 from rootwright.calculus.second_order import hessian
@@ -42,22 +43,23 @@ class Closure:
     model: Model
     program: Program
     kernels: dict[str, tuple[str, ...]]
-    ranges: tuple[tuple[float, float], ...]     # nearest doubles of the parameters' ranges
+    ranges: tuple[tuple[float, float], ...]     # the parameters' ranges, rounded
     limit: int                                  # evaluations that always suffice
-    constants: dict[int, tuple[float, float]]   # constant instruction -> nearest double, relative rounding in 2^-53
+    constants: dict[int, tuple[float, float]]   # constant instruction -> nearest number, relative rounding in 2^-digits
     order: int                                  # derivatives up to this order: 0, 1 or 2
+    precision: Precision = DOUBLE
     promise: Promise | None = None              # set where a certificate came along
 
 
-def close(model, order=1):
+def close(model, order=1, precision=DOUBLE):
     """Closure of a checked Model with derivatives up to `order`. Raises NotReal where a constant is not finite and real."""
-    return _Closing(model, order).closure()
+    return _Closing(model, order, precision).closure()
 
 
 class _Closing:
-    def __init__(self, model, order):
+    def __init__(self, model, order, precision):
         self.model, self.order = model, order
-        self.graph = graph = Graph()
+        self.graph = graph = Graph(precision=precision)
         self.lowering = Lowering(graph)
         for constant in model.constants:
             node = graph.named(constant.name, self.lowering.lower(constant.expression))
@@ -138,8 +140,8 @@ class _Closing:
             if graph.is_constant(node):
                 _touch(graph, node)
         program = Program(tuple(graph.instructions), dict(graph.labels), self.results)
-        return Closure(model, program, self.kernels, tuple(self.ranges.values()), limit(*hull),
-                       dict(graph.constants), self.order)
+        return Closure(model, program, self.kernels, tuple(self.ranges.values()), limit(*hull, graph.precision),
+                       dict(graph.constants), self.order, graph.precision)
 
     def _derivatives(self, prefix, result):
         """Derivative with respect to the unknown; the adjoints of definitions and parameters get names."""
@@ -227,18 +229,21 @@ def _touch(graph, node):
             graph.constants[node] = (math.inf if exact > 0 else -math.inf, 0.0)
 
 
-def limit(lower, upper):
-    """Evaluations that always suffice: three a halving of the number of doubles in the bracket, both ends, and the closing ones.
+def limit(lower, upper, precision=DOUBLE):
+    """Evaluations that always suffice: three a halving of the number of numbers in the bracket, both ends, and the closing
+    ones.
 
-    Only a bracket that does not depend on the parameters gives fewer than the general 200.
+    Only a bracket that does not depend on the parameters gives fewer than the general 200 (104 in single precision).
     """
+    general = 3 * precision.bits + 8
     if lower[0] != lower[1] or upper[0] != upper[1]:
-        return 200
-    doubles = _ordinal(upper[1]) - _ordinal(lower[0])
-    return min(200, 3 * max(1, doubles.bit_length()) + 5)
+        return general
+    numbers = _ordinal(upper[1], precision) - _ordinal(lower[0], precision)
+    return min(general, 3 * max(1, numbers.bit_length()) + 5)
 
 
-def _ordinal(value):
-    """Position of a double in the ordered list of all doubles."""
-    (bits,) = struct.unpack("<q", struct.pack("<d", value))
-    return bits if bits >= 0 else -(bits & (2 ** 63 - 1))
+def _ordinal(value, precision):
+    """Position of a number in the ordered list of all of a precision, that is of its bits read as a whole number."""
+    integer, real = {64: "qd", 32: "if"}[precision.bits]
+    (bits,) = struct.unpack(f"<{integer}", struct.pack(f"<{real}", value))
+    return bits if bits >= 0 else -(bits & (2 ** (precision.bits - 1) - 1))

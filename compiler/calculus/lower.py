@@ -40,6 +40,7 @@ class Lowering:
             tree, ready = stack.pop()
             if isinstance(tree, Number):
                 values.append(self.graph.number(Fraction(tree.text)))
+                places.setdefault(values[-1], (tree.start, tree.end))
             elif isinstance(tree, Name):
                 values.append(self.names[tree.name])
             elif not ready:

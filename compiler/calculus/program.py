@@ -11,6 +11,7 @@ only arithmetic of exact rational constants. The named methods (`add`, `mul`, ..
 from dataclasses import dataclass, field
 from fractions import Fraction
 
+from rootwright.calculus.precision import DOUBLE, Precision
 from rootwright.operations import OPERATIONS
 
 LEAVES = ("number", "pi", "nan", "input", "named")
@@ -86,6 +87,7 @@ class Graph:
     instructions: list[Instruction] = field(default_factory=list)
     labels: dict[int, str] = field(default_factory=dict)
     constants: dict[int, tuple[float, float]] = field(default_factory=dict)     # kept by `constants.nearest`
+    precision: Precision = DOUBLE           # what constants are rounded to
     _index: dict[Instruction, int] = field(default_factory=dict)
     _constant: list[bool] = field(default_factory=list)
 

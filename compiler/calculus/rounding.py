@@ -2,15 +2,15 @@
 
 For every operation v = op(a, b) the error of v is at most the errors of a and b carried through op, plus the rounding of op itself
 (J. H. Wilkinson, Rounding Errors in Algebraic Processes, 1963; N. J. Higham, Accuracy and Stability of Numerical Algorithms,
-2nd ed. 2002, section 3.3). All errors are counted in units of u = 2^-53, and what is known when the module is generated is
-added up there: the error of v is at most
+2nd ed. 2002, section 3.3). All errors are counted in units of u = 2^-53 (2^-24 in single precision), and what is
+known when the module is generated is added up there: the error of v is at most
 
     u * (relative*|v| + absolute + running)
 
 with two numbers and one instruction, so that a product of ten factors costs the emitted code nothing and a sum costs one line.
-Decimal constants count with the rounding to the nearest double. Where a product or quotient can underflow inside
+Decimal constants count with the rounding to the nearest number. Where a product or quotient can underflow inside
 the operating range, half the smallest subnormal is counted as well. Terms of second order are kept where a divisor or the argument of a root or
-a logarithm is itself uncertain; the rest is covered by `UNIT`, which is 8 % above 2^-53.
+a logarithm is itself uncertain; the rest is covered by the unit in use, which is 8 % above u.
 Not counted: an overflow on the way to a finite value, and a comparison in `where` that falls out otherwise than for real
 numbers: the bound is that of the piece chosen, and the status says `kink`.
 """
@@ -23,11 +23,6 @@ from rootwright.calculus.constants import NotReal, nearest, nearest_rounding
 from rootwright.calculus.magnitude import largest, smallest
 from rootwright.calculus.program import CONDITIONS, Node, needed
 from rootwright.operations import OPERATIONS
-
-UNIT = Fraction("1.2e-16")
-_SUBNORMAL = 2.0 ** -1022          # half the smallest subnormal, 2^-1075, in units of u
-_SMALL = 2.0 ** -900               # results above this are far from underflow
-_TINIEST = Fraction(1, 2 ** 1022)  # smallest normal double: keeps a quotient of zeros from being NaN
 
 
 @dataclass(frozen=True, slots=True)
@@ -42,17 +37,21 @@ class Rounding:
 
     def __init__(self, graph, magnitudes):
         self.graph = graph
+        self.precision = graph.precision
         self.magnitudes = magnitudes
         self.errors = {}
+        self.unit = graph.number(self.precision.unit)
+        self.tiniest = graph.number(Fraction(self.precision.smallest))      # keeps a quotient of zeros from being NaN
+        self.coarse = 2.0 ** (self.precision.digits - 10)                   # 2^-10 in units of u
 
     def bound(self, node):
         """Instruction that bounds the absolute rounding error of `node`."""
-        return self.graph.mul(self.graph.number(UNIT), self._units(node))
+        return self.graph.mul(self.unit, self._units(node))
 
     def sign_bound(self, node):
         """Bound on `node` below which its sign is not certain: the part of its error that is not relative to itself."""
         error = self.error(node)
-        return self.graph.mul(self.graph.number(UNIT), self._total(Error(0.0, error.absolute, error.running), node))
+        return self.graph.mul(self.unit, self._total(Error(0.0, error.absolute, error.running), node))
 
     def error(self, node):
         for step in needed(self.graph.instructions, [node], self.errors):
@@ -72,7 +71,7 @@ class Rounding:
         if error.relative:
             total = self._plus(total, self._scaled(error.relative, self._magnitude(node)))
         if error.absolute:
-            total = graph.add(total, graph.number(_upper(error.absolute)))
+            total = graph.add(total, graph.number(self._upper(error.absolute)))
         return total
 
     def _plus(self, total, part):
@@ -102,7 +101,15 @@ class Rounding:
         return self.graph.abs_(node)
 
     def _scaled(self, factor, node):
-        return self.graph.mul(self.graph.number(_upper(factor)), node)
+        return self.graph.mul(self.graph.number(self._upper(factor)), node)
+
+    def _upper(self, factor):
+        """The factor rounded up to three digits: short in print, and still a bound. Multiples of the smallest normal
+        number stay."""
+        if factor == int(factor) or factor < self.precision.smallest * 2.0 ** 58 or factor > 1e290:
+            return Fraction(factor)
+        scale = Fraction(10) ** (2 - math.floor(math.log10(factor)))
+        return Fraction(math.ceil(Fraction(factor) * scale)) / scale
 
     def _tidy(self, error, node):
         """Drop an absolute part that is negligible against |v| over the whole operating range."""
@@ -129,10 +136,11 @@ class Rounding:
             return Error()
         if relative <= 1.0:
             return Error(relative=relative)
-        return Error(absolute=_SUBNORMAL)       # subnormal, or zero for a constant that is not
+        return Error(absolute=self.precision.smallest)       # subnormal, or zero for a constant that is not
 
     def _underflow(self, node):
-        return 0.0 if smallest(self.magnitudes.of(node)) > _SMALL else _SUBNORMAL
+        far = smallest(self.magnitudes.of(node)) > self.precision.smallest * 2.0 ** (2*self.precision.digits + 16)
+        return 0.0 if far else self.precision.smallest
 
     def _sum(self, *parts):
         parts = [part for part in parts if part is not None]
@@ -162,7 +170,7 @@ class Rounding:
                              None if rest.running is None else self._scaled(scale, rest.running))
         carried = self._sum(self._carried(one, b), self._carried(other, a))
         if one.running is not None and other.running is not None:       # the product of the two errors
-            carried = self._plus(carried, self.graph.mul(self.graph.number(UNIT),
+            carried = self._plus(carried, self.graph.mul(self.unit,
                                                              self.graph.mul(one.running, other.running)))
         return Error(one.relative + other.relative + 1.0, self._underflow(node), carried)
 
@@ -193,11 +201,11 @@ class Rounding:
         graph = self.graph
         if not self._is_near_zero(node, units):
             return self._magnitude(node)
-        return graph.max_(graph.sub(self._magnitude(node), graph.mul(graph.number(UNIT), units)), graph.number(_TINIEST))
+        return graph.max_(graph.sub(self._magnitude(node), graph.mul(self.unit, units)), self.tiniest)
 
     def _is_near_zero(self, node, units):
         """True where the value may come so near to zero in the operating range that its error is no longer small beside it."""
-        return largest(self.magnitudes.of(units)) > 2.0 ** 43 * smallest(self.magnitudes.of(node))
+        return largest(self.magnitudes.of(units)) > self.coarse * smallest(self.magnitudes.of(node))
 
     def _where(self, node, condition, a, b):
         if self.graph.instructions[b].op == "nan":
@@ -212,7 +220,7 @@ class Rounding:
         graph, one, other = self.graph, self.error(a), self.error(b)
         if one.running is None and other.running is None and one.absolute == other.absolute == 0.0:
             return Error(max(one.relative, other.relative))
-        units, distance = (self._units(a), self._units(b)), graph.div(graph.abs_(graph.sub(a, b)), graph.number(UNIT))
+        units, distance = (self._units(a), self._units(b)), graph.div(graph.abs_(graph.sub(a, b)), self.unit)
         chosen = [mine if graph.literal(its) == 0 else graph.max_(mine, graph.sub(its, distance))
                   for mine, its in (units, reversed(units))]
         return Error(running=graph.where(first, *chosen))
@@ -232,16 +240,15 @@ class Rounding:
         units = self._total(Error(0.0, error.absolute, error.running), a)
         running = None
         if graph.literal(units) != 0:
-            floor = graph.max_(graph.mul(graph.number(UNIT), units), graph.number(_TINIEST))
+            floor = graph.max_(graph.mul(self.unit, units), self.tiniest)
             running = graph.div(units, graph.sqrt(graph.max_(a, floor)))
         return Error(error.relative / 2.0 + 1.0, 0.0, running)
 
     def _exp(self, node, a):
         run, absolute = self._parts(a)
         if run is not None and self._coarse(run):
-            unit = self.graph.number(UNIT)
-            run = self.graph.div(self.graph.expm1(self.graph.mul(unit, run)), unit)
-        return Error(2.0 * OPERATIONS["exp"].ulps + absolute, self._underflow(node),
+            run = self.graph.div(self.graph.expm1(self.graph.mul(self.unit, run)), self.unit)
+        return Error(2.0 * self.precision.ulps("exp") + absolute, self._underflow(node),
                      None if run is None else self.graph.mul(node, run))
 
     def _logarithm(self, node, a, scale, op):
@@ -250,7 +257,7 @@ class Rounding:
         running = None
         if self.graph.literal(units) != 0:
             running = self._scaled(scale, self.graph.div(units, self._certain(a, units)))
-        return Error(2.0 * OPERATIONS[op].ulps, error.relative * scale, running)
+        return Error(2.0 * self.precision.ulps(op), error.relative * scale, running)
 
     def _log(self, node, a):
         return self._logarithm(node, a, 1.0, "log")
@@ -266,7 +273,7 @@ class Rounding:
         graph = self.graph
         one, other = self.error(a), self.error(b)
         units = self._total(Error(0.0, one.absolute, one.running), a)
-        relative, running = 2.0 * OPERATIONS["pow"].ulps, None
+        relative, running = 2.0 * self.precision.ulps("pow"), None
         if graph.is_constant(b):
             relative += abs(nearest(graph, b)) * one.relative
             parts = [None if graph.literal(units) == 0 else
@@ -281,15 +288,14 @@ class Rounding:
             if graph.is_constant(b) and 0.0 < low and high < math.inf:
                 relative += float(graph.literal(exponent)) * max(abs(math.log(low)), abs(math.log(high)))
             else:
-                logarithm = graph.log(graph.max_(a, graph.number(_TINIEST)))
+                logarithm = graph.log(graph.max_(a, self.tiniest))
                 parts.append(graph.mul(self._magnitude(logarithm), exponent))
         carried = self._sum(*parts)
         if carried is not None:
             running = graph.mul(self._steepest_power(node, a, b, units), carried)
             if self._is_near_zero(a, units) and graph.is_constant(b) and nearest(graph, b) > 0.0:
-                unit = graph.number(UNIT)           # where a itself is within its error: at most (2*error)^b
-                error = graph.mul(unit, units)
-                whole = graph.div(graph.apply("pow", graph.mul(2, error), b), unit)
+                error = graph.mul(self.unit, units)         # where a itself is within its error: at most (2*error)^b
+                whole = graph.div(graph.apply("pow", graph.mul(2, error), b), self.unit)
                 running = graph.where(graph.lt(error, a), running, whole)
         return Error(relative, self._underflow(node), running)
 
@@ -303,7 +309,7 @@ class Rounding:
     def _bounded_slope(self, node, a):
         """sin and cos change by no more than their argument does."""
         run, absolute = self._parts(a)
-        return Error(2.0 * OPERATIONS[self.graph.instructions[node].op].ulps, absolute, run)
+        return Error(2.0 * self.precision.ulps(self.graph.instructions[node].op), absolute, run)
 
     _sin = _cos = _bounded_slope
 
@@ -311,10 +317,10 @@ class Rounding:
         """A function beside a singularity: `carry(units, e)` bounds what the argument's error, e in size, becomes."""
         graph, op = self.graph, self.graph.instructions[node].op
         units = self._units(a)
-        error = Error(2.0 * OPERATIONS[op].ulps, self._underflow(node))
+        error = Error(2.0 * self.precision.ulps(op), self._underflow(node))
         if graph.literal(units) == 0:
             return error
-        distance = graph.max_(graph.mul(graph.number(UNIT), units), graph.number(_TINIEST))
+        distance = graph.max_(graph.mul(self.unit, units), self.tiniest)
         return replace(error, running=carry(units, distance))
 
     def _arc(self, node, a):
@@ -331,28 +337,28 @@ class Rounding:
         units = self._total(Error(0.0, error.absolute, error.running), a)
         running = None
         if graph.literal(units) != 0:
-            distance = graph.max_(graph.mul(graph.number(UNIT), units), graph.number(_TINIEST))
+            distance = graph.max_(graph.mul(self.unit, units), self.tiniest)
             root = graph.cbrt(graph.max_(graph.abs_(a), distance))
             running = graph.div(self._scaled(1.588, units), graph.mul(root, root))
-        return Error(error.relative / 3.0 + 2.0 * OPERATIONS["cbrt"].ulps, 0.0, running)
+        return Error(error.relative / 3.0 + 2.0 * self.precision.ulps("cbrt"), 0.0, running)
 
     def _log1p(self, node, a):
         graph = self.graph
         return self._function(node, a, lambda units, e: graph.div(units, graph.max_(
-            graph.sub(graph.add(1, a), e), graph.number(_TINIEST))))
+            graph.sub(graph.add(1, a), e), self.tiniest)))
 
     def _atanh(self, node, a):
         graph = self.graph
         left = graph.mul(graph.sub(1, a), graph.add(1, a))
         return self._function(node, a, lambda units, e: graph.div(units, graph.max_(
-            graph.sub(left, graph.mul(2, e)), graph.number(_TINIEST))))
+            graph.sub(left, graph.mul(2, e)), self.tiniest)))
 
     def _tan(self, node, a):
         """tan(a + e) - tan(a) = tan(e)*(1 + tan(a)^2)/(1 - tan(a)*tan(e))."""
         graph = self.graph
 
         def carry(units, e):
-            left = graph.max_(graph.sub(1, graph.mul(graph.abs_(node), e)), graph.number(_TINIEST))
+            left = graph.max_(graph.sub(1, graph.mul(graph.abs_(node), e)), self.tiniest)
             return graph.div(graph.mul(units, graph.add(1, graph.mul(node, node))), left)
 
         return self._function(node, a, carry)
@@ -362,7 +368,7 @@ class Rounding:
         one, other = self.error(a), self.error(b)
         parts = [self._total(Error(0.0, error.absolute, error.running), arg) for error, arg in ((one, a), (other, b))]
         running = self._sum(*(part for part in parts if self.graph.literal(part) != 0))
-        return Error(max(one.relative, other.relative) + 2.0 * OPERATIONS["hypot"].ulps, self._underflow(node), running)
+        return Error(max(one.relative, other.relative) + 2.0 * self.precision.ulps("hypot"), self._underflow(node), running)
 
     def _atan2(self, node, a, b):
         """The error across the radius, over what is left of it."""
@@ -370,16 +376,16 @@ class Rounding:
         units = [self._units(a), self._units(b)]
         running = None
         if any(graph.literal(part) != 0 for part in units):
-            error = graph.max_(graph.mul(graph.number(UNIT), graph.add(*units)), graph.number(_TINIEST))
+            error = graph.max_(graph.mul(self.unit, graph.add(*units)), self.tiniest)
             radius = graph.max_(graph.hypot(a, b), error)
             levers = [graph.div(graph.max_(graph.abs_(side), error), radius) for side in (b, a)]
             across = graph.add(graph.mul(levers[0], units[0]), graph.mul(levers[1], units[1]))
-            running = graph.div(across, graph.max_(graph.sub(radius, error), graph.number(_TINIEST)))
-        return Error(2.0 * OPERATIONS["atan2"].ulps, self._underflow(node), running)
+            running = graph.div(across, graph.max_(graph.sub(radius, error), self.tiniest))
+        return Error(2.0 * self.precision.ulps("atan2"), self._underflow(node), running)
 
     def _coarse(self, units):
         """True where an error may be as large as 2^-10 somewhere in the operating range: not small beside 1."""
-        return largest(self.magnitudes.of(units)) > 2.0 ** 43
+        return largest(self.magnitudes.of(units)) > self.coarse
 
     def _general(self, node, instruction):
         """Any other function, all of one argument: its error times the steepest slope within that error."""
@@ -387,13 +393,13 @@ class Rounding:
         (a,) = instruction.args
         units = self._units(a)
         if graph.literal(units) == 0:
-            return Error(2.0 * operation.ulps, self._underflow(node))
+            return Error(2.0 * self.precision.ulps(instruction.op), self._underflow(node))
         steepest, there = a, node
         if self._coarse(units):
-            steepest = _STEEPEST[instruction.op](graph, a, graph.mul(graph.number(UNIT), units))
+            steepest = _STEEPEST[instruction.op](graph, a, graph.mul(self.unit, units))
             there = graph.apply(instruction.op, steepest)
         (slope,) = operation.pullback(graph, graph.number(1), (steepest,), there)
-        return Error(2.0 * operation.ulps, self._underflow(node), graph.mul(graph.abs_(slope), units))
+        return Error(2.0 * self.precision.ulps(instruction.op), self._underflow(node), graph.mul(graph.abs_(slope), units))
 
 
 def _inward(graph, a, error):
@@ -409,11 +415,3 @@ _STEEPEST = {
     "tanh": _inward, "erf": _inward, "atan": _inward, "asinh": _inward, "sinh": _outward, "cosh": _outward,
     "expm1": lambda graph, a, error: graph.add(a, error), "erfc": _inward,
 }
-
-
-def _upper(factor):
-    """The factor rounded up to three digits: short in print, and still a bound. Multiples of the smallest normal double stay."""
-    if factor == int(factor) or factor < 1e-290 or factor > 1e290:
-        return Fraction(factor)
-    scale = Fraction(10) ** (2 - math.floor(math.log10(factor)))
-    return Fraction(math.ceil(Fraction(factor) * scale)) / scale

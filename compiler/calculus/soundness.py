@@ -6,6 +6,7 @@ from rootwright.calculus.closure import close
 from rootwright.calculus.constants import NotReal, nearest
 from rootwright.calculus.doubles import Doubles
 from rootwright.calculus.lower import Lowering
+from rootwright.calculus.precision import DOUBLE
 from rootwright.calculus.program import Graph, interpret
 from rootwright.calculus.sampling import sample
 from rootwright.spec.source import load
@@ -14,27 +15,27 @@ from rootwright.spec.tables import Findings, TooMany
 SAMPLES = 200
 
 
-def examine(model, data, filename, order=1):
+def examine(model, data, filename, order=1, precision=DOUBLE):
     """(Closure, warnings) of a checked Model and the bytes it was read from; (None, diagnostics) where a check fails."""
     source, _, _ = load(data, filename)
-    examination = _Examination(model, Findings(source))
+    examination = _Examination(model, Findings(source), precision)
     try:
         examination.check_constants()
     except TooMany:
         pass                        # as many as anyone wants to read
     if examination.findings.failed:
         return None, examination.findings.in_order()
-    closure = close(model, order)
+    closure = close(model, order, precision)
     examination.check_slope(closure)
     examination.check_brackets(closure)
     return None if examination.findings.failed else closure, examination.findings.in_order()
 
 
 class _Examination:
-    def __init__(self, model, findings):
+    def __init__(self, model, findings, precision):
         self.model = model
         self.findings = findings
-        self.graph = Graph()
+        self.graph = Graph(precision=precision)
         self.lowering = Lowering(self.graph)
         self.checked = set()
 
@@ -80,7 +81,7 @@ class _Examination:
                     nearest(self.graph, part)
                 except NotReal:
                     self.findings.error(path, f"`{expression.text[span[0]:span[1]]}` is not a finite real number",
-                                        "constants must be real and below 1.8e308 in size", span)
+                                        f"constants must be real and below {self.graph.precision.largest_decimal} in size", span)
                     break
         return node
 

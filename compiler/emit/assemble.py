@@ -1,12 +1,14 @@
 """A Closure to the files of a module: kernels printed, the runtime's source copied in, the manual on top."""
 
 import re
+from fractions import Fraction
 from importlib import resources
 
 import jinja2
 
 from rootwright.calculus.constants import nearest
 from rootwright.calculus.lower import Lowering
+from rootwright.calculus.precision import DOUBLE, SINGLE
 from rootwright.calculus.program import Graph
 from rootwright.calculus.sampling import between
 from rootwright.emit import c, python
@@ -38,7 +40,7 @@ def assemble(closure, target="c", **options):
 
 def _assemble_c(closure, single_header=False, fortran=False):
     model, sizes = closure.model, _sizes(closure)
-    upper = model.name.upper()
+    upper, real = model.name.upper(), c.CSpelling(model, closure.precision).real
 
     def runtime(name):
         text = resolve(_source(name), _features(closure))
@@ -46,6 +48,8 @@ def _assemble_c(closure, single_header=False, fortran=False):
                  "RW_LIMIT": closure.limit}
         for word, value in words.items():
             text = re.sub(rf"\b{re.escape(word)}\b", str(value), text)
+        if closure.precision is SINGLE:
+            text = c.in_single(text)
         return text.replace("rw_", f"{model.name}_").replace("RW_", f"{upper}_")
 
     kernels = "\n\n".join(c.kernel(closure, name, comments(closure)[name]) for name in _KERNELS if name in closure.kernels)
@@ -53,10 +57,10 @@ def _assemble_c(closure, single_header=False, fortran=False):
     helpers = _used(runtime("arithmetic.c"), kernels + solver + interface, r"^static \w+ (\w+)\(")
     origin = _origin(closure, "c", {"single-header": ""} if single_header else {})
     page = manual(closure, _example_c(closure), _interface_c(closure, single_header), origin)
-    parts = {"name": model.name, "helpers": "".join(f"{text}\n\n" for text in helpers), "kernels": kernels,
+    parts = {"name": model.name, "real": real, "helpers": "".join(f"{text}\n\n" for text in helpers), "kernels": kernels,
              "solver": solver, "interface": interface}
     source = _render("implementation.c.j2", parts)
-    context = sizes | {"name": model.name, "upper": upper, "status": [(code, word) for code, word, _ in STATUS],
+    context = sizes | {"name": model.name, "upper": upper, "real": real, "status": [(code, word) for code, word, _ in STATUS],
                        "results": ", ".join(model.results), "manual": page, "implementation": source if single_header else ""}
     files = {f"{model.name}.h": _render("module.h.j2", context)}
     if not single_header:
@@ -79,7 +83,11 @@ def _assemble_fortran(closure):
     lines += ["Example:", "", *(f"    {line}" for line in _example_fortran(closure)), ""]
     origin = _origin(closure, "c", {"fortran": ""})
     return _render("module.f90.j2", _sizes(closure) | {
-        "name": model.name, "status": [(code, word) for code, word, _ in STATUS], "manual": lines + origin})
+        "name": model.name, "status": [(code, word) for code, word, _ in STATUS], "manual": lines + origin, "kind": _kind(closure)})
+
+
+def _kind(closure):
+    return "c_float" if closure.precision is SINGLE else "c_double"
 
 
 def _interface_c(closure, single_header):
@@ -115,7 +123,9 @@ def _assemble_python(closure):
 def _origin(closure, target, flags):
     """The lines that say where a file comes from; flags: the options that shaped it besides."""
     certificate = closure.promise.digest if closure.promise else None
-    return [*provenance(closure.model, {"target": target, "order": closure.order} | flags, certificate), _LICENCE]
+    precision = {} if closure.precision is DOUBLE else {"precision": closure.precision.name}
+    options = {"target": target, "order": closure.order} | precision | flags
+    return [*provenance(closure.model, options, certificate), _LICENCE]
 
 
 def _sizes(closure):
@@ -185,8 +195,9 @@ def _example_point(closure):
     """A point inside the operating range to show: the first published one, else the middle of the ranges."""
     model = closure.model
     if not model.published:
-        return [between(low, high, 0.5, parameter.spread) for parameter, (low, high) in zip(model.parameters, closure.ranges)]
-    graph = Graph()
+        middles = [between(low, high, 0.5, parameter.spread) for parameter, (low, high) in zip(model.parameters, closure.ranges)]
+        return [closure.precision.nearest(Fraction(value)) for value in middles]
+    graph = Graph(precision=closure.precision)
     lowering = Lowering(graph)
     for constant in model.constants:
         lowering.declare(constant.name, lowering.lower(constant.expression))
@@ -195,25 +206,27 @@ def _example_point(closure):
 
 
 def _example_c(closure):
-    model = closure.model
-    values = ", ".join(repr(value) for value in _example_point(closure))
+    model, spelling = closure.model, c.CSpelling(closure.model, closure.precision)
+    real = spelling.real
+    values = ", ".join(spelling.number(value) for value in _example_point(closure))
     root, first = model.unknown.name, model.parameters[0].name
-    point = [f"const double p[{len(model.parameters)}] = {{ {values} }};", f"{model.name}_point r;"]
+    point = [f"const {real} p[{len(model.parameters)}] = {{ {values} }};", f"{model.name}_point r;"]
     if closure.order == 0:
-        return [*point, f"if ({model.name}_solve(p, NAN, &r) >= 0) {{", f"    const double {root} = r.y[0];", "}"]
+        return [*point, f"if ({model.name}_solve(p, NAN, &r) >= 0) {{", f"    const {real} {root} = r.y[0];", "}"]
     return [*point,
-            f"double jac[{len(model.results) * len(model.parameters)}];",
+            f"{real} jac[{len(model.results) * len(model.parameters)}];",
             f"if ({model.name}_solve_jacobian(p, NAN, &r, jac) >= 0) {{",
-            f"    const double {root} = r.y[0], {root}_{first} = jac[0];",
+            f"    const {real} {root} = r.y[0], {root}_{first} = jac[0];",
             "}"]
 
 
 def _example_fortran(closure):
     model = closure.model
-    point = [repr(value).replace("e", "d") if "e" in repr(value) else repr(value) + "d0" for value in _example_point(closure)]
-    return [f"real(c_double) :: p({len(point)}) = [ {', '.join(point)} ]",
+    decimals, letter = map(closure.precision.decimal, _example_point(closure)), "e" if closure.precision is SINGLE else "d"
+    point = [text.replace("e", letter) if "e" in text else f"{text}{letter}0" for text in decimals]
+    return [f"real({_kind(closure)}) :: p({len(point)}) = [ {', '.join(point)} ]",
             f"type({model.name}_point) :: r",
-            f"if ({model.name}_solve(p, ieee_value(1d0, ieee_quiet_nan), r) >= 0) print *, r%y(1)"]
+            f"if ({model.name}_solve(p, ieee_value(1{letter}0, ieee_quiet_nan), r) >= 0) print *, r%y(1)"]
 
 
 def _example_python(closure):

@@ -1,7 +1,9 @@
-"""Kernels of a Closure as C99."""
+"""Kernels of a Closure as C99, in double or in single precision; and the runtime's source in single precision."""
 
 import math
+import re
 
+from rootwright.calculus.precision import SINGLE
 from rootwright.emit.layout import lay_out
 from rootwright.emit.names import Names, taken_in_c
 from rootwright.emit.text import statement
@@ -11,23 +13,47 @@ from rootwright.operations import OPERATIONS
 class CSpelling:
     """How numbers, names and operations are written in C."""
 
-    nan = "(double)NAN"      # NAN is a float: without the cast it would be promoted
-
-    def __init__(self, model):
+    def __init__(self, model, precision):
         self.prefix = model.name + "_"
+        self.precision = precision
+        self.is_single = precision is SINGLE
+        self.real = "float" if self.is_single else "double"
+        self.nan = f"({self.real})NAN"          # NAN is a float: without the cast it would be promoted
         self.names = Names(model, lambda name: taken_in_c(name) or name.startswith(self.prefix))     # functions and types of the module
 
     def number(self, value):
-        multiple = value / 2.0 ** -1022
+        suffix, smallest = ("f", "FLT_MIN") if self.is_single else ("", "DBL_MIN")
+        multiple = value / self.precision.smallest
         if 1.0 <= multiple < 64.0 and multiple == int(multiple):
-            return "DBL_MIN" if multiple == 1.0 else f"({multiple}*DBL_MIN)"
-        return repr(value) if math.isfinite(value) else "(double)INFINITY" if value > 0.0 else "-(double)INFINITY"
+            return smallest if multiple == 1.0 else f"({multiple}{suffix}*{smallest})"
+        if not math.isfinite(value):
+            return f"({self.real})INFINITY" if value > 0.0 else f"-({self.real})INFINITY"
+        return self.precision.decimal(value) + suffix
 
     def name(self, name):
         return self.names.of(name)
 
     def operation(self, op, strength, constants):
-        return OPERATIONS[op].c.replace("rw_", self.prefix), strength
+        pattern = in_single(OPERATIONS[op].c) if self.is_single else OPERATIONS[op].c
+        return pattern.replace("rw_", self.prefix), strength
+
+
+_MATHS = "|".join(sorted({row.c.split("(")[0] for row in OPERATIONS.values() if re.match(r"[a-z]\w*\(", row.c)
+                          and not row.c.startswith("rw_")} | {"copysign", "fmax", "fmin", "frexp", "ldexp", "nextafter"}))
+_SINGLE = (
+    (rf"\b({_MATHS})\(", r"\1f("),
+    (r"(?<![\w.])(\d+\.\d*(?:e[-+]?\d+)?|\d+e[-+]?\d+|0x\w+p[-+]?\d+)", r"\1f"),
+    (r"\bHUGE_VAL\b", "HUGE_VALF"), (r"\bDBL_", "FLT_"), (r"\b(u?int|INT)64_", r"\g<1>32_"),
+)
+
+
+def in_single(text):
+    """C source in double precision as the same source in single precision: types, functions, numbers and limits."""
+    parts = re.split(r"(/\*.*?\*/)", text, flags=re.S)
+    for k in range(0, len(parts), 2):                       # comments keep their numbers
+        for pattern, replacement in _SINGLE:
+            parts[k] = re.sub(pattern, replacement, parts[k])
+    return re.sub(r"\bdouble(s?)\b", r"float\1", re.sub(r"\bDouble(s?)\b", r"Float\1", "".join(parts)))
 
 
 _SIGNATURES = {
@@ -54,10 +80,11 @@ _FLAT = {"jacobian": "jac", "hessian": "hess"}                          # kernel
 def kernel(closure, name, comment):
     """Text of one kernel as a static C function, with the given comment lines above it."""
     model = closure.model
-    spelling = CSpelling(model)
+    spelling = CSpelling(model, closure.precision)
+    real = spelling.real
     formals = {formal: spelling.names.ours(formal) for formal in _FORMALS} | {"x": spelling.name(model.unknown.name)}
-    kind, arguments = _SIGNATURES[name]
-    first = f"static {kind} {model.name}_{_FUNCTIONS.get(name, name)}(const double {formals['p']}[]"
+    kind, arguments = (text.replace("double", real) for text in _SIGNATURES[name])
+    first = f"static {kind} {model.name}_{_FUNCTIONS.get(name, name)}(const {real} {formals['p']}[]"
     signature = first + (", " + arguments.format(**formals) if arguments else "") + ")"
     taken = {*spelling.names.used, *formals.values()}
     laid = lay_out(closure, name, spelling, taken)
@@ -66,7 +93,7 @@ def kernel(closure, name, comment):
     lines += [signature, "{"]
     lines += _unpack(model, laid, formals, spelling)
     for step in laid.statements:
-        lines += statement(f"const {'int' if step.condition else 'double'} {step.name} = {step.text};", "    ")
+        lines += statement(f"const {'int' if step.condition else real} {step.name} = {step.text};", "    ")
     lines += _results(name, model, laid, formals)
     lines.append("}")
     return "\n".join(lines)
@@ -77,7 +104,7 @@ def _unpack(model, laid, formals, spelling):
     read = [(k, parameter.name) for k, parameter in enumerate(model.parameters) if parameter.name in laid.inputs]
     lines = []
     for k, parameter in read:
-        lines.append(f"    const double {spelling.name(parameter)} = {formals['p']}[{k}];")
+        lines.append(f"    const {spelling.real} {spelling.name(parameter)} = {formals['p']}[{k}];")
     if not read:
         lines.append(f"    (void){formals['p']};")
     return lines

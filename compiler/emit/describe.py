@@ -11,8 +11,8 @@ def comments(closure):
     texts = {
         "bracket": f"The bracket of {x}, and bounds of the rounding errors of its ends.",
         "residual": f"The residual, zero at the root, and its slope: {model.equation}",
-        "rounding": f"Bounds of the rounding errors of the residual and of its slope at {x} (running error analysis; 1.2e-16 is "
-                    "the unit roundoff 2^-53 and a margin), and the curvature, the second derivative of the residual.",
+        "rounding": f"Bounds of the rounding errors of the residual and of its slope at {x} (running error analysis; "
+                    f"{float(closure.precision.unit):.3g} is the unit roundoff 2^-{closure.precision.digits} and a margin), and the curvature, the second derivative of the residual.",
         "outside": "True where the parameters are outside what the closure is meant for.",
         "kink": f"True where {switches}.",
         "start": f"The starting guess of the spec for {x}.",

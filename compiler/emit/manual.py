@@ -1,5 +1,6 @@
 """The manual of a module: the first comment of every emitted file, as plain lines of text."""
 
+from rootwright.calculus.precision import DOUBLE
 from rootwright.calculus.program import needed
 from rootwright.emit.text import folded, harmless, paragraph
 from rootwright.operations import OPERATIONS
@@ -90,10 +91,13 @@ def _accuracy(closure):
     program = closure.program
     used = {program.instructions[node].op for node in needed(program.instructions, program.results.values())
             if node not in closure.constants}
-    table = sorted((OPERATIONS[op].ulps, op) for op in used if op in OPERATIONS and OPERATIONS[op].ulps > 0.5)
-    lines = paragraph(
+    precision = closure.precision
+    table = sorted((precision.ulps(op), op) for op in used if op in OPERATIONS and precision.ulps(op) > 0.5)
+    numbers = "doubles" if precision is DOUBLE else "floats"
+    lines = [] if precision is DOUBLE else paragraph("Single precision: float throughout, no operation in double.")
+    lines += paragraph(
         "Accuracy: the root is within 4 units in the last place plus 4 times its noise (what one rounding of every "
         "operation of the residual moves the root by). error_bound covers the distance to the exact root of the equation as "
-        "written, at the given doubles, for parameters inside their ranges and rounding to nearest"
+        f"written, at the given {numbers}, for parameters inside their ranges and rounding to nearest"
         + (", with a maths library as accurate as: " + ", ".join(f"{op} {ulps:g} ulp" for ulps, op in table) if table else "") + ".")
     return lines + paragraph(f"At most {closure.limit} evaluations of the residual a solve.") + [""]

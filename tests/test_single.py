@@ -24,8 +24,7 @@ from rootwright.pipeline import closure, emit, find
 
 pytestmark = pytest.mark.skipif(shutil.which("gcc") is None, reason="gcc is not installed")
 
-SHIPPED = ("pipe_friction", "kepler", "if97_temperature", "plastic_multiplier", "normal_depth", "rachford_rice",
-           "solar_diode", "overpotential", "peng_robinson_liquid")
+SHIPPED = ("pipe_friction", "kepler", "if97_temperature", "plastic_multiplier", "normal_depth", "overpotential")
 
 
 def single(spec, order=1):
@@ -116,7 +115,7 @@ class Library:
         for closed in closures:
             files |= emit(closed)
         write(folder, files | {"all.c": together(files)})
-        run(["gcc", "-std=c99", "-O1", "-ffp-contract=off", "-shared", "-fPIC", "all.c", "-o", "all.so", "-lm"], folder)
+        run(["gcc", "-std=c99", "-ffp-contract=off", "-shared", "-fPIC", "all.c", "-o", "all.so", "-lm"], folder)
         self.library = ctypes.CDLL(str(folder / "all.so"))
 
     def solve(self, closed, p, start=math.nan):
@@ -152,7 +151,7 @@ def test_roots_are_as_near_to_certified_ones_as_promised(k, library):
     built, closures = library
     closed = closures[k]
     reference, solved = Reference(closed.model), 0
-    for drawn in sum(choose(closed, 25, 3), []):
+    for drawn in sum(choose(closed, 20, 3), []):
         point = in_floats(drawn)
         if not in_range(closed, point):
             continue
@@ -168,13 +167,13 @@ def test_roots_are_as_near_to_certified_ones_as_promised(k, library):
         assert distance <= 4*float(np.spacing(np.float32(r.y[0]))) + 4*spread*2.0**29, (point, r.y[0], distance)
         assert r.lower <= r.y[0] <= r.upper and r.evaluations <= closed.limit
         solved += 1
-    assert solved >= 20
+    assert solved >= 16
 
 
 def test_derivatives_agree_with_those_in_double_precision(library):
     """The double module's are held against differences elsewhere; single keeps some six digits where the slope is steep."""
     built, closures = library
-    for closed in closures[:5]:
+    for closed in closures:
         double = pipeline.load(closed.model.name, "python")
         for point in map(in_floats, choose(closed, 10, 4)[1]):
             r, jac = built.solve(closed, point.values())

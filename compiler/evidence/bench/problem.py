@@ -25,7 +25,7 @@ class Problem:
     points: np.ndarray                   # (n, N), in C order; the first c are the checked ones
     warm: np.ndarray                     # (n,): roots of points a little moved, where a warm start begins
     solved: np.ndarray                   # (n,): roots as the module finds them
-    floors: np.ndarray                   # (N,): least size of a parameter that scales a step
+    floors: np.ndarray                   # (N,): least size of a parameter that scales a step of a difference
     middles: np.ndarray                  # (N,)
     roots: np.ndarray                    # (c,): exact to the last bit
     derivatives: np.ndarray              # (c, M, N); NaN where there is none, or not wanted
@@ -50,7 +50,8 @@ def pose(closure, solve, points=POINTS, checked=CHECKED, seed=1):
     return Problem(
         model.name, tuple(model.results), tuple(parameter.differentiate for parameter in model.parameters),
         array, solve(neighbours), solve(array),
-        np.array([SCALE_WIDTH*(high - low) for low, high in closure.ranges]),
+        np.array([0.0 if parameter.spread == "log" else SCALE_WIDTH*(high - low)
+                  for parameter, (low, high) in zip(model.parameters, closure.ranges)]),
         np.array([0.5*low + 0.5*high for low, high in closure.ranges]),
         np.array([root for _, (root, _, _) in rows]), np.array([d for _, (_, d, _) in rows]),
         np.array([scale for _, (_, _, scale) in rows]),

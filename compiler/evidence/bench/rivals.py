@@ -9,6 +9,7 @@ import warnings
 import numpy as np
 
 NEAR = 4.0*np.finfo(float).eps   # the tightest relative tolerance that the root finders accept
+STILL = 1e-10                    # a Newton step below this that does not halve the one before is rounding
 ENTERED = 2.0**-40               # share of the bracket by which an open end is entered
 STEPS = 100
 WHOLE = ("newton_array", "find_root", "jax_implicit", "jax_forward")      # rows over all points at once
@@ -84,7 +85,7 @@ def newton_scalar(problem):
 
     def find(formulas, p, start):
         return optimize.newton(formulas["g"], start, fprime=lambda x, *p: formulas["residual"](x, *p)[1], args=tuple(p),
-                               tol=5e-324, rtol=NEAR, maxiter=STEPS)
+                               tol=5e-324, rtol=STILL, maxiter=STEPS)
     return _scalar(problem, find)
 
 
@@ -154,7 +155,7 @@ def autograd(problem):
             a, b = (x, b) if (g < 0.0) == negative else (a, x)
             step = g/slope
             following = x - step
-            if abs(step) <= NEAR*abs(x):
+            if abs(step) <= NEAR*abs(x) or abs(step) <= STILL*abs(x) and abs(2.0*step) > abs(before):
                 return following
             if not a < following < b or abs(2.0*step) > abs(before):
                 step = 0.5*(b - a)
@@ -209,8 +210,9 @@ def _jax(problem, through):
             step = g/slope
             good = (x - step > a) & (x - step < b) & (jnp.abs(2.0*step) <= jnp.abs(before))
             following = jnp.where(good, x - step, a + 0.5*(b - a))
-            before = jnp.where(good, step, 0.5*(b - a))
-            done = (jnp.abs(step) <= NEAR*jnp.abs(x)) | (g == 0.0)
+            earlier, before = before, jnp.where(good, step, 0.5*(b - a))
+            still = (jnp.abs(step) <= STILL*jnp.abs(x)) & (jnp.abs(2.0*step) > jnp.abs(earlier))
+            done = (jnp.abs(step) <= NEAR*jnp.abs(x)) | (g == 0.0) | still
             following = jnp.where(done, x - step, following)
             return k + 1, following, a, b, before, done
 

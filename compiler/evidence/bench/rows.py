@@ -28,7 +28,8 @@ BASE, SOLVE, LIMIT, TAPE, TAPE_LEAN, BRENT_PYTHON = "jacobian", "solve", "limit"
 TERMS = {
     "cold": "nothing is known of the root but its bracket (and the author's start where the spec has one)",
     "warm": "from the root at parameters that differ by 1 % of their ranges",
-    "textbook loop": "Newton's method kept in its bracket by bisection, to 4 ulp; no error bound, no caveats",
+    "textbook loop": "Newton's method kept in its bracket by bisection, until the step is 4 ulp or rounding; no error "
+                     "bound, no caveats",
     "implicit rule": "dx/dp = -g_p/g_x at the root that was found",
 }
 
@@ -75,7 +76,8 @@ ROWS = (
     Row(BRENT_PYTHON, "hand", "SciPy brentq, from Python",
         "point by point, residual in plain Python, to 4 ulp; implicit rule in plain Python; cold", "brentq"),
     Row("newton_scalar", "hand", "SciPy newton, from Python",
-        "the same with the slope given, unsafeguarded; warm", "newton_scalar"),
+        "the same with the slope given, unsafeguarded, to a step of 1e-10 (the error is its square); warm",
+        "newton_scalar"),
     Row("newton_array", "hand", "SciPy newton over arrays",
         "all points at once in NumPy, unsafeguarded; implicit rule in NumPy; warm", "newton_array"),
     Row("find_root", "hand", "SciPy elementwise.find_root",

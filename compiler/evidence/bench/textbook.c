@@ -4,6 +4,7 @@
    number that carries derivatives. */
 
 #define RW_NEAR 8.881784197001252e-16 /* a step of four units of the last place ends the iteration */
+#define RW_STILL 1e-10                /* so does one below this that does not halve the one before: it is rounding */
 
 /* An open end is entered by this share of the bracket. */
 #define RW_ENTERED 9.094947017729282e-13
@@ -63,7 +64,8 @@ static int rw_textbook(const double p[], double start, int most, double *root)
         end[(g < 0.0) != negative] = x;
         step = g / slope;
         next = x - step;
-        if (fabs(step) <= RW_NEAR * fabs(x)) { /* before the safeguard: a step of mere rounding need not halve */
+        if (fabs(step) <= RW_NEAR * fabs(x)
+            || (fabs(step) <= RW_STILL * fabs(x) && fabs(2.0 * step) > fabs(before))) {
             x = next;
             break;
         }

@@ -164,3 +164,4 @@ def test_the_other_files_are_the_same_with_and_without_fortran():
     closed, _ = closure(*find("kepler"))
     plain, more = emit(closed), emit(closed, fortran=True)
     assert plain.items() <= more.items() and len(more) == 3
+    assert "intent(out) :: jac(2, 4)\n" in more["kepler_module.f90"]          # parameters first: the rows of C are its columns

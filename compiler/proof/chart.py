@@ -22,13 +22,16 @@ from rootwright.proof.intervals import Interval, Intervals
 
 SHARE = "_share"            # the input t: names of a spec begin with a letter
 _BITS = 200
-_LONGEST = 200              # operations of a relaxed form
+_LONGEST = 120              # operations of a relaxed form
 _RATIOS = 3                 # multiples of a slack that are tried
 
 
 @dataclass(frozen=True)
 class Form:
-    """Equal expressions of one function, as the author wrote it first; the last is differentiated. `domain` as of `cancel.domain`."""
+    """Equal expressions of one function, as the author wrote it first; the last is differentiated.
+
+    `domain` as of `cancel.domain`; empty where the function is known to have a value, or it does not matter where it has none.
+    """
     nodes: tuple[int, ...]
     domain: tuple | None
 
@@ -48,6 +51,7 @@ class Values:
     undefined: np.ndarray
     jump: np.ndarray
     nonzero: np.ndarray
+    regular: np.ndarray         # what is differentiated is defined and continuous: `Chart.sharp` may be asked
 
     def definite(self):
         """True where the form is defined and of one sign, not 0."""
@@ -179,6 +183,8 @@ class Chart:
         return tuple(found)
 
     def _expanded(self, node):
+        if self._cost(node) > _LONGEST:
+            return []
         return self.expanding.expanded(self.cancelling.of(node))
 
     def _cost(self, node):
@@ -230,7 +236,9 @@ class Chart:
             at = np.nonzero(undefined)[0]
             undefined[at] = ~self._in_domain(form, low[at], high[at], opened)
         bottom, top = np.where(bottom > top, -np.inf, bottom), np.where(bottom > top, np.inf, top)
-        return Values(bottom, top, undefined, jump, nonzero)
+        last = parts[-1]
+        regular = ~(undefined | jump) if form.domain != () else np.broadcast_to(~np.asarray(last.undefined | last.jump), (size,))
+        return Values(bottom, top, undefined, jump, nonzero, regular)
 
     def _in_domain(self, form, low, high, opened):
         """True where every condition on the domain holds all over the box."""

@@ -44,7 +44,7 @@ def _slopes(domain, index, low, high):
     chart, opened = domain.charts[index], domain.opened[index]
     slope = chart.natural(chart.slope, low, high, opened)
     first, last = slope.low.copy(), slope.high.copy()
-    at = np.nonzero((first <= 0.0) & (last >= 0.0) & ~slope.undefined)[0]
+    at = np.nonzero((first <= 0.0) & (last >= 0.0) & slope.regular)[0]
     if len(at):
         first[at], last[at], _, _ = chart.sharp(chart.slope, low[at], high[at], opened)
     below = np.maximum(np.maximum(first, -last), 0.0)

@@ -89,7 +89,7 @@ class _Proof:
     def _refutations(self, open_claims):
         if not open_claims:
             return {}
-        examiner = Examiner(self.plain)
+        examiner = Examiner(self.plain, self.limit)
         for values in examiner.corners():
             examiner.examine(values, open_claims)
         if "unique" in open_claims:
@@ -148,6 +148,8 @@ class _Proof:
     def _advice(self):
         """The first proposal with which nothing is left open."""
         for condition in proposals(self.domain, self.outcome)[:2]:
+            if self.limit.reached(np.inf):
+                break
             model = with_requirement(self.model, condition)
             limit = Limit(min(self.limit.boxes, _TRIAL))
             limit.until = self.limit.until

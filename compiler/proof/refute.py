@@ -37,12 +37,13 @@ class Witness:
 class Examiner:
     """Looks at single points of a plain `Domain`; `found` maps claims to their first Witness."""
 
-    def __init__(self, domain):
+    def __init__(self, domain, limit):
         self.domain, self.model = domain, domain.model
         self.exact = exact_ends(domain.model)
         self.found = {}
         self.seen = set()
         self.limit = Limit(10 ** 9)
+        self.limit.until = limit.until
         self.crew = Crew(domain.judges())
 
     # -- points
@@ -137,7 +138,7 @@ class Examiner:
         wanted = set() if "defined" in self.found else wanted - self.found.keys()
         if "exists" in self.found:
             wanted &= {"defined"}
-        point = self.point(values) if wanted and self.limit.waves < _WAVES else None
+        point = self.point(values) if wanted and self.limit.waves < _WAVES and not self.limit.reached(np.inf) else None
         if point is None:
             return
         key = tuple(point.items())

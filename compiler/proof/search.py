@@ -12,7 +12,8 @@ import numpy as np
 from rootwright.proof.chart import mean_value, normalised
 from rootwright.proof.intervals import Interval, Intervals
 
-NEAR = (2.0 ** -6, 2.0 ** -20, 2.0 ** -50)     # shares of the bracket within which the sign next to an open end is asked for
+# Shares of the bracket within which the sign next to an open end is asked for.
+NEAR = (2.0 ** -6, 2.0 ** -20, 2.0 ** -50, 2.0 ** -300, 2.0 ** -1050)
 
 
 @dataclass
@@ -95,7 +96,7 @@ def _signed(chart, form, low, high, opened=False):
         broken = at[values.undefined[at]]
         if len(broken):
             smear[broken] = chart.trouble(form, low[broken], high[broken], opened)
-        at = at[~values.undefined[at] & ~values.jump[at]]
+        at = at[values.regular[at]]
     if len(at):
         first, last, below, above = chart.sharp(form, low[at], high[at], opened)
         sign[at] = np.where(first > 0, 1, np.where(last < 0, -1, 0))
@@ -153,7 +154,8 @@ def _factor(chart, factor, low, high):
     values = chart.natural(factor.form, low, high)
     bottom, top = values.low.copy(), values.high.copy()
     smear = np.zeros(low.shape)
-    left = np.nonzero(~((bottom > 0) | (top < 0)) & ~values.jump)[0]
+    left = np.nonzero(~((bottom > 0) | (top < 0)))[0]
+    left = left[values.regular[left]]
     if len(left):
         first, last, below, above = chart.sharp(factor.form, low[left], high[left])
         smear[left] = normalised(below, above, low[left], high[left])
@@ -173,7 +175,7 @@ def _relax(chart, sign, relaxed, low, high, bottom, top, at):
     """Bounds from a form less a multiple of a slack, into `bottom` and `top` of the boxes `at`."""
     part = chart.natural(relaxed, low[at], high[at])
     first, last = part.low.copy(), part.high.copy()
-    open_ = np.nonzero(~((first >= 0) if sign < 0 else (last <= 0)) & ~part.jump)[0]
+    open_ = np.nonzero(~((first >= 0) if sign < 0 else (last <= 0)) & part.regular)[0]
     if len(open_):
         first[open_], last[open_], _, _ = chart.sharp(relaxed, low[at[open_]], high[at[open_]])
     if sign < 0:

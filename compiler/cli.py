@@ -198,6 +198,7 @@ def _check(arguments):
     from rootwright import pipeline
     from rootwright.binding.module import load
     from rootwright.evidence.page import describe, render
+    from rootwright.plan.plan import PLAIN
 
     def show(closure):
         facts = describe(closure, load(closure, pipeline.emit(closure, "python", PLAIN), "python"))

@@ -18,6 +18,9 @@ static int rw_approach(const double p[], double start, rw_point *r)
 #endif
 
     rw_bracket(p, end, rounding);
+    if (!(isfinite(end[0]) && isfinite(end[1]))) {
+        return RW_NOT_FINITE;
+    }
 #if RW_STILL
     rw_still(p, kept);
 #endif

@@ -11,6 +11,8 @@ def _approach(p, start, r):
     That the residual's signs at the ends differ is looked at, or was proved for the whole operating range.
     """
     lower, upper, _, _ = _bracket(p)
+    if not (math.isfinite(lower) and math.isfinite(upper)):
+        return NOT_FINITE
     longest = math.inf  # the next step must be shorter
     trials = 0
     closing = False

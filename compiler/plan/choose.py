@@ -47,12 +47,8 @@ def _choose(closure):
     measured = Range(closure)
     if measured.size < 8:
         return _plain("too few sampled points of the operating range have a root")
-    known, least = _ends(closure)
-    if known == "evaluated" and (unknown.open_lower or unknown.open_upper):
-        return _plain("the signs beside an open end are not proved to differ")
     graph = _reopened(closure)
     trial = effort(closure.program.instructions, [closure.program.results[name] for name in _TRIAL])
-    ends = 0.0 if known != "evaluated" else 2.0 * effort(closure.program.instructions, [closure.program.results["g"]])
     best, figures = None, None
     for candidate in _candidates(measured, graph):
         spent = measured.trials(candidate.x)
@@ -62,9 +58,16 @@ def _choose(closure):
         if best is None or cost < _MARGIN * figures[0]:
             best, figures = candidate, (cost, trials, missed)
     cost, trials, missed = figures
-    if cost + ends > _PLAIN * trial or missed > 0.25:
+    if cost > _PLAIN * trial or missed > 0.25:
         return _plain(f"no start came close enough: the best, {best.name}, took {trials:.2g} evaluations and missed "
                       f"{100.0 * missed:.3g} % of {measured.size} sampled points")
+    known, least = _ends(closure)
+    if known == "evaluated":
+        if unknown.open_lower or unknown.open_upper:
+            return _plain("the signs beside an open end are not proved to differ")
+        cost += 2.0 * effort(closure.program.instructions, [closure.program.results["g"]])
+        if cost > _PLAIN * trial:
+            return _plain("the residual at both ends and a short way would take more than the safeguarded solver")
     why = (f"start: {best.name}; Halley's steps, {trials:.3g} evaluations in the mean of {measured.size} sampled points"
            + (f", {100.0 * missed:.2g} % left to the plain solver" if missed else ""),
            _ENDS[known].format(least=least))

@@ -182,3 +182,20 @@ def test_compile_prints_the_plan_and_why_and_leaves_it_out_on_request(tmp_path, 
     chosen, plain = ((tmp_path/way/"kepler.c").read_text() for way in ("chosen", "plain"))
     assert "kepler_approach" in chosen and "kepler_approach" not in plain
     assert "--plan plain" in plain and len(chosen) - len(plain) < 8000
+
+
+def test_a_large_residual_is_not_emitted_twice():
+    terms = " + ".join(f"exp(-a*x/{k})" for k in range(2, 90))
+    text = f"""format = 1
+name = "large"
+[parameters]
+a = {{ range = [0.5, 2.0] }}
+[unknown]
+name = "x"
+bracket = ["0", "100"]
+[residual]
+equation = "{terms} = 40"
+"""
+    closure, _ = pipeline.closure(text.encode(), "large.toml")
+    plan = pipeline.plan(closure)
+    assert plan.closure is None and "large" in plan.why[0]

@@ -21,6 +21,7 @@ from rootwright.plan.plan import TRIALS, Plan
 
 _TRIAL = ("g", "slope", "rounding", "slope_rounding", "curvature")
 _CURVE = ("g", "slope", "curvature")
+LARGEST = 1200              # instructions of a certificate beyond which the module keeps to one solver
 _PLAIN = 6.0                # evaluations, in trials, that the plain solver is taken to need
 _MARGIN = 0.9               # a dearer guess must save this much
 
@@ -44,6 +45,9 @@ def _choose(closure):
         return _plain("in single precision the safeguarded solver is all there is")
     if unknown.root != "only":
         return _plain(f"the {unknown.root} of several roots is wanted, and a short way could meet another one")
+    program = closure.program
+    if len(needed(program.instructions, [program.results[name] for name in _TRIAL])) > LARGEST:
+        return _plain("the residual is so large that a short way would double the size of the module")
     measured = Range(closure)
     if measured.size < 8:
         return _plain("too few sampled points of the operating range have a root")

@@ -25,8 +25,8 @@ static int rw_approach(const double p[], double start, rw_point *r)
     rw_still(p, kept);
 #endif
 #if RW_ENDS
-    low = rw_curve(p, kept, end[0], &slope, &curvature);
-    high = rw_curve(p, kept, end[1], &slope, &curvature);
+    low = rw_trial(p, kept, end[0], &slope, &bound, &slope_rounding, &curvature);
+    high = rw_trial(p, kept, end[1], &slope, &bound, &slope_rounding, &curvature);
     r->evaluations += 2;
     if (!((low < 0.0 && high > 0.0) || (high < 0.0 && low > 0.0))) {
         return RW_NOT_FINITE;

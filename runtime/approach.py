@@ -20,8 +20,8 @@ def _approach(p, start, r):
     kept = _still(p)
 #endif
 #if ENDS
-    low = _curve(p, kept, lower)[0]
-    high = _curve(p, kept, upper)[0]
+    low = _trial(p, kept, lower)[0]
+    high = _trial(p, kept, upper)[0]
     r.evaluations += 2
     if not (low < 0.0 < high or high < 0.0 < low):
         return NOT_FINITE

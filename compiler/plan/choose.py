@@ -13,7 +13,7 @@ import numpy as np
 
 from rootwright.calculus.precision import SINGLE
 from rootwright.calculus.program import Graph, Program, needed
-from rootwright.plan.facts import domain, ends_differ, least_rise
+from rootwright.plan.facts import computed_finite, domain, ends_differ, least_rise
 from rootwright.plan.fit import MOST_TERMS, columns, coordinates, exponents, fit, horner, polynomial
 from rootwright.plan.forms import constants_of, quick, still
 from rootwright.plan.measure import Range, depend_on, effort, mean
@@ -90,11 +90,11 @@ def _known(closure):
 
 def _ends(closure):
     """(what is known of the signs at the ends, bound of the rise)."""
+    charts = domain(closure)
+    if charts is None or not computed_finite(charts, closure):
+        return "evaluated", 0.0
     if closure.promise is not None and "exists" in closure.promise.proved:
         return "proved", 0.0
-    charts = domain(closure)
-    if charts is None:
-        return "evaluated", 0.0
     least = least_rise(charts)
     if ends_differ(charts):
         return "proved", least

@@ -3,6 +3,8 @@
 import numpy as np
 
 from rootwright.calculus.program import needed
+from rootwright.proof.crew import Crew
+from rootwright.proof.numbers import doubles_are_finite
 from rootwright.proof.search import outside
 from rootwright.proof.settle import Domain, Limit, Outcome, search_ends
 
@@ -16,10 +18,19 @@ def domain(closure):
     return Domain(closure.model) if len(needed(program.instructions, [program.results["g"]])) <= LARGEST else None
 
 
+def computed_finite(charts, closure):
+    """True if no value of the residual that the module computes overflows or is undefined anywhere in the range.
+
+    What is proved of real numbers says nothing of doubles otherwise.
+    """
+    return doubles_are_finite(charts, closure, Limit(BOXES), BOXES)
+
+
 def ends_differ(charts):
     """True if the residual has different signs at (next to open) ends, or is 0 at a closed one, everywhere in the range."""
     outcome = Outcome()
-    search_ends(charts, Limit(BOXES), BOXES, outcome)
+    with Crew(charts.judges()) as crew:
+        search_ends(charts, crew, Limit(BOXES), BOXES, outcome)
     return not outcome.open
 
 

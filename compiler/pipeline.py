@@ -116,11 +116,21 @@ def prove(job):
     return certify(closed, load(spec, "python"), **limits)
 
 
-def emit(closed, target="c", **options):
-    """Files of the module, {name: text}. options: `assemble` lists them; raises its Unsuitable."""
+def plan(closed):
+    """The Plan of a Closure: how its module comes to the root, and why."""
+    from rootwright.plan.choose import choose
+
+    return choose(closed)
+
+
+def emit(closed, target="c", chosen=None, **options):
+    """Files of the module, {name: text}, for a Plan; the chosen one where none is given.
+
+    options: `assemble` lists them; raises its Unsuitable.
+    """
     from rootwright.emit.assemble import assemble
 
-    return assemble(closed, target, **options)
+    return assemble(closed, target, chosen or plan(closed), **options)
 
 
 def load(spec, target="c", order=1):

@@ -95,9 +95,9 @@ def _parser():
                           help="arithmetic of the module: double (default); c: single, float throughout")
     compile_.add_argument("--require-proof", action="store_true",
                           help="write nothing unless existence and uniqueness of the root are proved for this very spec")
-    compile_.add_argument("--plan", choices=("chosen", "plain"), default="chosen",
-                          help="chosen: a short way to the root goes before the safeguarded solver where it pays (default); "
-                               "plain: the safeguarded solver alone")
+    compile_.add_argument("--plan", choices=("plain", "chosen"), default="plain",
+                          help="plain: the safeguarded solver alone (default); chosen: a short way to the root goes before it "
+                               "where that pays")
     _add_order(compile_, "derivatives in the module: 0 none, 1 first (default), 2 with hessian and tangent_adjoint")
 
     evaluate = _command(

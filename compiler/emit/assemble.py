@@ -130,7 +130,7 @@ def _assemble_python(closure, plan):
 
 def _origin(closure, plan, target, flags):
     """The lines that say where a file comes from; flags: the options that shaped it besides."""
-    flags = flags if plan.option == "chosen" else flags | {"plan": plan.option}
+    flags = flags if plan.option == "plain" else flags | {"plan": plan.option}
     certificate = closure.promise.digest if closure.promise else None
     precision = {} if closure.precision is DOUBLE else {"precision": closure.precision.name}
     options = {"target": target, "order": closure.order} | precision | flags

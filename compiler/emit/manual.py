@@ -33,10 +33,8 @@ def manual(closure, plan, example, interface, origin):
         lines += paragraph(f"Caution: {model.caution}", hang="    ") + [""]
     lines += interface + [""]
     lines += _status() + _accuracy(closure, plan)
-    lines += ["Plan:", ""]
-    for reason in plan.why:
-        lines += paragraph(reason, indent="    ", hang="        ")
-    lines.append("")
+    if plan.why:
+        lines += ["Plan:", "", *(line for reason in plan.why for line in paragraph(reason, indent="    ", hang="        ")), ""]
     lines += [*(closure.promise.lines if closure.promise else _UNPROVED), ""]
     lines += ["Example:", ""] + [f"    {line}" for line in example] + [""]
     return [harmless(line) for line in lines] + origin

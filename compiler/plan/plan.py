@@ -24,4 +24,4 @@ class Plan:
         return 0 if self.closure is None else 2 * (self.ends == "evaluated") + self.trials + 2
 
 
-PLAIN = Plan(None, "evaluated", "", ("plain: the safeguarded solver alone, as asked for",), option="plain")
+PLAIN = Plan(None, "evaluated", "", (), option="plain")

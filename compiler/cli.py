@@ -95,6 +95,9 @@ def _parser():
                           help="arithmetic of the module: double (default); c: single, float throughout")
     compile_.add_argument("--require-proof", action="store_true",
                           help="write nothing unless existence and uniqueness of the root are proved for this very spec")
+    compile_.add_argument("--plan", choices=("plain", "chosen"), default="plain",
+                          help="plain: the safeguarded solver alone (default); chosen: a short way to the root goes before it "
+                               "where that pays")
     _add_order(compile_, "derivatives in the module: 0 none, 1 first (default), 2 with hessian and tangent_adjoint")
 
     evaluate = _command(
@@ -195,9 +198,10 @@ def _check(arguments):
     from rootwright import pipeline
     from rootwright.binding.module import load
     from rootwright.evidence.page import describe, render
+    from rootwright.plan.plan import PLAIN
 
     def show(closure):
-        facts = describe(closure, load(closure, pipeline.emit(closure, "python"), "python"))
+        facts = describe(closure, load(closure, pipeline.emit(closure, "python", PLAIN), "python"))
         return facts, "" if arguments.json else render(facts), OK
 
     return _each(arguments, show)
@@ -309,6 +313,7 @@ def _compile(arguments):
     from rootwright import pipeline
     from rootwright.emit.assemble import Unsuitable
     from rootwright.files import replacing
+    from rootwright.plan.plan import PLAIN
 
     worst, written = OK, {}
     options = {name: True for name in ("single_header", "fortran") if getattr(arguments, name)}
@@ -329,8 +334,9 @@ def _compile(arguments):
                   f"  prove them with: rootwright prove --save {spec}", file=sys.stderr)
             worst = max(worst, FOUND)
             continue
+        plan = PLAIN if arguments.plan == "plain" else pipeline.plan(closure)
         try:
-            files = pipeline.emit(closure, arguments.target, **options)
+            files = pipeline.emit(closure, arguments.target, plan, **options)
         except Unsuitable as error:
             raise Refusal(f"{spec}: {error}") from None
         clash = next((name for name in files if name in written), None)
@@ -345,6 +351,8 @@ def _compile(arguments):
         for name, text in files.items():
             written[name] = spec
             print(f"{folder/name}  {len(text.encode('utf-8')):,} bytes")
+        for line in plan.why:
+            print(f"    {line}")
     return worst
 
 

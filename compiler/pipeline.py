@@ -116,11 +116,22 @@ def prove(job):
     return certify(closed, load(spec, "python"), **limits)
 
 
-def emit(closed, target="c", **options):
-    """Files of the module, {name: text}. options: `assemble` lists them; raises its Unsuitable."""
-    from rootwright.emit.assemble import assemble
+def plan(closed):
+    """The Plan of a Closure: how its module comes to the root, and why."""
+    from rootwright.plan.choose import choose
 
-    return assemble(closed, target, **options)
+    return choose(closed)
+
+
+def emit(closed, target="c", chosen=None, **options):
+    """Files of the module, {name: text}, for a Plan; the plain one where none is given.
+
+    options: `assemble` lists them; raises its Unsuitable.
+    """
+    from rootwright.emit.assemble import assemble
+    from rootwright.plan.plan import PLAIN
+
+    return assemble(closed, target, chosen or PLAIN, **options)
 
 
 def load(spec, target="c", order=1):
@@ -138,7 +149,8 @@ def remake(data, filename, options):
     try:
         closed, _ = closure(data, filename, **shaping)
         closed, _ = promised(closed, filename)
-        return tuple(emit(closed, **others).values())
+        chosen = plan(closed) if others.pop("plan", "plain") == "chosen" else None
+        return tuple(emit(closed, chosen=chosen, **others).values())
     except (SpecError, LookupError, TypeError, ValueError):
         return None
 

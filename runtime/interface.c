@@ -13,14 +13,24 @@ static int rw_without_slope(const double p[], double root)
 
 int rw_solve(const double p[RW_N], double start, rw_point *r)
 {
-    int k, status = RW_NOT_FINITE, finite = 1;
+    int k, outside, status = RW_NOT_FINITE, finite = 1;
     rw_clear(r);
     for (k = 0; k < RW_N; k++) {
         finite = finite && isfinite(p[k]);
     }
     if (finite) {
+        outside = rw_outside(p);
+#if RW_PLANNED
+        if (!outside) {
+            status = rw_approach(p, start, r);
+        }
+        if (status < 0) {
+            status = rw_resume(p, start, r);
+        }
+#else
         status = rw_locate(p, start, r);
-        if (status >= 0 && rw_outside(p)) {
+#endif
+        if (status >= 0 && outside) {
             status |= RW_OUTSIDE_RANGE;
         }
 #if RW_OUTPUTS

@@ -8,8 +8,16 @@ def solve(p, start=math.nan):
     if not all(math.isfinite(value) for value in p):
         r.status = NOT_FINITE
         return r
+    outside = _outside(p)
+#if PLANNED
+    if not outside:
+        r.status = _approach(p, start, r)
+    if r.status < 0:
+        r.status = _resume(p, start, r)
+#else
     r.status = _locate(p, start, r)
-    if r.status >= 0 and _outside(p):
+#endif
+    if r.status >= 0 and outside:
         r.status |= OUTSIDE_RANGE
     #if OUTPUTS
     if r.status >= 0:

@@ -21,7 +21,7 @@ def test_the_c_target_writes_header_and_source_and_says_how_large_they_are(tmp_p
     files = {path.name: path.read_bytes() for path in (tmp_path/"new"/"folder").iterdir()}
     assert set(files) == {"kepler.h", "kepler.c"}
     said = capsys.readouterr().out.splitlines()
-    assert said == [f"{tmp_path/'new'/'folder'/name}  {len(files[name]):,} bytes" for name in ("kepler.h", "kepler.c")]
+    assert said[:2] == [f"{tmp_path/'new'/'folder'/name}  {len(files[name]):,} bytes" for name in ("kepler.h", "kepler.c")]
 
 
 def test_the_python_target_writes_one_file(tmp_path):

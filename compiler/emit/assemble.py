@@ -16,8 +16,9 @@ from rootwright.emit.describe import comments
 from rootwright.emit.manual import STATUS, manual
 from rootwright.emit.provenance import provenance, seal
 from rootwright.emit.text import paragraph
+from rootwright.plan.plan import PLAIN
 
-_KERNELS = ("bracket", "residual", "rounding", "outside", "kink", "start", "outputs", "jacobian", "hessian")
+_KERNELS = ("bracket", "residual", "rounding", "outside", "kink", "start", "guess", "still", "curve", "trial", "outputs", "jacobian", "hessian")
 
 _LICENCE = "SPDX-License-Identifier: 0BSD (no conditions; no warranty)"
 
@@ -29,23 +30,23 @@ class Unsuitable(ValueError):
     """An option that this module cannot have; the message is one line that says why."""
 
 
-def assemble(closure, target="c", **options):
-    """Files of the module, {file name: text}: header and source for "c", one file for "python".
+def assemble(closure, target="c", plan=PLAIN, **options):
+    """Files of the module, {file name: text}: header and source for "c", one file for "python". `plan` says how the module comes to the root.
 
     Options of "c": single_header, one header that holds the source, too; fortran, the interface as a Fortran module besides. Raises Unsuitable.
     """
-    files = {"c": _assemble_c, "python": _assemble_python}[target](closure, **options)
+    files = {"c": _assemble_c, "python": _assemble_python}[target](plan.closure or closure, plan, **options)
     return {name: seal(text) for name, text in files.items()}
 
 
-def _assemble_c(closure, single_header=False, fortran=False):
+def _assemble_c(closure, plan, single_header=False, fortran=False):
     model, sizes = closure.model, _sizes(closure)
     upper, real = model.name.upper(), c.CSpelling(model, closure.precision).real
 
     def runtime(name):
-        text = resolve(_source(name), _features(closure))
+        text = resolve(_source(name), _features(closure, plan))
         words = {"RW_M*RW_N*RW_N": sizes["MNN"], "RW_M*RW_N": sizes["MN"], "RW_N": sizes["N"], "RW_M": sizes["M"],
-                 "RW_LIMIT": closure.limit}
+                 "RW_LIMIT": closure.limit, "RW_TRIALS": plan.trials, "RW_LEAST_RISE": _below(plan.least_rise), "RW_KEPT": len(closure.kernels.get("still", ()))}
         for word, value in words.items():
             text = re.sub(rf"\b{re.escape(word)}\b", str(value), text)
         if closure.precision is SINGLE:
@@ -54,9 +55,11 @@ def _assemble_c(closure, single_header=False, fortran=False):
 
     kernels = "\n\n".join(c.kernel(closure, name, comments(closure)[name]) for name in _KERNELS if name in closure.kernels)
     solver, interface = runtime("solver.c"), runtime("interface.c")
+    if plan.closure:
+        solver += "\n\n" + _with_still(closure, runtime("approach.c"))
     helpers = _used(runtime("arithmetic.c"), kernels + solver + interface, r"^static \w+ (\w+)\(")
-    origin = _origin(closure, "c", {"single-header": ""} if single_header else {})
-    page = manual(closure, _example_c(closure), _interface_c(closure, single_header), origin)
+    origin = _origin(closure, plan, "c", {"single-header": ""} if single_header else {})
+    page = manual(closure, plan, _example_c(closure), _interface_c(closure, single_header), origin)
     parts = {"name": model.name, "real": real, "helpers": "".join(f"{text}\n\n" for text in helpers), "kernels": kernels,
              "solver": solver, "interface": interface}
     source = _render("implementation.c.j2", parts)
@@ -66,11 +69,11 @@ def _assemble_c(closure, single_header=False, fortran=False):
     if not single_header:
         files[f"{model.name}.c"] = _render("module.c.j2", {"name": model.name, "provenance": origin, "implementation": source})
     if fortran:
-        files[f"{model.name}_module.f90"] = _assemble_fortran(closure)
+        files[f"{model.name}_module.f90"] = _assemble_fortran(closure, plan)
     return files
 
 
-def _assemble_fortran(closure):
+def _assemble_fortran(closure, plan):
     model = closure.model
     if len(model.name) > _LONGEST_IN_FORTRAN:
         raise Unsuitable(f"names in Fortran have at most 63 characters, which leaves {_LONGEST_IN_FORTRAN} for the module's own; "
@@ -81,7 +84,7 @@ def _assemble_fortran(closure):
     if model.caution:
         lines += [*paragraph(f"Caution: {model.caution}", hang="    "), ""]
     lines += ["Example:", "", *(f"    {line}" for line in _example_fortran(closure)), ""]
-    origin = _origin(closure, "c", {"fortran": ""})
+    origin = _origin(closure, plan, "c", {"fortran": ""})
     return _render("module.f90.j2", _sizes(closure) | {
         "name": model.name, "status": [(code, word) for code, word, _ in STATUS], "manual": lines + origin, "kind": _kind(closure)})
 
@@ -101,27 +104,33 @@ def _interface_c(closure, single_header):
                              "compilers.")
 
 
-def _assemble_python(closure):
+def _assemble_python(closure, plan):
     model, sizes = closure.model, _sizes(closure)
 
     def runtime(name):
-        text = resolve(_source(name), _features(closure))
-        return re.sub(r"\bLIMIT\b", str(closure.limit), text)
+        text = resolve(_source(name), _features(closure, plan))
+        words = {"LIMIT": closure.limit, "TRIALS": plan.trials, "LEAST_RISE": _below(plan.least_rise)}
+        for word, value in words.items():
+            text = re.sub(rf"\b{word}\b", str(value), text)
+        return text
 
     kernels = "\n\n\n".join(python.kernel(closure, name, comments(closure)[name]) for name in _KERNELS if name in closure.kernels)
     solver, interface = runtime("solver.py"), runtime("interface.py")
+    if plan.closure:
+        solver += "\n\n\n" + _with_still(closure, runtime("approach.py"))
     helpers = _used(runtime("arithmetic.py"), kernels + solver + interface, r"^def (\w+)\(")
-    page = manual(closure, _example_python(closure), [
+    page = manual(closure, plan, _example_python(closure), [
         f"Interface: p is a sequence of the {sizes['N']} parameters, y a list of the {sizes['M']} results, each in the "
-        "order above."], _origin(closure, "python", {}))
+        "order above."], _origin(closure, plan, "python", {}))
     context = sizes | {"status": [(code, word) for code, word, _ in STATUS], "parameters": ", ".join(p.name for p in model.parameters),
                        "results": ", ".join(model.results), "manual": page, "kernels": kernels, "solver": solver,
                        "interface": interface, "helpers": "".join(f"{text}\n\n\n" for text in helpers)}
     return {f"{model.name}.py": _render("module.py.j2", context)}
 
 
-def _origin(closure, target, flags):
+def _origin(closure, plan, target, flags):
     """The lines that say where a file comes from; flags: the options that shaped it besides."""
+    flags = flags if plan.option == "plain" else flags | {"plan": plan.option}
     certificate = closure.promise.digest if closure.promise else None
     precision = {} if closure.precision is DOUBLE else {"precision": closure.precision.name}
     options = {"target": target, "order": closure.order} | precision | flags
@@ -133,10 +142,11 @@ def _sizes(closure):
     return {"N": n, "M": m, "MN": m * n, "MNN": m * n * n, "order": closure.order}
 
 
-def _features(closure):
+def _features(closure, plan):
     unknown = closure.model.unknown
     return {"OPEN_LOWER": unknown.open_lower, "OPEN_UPPER": unknown.open_upper, "SWITCHES": "kink" in closure.kernels,
             "START": "start" in closure.kernels, "OUTPUTS": "outputs" in closure.kernels,
+            "STILL": "still" in closure.kernels, "PLANNED": plan.closure is not None, "ENDS": plan.ends == "evaluated", "STEEP": plan.ends == "steep",
             "JACOBIAN": "jacobian" in closure.kernels, "HESSIAN": "hessian" in closure.kernels}
 
 
@@ -159,6 +169,16 @@ def resolve(text, features):
 def _holds(test, features):
     """A feature, or features joined by ||."""
     return any(features[name.strip().removeprefix("RW_")] for name in test.split("||"))
+
+
+def _below(value):
+    """A positive number, cut to three digits below it."""
+    return float(f"{0.99*value:.3g}")
+
+
+def _with_still(closure, text):
+    """The kernels take what was kept where anything is."""
+    return text if "still" in closure.kernels else text.replace("(p, kept, ", "(p, ")
 
 
 def _source(name):

@@ -4,7 +4,7 @@ import math
 import re
 
 from rootwright.calculus.precision import SINGLE
-from rootwright.emit.layout import lay_out
+from rootwright.emit.layout import given, lay_out
 from rootwright.emit.names import Names, taken_in_c
 from rootwright.emit.text import statement
 from rootwright.operations import OPERATIONS
@@ -63,18 +63,24 @@ _SIGNATURES = {
     "outside": ("int", ""),
     "kink": ("int", "double {x}, double {error_bound}"),
     "start": ("double", ""),
+    "guess": ("double", ""),
+    "still": ("void", "double {still}[]"),
+    "curve": ("double", "const double {still}[], double {x}, double *{slope}, double *{curvature}"),
+    "trial": ("double", "const double {still}[], double {x}, double *{slope}, double *{rounding}, double *{slope_rounding}, double *{curvature}"),
     "outputs": ("void", "double {x}, double {y}[]"),
     "jacobian": ("void", "double {x}, double {jac}[]"),
     "hessian": ("void", "double {x}, double {hess}[]"),
 }
 _TARGETS = {
     "lower": "{end}[0]", "upper": "{end}[1]", "lower_rounding": "{rounding}[0]", "upper_rounding": "{rounding}[1]",
-    "slope": "*{slope}", "slope_rounding": "*{slope_rounding}", "curvature": "*{curvature}",
+    "slope": "*{slope}", "rounding": "*{rounding}", "slope_rounding": "*{slope_rounding}", "curvature": "*{curvature}",
+    "near_slope": "*{slope}", "near_curvature": "*{curvature}",
 }
-_RETURNED = ("g", "rounding", "outside", "kink", "start")
-_FORMALS = ("p", "end", "rounding", "slope", "slope_rounding", "curvature", "error_bound", "y", "jac", "hess")
+_RETURNED = {"residual": "g", "rounding": "rounding", "outside": "outside", "kink": "kink", "start": "start", "guess": "guess",
+             "curve": "near_g", "trial": "g"}
+_FORMALS = ("p", "end", "rounding", "slope", "slope_rounding", "curvature", "error_bound", "y", "jac", "hess", "still")
 _FUNCTIONS = {"jacobian": "partials", "hessian": "second_partials"}      # where the kernel's name is the interface's
-_FLAT = {"jacobian": "jac", "hessian": "hess"}                          # kernels whose results are one array
+_FLAT = {"jacobian": "jac", "hessian": "hess", "still": "still"}                          # kernels whose results are one array
 
 
 def kernel(closure, name, comment):
@@ -84,14 +90,18 @@ def kernel(closure, name, comment):
     real = spelling.real
     formals = {formal: spelling.names.ours(formal) for formal in _FORMALS} | {"x": spelling.name(model.unknown.name)}
     kind, arguments = (text.replace("double", real) for text in _SIGNATURES[name])
+    if "still" not in closure.kernels:
+        arguments = arguments.replace(f"const {real} {{still}}[], ", "")
     first = f"static {kind} {model.name}_{_FUNCTIONS.get(name, name)}(const {real} {formals['p']}[]"
     signature = first + (", " + arguments.format(**formals) if arguments else "") + ")"
     taken = {*spelling.names.used, *formals.values()}
-    laid = lay_out(closure, name, spelling, taken)
+    laid = lay_out(closure, name, spelling, taken, given(closure, name, formals["still"]))
     lines = [f"/* {line}" if k == 0 else f"   {line}" for k, line in enumerate(comment)]
     lines[-1] += " */"
     lines += [signature, "{"]
     lines += _unpack(model, laid, formals, spelling)
+    if f"const {real} {{still}}[]" in arguments and not laid.reads_given:
+        lines.append(f"    (void){formals['still']};")
     for step in laid.statements:
         lines += statement(f"const {'int' if step.condition else real} {step.name} = {step.text};", "    ")
     lines += _results(name, model, laid, formals)
@@ -113,7 +123,7 @@ def _unpack(model, laid, formals, spelling):
 def _results(name, model, laid, formals):
     lines, returned = [], None
     for k, (result, text) in enumerate(laid.results.items()):
-        if result in _RETURNED:
+        if result == _RETURNED.get(name):
             returned = text
         elif name == "outputs":
             lines += statement(f"{formals['y']}[{k + 1}] = {text};", "    ")

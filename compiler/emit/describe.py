@@ -15,6 +15,10 @@ def comments(closure):
                     f"{float(closure.precision.unit):.3g} is the unit roundoff 2^-{closure.precision.digits} and a margin), and the curvature, the second derivative of the residual.",
         "outside": "True where the parameters are outside what the closure is meant for.",
         "kink": f"True where {switches}.",
+        "still": "What depends on the parameters alone, worked out once for a solve.",
+        "curve": "Residual, slope and curvature for a step; the last bits may differ from the form as written.",
+        "trial": "Residual and slope, the bounds of their rounding errors, and the curvature, all at once.",
+        "guess": f"The first guess of {x}.",
         "start": f"The starting guess of the spec for {x}.",
         "outputs": "The outputs at the root.",
         "jacobian": f"Derivatives of {', '.join(model.results)} with respect to {', '.join(p.name for p in model.parameters)}, "

@@ -10,6 +10,7 @@ from itertools import count
 from rootwright.calculus.program import CONDITIONS
 from rootwright.operations import OPERATIONS
 
+STILL = ("curve", "trial")      # kernels that take those values
 LONGEST = 96                    # characters of an expression before it is split into statements
 
 # Binding strength in C and in Python alike.
@@ -29,17 +30,29 @@ class Kernel:
     inputs: tuple[str, ...]                 # names of the inputs it reads, in the spec's order
     statements: tuple[Statement, ...]
     results: dict[str, str]                 # name of a result -> its expression
+    reads_given: bool                       # whether it reads any of what was given
 
 
-def lay_out(closure, kernel, target, taken):
-    """Kernel of a Closure, spelled through `target` (`number`, `operation`, `name`), keeping clear of the names `taken`."""
+def lay_out(closure, kernel, target, taken, given=None):
+    """Kernel of a Closure, spelled through `target` (`number`, `operation`, `name`), keeping clear of the names `taken`.
+
+    `given` maps instructions that need no computing to the text that reads them.
+    """
     program = closure.program
     roots = [program.results[f"{name}"] for name in closure.kernels[kernel]]
-    return _Layout(closure, target, taken).kernel(closure.kernels[kernel], roots)
+    return _Layout(closure, target, taken, given or {}).kernel(closure.kernels[kernel], roots)
+
+
+def given(closure, kernel, array):
+    """What a kernel reads from the array of values that do not depend on the unknown: {instruction: text}."""
+    if kernel not in STILL:
+        return {}
+    return {closure.program.results[name]: f"{array}[{k}]" for k, name in enumerate(closure.kernels.get("still", ()))}
 
 
 class _Layout:
-    def __init__(self, closure, target, taken):
+    def __init__(self, closure, target, taken, given):
+        self.given = given
         self.instructions = closure.program.instructions
         self.labels = closure.program.labels
         self.constants = closure.constants
@@ -62,10 +75,10 @@ class _Layout:
         for node in nodes:
             self._lay(node, uses[node], node in roots)
         results = {name: self.texts[root][0] for name, root in zip(names, roots)}
-        return Kernel(tuple(sorted(self.inputs)), tuple(self.statements), results)
+        return Kernel(tuple(sorted(self.inputs)), tuple(self.statements), results, not self.given.keys().isdisjoint(nodes))
 
     def _args(self, node):
-        return () if self._folded(node) else self.instructions[node].args
+        return () if self._folded(node) or node in self.given else self.instructions[node].args
 
     def _folded(self, node):
         """A constant written as one number; a named constant keeps its name."""
@@ -85,6 +98,8 @@ class _Layout:
         if self._folded(node):
             text = self.target.number(self.constants[node][0])
             self.texts[node] = (text, SIGN if text.startswith("-") else ATOM)
+        elif node in self.given:
+            self._state(node, self._fresh(self.labels.get(node)), self.given[node])
         elif instruction.op == "input":
             self.inputs.add(instruction.value)
             self.texts[node] = (self.target.name(instruction.value), ATOM)

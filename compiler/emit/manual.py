@@ -20,9 +20,9 @@ STATUS = (
 _UNPROVED = ("Proved over the operating range: nothing yet. Every solve checks its own point and reports what it finds.",)
 
 
-def manual(closure, example, interface, origin):
+def manual(closure, plan, example, interface, origin):
     """Lines of the manual. `example` is a list of lines in the target language, `interface` names its conventions,
-    `origin` says where the file comes from."""
+    `plan` says how the module comes to the root, `origin` where the file comes from."""
     model = closure.model
     lines = [*paragraph(f"{model.name}: {model.title}" if model.title else model.name), ""]
     lines += _equation(closure)
@@ -32,7 +32,9 @@ def manual(closure, example, interface, origin):
     if model.caution:
         lines += paragraph(f"Caution: {model.caution}", hang="    ") + [""]
     lines += interface + [""]
-    lines += _status() + _accuracy(closure)
+    lines += _status() + _accuracy(closure, plan)
+    if plan.why:
+        lines += ["Plan:", "", *(line for reason in plan.why for line in paragraph(reason, indent="    ", hang="        ")), ""]
     lines += [*(closure.promise.lines if closure.promise else _UNPROVED), ""]
     lines += ["Example:", ""] + [f"    {line}" for line in example] + [""]
     return [harmless(line) for line in lines] + origin
@@ -87,7 +89,7 @@ def _status():
     return lines + [f"    {code:2}  {word:16} {meaning}" for code, word, meaning in STATUS] + [""]
 
 
-def _accuracy(closure):
+def _accuracy(closure, plan):
     program = closure.program
     used = {program.instructions[node].op for node in needed(program.instructions, program.results.values())
             if node not in closure.constants}
@@ -100,4 +102,4 @@ def _accuracy(closure):
         "operation of the residual moves the root by). error_bound covers the distance to the exact root of the equation as "
         f"written, at the given {numbers}, for parameters inside their ranges and rounding to nearest"
         + (", with a maths library as accurate as: " + ", ".join(f"{op} {ulps:g} ulp" for ulps, op in table) if table else "") + ".")
-    return lines + paragraph(f"At most {closure.limit} evaluations of the residual a solve.") + [""]
+    return lines + paragraph(f"At most {closure.limit + plan.extra} evaluations of the residual a solve.") + [""]

@@ -1,0 +1,64 @@
+"""What short proofs in interval arithmetic show for the whole operating range, so that no solve has to look at it."""
+
+import numpy as np
+
+from rootwright.calculus.program import needed
+from rootwright.proof.crew import Crew
+from rootwright.proof.numbers import doubles_are_finite
+from rootwright.proof.search import outside
+from rootwright.proof.settle import Domain, Limit, Outcome, search_ends
+
+BOXES = 200                 # that either proof may take, and one wave more
+LARGEST = 600               # operations of a residual beyond which neither is tried
+
+
+def domain(closure):
+    """The charts that both proofs are made in; None for a residual too large for a short proof."""
+    program = closure.program
+    return Domain(closure.model) if len(needed(program.instructions, [program.results["g"]])) <= LARGEST else None
+
+
+def computed_finite(charts, closure):
+    """True if no value of the residual that the module computes overflows or is undefined anywhere in the range.
+
+    What is proved of real numbers says nothing of doubles otherwise.
+    """
+    return doubles_are_finite(charts, closure, Limit(BOXES), BOXES)
+
+
+def ends_differ(charts):
+    """True if the residual has different signs at (next to open) ends, or is 0 at a closed one, everywhere in the range."""
+    outcome = Outcome()
+    with Crew(charts.judges()) as crew:
+        search_ends(charts, crew, Limit(BOXES), BOXES, outcome)
+    return not outcome.open
+
+
+def least_rise(charts):
+    """A positive lower bound of |dg/dt|, where t is the share of the bracket, over the bracket and the operating range.
+
+    With it the residual is continuous and monotone, so a residual smaller than this times the share that is left
+    towards either end says that the signs at the ends differ. 0 where no such bound was found.
+    """
+    if len(charts.charts) > 1 or charts.model.unknown.open_lower:
+        return 0.0
+    chart = charts.lower
+    low, high = charts.whole()
+    least, spent, variable = np.inf, 0, 0
+    while len(low) and spent < BOXES:
+        spent += len(low)
+        here = ~outside(chart, low, high)
+        low, high = low[here], high[here]
+        if not len(low):
+            break
+        value, slope = chart.natural(chart.residual, low, high), chart.natural(chart.slope, low, high)
+        bound = np.maximum(slope.low, -slope.high)
+        good = ~(value.undefined | value.jump | slope.undefined) & (bound > 0.0)
+        least = min(least, float(bound[good].min(initial=np.inf)))
+        low, high = low[~good], high[~good]
+        middle = low[:, variable] + 0.5 * (high[:, variable] - low[:, variable])
+        below, above = high.copy(), low.copy()
+        below[:, variable] = above[:, variable] = middle
+        low, high = np.concatenate([low, above]), np.concatenate([below, high])
+        variable = (variable + 1) % low.shape[1]
+    return 0.0 if len(low) or not np.isfinite(least) else least

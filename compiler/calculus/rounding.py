@@ -232,7 +232,12 @@ class Rounding:
         return self._extreme(node, self.graph.ge(a, b), a, b)
 
     def _sign(self, node, a):
-        return Error()
+        """Off by 2 at most, where the sign of the argument is not certain."""
+        graph = self.graph
+        reach = self.sign_bound(a)
+        if graph.literal(reach) == 0:
+            return Error()
+        return Error(running=graph.where(graph.le(graph.abs_(a), reach), graph.div(2, self.unit), 0))
 
     def _sqrt(self, node, a):
         """|sqrt(a) - sqrt(b)| <= e/sqrt(max(a, e)) for |a - b| <= e."""

@@ -26,6 +26,7 @@ from rootwright.calculus.precision import DOUBLE, Precision
 from rootwright.calculus.program import Graph, Program
 from rootwright.calculus.rounding import Rounding
 from rootwright.calculus.second_order import hessian
+from rootwright.calculus.switches import switches
 from rootwright.spec.model import Model
 
 
@@ -187,28 +188,11 @@ class _Closing:
             outside = graph.or_(outside, graph.not_(condition))
         return outside
 
-    def _switches(self, results):
-        """Every switch that the results pass: (guard, left, right), a switch where left = right while the guard holds."""
-        graph, switches = self.graph, {}
-        for result in results:
-            for node, (_, guard) in sorted(sweep(graph, result).items()):
-                instruction = graph.instructions[node]
-                if instruction.op in ("min", "max"):
-                    switches[(guard, *instruction.args)] = None
-                elif instruction.op in ("abs", "sign"):
-                    switches[(guard, instruction.args[0], graph.number(0))] = None
-                elif instruction.op == "where" and graph.instructions[instruction.args[2]].op != "nan":
-                    for left, right in comparisons(graph, instruction.args[0]):
-                        switches[(guard, left, right)] = None
-        return list(switches)
-
     def _kink(self, results, rounding):
         """Condition: at some switch, |left - right| is within its rounding error and what the root's error bound moves it by."""
         graph = self.graph
         kink = None
-        for guard, left, right in self._switches(results):
-            if graph.is_constant(left) and graph.is_constant(right):
-                continue
+        for guard, left, right in switches(graph, results):
             distance = graph.sub(left, right)
             (rate,) = partials(graph, distance, [self.unknown])
             reach = graph.add(rounding.sign_bound(distance),

@@ -13,9 +13,10 @@ import flint
 import numpy as np
 
 from rootwright.calculus.balls import Balls, precision
-from rootwright.calculus.differentiate import partials, sweep
-from rootwright.calculus.lower import COMPARISONS, Lowering
+from rootwright.calculus.differentiate import partials
+from rootwright.calculus.lower import Lowering
 from rootwright.calculus.program import Graph, evaluate, needed
+from rootwright.calculus.switches import switches
 from rootwright.proof.cancel import Cancelling, domain, factors, substituted
 from rootwright.proof.functions import ends
 from rootwright.proof.intervals import Interval, Intervals
@@ -79,16 +80,16 @@ class Chart:
             bound.declare(output.name, outputs[-1])
         self.requirements = [bound.lower(condition) for condition in model.require]
         self.slacks = [graph.sub(*reversed(pair)) for condition in self.requirements for pair in self._at_most(condition)]
-        switches = self._switches([residuals[0], *outputs])
-        roots = [*residuals, width, lower, upper, *self.slacks, *(node for _, node in switches)]
+        passed = [(guard, graph.sub(left, right)) for guard, left, right in switches(graph, [residuals[0], *outputs])]
+        roots = [*residuals, width, lower, upper, *self.slacks, *(node for _, node in passed)]
         roots.append(free.lower(model.residual))
         self.cancelling, self.expanding = Cancelling(graph, roots), Cancelling(graph, roots, exponentials=True)
         self.residual = self._form(residuals[0])
         self.at_lower, self.at_upper, self.width = (self._form(node, True) for node in (*residuals[1:], width))
         self.bracket = [self._form(lower), self._form(upper)]
         self.slack_forms = [self._form(node) for node in self.slacks]
-        self.switches = [(guard, self._form(node)) for guard, node in switches]
-        used = needed(graph.instructions, [*residuals, *self.requirements, lower, upper, *(node for _, node in switches)])
+        self.switches = [(guard, self._form(node)) for guard, node in passed]
+        used = needed(graph.instructions, [*residuals, *self.requirements, lower, upper, *(node for _, node in passed)])
         names = {graph.instructions[node].value for node in used if graph.instructions[node].op == "input"}
         self.variables = [p.name for p in model.parameters if p.name in names and p.name not in fixed] + [SHARE]
         self.gradients = {}
@@ -139,28 +140,6 @@ class Chart:
         if instruction.op in ("le", "lt"):
             return [instruction.args]
         return [instruction.args[::-1]] if instruction.op in ("ge", "gt") else []
-
-    def _switches(self, results):
-        """(guard, left - right) of every switch: see `calculus/closure.py`."""
-        graph, switches = self.graph, {}
-        for result in results:
-            for node, (_, guard) in sorted(sweep(graph, result).items()):
-                instruction = graph.instructions[node]
-                if instruction.op in ("min", "max"):
-                    switches[(guard, *instruction.args)] = None
-                elif instruction.op in ("abs", "sign"):
-                    switches[(guard, instruction.args[0], graph.number(0))] = None
-                elif instruction.op == "where" and graph.instructions[instruction.args[2]].op != "nan":
-                    for left, right in self._comparisons(instruction.args[0]):
-                        switches[(guard, left, right)] = None
-        return [(guard, graph.sub(left, right)) for guard, left, right in switches
-                if not (graph.is_constant(left) and graph.is_constant(right))]
-
-    def _comparisons(self, condition):
-        instruction = self.graph.instructions[condition]
-        if instruction.op in COMPARISONS:
-            return [instruction.args]
-        return [pair for arg in instruction.args for pair in self._comparisons(arg)]
 
     def _product(self, form):
         """(the form itself, its constant factor, the others)."""

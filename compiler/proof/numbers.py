@@ -60,17 +60,27 @@ def doubles_are_finite(domain, closure, limit, boxes=4000):
     program, unknown = closure.program, domain.model.unknown
     if unknown.open_lower or unknown.open_upper:
         return False
-    chart = domain.lower
     names = [name for kernel in ("bracket", "residual", "rounding") for name in closure.kernels[kernel]]
     roots = [program.results[name] for name in names]
-    order = needed(program.instructions, roots)
+
+    def finite(*values):
+        return np.logical_and.reduce(np.broadcast_arrays(*((value.low >= -_LARGEST) & (value.high <= _LARGEST) for value in values)))
+
+    return holds_everywhere(domain, program, needed(program.instructions, roots), finite, limit, boxes)
+
+
+def holds_everywhere(domain, program, nodes, holds, limit, boxes):
+    """True where holds(*enclosures of the nodes) is true all over the brackets of the operating range, by subdivision.
+
+    The program's values are enclosed as those of real numbers, box by box; a value that may be undefined fails.
+    """
     low, high = domain.ranges.low[None, :].copy(), domain.ranges.high[None, :].copy()
     spent = 0
     while len(low) and spent < boxes:
         now, low, high = (low[:CHUNK], high[:CHUNK]), low[CHUNK:], high[CHUNK:]
         spent += len(now[0])
         limit.take(len(now[0]), "doubles", len(low))
-        bad = ~outside(chart, *now) & ~_finite(domain, program, roots, order, *now)
+        bad = ~outside(domain.lower, *now) & ~_holds(domain, program, nodes, holds, *now)
         if bad.any():
             a, b = now[0][bad], now[1][bad]
             first, last, stuck = split(a, b, np.ones(a.shape), domain.ranges.widths(a, b), domain.ranges.logs)
@@ -80,13 +90,10 @@ def doubles_are_finite(domain, closure, limit, boxes=4000):
     return not len(low)
 
 
-def _finite(domain, program, roots, order, low, high):
+def _holds(domain, program, nodes, holds, low, high):
     inputs = program_inputs(domain, low, high)
     with np.errstate(all="ignore"):
-        values = evaluate(program.instructions, roots, domain.lower.arithmetic, inputs)
-    fine = np.ones(len(low), bool)
-    for node in order:
-        value = values[node]
-        if isinstance(value, Interval):
-            fine &= np.broadcast_to(~np.asarray(value.undefined | (value.low < -_LARGEST) | (value.high > _LARGEST)), fine.shape)
-    return fine
+        values = evaluate(program.instructions, nodes, domain.lower.arithmetic, inputs)
+        values = [values[node] for node in nodes if isinstance(values[node], Interval)]
+        undefined = np.logical_or.reduce([np.broadcast_to(value.undefined, len(low)) for value in values])
+        return ~undefined & holds(*values)

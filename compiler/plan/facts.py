@@ -10,7 +10,8 @@ from rootwright.proof.numbers import doubles_are_finite, holds_everywhere
 from rootwright.proof.search import outside
 from rootwright.proof.settle import Domain, Limit, Outcome, search_ends
 
-BOXES = 200                 # that either proof may take, and one wave more
+BOXES = 200                 # that a proof may take, and one wave more
+FEW = 50                    # the same of the costly one of the signs at the ends
 LARGEST = 600               # operations of a residual beyond which neither is tried
 
 
@@ -82,7 +83,7 @@ def ends_differ(charts):
     """True if the residual has different signs at (next to open) ends, or is 0 at a closed one, everywhere in the range."""
     outcome = Outcome()
     with Crew(charts.judges()) as crew:
-        search_ends(charts, crew, Limit(BOXES), BOXES, outcome)
+        search_ends(charts, crew, Limit(FEW), FEW, outcome)
     return not outcome.open
 
 

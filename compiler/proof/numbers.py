@@ -13,7 +13,8 @@ from rootwright.proof.search import outside, split
 from rootwright.proof.sensitivities import program_inputs
 
 _LARGEST = 1e307                # a value below it in exact arithmetic is finite in doubles, rounding included
-_ROUNDS = 40
+_SMALLEST = 2.3e-308            # a value above it in exact arithmetic keeps its digits
+_NOTABLE, _FACTOR = 1e-100, 1e20
 
 
 def slope_bound(domain, outcome, limit):
@@ -52,7 +53,7 @@ def _slopes(domain, index, low, high):
 
 
 def doubles_are_finite(domain, closure, limit, boxes=4000):
-    """True where no value that the module computes at a root's bracket can overflow or be undefined, over the whole range.
+    """True where no value that the module computes at a root's bracket can overflow, be undefined or vanish by underflow, over the whole range.
 
     Then what is proved of the signs at the ends holds for the module: a computed residual is within its rounding bound
     of the exact one, and within that bound it counts as zero.
@@ -89,4 +90,52 @@ def _finite(domain, program, roots, order, low, high):
         value = values[node]
         if isinstance(value, Interval):
             fine &= np.broadcast_to(~np.asarray(value.undefined | (value.low < -_LARGEST) | (value.high > _LARGEST)), fine.shape)
-    return fine
+    vital = [program.results[name] for name in ("lower", "upper", "g")]
+    with np.errstate(all="ignore"):
+        return fine & ~_vanishes(program.instructions, vital, values, fine.shape)
+
+
+def _vanishes(instructions, roots, values, shape):
+    """True where a value that is not 0 may underflow without being lost in a sum anyway.
+
+    Then a residual of one sign would count as zero, and a sign change would be mere rounding.
+    """
+    order = needed(instructions, roots)
+    fades = {node: np.full(shape, node not in roots) for node in order}     # an error below _SMALLEST changes nothing of note
+    gone = np.zeros(shape, bool)
+    for node in reversed(order):
+        instruction, value = instructions[node], values[node]
+        if not isinstance(value, Interval):
+            continue
+        args = [values[arg] for arg in instruction.args]
+        if instruction.op in ("mul", "div"):
+            first, second = _size(args[0]), _size(args[1])
+            gone |= ((first * second if instruction.op == "mul" else first / second) < _SMALLEST) & ~fades[node]
+        elif instruction.op in ("exp", "pow"):
+            gone |= (value.low < _SMALLEST) & (value.high > -_SMALLEST) & ~fades[node]
+        for place, arg in enumerate(instruction.args):
+            if arg in fades:
+                fades[arg] = fades[arg] & _absorbs(instruction.op, place, args, fades[node])
+    return gone
+
+
+def _size(value):
+    """The least size of a value, or the largest where it may be 0: next to 0 a product is small for a good reason."""
+    least = np.maximum(value.low, -value.high)
+    most = np.maximum(-value.low, value.high)
+    return np.where(least > 0.0, least, np.where(most > 0.0, most, 1.0))
+
+
+def _absorbs(op, place, args, later):
+    """Where an error below _SMALLEST of one operand is lost in this operation, or in `later` ones."""
+    if op in ("neg", "abs", "named"):
+        return later
+    if op in ("add", "sub"):
+        other = args[1 - place]
+        return later | (other.low > _NOTABLE) | (other.high < -_NOTABLE)
+    if op == "mul":
+        other = args[1 - place]
+        return later & (other.low > -_FACTOR) & (other.high < _FACTOR)
+    if op == "div" and place == 0:
+        return later & ((args[1].low > 1.0 / _FACTOR) | (args[1].high < -1.0 / _FACTOR))
+    return False

@@ -9,7 +9,7 @@ from rootwright.proof.crew import CHUNK
 from rootwright.proof.functions import ends
 from rootwright.proof.intervals import Interval
 from rootwright.proof.ranges import as_ball, exact_ends
-from rootwright.proof.search import outside, split
+from rootwright.proof.search import at_share, outside, split
 from rootwright.proof.sensitivities import program_inputs
 
 _LARGEST = 1e307                # a value below it in exact arithmetic is finite in doubles, rounding included
@@ -90,19 +90,27 @@ def _finite(domain, program, roots, order, low, high):
         value = values[node]
         if isinstance(value, Interval):
             fine &= np.broadcast_to(~np.asarray(value.undefined | (value.low < -_LARGEST) | (value.high > _LARGEST)), fine.shape)
-    vital = [program.results[name] for name in ("lower", "upper", "g")]
-    with np.errstate(all="ignore"):
-        return fine & ~_vanishes(program.instructions, vital, values, fine.shape)
+    for share in (0.0, 1.0):
+        fine &= ~_vanishes(domain, program, *at_share(low, high, share))
+    return fine
 
 
-def _vanishes(instructions, roots, values, shape):
-    """True where a value that is not 0 may underflow without being lost in a sum anyway.
+def _vanishes(domain, program, low, high):
+    """True where at an end of the bracket a value that is not 0 may underflow, and is not lost in a sum anyway.
 
     Then a residual of one sign would count as zero, and a sign change would be mere rounding.
     """
+    instructions, roots = program.instructions, [program.results[name] for name in ("lower", "upper", "g")]
+    with np.errstate(all="ignore"):
+        values = evaluate(instructions, roots, domain.lower.arithmetic, program_inputs(domain, low, high))
+        return _underflow(instructions, roots, values, np.zeros(len(low), bool))
+
+
+def _underflow(instructions, roots, values, gone):
     order = needed(instructions, roots)
-    fades = {node: np.full(shape, node not in roots) for node in order}     # an error below _SMALLEST changes nothing of note
-    gone = np.zeros(shape, bool)
+    fades = {node: ~gone for node in order}         # an error below _SMALLEST changes nothing of note
+    for root in roots:
+        fades[root] = np.broadcast_to((values[root].low > _NOTABLE) | (values[root].high < -_NOTABLE), gone.shape)
     for node in reversed(order):
         instruction, value = instructions[node], values[node]
         if not isinstance(value, Interval):
@@ -110,9 +118,9 @@ def _vanishes(instructions, roots, values, shape):
         args = [values[arg] for arg in instruction.args]
         if instruction.op in ("mul", "div"):
             first, second = _size(args[0]), _size(args[1])
-            gone |= ((first * second if instruction.op == "mul" else first / second) < _SMALLEST) & ~fades[node]
+            gone = gone | ((first * second if instruction.op == "mul" else first / second) < _SMALLEST) & ~fades[node]
         elif instruction.op in ("exp", "pow"):
-            gone |= (value.low < _SMALLEST) & (value.high > -_SMALLEST) & ~fades[node]
+            gone = gone | (value.low < _SMALLEST) & (value.high > -_SMALLEST) & ~fades[node]
         for place, arg in enumerate(instruction.args):
             if arg in fades:
                 fades[arg] = fades[arg] & _absorbs(instruction.op, place, args, fades[node])

@@ -6,7 +6,7 @@ import numpy as np
 
 from rootwright.calculus.program import needed
 from rootwright.proof.crew import Crew
-from rootwright.proof.numbers import doubles_are_finite, holds_everywhere
+from rootwright.proof.numbers import doubles_are_finite, slope_is_sure
 from rootwright.proof.search import outside
 from rootwright.proof.settle import Domain, Limit, Outcome, search_ends
 
@@ -17,7 +17,7 @@ LARGEST = 600               # operations of a residual beyond which neither is t
 
 @dataclass(frozen=True)
 class Facts:
-    """ends: what is known of the signs there, "proved", "steep" or "evaluated"; sure: as `slope_is_sure`; why: in words."""
+    """ends: what is known of the signs there, "proved", "steep" or "evaluated"; sure: as `proof.numbers.slope_is_sure`; why: in words."""
     ends: str
     least_rise: float
     sure: bool
@@ -29,7 +29,7 @@ def find(closure):
     charts = domain(closure)
     if charts is None or not computed_finite(charts, closure):
         return Facts("evaluated", 0.0, False, (_ENDS["evaluated"],))
-    sure = slope_is_sure(charts, closure)
+    sure = slope_is_sure(charts, closure, Limit(BOXES), BOXES)
     why = ("slope: proved to be far from 0 and right over the operating range; not looked at",) if sure else ()
     if closure.promise is not None and "exists" in closure.promise.proved or ends_differ(charts):
         return Facts("proved", 0.0, sure, (_ENDS["proved"], *why))
@@ -58,25 +58,6 @@ def computed_finite(charts, closure):
     What is proved of real numbers says nothing of doubles otherwise.
     """
     return doubles_are_finite(charts, closure, Limit(BOXES), BOXES)
-
-
-def slope_is_sure(charts, closure):
-    """True if all over the brackets of the operating range the slope's rounding error is below 2^-12 of it, and the slope
-    changes by no more of itself within the error of a certified root, which is 2*rounding/|g_x| + 2^-53*|x| at most; here
-    with a factor of two to spare.
-    """
-    program = closure.program
-    nodes = [program.results[name] for name in ("slope", "rounding", "slope_rounding", "curvature")]
-    nodes.append(next(node for node, instruction in enumerate(program.instructions)
-                      if instruction.op == "input" and instruction.value == closure.model.unknown.name))
-
-    def holds(slope, rounding, slope_rounding, curvature, x):
-        least = np.maximum(slope.low, -slope.high)
-        bend = np.maximum(curvature.high, -curvature.low)
-        error = 2.0 * rounding.high / least + 2.0**-53 * np.maximum(x.high, -x.low)
-        return (least > 0.0) & (slope_rounding.high < 2.0**-12 * least) & (2.0 * bend * error < 2.0**-12 * least)
-
-    return holds_everywhere(charts, program, nodes, holds, Limit(BOXES), BOXES)
 
 
 def ends_differ(charts):

@@ -318,7 +318,8 @@ def substituted(graph, node, name, value):
 
 
 def domain(graph, node):
-    """[(kind, node)] of everything that must hold for `node` to have a value: `nonzero`, `positive`, `not negative`.
+    """[(kind, node)] of what makes sure that `node` has a value: `nonzero`, `positive`, `not negative`, all of which must hold;
+    and `suffices`: it need not be positive, but no more is said.
 
     None where the expression chooses between branches, whose domains do not hold at once, or has a function whose domain is not said here.
     """
@@ -345,5 +346,9 @@ def domain(graph, node):
             conditions.append(("nonzero", graph.cos(args[0])))
         elif op == "pow":
             exponent = graph.rational(args[1])
-            conditions.append(("not negative" if exponent is not None and exponent > 0 else "positive", args[0]))
+            if exponent is None or exponent.denominator == 1:       # 0^0 is 1, and (-2)^n has a value for whole n
+                kind = "suffices"
+            else:
+                kind = "not negative" if exponent > 0 else "positive"
+            conditions.append((kind, args[0]))
     return list(dict.fromkeys(conditions))

@@ -67,9 +67,11 @@ def doubles_are_finite(domain, closure, limit, boxes=4000):
     low, high = domain.ranges.low[None, :].copy(), domain.ranges.high[None, :].copy()
     spent = 0
     while len(low) and spent < boxes:
-        now, low, high = (low[:CHUNK], high[:CHUNK]), low[CHUNK:], high[CHUNK:]
+        count = min(limit.wave(np.inf), CHUNK, boxes - spent)
+        if not count:
+            return False
+        now, low, high = (low[:count], high[:count]), low[count:], high[count:]
         spent += len(now[0])
-        limit.take(len(now[0]), "doubles", len(low))
         bad = ~outside(chart, *now) & ~_finite(domain, program, roots, order, *now)
         if bad.any():
             a, b = now[0][bad], now[1][bad]
@@ -77,6 +79,7 @@ def doubles_are_finite(domain, closure, limit, boxes=4000):
             if stuck.any():
                 return False
             low, high = np.concatenate([low, first]), np.concatenate([high, last])
+        limit.take(len(now[0]), "doubles", len(low), lambda: domain.ranges.settled(low, high))
     return not len(low)
 
 

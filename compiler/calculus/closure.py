@@ -32,9 +32,11 @@ from rootwright.spec.model import Model
 
 @dataclass(frozen=True, slots=True)
 class Promise:
-    """What was proved over the operating range, in plain lines; the claims proved; the SHA-256 of the certificate that says so."""
+    """What was proved over the operating range, in plain lines; the claims proved for real numbers, and those proved for the
+    module's doubles besides; the SHA-256 of the certificate that says so."""
     lines: tuple[str, ...]
     proved: tuple[str, ...]
+    computed: tuple[str, ...]
     digest: str
 
 

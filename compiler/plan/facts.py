@@ -26,18 +26,22 @@ class Facts:
 
 def find(closure):
     """The Facts of a Closure."""
+    promised = () if closure.promise is None else closure.promise.computed
+    if "exists" in promised:
+        return Facts("proved", 0.0, "slope" in promised, (_ENDS["proved"], *(_SURE,)*("slope" in promised)))
     charts = domain(closure)
     if charts is None or not computed_finite(charts, closure):
         return Facts("evaluated", 0.0, False, (_ENDS["evaluated"],))
     sure = slope_is_sure(charts, closure, Limit(BOXES), BOXES)
-    why = ("slope: proved to be far from 0 and right over the operating range; not looked at",) if sure else ()
-    if closure.promise is not None and "exists" in closure.promise.proved or ends_differ(charts):
+    why = (_SURE,) if sure else ()
+    if ends_differ(charts):
         return Facts("proved", 0.0, sure, (_ENDS["proved"], *why))
     least = least_rise(charts)
     ends = "steep" if least > 0.0 else "evaluated"
     return Facts(ends, least, sure, (_ENDS[ends].format(least=least), *why))
 
 
+_SURE = "slope: proved to be far from 0 and right over the operating range; not looked at"
 _ENDS = {
     "proved": "ends: signs proved to differ over the operating range; not evaluated",
     "steep": "ends: not evaluated; the residual is proved monotone over the operating range, and rises by {least:.3g} at least "

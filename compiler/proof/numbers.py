@@ -101,9 +101,11 @@ def holds_everywhere(domain, holds, limit, boxes):
     low, high = domain.ranges.low[None, :].copy(), domain.ranges.high[None, :].copy()
     spent = 0
     while len(low) and spent < boxes:
-        now, low, high = (low[:CHUNK], high[:CHUNK]), low[CHUNK:], high[CHUNK:]
+        count = min(limit.wave(np.inf), CHUNK, boxes - spent)
+        if not count:
+            return False
+        now, low, high = (low[:count], high[:count]), low[count:], high[count:]
         spent += len(now[0])
-        limit.take(len(now[0]), "doubles", len(low))
         bad = ~outside(domain.lower, *now) & ~holds(*now)
         if bad.any():
             a, b = now[0][bad], now[1][bad]
@@ -111,6 +113,7 @@ def holds_everywhere(domain, holds, limit, boxes):
             if stuck.any():
                 return False
             low, high = np.concatenate([low, first]), np.concatenate([high, last])
+        limit.take(len(now[0]), "doubles", len(low), lambda: domain.ranges.settled(low, high))
     return not len(low)
 
 

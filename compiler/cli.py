@@ -95,9 +95,9 @@ def _parser():
                           help="arithmetic of the module: double (default); c: single, float throughout")
     compile_.add_argument("--require-proof", action="store_true",
                           help="write nothing unless existence and uniqueness of the root are proved for this very spec")
-    compile_.add_argument("--plan", choices=("plain", "chosen"), default="plain",
-                          help="plain: the safeguarded solver alone (default); chosen: a short way to the root goes before it "
-                               "where that pays")
+    compile_.add_argument("--plan", choices=("chosen", "plain"), default="chosen",
+                          help="chosen: a short way to the root goes before the safeguarded solver where that pays (default); "
+                               "plain: the safeguarded solver alone")
     _add_order(compile_, "derivatives in the module: 0 none, 1 first (default), 2 with hessian and tangent_adjoint")
 
     evaluate = _command(
@@ -325,7 +325,7 @@ def _compile(arguments):
         if closure is None:
             worst = WRONG
             continue
-        closure, lacking = pipeline.promised(closure, spec)
+        _, lacking = pipeline.promised(closure, spec)
         if lacking:
             print(f"{spec}: its certificate counts for nothing: {lacking}; prove it again with: rootwright prove --save {spec}",
                   file=sys.stderr)
@@ -452,6 +452,8 @@ def _closure(spec, order=1, precision="double"):
     except pipeline.SpecError as error:
         closure, diagnostics = None, error.diagnostics
     print("\n".join(render(diagnostic) for diagnostic in diagnostics), end="", file=sys.stderr)
+    if closure is not None:
+        closure, _ = pipeline.promised(closure, spec)
     return closure, [_as_data(diagnostic) for diagnostic in diagnostics]
 
 
@@ -465,12 +467,13 @@ def _load(closure, target):
     from rootwright.binding.build import NoCompiler
     from rootwright.binding.module import load
 
+    plan = pipeline.plan(closure)
     if target == "c":
         try:
-            return load(closure, pipeline.emit(closure, "c"), "c")
+            return load(closure, pipeline.emit(closure, "c", plan), "c")
         except NoCompiler as error:
             print(f"{error}; going on with the Python target, which is slower", file=sys.stderr)
-    return load(closure, pipeline.emit(closure, "python"), "python")
+    return load(closure, pipeline.emit(closure, "python", plan), "python")
 
 
 def _shown(path, standard):

@@ -24,7 +24,7 @@ static int rw_approach(const double p[], double start, double known[], rw_point 
     double third;
 #endif
 #if RW_CAREFUL
-    double slope_rounding, least, turn;
+    double slope_rounding, least, turn, beyond, next;
 #endif
 #if RW_ENDS
     double low, high;
@@ -84,6 +84,13 @@ static int rw_approach(const double p[], double start, double known[], rw_point 
             turn = fabs(curvature) * error / least;
             if (!(least > 0.0) || rw_is_flat(turn)) {
                 break;
+            }
+            if (fabs(g) > bound) { /* then the next double on the other side of the root tells whether the curve is straight */
+                beyond = rw_residual(p, nextafter(x, (g < 0.0) == (slope > 0.0) ? end[1] : end[0]), &next);
+                r->evaluations += 1;
+                if ((beyond < 0.0) == (g < 0.0) || !(fabs(next - slope) <= 0.25 * fabs(slope))) {
+                    break;
+                }
             }
             error *= (1.0 + turn) * (1.0 + 0x1p-10); /* as in rw_certify */
 #else

@@ -69,6 +69,11 @@ def _approach(p, start, known, r):
             turn = abs(curvature) * error / least
             if _is_flat(turn):
                 break
+            if abs(g) > bound:  # then the next double on the other side of the root tells whether the curve is straight
+                beyond, following = _residual(p, math.nextafter(x, upper if (g < 0.0) == (slope > 0.0) else lower))
+                r.evaluations += 1
+                if (beyond < 0.0) == (g < 0.0) or not abs(following - slope) <= 0.25 * abs(slope):
+                    break
             error *= (1.0 + turn) * (1.0 + 2.0**-10)  # as in _certify
 #else
             # The slope is proved, for the whole operating range, to be right to 2^-12 of itself and to change by no

@@ -133,7 +133,7 @@ def _assemble_python(closure, plan):
 
 def _origin(closure, plan, target, flags):
     """The lines that say where a file comes from; flags: the options that shaped it besides."""
-    flags = flags if plan.option == "plain" else flags | {"plan": plan.option}
+    flags = flags | {"plan": "plain"} if plan is PLAIN else flags
     certificate = closure.promise.digest if closure.promise else None
     precision = {} if closure.precision is DOUBLE else {"precision": closure.precision.name}
     options = {"target": target, "order": closure.order} | precision | flags
@@ -192,7 +192,7 @@ def _with_known(closure, text):
                              ("hessian", "second_partials")):
         if not (known(closure, kernel) or kernel == "trial" and shared(closure)):
             text = text.replace(f"_{function}(p, known, ", f"_{function}(p, ")
-    return text if _known(closure) else text.replace("double known[], ", "").replace("start, known", "start")
+    return text if _known(closure) else re.sub(r"\w+ known\[\], ", "", text).replace("start, known", "start")
 
 
 def _plan_words(closure, plan):

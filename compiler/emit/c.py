@@ -105,7 +105,7 @@ def kernel(closure, name, comment):
     lines[-1] += " */"
     lines += [signature, "{"]
     lines += _unpack(model, laid, formals, spelling)
-    if f"const {real} {{known}}[]" in arguments and not laid.reads_given:
+    if f"{real} {{known}}[]" in arguments and not laid.reads_given and name != "still" and not (name == "trial" and shared(closure)):
         lines.append(f"    (void){formals['known']};")
     for step in laid.statements:
         lines += statement(f"const {'int' if step.condition else real} {step.name} = {step.text};", "    ")

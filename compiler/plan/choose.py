@@ -89,12 +89,15 @@ def _best(measured, forms):
             continue
         for method in METHODS:
             for steps, x in enumerate(measured.walk(start.x, method, forms.curve(method))):
+                way = first + steps * forms.step_effort[method]
+                if best is not None and way + _STEP + forms.trial_effort > best.cost:
+                    break
                 if steps == 0 and method != "newton":
                     continue
                 certificates = measured.certificates(x, forms.author)
                 missed = np.isinf(certificates)
                 certificates = float(np.mean(np.where(missed, _PLAIN + 3.0, 1.0 + _AGAIN * (certificates - 1.0))))
-                cost = first + steps * (_STEP + forms.curve_effort(method)) + certificates * (_STEP + forms.trial_effort)
+                cost = way + certificates * (_STEP + forms.trial_effort)
                 if best is None or cost < _MARGIN * best.cost:
                     best = _Way(start, method, steps, cost, steps + certificates, float(np.mean(missed)))
     return best
@@ -124,6 +127,7 @@ class _Forms:
         third, = partials(graph, self.results["curvature"], [self.unknown])
         self.near = self.steps([self.results["g"], self.results["slope"], self.results["curvature"], third])
         self.trial_effort = effort(graph.instructions, self.author)
+        self.step_effort = {method: self._step_effort(method) for method in METHODS}
 
     def _moving(self):
         return depend_on(self.graph.instructions, {self.unknown})
@@ -132,10 +136,11 @@ class _Forms:
         """Nodes of what a step takes."""
         return self.near[:2 + list(METHODS).index(method)]
 
-    def curve_effort(self, method):
+    def _step_effort(self, method):
+        """Effort of a step's evaluation, without what is worked out once."""
         nodes = self.curve(method)
-        moving = self._moving()
-        return effort(self.graph.instructions, nodes, {node for node in range(len(self.graph.instructions)) if node not in moving})
+        still = set(needed(self.graph.instructions, nodes)) - self._moving()
+        return _STEP + effort(self.graph.instructions, nodes, still)
 
     def planned(self, way, sure):
         """The Closure with the kernels of the short way; sure: the certificate needs no look at the slope's error and change."""

@@ -83,13 +83,13 @@ class Range:
         self.__dict__.pop("_still", None)
 
     def walk(self, x, method, curve):
-        """Points that the short way comes to from the starts x: [x, after one step, after two, ...]. As in runtime/approach.
+        """Points that the short way comes to from the starts x: at once, after one step, after two, ... As in runtime/approach.
 
         curve: nodes of the residual, the slope and, as far as the method takes them, the second and third derivative.
         """
-        points = [self._inside(0.5 * self.lower + 0.5 * self.upper, x)]
-        for _ in range(MOST_STEPS if curve else 0):
-            x = points[-1]
+        x = self._inside(0.5 * self.lower + 0.5 * self.upper, x)
+        yield x
+        for _ in range(MOST_STEPS):
             g, slope, *higher = self.at(curve, x)
             with np.errstate(all="ignore"):
                 if method == "newton":
@@ -98,8 +98,8 @@ class Range:
                     product, square = g * higher[0], slope * slope
                     step = 2.0 * g * slope / (2.0 * square - product) if method == "halley" else \
                         g * (6.0 * square - 3.0 * product) / (6.0 * slope * (square - product) + g * g * higher[1])
-                points.append(self._inside(x, x - step))
-        return points
+                x = self._inside(x, x - step)
+            yield x
 
     def _inside(self, last, following):
         with np.errstate(all="ignore"):

@@ -18,12 +18,11 @@ class Plan:
     steps: int = 0                  # of it, before the first certificate
     least_rise: float = 0.0         # lower bound of |dg/dt|, t the share of the bracket
     sure: bool = False              # proved over the operating range: no root is flat, the slope is right
-    option: str = "chosen"          # of `compile --plan`
 
     @property
     def extra(self):
-        """Evaluations that may go before those of the plain solver: both ends, the steps, the certificates."""
-        return 0 if self.closure is None else 2 * (self.ends == "evaluated") + self.steps + TRIALS
+        """Evaluations that may go before those of the plain solver: both ends, the steps, the certificates, one beside a root."""
+        return 0 if self.closure is None else 2 * (self.ends == "evaluated") + self.steps + TRIALS + (not self.sure)
 
 
-PLAIN = Plan(None, (), option="plain")
+PLAIN = Plan(None, ())

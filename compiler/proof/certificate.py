@@ -4,8 +4,6 @@ import json
 import tomllib
 from dataclasses import asdict, dataclass
 
-from rootwright.proof.refute import Witness
-
 FORMAT = 1
 CLAIMS = ("defined", "exists", "unique", "slope", "kink", "iterations")
 MEANINGS = {
@@ -16,6 +14,13 @@ MEANINGS = {
     "kink": "no zero lies on a switch of where, min, max, abs or sign",
     "iterations": "the solver's limit of evaluations suffices",
 }
+
+
+@dataclass(frozen=True)
+class Witness:
+    """A point at which a claim fails, {parameter: decimal}; `reason` says how, with the values that decide."""
+    point: tuple[tuple[str, str], ...]
+    reason: str
 
 
 @dataclass(frozen=True)

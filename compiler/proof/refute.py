@@ -5,7 +5,6 @@ not exist. Between two places of certain signs the residual has a zero if interv
 there (intermediate value theorem), so that neither a pole nor a jump is taken for one.
 """
 
-from dataclasses import dataclass
 from fractions import Fraction
 from itertools import islice, product
 import math
@@ -15,6 +14,7 @@ import numpy as np
 
 from rootwright.calculus.balls import ball, precision
 from rootwright.proof.cancel import factors
+from rootwright.proof.certificate import Witness
 from rootwright.proof.chart import SHARE
 from rootwright.proof.crew import Crew
 from rootwright.proof.exact import BITS, UNDEFINED, decimal, sign, value_at
@@ -27,13 +27,6 @@ SHARES = tuple(Fraction(k, 16) for k in range(17))
 _EFFORT = 400               # boxes at one point
 _WAVES = 250                # waves at all points together
 _DIGITS = 30                # of a decimal next to an irrational end
-
-
-@dataclass(frozen=True)
-class Witness:
-    """A point at which a claim fails, {parameter: decimal}; `reason` says how, with the values that decide."""
-    point: tuple[tuple[str, str], ...]
-    reason: str
 
 
 class Examiner:

@@ -4,6 +4,7 @@ import math
 import re
 
 from rootwright.calculus.precision import SINGLE
+from rootwright.emit import parts
 from rootwright.emit.layout import given, lay_out
 from rootwright.emit.names import Names, taken_in_c
 from rootwright.emit.text import statement
@@ -78,7 +79,7 @@ _TARGETS = {
 }
 _RETURNED = {"residual": "g", "rounding": "rounding", "outside": "outside", "kink": "kink", "start": "start", "guess": "guess",
              "curve": "near_g", "trial": "g"}
-_FORMALS = ("p", "end", "rounding", "slope", "slope_rounding", "curvature", "error_bound", "y", "jac", "hess", "still")
+_FORMALS = ("p", "end", "rounding", "slope", "slope_rounding", "curvature", "error_bound", "y", "jac", "hess", "still", "work")
 _FUNCTIONS = {"jacobian": "partials", "hessian": "second_partials"}      # where the kernel's name is the interface's
 _FLAT = {"jacobian": "jac", "hessian": "hess", "still": "still"}                          # kernels whose results are one array
 
@@ -92,26 +93,54 @@ def kernel(closure, name, comment):
     kind, arguments = (text.replace("double", real) for text in _SIGNATURES[name])
     if "still" not in closure.kernels:
         arguments = arguments.replace(f"const {real} {{still}}[], ", "")
-    first = f"static {kind} {model.name}_{_FUNCTIONS.get(name, name)}(const {real} {formals['p']}[]"
-    signature = first + (", " + arguments.format(**formals) if arguments else "") + ")"
+    function = f"{model.name}_{_FUNCTIONS.get(name, name)}"
+    formal = [f"const {real} {formals['p']}[]", *(arguments.format(**formals).split(", ") if arguments else ())]
     taken = {*spelling.names.used, *formals.values()}
     laid = lay_out(closure, name, spelling, taken, given(closure, name, formals["still"]))
     lines = [f"/* {line}" if k == 0 else f"   {line}" for k, line in enumerate(comment)]
     lines[-1] += " */"
-    lines += [signature, "{"]
-    lines += _unpack(model, laid, formals, spelling)
-    if f"const {real} {{still}}[]" in arguments and not laid.reads_given:
-        lines.append(f"    (void){formals['still']};")
-    for step in laid.statements:
-        lines += statement(f"const {'int' if step.condition else real} {step.name} = {step.text};", "    ")
-    lines += _results(name, model, laid, formals)
-    lines.append("}")
-    return "\n".join(lines)
+    if len(laid.statements) > parts.WHOLE:
+        before, body = _in_parts(model, laid, formals, formal, spelling, function)
+    else:
+        before, body = [], _unpack(model, laid.inputs, formals, spelling)
+        if f"const {real} {{still}}[]" in arguments and not laid.reads_given:
+            body.append(f"    (void){formals['still']};")
+        body += _statements(laid.statements, real)
+    body += _results(name, model, laid, formals)
+    return "\n".join([*before, *lines, f"static {kind} {function}({', '.join(formal)})", "{", *body, "}"])
 
 
-def _unpack(model, laid, formals, spelling):
+def _statements(statements, real):
+    return [line for step in statements
+            for line in statement(f"const {'int' if step.condition else real} {step.name} = {step.text};", "    ")]
+
+
+def _in_parts(model, laid, formals, formal, spelling, function):
+    """(lines of functions for the parts of a large kernel, lines that call them and fetch what the results need)."""
+    real = spelling.real
+    array = formals["work"]
+    inputs = [argument for argument in formal if "*" not in argument and ("[" not in argument or argument.startswith("const "))]
+    names = [re.findall(r"\w+", argument)[-1] for argument in inputs]
+    (*groups, last), size = parts.in_parts(laid.statements, tuple(laid.results.values()))
+    before, calls = [f"/* {function}, below, in parts: compilers are slow with long functions. */"], []
+
+    def body(part):
+        lines = _unpack(model, [name for name in laid.inputs if spelling.name(name) in part.words], formals, spelling)
+        lines += [f"    (void){name};" for name in names[1:] if name not in part.words and part is not last]
+        for step, place in part.reads:
+            kind, test = ("int", " > 0.0") if step.condition else (real, "")
+            lines.append(f"    const {kind} {step.name} = {array}[{place}]{test};")
+        return lines + _statements(part.statements, real) + [f"    {array}[{place}] = {step.name};" for step, place in part.keeps]
+
+    for k, part in enumerate(groups, 1):
+        calls.append(f"    {function}_{k}({', '.join([*names, array])});")
+        before += [f"static void {function}_{k}({', '.join([*inputs, f'{real} {array}[]'])})", "{", *body(part), "}", ""]
+    return before, [f"    {real} {array}[{max(1, size)}];", *calls, *body(last)]
+
+
+def _unpack(model, inputs, formals, spelling):
     """The parameters read, by name; what is not used is said to be unused."""
-    read = [(k, parameter.name) for k, parameter in enumerate(model.parameters) if parameter.name in laid.inputs]
+    read = [(k, parameter.name) for k, parameter in enumerate(model.parameters) if parameter.name in inputs]
     lines = []
     for k, parameter in read:
         lines.append(f"    const {spelling.real} {spelling.name(parameter)} = {formals['p']}[{k}];")

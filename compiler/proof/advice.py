@@ -4,6 +4,7 @@ What is proposed has been tried: with it the searches leave nothing open.
 """
 
 import math
+import sys
 from dataclasses import replace
 
 import numpy as np
@@ -49,8 +50,8 @@ def with_requirement(model, condition):
 
 def _rounded(value, direction):
     """Three significant digits, rounded up or down."""
-    if value == 0.0 or not math.isfinite(value):
-        return value
+    if abs(value) < sys.float_info.min * 1e4:       # no room for four digits
+        return math.copysign(1e-300, direction) if value else 0.0
     scale = 10.0 ** (math.floor(math.log10(abs(value))) - 3)
     whole = math.ceil(value / scale) if direction > 0 else math.floor(value / scale)
     return float(f"{whole * scale:.4g}")

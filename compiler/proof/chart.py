@@ -92,6 +92,7 @@ class Chart:
         used = needed(graph.instructions, [*residuals, *self.requirements, lower, upper, *(node for _, node in passed)])
         names = {graph.instructions[node].value for node in used if graph.instructions[node].op == "input"}
         self.variables = [p.name for p in model.parameters if p.name in names and p.name not in fixed] + [SHARE]
+        self.steps_along = self._steps_along(self.residual.nodes[0], share)
         self.gradients = {}
         self.slope = self._slope(free.lower(model.residual), inside, -1 if from_upper else 1)
         self.products = {name: self._product(form) for name, form in
@@ -140,6 +141,19 @@ class Chart:
         if instruction.op in ("le", "lt"):
             return [instruction.args]
         return [instruction.args[::-1]] if instruction.op in ("ge", "gt") else []
+
+    def _steps_along(self, node, share):
+        """True where the residual may jump on the way along the bracket: a choice on parameters alone is made once."""
+        instructions = self.graph.instructions
+        moved = set()
+        for step in needed(instructions, [node]):
+            instruction = instructions[step]
+            if step == share or moved & set(instruction.args):
+                moved.add(step)
+            if instruction.op == "where" and instructions[instruction.args[2]].op != "nan" and instruction.args[0] in moved \
+                    or instruction.op in ("sign", "atan2") and moved & set(instruction.args):
+                return True
+        return False
 
     def _product(self, form):
         """(the form itself, its constant factor, the others)."""

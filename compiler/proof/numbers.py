@@ -9,11 +9,12 @@ from rootwright.proof.crew import CHUNK
 from rootwright.proof.functions import ends
 from rootwright.proof.intervals import Interval
 from rootwright.proof.ranges import as_ball, exact_ends
-from rootwright.proof.search import outside, split
+from rootwright.proof.search import at_share, outside, split
 from rootwright.proof.sensitivities import program_inputs
 
 _LARGEST = 1e307                # a value below it in exact arithmetic is finite in doubles, rounding included
-_ROUNDS = 40
+_SMALLEST = 2.3e-308            # a value above it in exact arithmetic keeps its digits
+_NOTABLE, _FACTOR = 1e-100, 1e20
 
 
 def slope_bound(domain, outcome, limit):
@@ -52,7 +53,7 @@ def _slopes(domain, index, low, high):
 
 
 def doubles_are_finite(domain, closure, limit, boxes=4000):
-    """True where no value that the module computes at a root's bracket can overflow or be undefined, over the whole range.
+    """True where no value that the module computes at a root's bracket can overflow, be undefined or vanish by underflow, over the whole range.
 
     Then what is proved of the signs at the ends holds for the module: a computed residual is within its rounding bound
     of the exact one, and within that bound it counts as zero.
@@ -60,33 +61,122 @@ def doubles_are_finite(domain, closure, limit, boxes=4000):
     program, unknown = closure.program, domain.model.unknown
     if unknown.open_lower or unknown.open_upper:
         return False
-    chart = domain.lower
     names = [name for kernel in ("bracket", "residual", "rounding") for name in closure.kernels[kernel]]
-    roots = [program.results[name] for name in names]
-    order = needed(program.instructions, roots)
+    nodes = needed(program.instructions, [program.results[name] for name in names])
+
+    def holds(low, high):
+        values, fine = enclosures(domain, program, nodes, low, high)
+        for value in values:
+            fine = fine & (value.low >= -_LARGEST) & (value.high <= _LARGEST)
+        for share in (0.0, 1.0):
+            fine &= ~_vanishes(domain, program, *at_share(low, high, share))
+        return fine
+
+    return holds_everywhere(domain, holds, limit, boxes)
+
+
+def slope_is_sure(domain, closure, limit, boxes=4000):
+    """True if all over the brackets of the operating range the slope's rounding error is below 2^-12 of it, and the slope
+    changes by no more of itself within the error of a certified root, which is 2*rounding/|g_x| + 2^-53*|x| at most; here
+    with a factor of two to spare. Then no root that the module finds is flat.
+    """
+    program = closure.program
+    nodes = [program.results[name] for name in ("slope", "rounding", "slope_rounding", "curvature")]
+    nodes.append(next(node for node, instruction in enumerate(program.instructions)
+                      if instruction.op == "input" and instruction.value == domain.model.unknown.name))
+
+    def holds(low, high):
+        (slope, rounding, slope_rounding, curvature, x), fine = enclosures(domain, program, nodes, low, high)
+        least = np.maximum(slope.low, -slope.high)
+        bend = np.maximum(curvature.high, -curvature.low)
+        with np.errstate(all="ignore"):
+            error = 2.0 * rounding.high / least + 2.0**-53 * np.maximum(x.high, -x.low)
+            return fine & (least > 0.0) & (slope_rounding.high < 2.0**-12 * least) & (2.0 * bend * error < 2.0**-12 * least)
+
+    return holds_everywhere(domain, holds, limit, boxes)
+
+
+def holds_everywhere(domain, holds, limit, boxes):
+    """True where holds(low, high), one truth value a box, is true all over the brackets of the operating range, by subdivision."""
     low, high = domain.ranges.low[None, :].copy(), domain.ranges.high[None, :].copy()
     spent = 0
     while len(low) and spent < boxes:
-        now, low, high = (low[:CHUNK], high[:CHUNK]), low[CHUNK:], high[CHUNK:]
+        count = min(limit.wave(np.inf), CHUNK, boxes - spent)
+        if not count:
+            return False
+        now, low, high = (low[:count], high[:count]), low[count:], high[count:]
         spent += len(now[0])
-        limit.take(len(now[0]), "doubles", len(low))
-        bad = ~outside(chart, *now) & ~_finite(domain, program, roots, order, *now)
+        bad = ~outside(domain.lower, *now) & ~holds(*now)
         if bad.any():
             a, b = now[0][bad], now[1][bad]
             first, last, stuck = split(a, b, np.ones(a.shape), domain.ranges.widths(a, b), domain.ranges.logs)
             if stuck.any():
                 return False
             low, high = np.concatenate([low, first]), np.concatenate([high, last])
+        limit.take(len(now[0]), "doubles", len(low), lambda: domain.ranges.settled(low, high))
     return not len(low)
 
 
-def _finite(domain, program, roots, order, low, high):
-    inputs = program_inputs(domain, low, high)
+def enclosures(domain, program, nodes, low, high):
+    """(Intervals of the program's numbers, over the real numbers; truth, one a box, that all of them are defined)."""
     with np.errstate(all="ignore"):
-        values = evaluate(program.instructions, roots, domain.lower.arithmetic, inputs)
+        values = evaluate(program.instructions, nodes, domain.lower.arithmetic, program_inputs(domain, low, high))
+    values = [values[node] for node in nodes if isinstance(values[node], Interval)]
     fine = np.ones(len(low), bool)
-    for node in order:
-        value = values[node]
-        if isinstance(value, Interval):
-            fine &= np.broadcast_to(~np.asarray(value.undefined | (value.low < -_LARGEST) | (value.high > _LARGEST)), fine.shape)
-    return fine
+    for value in values:
+        fine &= np.broadcast_to(~np.asarray(value.undefined), fine.shape)
+    return values, fine
+
+
+def _vanishes(domain, program, low, high):
+    """True where at an end of the bracket a value that is not 0 may underflow, and is not lost in a sum anyway.
+
+    Then a residual of one sign would count as zero, and a sign change would be mere rounding.
+    """
+    instructions, roots = program.instructions, [program.results[name] for name in ("lower", "upper", "g")]
+    with np.errstate(all="ignore"):
+        values = evaluate(instructions, roots, domain.lower.arithmetic, program_inputs(domain, low, high))
+        return _underflow(instructions, roots, values, np.zeros(len(low), bool))
+
+
+def _underflow(instructions, roots, values, gone):
+    order = needed(instructions, roots)
+    fades = {node: ~gone for node in order}         # an error below _SMALLEST changes nothing of note
+    for root in roots:
+        fades[root] = np.broadcast_to((values[root].low > _NOTABLE) | (values[root].high < -_NOTABLE), gone.shape)
+    for node in reversed(order):
+        instruction, value = instructions[node], values[node]
+        if not isinstance(value, Interval):
+            continue
+        args = [values[arg] for arg in instruction.args]
+        if instruction.op in ("mul", "div"):
+            first, second = _size(args[0]), _size(args[1])
+            gone = gone | ((first * second if instruction.op == "mul" else first / second) < _SMALLEST) & ~fades[node]
+        elif instruction.op in ("exp", "pow"):
+            gone = gone | (value.low < _SMALLEST) & (value.high > -_SMALLEST) & ~fades[node]
+        for place, arg in enumerate(instruction.args):
+            if arg in fades:
+                fades[arg] = fades[arg] & _absorbs(instruction.op, place, args, fades[node])
+    return gone
+
+
+def _size(value):
+    """The least size of a value, or the largest where it may be 0: next to 0 a product is small for a good reason."""
+    least = np.maximum(value.low, -value.high)
+    most = np.maximum(-value.low, value.high)
+    return np.where(least > 0.0, least, np.where(most > 0.0, most, 1.0))
+
+
+def _absorbs(op, place, args, later):
+    """Where an error below _SMALLEST of one operand is lost in this operation, or in `later` ones."""
+    if op in ("neg", "abs", "named"):
+        return later
+    if op in ("add", "sub"):
+        other = args[1 - place]
+        return later | (other.low > _NOTABLE) | (other.high < -_NOTABLE)
+    if op == "mul":
+        other = args[1 - place]
+        return later & (other.low > -_FACTOR) & (other.high < _FACTOR)
+    if op == "div" and place == 0:
+        return later & ((args[1].low > 1.0 / _FACTOR) | (args[1].high < -1.0 / _FACTOR))
+    return False

@@ -19,7 +19,7 @@ from rootwright.calculus.lower import Lowering
 from rootwright.proof.advice import proposals, relative_name, with_requirement
 from rootwright.proof.certificate import Certificate, Claim
 from rootwright.proof.crew import Crew
-from rootwright.proof.numbers import doubles_are_finite, slope_bound
+from rootwright.proof.numbers import doubles_are_finite, slope_bound, slope_is_sure
 from rootwright.proof.ranges import as_ball, exact_ends
 from rootwright.proof.refute import Examiner
 from rootwright.proof.scaling import symmetries
@@ -80,7 +80,10 @@ class _Proof:
         witnesses = self._refutations(set(_NEEDS) - proved)
         sensitivities = sensitivity_bounds(self.plain, self.closure, self.limit) if "slope" in proved else {}
         finite = doubles_are_finite(self.plain, self.closure, self.limit)
-        claims = tuple(self._claim(name, proved, witnesses, slope, sensitivities, finite, seen) for name in _NEEDS)
+        computed = {"defined", "exists", "iterations"} if finite else set()
+        if finite and "slope" in proved and slope_is_sure(self.plain, self.closure, self.limit):
+            computed.add("slope")
+        claims = tuple(self._claim(name, proved, witnesses, slope, sensitivities, computed, seen) for name in _NEEDS)
         return Certificate(self.model.name, self.model.digest,
                            tuple((p.name, p.low.text, p.high.text) for p in self.model.parameters),
                            tuple(condition.text for condition in self.model.require), self._relative(),
@@ -106,7 +109,7 @@ class _Proof:
                 examiner.found["kink"] = witness
         return {claim: witness for claim, witness in examiner.found.items() if claim in open_claims}
 
-    def _claim(self, name, proved, witnesses, slope, sensitivities, finite, seen):
+    def _claim(self, name, proved, witnesses, slope, sensitivities, computed, seen):
         verdict = "refuted" if name in witnesses else "proved" if name in proved else "open"
         lefts = [left for need in _NEEDS[name] for left in self.outcome.open.get(need, [])]
         reason, numbers, doubles, left_open = "", [], "", 0.0
@@ -125,8 +128,8 @@ class _Proof:
             numbers.append(("limit", float(self.closure.limit)))
             if seen is not None:
                 numbers.append(("seen", float(seen)))
-        if verdict == "proved" and name in ("defined", "exists", "iterations"):
-            doubles = "proved" if finite else "open"
+        if verdict == "proved" and name in ("defined", "exists", "slope", "iterations"):
+            doubles = "proved" if name in computed else "open"
         return Claim(name, verdict, doubles, left_open, reason, witnesses.get(name),
                      self._worst(lefts) if verdict == "open" and not failed else (), tuple(numbers))
 

@@ -8,6 +8,7 @@ there (intermediate value theorem), so that neither a pole nor a jump is taken f
 from dataclasses import dataclass
 from fractions import Fraction
 from itertools import islice, product
+import math
 import random
 
 import numpy as np
@@ -25,6 +26,7 @@ from rootwright.proof.settle import Limit, Outcome, search_inside
 SHARES = tuple(Fraction(k, 16) for k in range(17))
 _EFFORT = 400               # boxes at one point
 _WAVES = 250                # waves at all points together
+_DIGITS = 30                # of a decimal next to an irrational end
 
 
 @dataclass(frozen=True)
@@ -49,22 +51,19 @@ class Examiner:
     # -- points
 
     def point(self, values):
-        """{parameter: Fraction} near some doubles, inside the exact range; None where the range has no such number."""
+        """{parameter: Fraction} near some numbers, inside the exact range: doubles as the shortest decimals that mean them, Fractions as they are.
+
+        None where the range has no such number.
+        """
         result = {}
         for name, (low, high) in self.exact.items():
-            value = Fraction(repr(float(values[name])))
-            for end, beyond in ((low, lambda v, e: v < e), (high, lambda v, e: v > e)):
-                if isinstance(end, Fraction):
-                    value = end if beyond(value, end) else value
-                else:
-                    with precision(BITS):
-                        steps = 0
-                        while not (end < ball(value) if end is low else ball(value) < end) and steps < 8:
-                            value = Fraction(repr(float(np.nextafter(float(value), np.inf if end is low else -np.inf))))
-                            steps += 1
-            with precision(BITS):
-                if not (as_ball(low) <= ball(value) <= as_ball(high)):
-                    return None
+            value = values[name]
+            value = value if isinstance(value, Fraction) else Fraction(repr(float(value)))
+            for end, inward in ((low, 1), (high, -1)):
+                if not _within(value, end, inward):
+                    value = end if isinstance(end, Fraction) else _decimal_inside(end, inward)
+            if not (_within(value, low, 1) and _within(value, high, -1)):
+                return None
             result[name] = value
         return result
 
@@ -308,11 +307,28 @@ class Examiner:
         return zeros
 
 
+def _within(value, end, inward):
+    """True where a Fraction certainly lies on the inner side of an end of a range, or on it."""
+    if isinstance(end, Fraction):
+        return (value - end) * inward >= 0
+    with precision(BITS):
+        return bool((ball(value) - end) * inward > 0)
+
+
+def _decimal_inside(end, inward):
+    """The last decimal of some digits on the inner side of an irrational end."""
+    with precision(BITS):
+        exact = end.mid().fmpq()
+        middle = Fraction(int(exact.p), int(exact.q))
+        place = Fraction(10) ** (math.floor(math.log10(abs(float(middle)))) - _DIGITS)
+        return (middle // place + (1 if inward > 0 else 0)) * place
+
+
 def _fails(kind, value):
     """True where a condition on the domain certainly does not hold."""
     if value is UNDEFINED:
         return True
-    known = sign(value)
+    known = None if kind == "suffices" else sign(value)
     return known == 0 if kind == "nonzero" else known in (0, -1) if kind == "positive" else known == -1
 
 

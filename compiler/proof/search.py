@@ -31,10 +31,19 @@ class Inside:
     outside: np.ndarray
     undefined: np.ndarray       # the residual may have no value
     active: np.ndarray          # it may be 0
-    jump: np.ndarray            # it may be discontinuous
+    jump: np.ndarray            # it may be discontinuous along the bracket
     rise: np.ndarray            # sign of g_x: 1, -1, or 0 where it is not settled
     switch: np.ndarray          # a switch may be here
     smear: np.ndarray
+
+
+def unjudged(name, low):
+    """What is known of boxes before the search of this name looks at them: nothing."""
+    size = len(low)
+    no, yes = np.zeros(size, bool), np.ones(size, bool)
+    if name == "ends":
+        return Ends(no, no, no, np.ones(low.shape))
+    return Inside(no, yes, yes, yes, np.zeros(size, int), yes, np.ones(low.shape))
 
 
 def judge_ends(near_lower, near_upper, model, low, high):
@@ -261,18 +270,17 @@ def judge_inside(chart, low, high, opened):
         active[smooth] = ~((first > 0) | (last < 0))
         smear[smooth] = normalised(below, above, low[smooth], high[smooth])
     rise = np.zeros(len(at), int)
-    left = smooth[active[smooth]]
+    left = np.nonzero(active & ~values.undefined & ~(values.jump & chart.steps_along))[0]
     if len(left):
-        inner = left
-        rise[inner], part = _signed(chart, chart.slope, low[inner], high[inner], opened)
-        smear[inner] += part
+        rise[left], part = _signed(chart, chart.slope, low[left], high[left], opened)
+        smear[left] += part
     switch = np.zeros(len(at), bool)
     left = np.nonzero(active)[0]
     if len(left) and chart.switches:
         touched, part = _on_switch(chart, low[left], high[left], opened)
         switch[left] = touched
         smear[left] += part
-    outcome.undefined[at], outcome.active[at], outcome.jump[at] = values.undefined, active, values.jump
+    outcome.undefined[at], outcome.active[at], outcome.jump[at] = values.undefined, active, values.jump & chart.steps_along
     outcome.rise[at], outcome.switch[at], outcome.smear[at] = rise, switch, smear
     return outcome
 
@@ -295,7 +303,7 @@ def split(low, high, smear, widths, logs, finest=2.0 ** -160):
     Returns (low, high) of twice as many boxes, and where a box is too thin to cut: its share of the bracket below `finest`, or its
     ends next to each other.
     """
-    choice = np.argmax(np.where(high > low, (smear + 1e-3) * np.sqrt(widths) + 0.05 * widths, -np.inf), axis=1)
+    choice = np.argmax(np.where(high > np.nextafter(low, np.inf), (smear + 1e-3) * np.sqrt(widths) + 0.05 * widths, -np.inf), axis=1)
     rows = np.arange(len(low))
     a, b = low[rows, choice], high[rows, choice]
     with np.errstate(all="ignore"):

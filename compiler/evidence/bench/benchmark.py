@@ -17,7 +17,7 @@ from rootwright.evidence.bench.rows import ADOLC, BASE, LIMIT, PLAIN, ROWS, SOLV
 from rootwright.evidence.bench.statistics import ratio, spread
 
 PROCESSES = 5
-SECONDS = (0.5, 4.0)             # of timing in each process: at least, where there are many specs, and at most
+SECONDS = (0.5, 3.0)             # of timing in each process: at least, where there are many specs, and at most
 TOGETHER = 6.0                   # ... and so many for all specs, between these
 LIBRARIES = ("numpy", "scipy", "autograd", "jax")
 

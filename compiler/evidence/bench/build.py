@@ -4,7 +4,7 @@ import re
 import shutil
 import subprocess
 from concurrent.futures import ThreadPoolExecutor
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from importlib import resources
 from pathlib import Path
 
@@ -12,13 +12,14 @@ import cffi
 
 from rootwright.binding.build import FLAGS, BuildFailed, find_compiler
 from rootwright.emit.assemble import assemble
+from rootwright.emit.c import kernel
 from rootwright.plan.plan import PLAIN
 
 CXX_FLAGS = ("-std=c++17", *(flag for flag in FLAGS if not flag.startswith("-std=")), "-w")
 PASSIVE = "rounding|outside|kink"        # kernels that only decide: no derivative passes through them
 ROWS = {                                 # library: (source, header of its number, rows)
     "module": ("rows.c", None, ("solve", "jacobian", "one_sided", "central")),
-    "plain": ("limit.c", None, ("solve", "jacobian", "limit")),
+    "plain": ("limit.c", None, ("solve", "jacobian", "limit", "kernels")),
     "byhand": ("byhand.c", None, ("brent", "newton")),
     "tape": ("through.cpp", "tape_number.hpp", ("loop", "loop_forward", "textbook", "last_step")),
     "dual": ("through.cpp", "dual_number.hpp", ("loop", "textbook")),
@@ -46,6 +47,7 @@ def build(closure, plan, folder):
         whole = whole.replace('extern "C" {', 'extern "C++" {')
         (folder/f"{file}.inc").write_text(re.sub(rf"\b{name.upper()}_H\b", f"{file.upper()}_H", whole), "utf-8")
     (folder/"recorded.inc").write_text(_recorded(whole, name), "utf-8")
+    (folder/"limit.inc").write_text(_limit(closure), "utf-8")
     compilers = {"c": find_compiler(), "cpp": shutil.which("c++") or shutil.which("g++") or shutil.which("clang++")}
 
     def make(library):
@@ -65,6 +67,14 @@ def build(closure, plan, folder):
 def _whole(files, name):
     """Header and source of a module in one."""
     return files[f"{name}.c"].replace(f'#include "{name}.h"', files[f"{name}.h"])
+
+
+def _limit(closure):
+    """The residual, its slope and the jacobian in one function, which shares what they have in common, as the printer of
+    the module spells it: NAME_limit(p, x, results)."""
+    together = replace(closure, kernels=closure.kernels | {"jacobian": ("g", "slope", *closure.kernels["jacobian"])})
+    text = kernel(together, "jacobian", ["Residual, slope, jacobian."])
+    return text.replace(f"{closure.model.name}_partials", f"{closure.model.name}_limit")
 
 
 def _recorded(whole, name):

@@ -36,8 +36,12 @@ TERMS = {
 
 ROWS = (
     Row(LIMIT, "limit", "one evaluation at the root",
-        "residual, slope and jacobian once, at the root: the plain module's kernels, compiler and flags",
+        "residual, slope and jacobian once, at the root, in one loop that shares what they have in common; the "
+        "module's printer, compiler and flags",
         ("plain", "limit", ROOT)),
+    Row("kernels", "limit", "the same by two kernels",
+        "the plain module's kernels of the residual and of the jacobian, one after the other, which share nothing",
+        ("plain", "kernels", ROOT)),
     Row(SOLVE, "module", "solve", "root, outputs, error bound, as `compile` makes it; cold", ("module", "solve", COLD),
         jacobian=False),
     Row(BASE, "module", "solve with jacobian", "the same and the jacobian; cold: ratios are to this row",

@@ -26,10 +26,10 @@ def goals(facts):
             found.append(_judge(goal, ratio, **bound))
 
     if facts["name"] in LIMITS:
-        judge("solve with jacobian, of one evaluation", rows[BASE].get("to_limit"), at_most=LIMITS[facts["name"]])
+        judge("solve with jacobian, of the limit", rows[BASE].get("to_limit"), at_most=LIMITS[facts["name"]])
     judge("solve with jacobian, of the solve", _inverse(rows[SOLVE].get("to_module")), at_most=JACOBIAN)
-    for key, least, text in ((TAPE, TAPES, "tape, reverse, plain loop, of the module"),
-                             (TAPE_LEAN, TAPES, "tape, reverse, textbook loop, of the module"),
+    for key, least, text in ((TAPE, TAPES, "tape, plain loop, of the module"),
+                             (TAPE_LEAN, TAPES, "tape, textbook loop, of the module"),
                              (BRENT_PYTHON, BRENT, "SciPy brentq from Python, of the module")):
         judge(text, rows[key].get("to_module"), at_least=least)
     for key, most in (("median", MEDIAN), ("worst", WORST)):

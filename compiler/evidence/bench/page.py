@@ -172,8 +172,8 @@ def _goals(facts):
         wanted = f"at most {goal['at_most']:g}" if most else f"at least {goal['at_least']:g}"
         exact = goal["low"] == goal["high"]
         measured = f"{goal['value']:g}" if exact else f"{figure(goal['value'])} ({_interval(goal)})"
-        by = f", by a factor of {figure(goal['by'])}" if goal["verdict"] == "missed" else ""
-        lines.append(f"    {goal['goal']:42} {wanted:>12}:  {measured:22} {goal['verdict']}{by}")
+        by = f", factor {figure(goal['by'])}" if goal["verdict"] == "missed" else ""
+        lines.append(f"    {goal['goal']:39} {wanted:>12}:  {measured:19} {goal['verdict']}{by}")
     return lines + [""]
 
 

@@ -268,7 +268,8 @@ def _write(path, text, quiet):
 def _bench(arguments):
     from rootwright import pipeline
     from rootwright.binding.build import BuildFailed, NoCompiler
-    from rootwright.evidence.bench.benchmark import NotMeasured, benchmark, share
+    from rootwright.evidence.bench.benchmark import PROCESSES, NotMeasured, benchmark, share
+    from rootwright.evidence.bench.measure import crew
     from rootwright.evidence.bench.page import render
     from rootwright.evidence.bench.plot import available, plot
 
@@ -281,14 +282,15 @@ def _bench(arguments):
         closure, _ = pipeline.promised(closure, spec)
         try:
             with _progress() as progress:
-                facts = benchmark(closure, pipeline.plan(closure), share(len(arguments.specs)), progress=progress)
+                facts = benchmark(closure, pipeline.plan(closure), processes, share(len(arguments.specs)), progress=progress)
         except (NoCompiler, BuildFailed, NotMeasured) as error:
             raise Refusal(f"{closure.model.name}: {error}") from None
         if arguments.plot is not None:
             plot(facts, Path(arguments.plot)/f"{closure.model.name}.png")
         return facts, "" if arguments.json else render(facts), FOUND if facts["wrong"] else OK
 
-    return _each(arguments, show)
+    with crew(PROCESSES) as processes:
+        return _each(arguments, show)
 
 
 def _each(arguments, show, order=1):

@@ -19,6 +19,7 @@ from rootwright.evidence.bench import benchmark as bench
 from rootwright.evidence.bench import goals, page, rivals
 from rootwright.evidence.bench.build import build
 from rootwright.evidence.bench.judge import judge
+from rootwright.evidence.bench.measure import crew
 from rootwright.evidence.bench.pitfalls import pitfalls
 from rootwright.evidence.bench.problem import pose
 from rootwright.evidence.bench.rows import BY_KEY, LIMIT, ROWS, make, solver
@@ -52,7 +53,8 @@ def facts():
     with pytest.MonkeyPatch.context() as patch:
         patch.setattr(rivals, "_need", refuse)
         closure = closed("lambert_w")
-        return bench.benchmark(closure, pipeline.plan(closure), seconds=0.0, count=2, points=16, checked=4)
+        with crew(2) as processes:
+            return bench.benchmark(closure, pipeline.plan(closure), processes, seconds=0.0, points=16, checked=4)
 
 
 def refuse(module):
@@ -299,7 +301,7 @@ def test_a_module_that_is_wrong_ends_with_status_1_and_says_so_first(facts, monk
             for row in facts["rows"]]
     assert facts["wrong"] == []
     found = facts | {"rows": rows, "wrong": goals.wrong(facts | {"rows": rows})}
-    monkeypatch.setattr(bench, "benchmark", lambda closure, plan, seconds, progress: found)
+    monkeypatch.setattr(bench, "benchmark", lambda closure, plan, crew, seconds, progress: found)
     assert cli.main(["bench", "lambert_w"]) == 1
     page_text = capsys.readouterr().out
     assert "Wrong: solve: 3 of 16 points failed" in page_text
@@ -308,7 +310,7 @@ def test_a_module_that_is_wrong_ends_with_status_1_and_says_so_first(facts, monk
 
 def test_a_goal_that_is_missed_is_no_fault(facts, monkeypatch, capsys):
     slow = facts | {"goals": [goal | {"verdict": "missed", "by": 2.0} for goal in facts["goals"]]}
-    monkeypatch.setattr(bench, "benchmark", lambda closure, plan, seconds, progress: slow)
+    monkeypatch.setattr(bench, "benchmark", lambda closure, plan, crew, seconds, progress: slow)
     assert cli.main(["bench", "lambert_w"]) == 0
     assert "missed, factor 2.00" in capsys.readouterr().out
 
@@ -319,7 +321,7 @@ def test_many_specs_share_the_time():
 
 
 def test_the_command_prints_the_page_or_one_json_object(facts, monkeypatch, capsys):
-    monkeypatch.setattr(bench, "benchmark", lambda closure, plan, seconds, progress: facts)
+    monkeypatch.setattr(bench, "benchmark", lambda closure, plan, crew, seconds, progress: facts)
     assert cli.main(["bench", "lambert_w"]) == 0
     assert capsys.readouterr().out == page.render(facts)
     assert cli.main(["bench", "lambert_w", "--json"]) == 0
@@ -345,7 +347,7 @@ def test_a_plot_is_written_where_its_library_is_installed(facts, tmp_path):
 
 
 def test_a_range_that_no_point_meets_is_refused_in_one_line(monkeypatch, capsys):
-    def nothing(closure, plan, seconds, progress):
+    def nothing(closure, plan, crew, seconds, progress):
         raise bench.NotMeasured("no point of the operating range was found at which the reference settles a root")
 
     monkeypatch.setattr(bench, "benchmark", nothing)

@@ -16,7 +16,7 @@ from rootwright.evidence.bench.problem import CHECKED, POINTS, pose
 from rootwright.evidence.bench.rows import ADOLC, BASE, LIMIT, PLAIN, ROWS, SOLVE, TAPE, TERMS, solver
 from rootwright.evidence.bench.statistics import ratio, spread
 
-PROCESSES = 5
+PROCESSES = 5                    # in which a run measures
 SECONDS = (0.5, 3.0)             # of timing in each process: at least, where there are many specs, and at most
 TOGETHER = 6.0                   # ... and so many for all specs, between these
 LIBRARIES = ("numpy", "scipy", "autograd", "jax")
@@ -32,9 +32,9 @@ class NotMeasured(Exception):
     """There is nothing to measure; the message says why."""
 
 
-def benchmark(closure, plan, seconds=SECONDS[1], count=PROCESSES, points=POINTS, checked=CHECKED, progress=None):
-    """Facts about a Closure of order 1 or more and the Plan of its module: every row's time, ratios, errors; see
-    `page.render`.
+def benchmark(closure, plan, crew, seconds=SECONDS[1], points=POINTS, checked=CHECKED, progress=None):
+    """Facts about a Closure of order 1 or more and the Plan of its module, timed by a crew of processes: every row's time,
+    ratios, errors; see `page.render`.
 
     progress is called with a line of text now and then. Raises NoCompiler, BuildFailed, NotMeasured.
     """
@@ -50,7 +50,7 @@ def benchmark(closure, plan, seconds=SECONDS[1], count=PROCESSES, points=POINTS,
         if not len(problem.roots):
             raise NotMeasured("no point of the operating range was found at which the reference settles a root")
         judged = judge(problem, built, progress)
-        times = processes(problem, built, count, seconds, progress)
+        times = processes(problem, built, crew, seconds, progress)
         say("where the iterate-through approach goes wrong")
         lost = pitfalls(problem, built)
     evaluations = judged[SOLVE].counts

@@ -184,7 +184,7 @@ def _method(facts):
     return ["How it was measured", ""] + _wrapped(
         f"{about['processor']}, {about['cores']} cores, {load}. {about['compiler']}, {about['flags']} (C++ rows: the "
         f"same optimisation). Python {about['python']}, {libraries}. All rows in one interleaved run, in an order that "
-        f"changes from round to round, at least {about['rounds']} rounds in each of {about['processes']} fresh "
+        f"changes from round to round, at least {about['rounds']} rounds in each of {about['processes']} "
         "processes. CPU time, on one core. A time is the median over rounds, then over processes; +- is half the range "
         "of the processes. A ratio is the geometric mean of the processes' own ratios, with the 95 % interval of "
         "Student's t over them. Rows slower than 20 ms a round take the first 4 to 1,024 of the points, but for those "

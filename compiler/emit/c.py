@@ -4,6 +4,7 @@ import math
 import re
 
 from rootwright.calculus.precision import SINGLE
+from rootwright.emit import parts
 from rootwright.emit.layout import given, known, lay_out, shared
 from rootwright.emit.names import Names, taken_in_c
 from rootwright.emit.text import statement
@@ -80,7 +81,7 @@ _TARGETS = {
 }
 _RETURNED = {"residual": "g", "rounding": "rounding", "outside": "outside", "kink": "kink", "start": "start", "guess": "guess",
              "curve": "near_g", "trial": "g"}
-_FORMALS = ("p", "end", "rounding", "slope", "slope_rounding", "curvature", "third", "error_bound", "y", "jac", "hess", "known")
+_FORMALS = ("p", "end", "rounding", "slope", "slope_rounding", "curvature", "third", "error_bound", "y", "jac", "hess", "known", "work")
 _FUNCTIONS = {"jacobian": "partials", "hessian": "second_partials"}      # where the kernel's name is the interface's
 _FLAT = {"jacobian": "jac", "hessian": "hess", "still": "known"}                          # kernels whose results are one array
 
@@ -97,26 +98,56 @@ def kernel(closure, name, comment):
     if not (known(closure, name) or name == "still" or name == "trial" and shared(closure)):
         arguments = arguments.replace("const double {known}[], ", "").replace("double {known}[], ", "")
     kind, arguments = (text.replace("double", real) for text in (kind, arguments))
-    first = f"static {kind} {model.name}_{_FUNCTIONS.get(name, name)}(const {real} {formals['p']}[]"
-    signature = first + (", " + arguments.format(**formals) if arguments else "") + ")"
+    function = f"{model.name}_{_FUNCTIONS.get(name, name)}"
+    first = f"const {real} {formals['p']}[]"
+    signature = f"static {kind} {function}({first}, {arguments.format(**formals)})" if arguments else f"static {kind} {function}({first})"
     taken = {*spelling.names.used, *formals.values()}
     laid = lay_out(closure, name, spelling, taken, given(closure, name, formals["known"]))
     lines = [f"/* {line}" if k == 0 else f"   {line}" for k, line in enumerate(comment)]
     lines[-1] += " */"
-    lines += [signature, "{"]
-    lines += _unpack(model, laid, formals, spelling)
-    if f"{real} {{known}}[]" in arguments and not laid.reads_given and name != "still" and not (name == "trial" and shared(closure)):
-        lines.append(f"    (void){formals['known']};")
-    for step in laid.statements:
-        lines += statement(f"const {'int' if step.condition else real} {step.name} = {step.text};", "    ")
-    lines += _results(name, model, laid, formals)
-    lines.append("}")
-    return "\n".join(lines)
+    if len(laid.statements) > parts.WHOLE:
+        read = [formal for formal in ("known", "x", "error_bound") if f"{{{formal}}}" in arguments]
+        before, body = _in_parts(model, laid, formals, read, spelling, function)
+    else:
+        before, body = [], _unpack(model, laid.inputs, formals, spelling)
+        if f"{real} {{known}}[]" in arguments and not laid.reads_given and name != "still" and not (name == "trial" and shared(closure)):
+            body.append(f"    (void){formals['known']};")
+        body += _statements(laid.statements, real)
+    body += _results(name, model, laid, formals)
+    return "\n".join([*before, *lines, signature, "{", *body, "}"])
 
 
-def _unpack(model, laid, formals, spelling):
+def _statements(statements, real):
+    return [line for step in statements
+            for line in statement(f"const {'int' if step.condition else real} {step.name} = {step.text};", "    ")]
+
+
+def _in_parts(model, laid, formals, read, spelling, function):
+    """(lines of functions for the parts of a large kernel, lines that call them and fetch what the results need). read: the
+    formal arguments that are read besides the parameters."""
+    real, array = spelling.real, formals["work"]
+    names = [formals[formal] for formal in ("p", *read)]
+    inputs = [f"const {real} {name}[]" if formal in ("p", "known") else f"{real} {name}" for formal, name in zip(("p", *read), names)]
+    (*groups, last), size = parts.in_parts(laid.statements, tuple(laid.results.values()))
+    before, calls = [f"/* {function}, below, in parts: compilers are slow with long functions. */"], []
+
+    def body(part):
+        lines = _unpack(model, [name for name in laid.inputs if spelling.name(name) in part.words], formals, spelling)
+        lines += [f"    (void){name};" for name in names[1:] if name not in part.words and part is not last]
+        for step, place in part.reads:
+            kind, test = ("int", " > 0.0") if step.condition else (real, "")
+            lines.append(f"    const {kind} {step.name} = {array}[{place}]{test};")
+        return lines + _statements(part.statements, real) + [f"    {array}[{place}] = {step.name};" for step, place in part.keeps]
+
+    for k, part in enumerate(groups, 1):
+        calls.append(f"    {function}_{k}({', '.join([*names, array])});")
+        before += [f"static void {function}_{k}({', '.join([*inputs, f'{real} {array}[]'])})", "{", *body(part), "}", ""]
+    return before, [f"    {real} {array}[{max(1, size)}];", *calls, *body(last)]
+
+
+def _unpack(model, inputs, formals, spelling):
     """The parameters read, by name; what is not used is said to be unused."""
-    read = [(k, parameter.name) for k, parameter in enumerate(model.parameters) if parameter.name in laid.inputs]
+    read = [(k, parameter.name) for k, parameter in enumerate(model.parameters) if parameter.name in inputs]
     lines = []
     for k, parameter in read:
         lines.append(f"    const {spelling.real} {spelling.name(parameter)} = {formals['p']}[{k}];")

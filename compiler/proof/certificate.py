@@ -4,7 +4,7 @@ import json
 import tomllib
 from dataclasses import asdict, dataclass
 
-from rootwright.proof.refute import Witness
+from rootwright.proof.witness import Witness
 
 FORMAT = 1
 CLAIMS = ("defined", "exists", "unique", "slope", "kink", "iterations")

@@ -90,21 +90,30 @@ class _Proof:
         if not open_claims:
             return {}
         examiner = Examiner(self.plain, self.limit)
-        for values in examiner.corners():
+        points = examiner.points
+        corners, places = list(points.corners()), list(self._places(points, open_claims))
+        for values, shares in (*((values, ()) for values in corners), *places):
+            examiner.examine(values, open_claims, shares)
+        for values in points.edges([*corners, *(values for values, _ in places)], examiner.in_range) if self.model.require else ():
             examiner.examine(values, open_claims)
-        if "unique" in open_claims:
-            for values in examiner.from_turns(self.domain, self.outcome):
-                examiner.examine(values, open_claims)
-        lefts = [left for need, boxes in self.outcome.open.items() if need != "kink" for left in boxes]
-        for left in lefts[:12]:
-            shares = _shares(self.domain, left)
-            for values in examiner.from_boxes(self.domain, left.low, left.high):
-                examiner.examine(values, open_claims, shares)
+        for values in (*(values for values, _ in places), *corners):
+            examiner.search(values, open_claims)
         if "kink" in open_claims and self.plain.lower.switches:
             witness = refute_kink(examiner)
             if witness:
                 examiner.found["kink"] = witness
         return {claim: witness for claim, witness in examiner.found.items() if claim in open_claims}
+
+    def _places(self, points, open_claims):
+        """(point, shares of the bracket) that the searches point to."""
+        if "unique" in open_claims:
+            for values in points.from_turns(self.domain, self.outcome):
+                yield values, ()
+        lefts = [left for need, boxes in self.outcome.open.items() if need != "kink" for left in boxes]
+        for left in lefts[:12]:
+            shares = _shares(self.domain, left)
+            for values in points.from_boxes(self.domain, left.low, left.high):
+                yield values, shares
 
     def _claim(self, name, proved, witnesses, slope, sensitivities, finite, seen):
         verdict = "refuted" if name in witnesses else "proved" if name in proved else "open"

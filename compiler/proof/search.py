@@ -58,7 +58,7 @@ def judge_ends(near_lower, near_upper, model, low, high):
     signs = []
     for end, opened, own in (("lower", model.unknown.open_lower, near_lower), ("upper", model.unknown.open_upper, near_upper)):
         if opened:
-            sign, part = _next_to(own, low, high)
+            sign, part = next_to(own, low, high)
         else:
             (*sign, _, _), part = _at_end(chart, end, low, high)
         signs.append(sign)
@@ -226,7 +226,7 @@ def _relaxed_bound(value, slack, slopes, slack_slopes, m, low, high, centre):
     return np.where(undefined, -np.inf, total.low), np.where(undefined, np.inf, total.high)
 
 
-def _next_to(chart, low, high):
+def next_to(chart, low, high):
     """((g > 0, g < 0), smear) in some half-open interval of the bracket next to an open end."""
     sign, smear = np.zeros(len(low), int), np.zeros(low.shape)
     for near in NEAR:

@@ -305,13 +305,13 @@ def factors(graph, node):
     return constant, dict(sorted(counts.items()))
 
 
-def substituted(graph, node, name, value):
-    """The node with another node in the place of an input."""
+def substituted(graph, node, inputs):
+    """The node with other nodes in the place of some inputs, {name: node}."""
     twins = {}
     for step in needed(graph.instructions, [node]):
         instruction = graph.instructions[step]
-        if instruction.op == "input" and instruction.value == name:
-            twins[step] = value
+        if instruction.op == "input" and instruction.value in inputs:
+            twins[step] = inputs[instruction.value]
         else:
             twins[step] = graph.enter(instruction.op, [twins[arg] for arg in instruction.args], instruction.value)
     return twins[node]

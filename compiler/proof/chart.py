@@ -128,7 +128,7 @@ class Chart:
         (node,) = partials(graph, free, [graph.input(name)])
         along = self._gradient(self.residual.nodes[-1])[-1]
         forms = [node, self.cancelling.of(node), *self._expanded(node)]
-        forms = [substituted(graph, form, name, inside) for form in forms]
+        forms = [substituted(graph, form, {name: inside}) for form in forms]
         forms += [self.cancelling.of(forms[0]), graph.div(along, graph.mul(direction, self.width.nodes[-1]))]
         others = sorted(dict.fromkeys(forms[1:]), key=lambda form: (-self._cost(form), form))
         return Form((forms[0], *(form for form in others if form != forms[0])), ())
@@ -188,6 +188,13 @@ class Chart:
             inputs = [self.graph.input(name) for name in self.variables]
             self.gradients[node] = partials(self.graph, node, inputs)
         return self.gradients[node]
+
+    def at_point(self, form, point):
+        """The form at exact parameters {name: Fraction}, written anew, so that what they cancel is gone."""
+        graph = self.graph
+        numbers = {name: graph.number(value) for name, value in point.items()}
+        node = substituted(graph, form.nodes[0], numbers)
+        return Form((node, *self._expanded(node), self.cancelling.of(node)), None)
 
     # -- evaluation
 

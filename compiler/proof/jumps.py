@@ -82,6 +82,8 @@ def _piece(graph, root, sides):
             twin = node if instruction.op != "named" else graph.enter("named", args, instruction.value)
         elif instruction.op in CONDITIONS:
             twin = _decided(graph, instruction.op, args)
+        elif instruction.op == "where" and graph.instructions[instruction.args[2]].op == "nan":
+            twin = args[1]              # where it has a value, it has this one
         elif instruction.op == "where" and isinstance(args[0], bool):
             twin = args[1] if args[0] else args[2]
         else:

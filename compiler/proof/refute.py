@@ -131,8 +131,11 @@ class Examiner:
     def _beside(self, point, end):
         """Sign of the residual next to an open end; None where it is not certain."""
         chart = self.domain.upper if end == "upper" else self.domain.lower
-        (rise, fall), _ = next_to(chart, *self.box(point))
-        return 1 if rise[0] else -1 if fall[0] else None
+        for form in (None, chart.at_point(chart.residual, point)):
+            (rise, fall), _ = next_to(chart, *self.box(point), form)
+            if rise[0] or fall[0]:
+                return 1 if rise[0] else -1
+        return None
 
     def _undefined_at(self, point, share):
         form = self._form(share)

@@ -196,6 +196,11 @@ class Chart:
         node = substituted(graph, form.nodes[0], numbers)
         return Form((node, *self._expanded(node), self.cancelling.of(node)), None)
 
+    def corners(self):
+        """{parameter: (low, high)} as nodes, of all that are inputs of the chart."""
+        lowering = self._lowering((), self.graph.input(self.model.unknown.name))
+        return {p.name: (lowering.lower(p.low), lowering.lower(p.high)) for p in self.model.parameters}
+
     # -- evaluation
 
     def evaluate(self, nodes, low, high, opened=False):

@@ -14,19 +14,18 @@ from rootwright.proof.cancel import factors
 _TRUTH = {"lt": lambda s: s < 0, "le": lambda s: s <= 0, "gt": lambda s: s > 0, "ge": lambda s: s >= 0}
 
 
-def clears_jumps(chart, outcome, low, high, opened, parts):
+def clears_jumps(chart, suspects, parts, low, high, opened):
     """True where the residual is 0 nowhere in parts [(a, b)] of the bracket's share at the thin box of a point.
 
-    `outcome` holds the boxes that may hold a zero, all of them in the parts.
+    `suspects` are the pieces (a, b) of these parts, two arrays, in which a zero could not be ruled out.
     """
     for a, b in parts:
-        suspects = [(box_low[row:row + 1], box_high[row:row + 1]) for _, box_low, box_high, _ in outcome.active
-                    for row in range(len(box_low)) if a <= box_low[row, -1] <= b]
-        if all(chart.natural(chart.residual, *box, opened).nonzero[0] for box in suspects):
-            continue
         box = low.copy(), high.copy()
         box[0][:, -1], box[1][:, -1] = a, b
-        if not _pieces_clear(chart, box, opened):
+        within = (suspects[0] >= a) & (suspects[1] <= b)
+        pieces = np.repeat(low, within.sum(), 0), np.repeat(high, within.sum(), 0)
+        pieces[0][:, -1], pieces[1][:, -1] = suspects[0][within], suspects[1][within]
+        if not chart.natural(chart.residual, *pieces, opened).nonzero.all() and not _pieces_clear(chart, box, opened):
             return False
     return True
 

@@ -19,8 +19,10 @@ from rootwright.calculus.lower import Lowering
 from rootwright.proof.advice import proposals, relative_name, with_requirement
 from rootwright.proof.certificate import Certificate, Claim
 from rootwright.proof.crew import Crew
+from rootwright.proof.crossings import refute_divisors, refute_parameter_switch
 from rootwright.proof.numbers import doubles_are_finite, slope_bound
 from rootwright.proof.ranges import as_ball, exact_ends
+from rootwright.proof.flat import refute_slope
 from rootwright.proof.refute import Examiner
 from rootwright.proof.scaling import symmetries
 from rootwright.proof.sensitivities import sensitivity_bounds
@@ -98,11 +100,28 @@ class _Proof:
             examiner.examine(values, open_claims)
         for values in (*(values for values, _ in places), *corners):
             examiner.search(values, open_claims)
-        if "kink" in open_claims and self.plain.lower.switches:
-            witness = refute_kink(examiner)
-            if witness:
-                examiner.found["kink"] = witness
+        self._refute_between(examiner, places, open_claims)
         return {claim: witness for claim, witness in examiner.found.items() if claim in open_claims}
+
+    def _refute_between(self, examiner, places, open_claims):
+        """Refutations at points that no decimal names."""
+        found = examiner.found
+        if "defined" in open_claims - found.keys():
+            witness = refute_divisors(examiner)
+            if witness:
+                found["defined"] = witness
+        if "slope" in open_claims - found.keys() and not {"defined", "exists"} & found.keys():
+            witness, beside = refute_slope(examiner, [(values, share) for values, shares in places for share in shares])
+            if witness:
+                found["slope"] = witness
+            examiner.waves = 0
+            for values in beside if "unique" in open_claims - found.keys() else ():
+                examiner.examine(values, open_claims)
+                examiner.search(values, open_claims)
+        if "kink" in open_claims - found.keys() and self.plain.lower.switches:
+            witness = refute_kink(examiner) or (None if "exists" in open_claims else refute_parameter_switch(examiner))
+            if witness:
+                found["kink"] = witness
 
     def _places(self, points, open_claims):
         """(point, shares of the bracket) that the searches point to."""

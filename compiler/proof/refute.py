@@ -13,18 +13,19 @@ from rootwright.calculus.balls import ball, precision
 from rootwright.calculus.program import needed
 from rootwright.proof.cancel import factors
 from rootwright.proof.chart import SHARE
-from rootwright.proof.crew import Crew
+from rootwright.proof.crossings import arrays
 from rootwright.proof.exact import BITS, UNDEFINED, sign, value_at
 from rootwright.proof.functions import ends
 from rootwright.proof.jumps import clears_jumps
 from rootwright.proof.points import Points
 from rootwright.proof.search import judge_inside, next_to
-from rootwright.proof.settle import Limit, Outcome, search_inside
 from rootwright.proof.witness import at_point, simplest
 
 SHARES = tuple(Fraction(k, 16) for k in range(17))
-_EFFORT = 400               # boxes at one point
-_WAVES = 400                # waves at all points together
+_EFFORT = 600               # boxes at one point
+_WAVES = 160                # waves at all points together
+_PIECES = 8                 # of a part of the bracket that is cut
+_FINEST = 2.0 ** -48
 
 
 class Examiner:
@@ -35,9 +36,7 @@ class Examiner:
         self.points = Points(domain.model)
         self.found = {}
         self.seen, self.searched = {}, set()
-        self.limit = Limit(10 ** 9)
-        self.limit.until = limit.until
-        self.crew = Crew(domain.judges())
+        self.limit, self.waves = limit, 0
 
     def examine(self, values, wanted, shares=()):
         """Look at the point near some numbers for refutations of the wanted claims, as far as exact places of the bracket tell."""
@@ -51,7 +50,7 @@ class Examiner:
     def search(self, values, wanted):
         """Look for the zeros at a point that has been examined, and judge the claims from them."""
         wanted = self._left(wanted)
-        point = self.points.exact(values) if wanted and self.limit.waves < _WAVES else None
+        point = self.points.exact(values) if wanted and self.waves < _WAVES else None
         if point is None or not self.seen.get(tuple(point.items())) or tuple(point.items()) in self.searched:
             return
         self.searched.add(tuple(point.items()))
@@ -59,7 +58,7 @@ class Examiner:
 
     def _left(self, wanted):
         """Claims still to be refuted. Where a residual is undefined, the rest means nothing."""
-        if "defined" in self.found or self.limit.reached(np.inf):
+        if "defined" in self.found or self.limit.late():
             return set()
         wanted = wanted - self.found.keys()
         return wanted & {"defined"} if "exists" in self.found else wanted
@@ -76,6 +75,20 @@ class Examiner:
         """(low, high): the thin box of a point, over the whole bracket."""
         thin = [_thin(point[name]) for name in self.domain.lower.variables[:-1]]
         return np.array([[pair[0] for pair in thin] + [0.0]]), np.array([[pair[1] for pair in thin] + [1.0]])
+
+    def inside(self, count):
+        """Points of the operating range: corners first."""
+        points = map(self.points.exact, self.points.corners(count))
+        return [point for point in points if point and self.in_range(point)]
+
+    def place(self, box, share):
+        """The unknown in words, at the middle of a box {parameter: (low, high)}."""
+        return self._place({name: (low + high) / 2 for name, (low, high) in box.items()}, share)
+
+    def meets_switch(self, box, share):
+        """True where a switch may be met at a share of the bracket in a box."""
+        low, high = arrays(self, box, (share, share))
+        return any(not self.domain.lower.natural(form, low, high).definite()[0] for _, form in self.domain.lower.switches)
 
     def in_range(self, point):
         chart = self.domain.lower
@@ -183,26 +196,45 @@ class Examiner:
         low, high = self.box(point)
         if self.model.unknown.open_upper:
             high[0, -1] = 1.0 - 2.0 ** -20
-        outcome = Outcome()
-        search_inside(self.domain, 0, self.crew, self.limit, self.limit.spent + _EFFORT, outcome, ("unique",), low, high, share_only=True)
-        undefined = [pair for left in outcome.open.get("defined", []) for pair in merged(left.low[:, -1], left.high[:, -1])]
+        suspects, broken = self._scan(low, high, opened)
+        parts, undefined = merged(*suspects), merged(*broken)
         for share in self._candidates(point, undefined[:12]):
             if 0 < share < 1 and self._undefined_at(point, share):
                 return
         if undefined and self._pole(point, low, high, undefined):
             return
-        parts = merged(*(np.concatenate([box[end][:, -1] for box in outcome.active] or [np.zeros(0)]) for end in (1, 2)))
         exact = self._exact_zeros(point, self._candidates(point, parts[:12]))
         zeros = [part for part in parts if not any(part[0] <= share <= part[1] for share in exact)]
         zeros = sorted([*(part for part in zeros if self._crosses(point, part, low, high, opened)), *((share, share) for share in exact)])
         if "exists" in wanted and not zeros and not self.model.unknown.open_upper \
-                and clears_jumps(self.domain.lower, outcome, low, high, opened, parts):
+                and clears_jumps(self.domain.lower, suspects, parts, low, high, opened):
             self.refute("exists", at_point(point, "the sign changes only where the residual jumps; it is 0 nowhere in the bracket"))
         if len(zeros) > 1 and self.model.unknown.root == "only":
             places = ", ".join(self._place(point, (Fraction(a) + Fraction(b)) / 2).split(" = ")[1] for a, b in zeros[:3])
             self.refute("unique", at_point(point, f"{len(zeros)} zeros at least, near {self.model.unknown.name} = {places}"))
         if zeros and "kink" in wanted:
             self._parameter_switch(point)
+
+    def _scan(self, low, high, opened):
+        """Parts of the bracket's share at a point that may hold a zero, and where the residual may be undefined: two pairs (low, high) of arrays."""
+        chart = self.domain.lower
+        ends = np.linspace(low[0, -1], high[0, -1], 2 * _PIECES + 1)
+        a, b = ends[:-1], ends[1:]
+        kept, broken, looked = [], [], 0
+        while len(a):
+            box_low, box_high = np.repeat(low, len(a), 0), np.repeat(high, len(a), 0)
+            box_low[:, -1], box_high[:, -1] = a, b
+            judged = judge_inside(chart, box_low, box_high, opened)
+            looked, self.waves = looked + len(a), self.waves + 1
+            unsettled = judged.undefined | judged.active & (judged.jump | (judged.rise == 0))
+            cut = unsettled & (b - a > _FINEST) if looked < _EFFORT else np.zeros(len(a), bool)
+            kept.append((a[judged.active & ~cut], b[judged.active & ~cut]))
+            broken.append((a[judged.undefined & ~cut], b[judged.undefined & ~cut]))
+            steps = np.linspace(0.0, 1.0, _PIECES + 1)
+            ends = a[cut, None] + (b - a)[cut, None] * steps
+            ends[:, -1] = b[cut]
+            a, b = ends[:, :-1].ravel(), ends[:, 1:].ravel()
+        return tuple(tuple(np.concatenate(part) for part in zip(*pairs)) for pairs in (kept, broken))
 
     def _parameter_switch(self, point):
         """A switch on parameters alone that every zero at this point lies on."""

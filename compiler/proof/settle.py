@@ -57,7 +57,11 @@ class Limit:
             self.progress(stage, self.spent, waiting)
 
     def reached(self, ceiling):
-        return self.spent >= ceiling or self.until is not None and time.monotonic() > self.until
+        return self.spent >= ceiling or self.late()
+
+    def late(self):
+        """True where the time is over."""
+        return self.until is not None and time.monotonic() > self.until
 
 
 class Domain:
@@ -109,13 +113,9 @@ def search_ends(domain, crew, limit, ceiling, outcome):
             outcome.leave(claim, ~judged.outside & ~good, low, high, 0)
 
 
-def search_inside(domain, index, crew, limit, ceiling, outcome, wanted, low=None, high=None, share_only=False):
-    """Cuts boxes of parameters and share until nothing that the claims in `wanted` need is open; fills the outcome.
-
-    `share_only`: the boxes hold single points of the parameters, whose rounding is not worth a cut.
-    """
-    if low is None:
-        low, high = domain.whole()
+def search_inside(domain, index, crew, limit, ceiling, outcome, wanted):
+    """Cuts boxes of parameters and share until nothing that the claims in `wanted` need is open; fills the outcome."""
+    low, high = domain.whole()
     kept = []
     while len(low) and not limit.reached(ceiling):
         now, low, high = (low[:WAVE], high[:WAVE]), low[WAVE:], high[WAVE:]
@@ -124,9 +124,7 @@ def search_inside(domain, index, crew, limit, ceiling, outcome, wanted, low=None
         needs = needs_of(judged)
         open_ = np.logical_or.reduce([needs[claim] for claim in wanted])
         outcome.keep(judged, ~open_, *now, index)
-        if share_only:
-            judged.smear[:, :-1] = -1e9
-        low, high = _append(domain, now, open_, judged.smear, low, high, kept, 2.0 ** (-48 if share_only else -160))
+        low, high = _append(domain, now, open_, judged.smear, low, high, kept, 2.0 ** -160)
     low, high = _together(kept, low, high)
     if len(low):
         judged = crew.judge(f"inside {index}", low, high)

@@ -26,7 +26,7 @@ def refute_kink(examiner):
     zeros = [(point, _zero(examiner, point)) for point in points]
     zeros = [(point, zero) for point, zero in zeros if zero is not None]
     for guard, form in domain.lower.switches:
-        if examiner.limit.reached(np.inf):
+        if examiner.limit.late():
             break
         signs = [_side(examiner, form, point, zero) for point, zero in zeros]
         below = next((place for place, side in zip(zeros, signs) if side == -1), None)

@@ -21,6 +21,7 @@ from rootwright.proof.certificate import Certificate, Claim
 from rootwright.proof.crew import Crew
 from rootwright.proof.crossings import refute_divisors, refute_parameter_switch
 from rootwright.proof.numbers import doubles_are_finite, slope_bound
+from rootwright.proof.phantoms import drop_phantoms
 from rootwright.proof.ranges import as_ball, exact_ends
 from rootwright.proof.flat import refute_slope
 from rootwright.proof.refute import Examiner
@@ -69,6 +70,7 @@ class _Proof:
                 last = index == len(self.domain.charts) - 1
                 ceiling = (_INSIDE if last else 0.5 * (_ENDS + _INSIDE)) * boxes
                 search_inside(self.domain, index, crew, self.limit, ceiling, self.outcome, ("defined", "continuous", "unique", "kink"))
+            drop_phantoms(self.domain, crew, self.limit, self.outcome)
 
     def certificate(self, seen):
         self.search()
@@ -76,10 +78,14 @@ class _Proof:
         if len(self.outcome.rises) > 1:
             if self.model.unknown.root == "only":
                 proved -= {"unique"}
+        # A point of the range would have a zero, and that zero would lie in a box that may hold one.
+        self.nowhere = "exists" in proved and not any(len(low) for _, low, _, _ in self.outcome.active)
+        if self.nowhere:
+            proved = set()
         slope = slope_bound(self.domain, self.outcome, self.limit) if "slope" in proved else 0.0
         if not slope > 0.0:
             proved -= {"slope"}
-        witnesses = self._refutations(set(_NEEDS) - proved)
+        witnesses = {} if self.nowhere else self._refutations(set(_NEEDS) - proved)
         sensitivities = sensitivity_bounds(self.plain, self.closure, self.limit) if "slope" in proved else {}
         finite = doubles_are_finite(self.plain, self.closure, self.limit)
         claims = tuple(self._claim(name, proved, witnesses, slope, sensitivities, finite, seen) for name in _NEEDS)
@@ -141,7 +147,9 @@ class _Proof:
         failed = next((other for other in ("defined", "exists") if other in witnesses and other != name), None)
         if verdict == "open":
             left_open = share(self.domain, lefts, self.outcome.inside_range)
-            if failed and name != "kink":
+            if self.nowhere:
+                reason, left_open = "no point of the ranges meets the requirements", 1.0
+            elif failed and name != "kink":
                 reason, left_open = f"without meaning where `{failed}` fails", 1.0
             elif name == "unique" and len(self.outcome.rises) > 1 and not lefts:
                 reason, left_open = "the slope has different signs in different parts of the range", 1.0

@@ -10,29 +10,33 @@ Over the real numbers, with the decimals that the author wrote:
 What is not proved is looked at point by point for a refutation. What is neither is open, with its share of the range.
 """
 
-import json
 from dataclasses import replace
+from fractions import Fraction
+from itertools import islice
 
 import numpy as np
 
-from rootwright.calculus.lower import Lowering
-from rootwright.proof.advice import proposals, relative_name, with_requirement
+from rootwright.calculus.constants import NotReal
+from rootwright.proof.advice import brackets, cuts, relative_name
 from rootwright.proof.certificate import Certificate, Claim
 from rootwright.proof.crew import Crew
 from rootwright.proof.crossings import refute_divisors, refute_parameter_switch
+from rootwright.proof.flat import refute_slope
 from rootwright.proof.numbers import doubles_are_finite, slope_bound
 from rootwright.proof.phantoms import drop_phantoms
 from rootwright.proof.ranges import as_ball, exact_ends
-from rootwright.proof.flat import refute_slope
 from rootwright.proof.refute import Examiner
 from rootwright.proof.scaling import symmetries
 from rootwright.proof.sensitivities import sensitivity_bounds
 from rootwright.proof.settle import Domain, Limit, Outcome, search_ends, search_inside, share
 from rootwright.proof.switches import refute_kink
+from rootwright.proof.witness import middle
 
 BOXES = 60_000
 _ENDS, _INSIDE = 0.4, 0.9           # of the boxes that may be spent, by the end of each search
-_TRIAL = 20_000                     # boxes for trying a proposal
+_TRIAL = 12_000                     # boxes for trying a proposal
+_CUTS, _BRACKETS = 3, 3             # proposals that are tried
+_POINTS = 16                        # points whose zeros are looked for where only slope or kink is open
 _NEEDS = {                          # what is asked of the boxes for each claim
     "defined": ("ordered", "defined"),
     "exists": ("ordered", "change", "continuous"),
@@ -92,7 +96,7 @@ class _Proof:
         return Certificate(self.model.name, self.model.digest,
                            tuple((p.name, p.low.text, p.high.text) for p in self.model.parameters),
                            tuple(condition.text for condition in self.model.require), self._relative(),
-                           self.limit.spent, claims, self._advice())
+                           self.limit.spent, claims, self._advice(witnesses))
 
     def _refutations(self, open_claims):
         if not open_claims:
@@ -104,8 +108,9 @@ class _Proof:
             examiner.examine(values, open_claims, shares)
         for values in points.edges([*corners, *(values for values, _ in places)], examiner.in_range) if self.model.require else ():
             examiner.examine(values, open_claims)
-        for values in (*(values for values, _ in places), *corners):
-            examiner.search(values, open_claims)
+        for count, values in enumerate((*(values for values, _ in places), *corners)):
+            if count < _POINTS or open_claims - examiner.found.keys() - {"slope", "kink"}:
+                examiner.search(values, open_claims)
         self._refute_between(examiner, places, open_claims)
         return {claim: witness for claim, witness in examiner.found.items() if claim in open_claims}
 
@@ -181,20 +186,44 @@ class _Proof:
         names = ((name, relative_name(self.domain, name)) for name in self.domain.ranges.names[:-1])
         return tuple((name, text) for name, text in names if name != text)
 
-    def _advice(self):
-        """The first proposal with which nothing is left open."""
-        for condition in proposals(self.domain, self.outcome)[:2]:
+    def _advice(self, witnesses):
+        """The lines of the first proposals with which nothing is left open; of a bracket, with which there is a root."""
+        if {"exists", "defined"} & witnesses.keys() and {"ordered", "change"} & self.outcome.open.keys():
+            wanted = ("ordered", "defined", "change", "continuous")
+            points = [{name: _value(text) for name, text in witness.point} for witness in witnesses.values()]
+            lines = self._first((proposal for proposal in brackets(self.model) if _reaches(proposal.model, points)), wanted, _BRACKETS)
+            if lines:
+                return lines
+        if self.outcome.open:
+            wanted = tuple(self.outcome.open.keys() | {"ordered", "defined", "change", "continuous", "unique"})
+            return self._first(cuts(self.model, self.domain, self.outcome), wanted, _CUTS)
+        return ()
+
+    def _first(self, proposals, wanted, most):
+        """Lines of the first proposal whose proof leaves nothing open that is wanted."""
+        for proposal in islice(proposals, most):
             if self.limit.reached(np.inf):
                 break
-            model = with_requirement(self.model, condition)
             limit = Limit(min(self.limit.boxes, _TRIAL))
             limit.until = self.limit.until
-            trial = _Proof(replace(self.closure, model=model), limit, self.workers)
+            trial = _Proof(replace(self.closure, model=proposal.model), limit, self.workers)
             trial.search()
-            if not any(need != "kink" for need in trial.outcome.open) and len(trial.outcome.rises) == 1:
-                require = ", ".join(json.dumps(text) for text in (*(condition.text for condition in self.model.require), condition))
-                return (f"with this under [domain] the proof goes through: require = [{require}]",)
+            if not any(need in trial.outcome.open for need in wanted) and ("unique" not in wanted or len(trial.outcome.rises) == 1):
+                return proposal.lines
         return ()
+
+
+def _value(text):
+    return Fraction(middle(text))
+
+
+def _reaches(model, points):
+    """True where at all these points the residual of a model has different signs at the ends of its bracket, or is 0 at one."""
+    try:
+        examiner = Examiner(Domain(model), Limit(0))
+    except NotReal:
+        return False
+    return all(examiner.changes_sign(point) for point in map(examiner.points.exact, points) if point)
 
 
 def relative(chart):
@@ -215,7 +244,6 @@ def relative(chart):
 
 def _shares(domain, left):
     """Places in the bracket that boxes left open point to."""
-    from fractions import Fraction
     if left.chart:
         return ()
     places = np.unique(np.concatenate([left.low[:6, -1], left.high[:6, -1], 0.5 * (left.low[:6, -1] + left.high[:6, -1])]))

@@ -132,6 +132,13 @@ class Examiner:
             self.refute("exists", at_point(point, f"the residual is {'positive' if signs[0] > 0 else 'negative'} {places} of the bracket"))
         return True
 
+    def changes_sign(self, point):
+        """True where the residual certainly has different signs at the closed ends of the bracket at a point, or is 0 at one."""
+        unknown = self.model.unknown
+        signs = [self._beside(point, name) if opened else self._sign_at(point, share) for share, name, opened in
+                 ((Fraction(0), "lower", unknown.open_lower), (Fraction(1), "upper", unknown.open_upper))]
+        return None not in signs and signs[0] * signs[1] <= 0
+
     def _form(self, share):
         chart = self.domain.lower
         return chart.at_lower if share == 0 else chart.at_upper if share == 1 else chart.residual

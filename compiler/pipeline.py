@@ -107,13 +107,18 @@ def has_root_proved(closed):
 
 
 def prove(job):
-    """Certificate of a job (spec, boxes or None, seconds or None); a spec that is known to be valid."""
+    """(Certificate, contradictions) of a job (spec, boxes or None, seconds or None); a spec that is known to be valid."""
+    from rootwright.binding.build import BuildFailed, NoCompiler
     from rootwright.evidence.proving import certify
 
     spec, boxes, seconds = job
     closed, _ = closure(*find(spec))
     limits = {name: value for name, value in (("boxes", boxes), ("seconds", seconds)) if value is not None}
-    return certify(closed, load(spec, "python"), **limits)
+    try:
+        module = load(spec)
+    except (NoCompiler, BuildFailed):
+        module = load(spec, "python")       # the same bits
+    return certify(closed, module, **limits)
 
 
 def plan(closed):

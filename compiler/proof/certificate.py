@@ -87,7 +87,7 @@ def to_json(certificate):
         if claim.doubles:
             entry["doubles"] = claim.doubles
         if claim.witness:
-            entry["witness"] = dict(claim.witness.point)
+            entry["witness"] = {name: text[1:-1].split(", ") if text.startswith("[") else text for name, text in claim.witness.point}
             entry["because"] = claim.witness.reason
         if claim.worst:
             entry["worst"] = {name: [low, high] for name, low, high in claim.worst}

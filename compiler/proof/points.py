@@ -36,10 +36,12 @@ class Points:
             for end, inward in ((low, 1), (high, -1)):
                 if not _within(value, end, inward):
                     value = end if isinstance(end, Fraction) else _decimal_inside(end, inward)
-            if not (_within(value, low, 1) and _within(value, high, -1)):
-                return None
             result[name] = value
-        return result
+        return result if self.holds(result) else None
+
+    def holds(self, point):
+        """True where {parameter: Fraction} certainly lies in the range."""
+        return all(_within(point[name], low, 1) and _within(point[name], high, -1) for name, (low, high) in self.ends.items())
 
     def corners(self, count=24):
         """Corners of the range, its middle, and a fixed sequence of points inside."""

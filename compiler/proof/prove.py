@@ -190,7 +190,7 @@ class _Proof:
         """The lines of the first proposals with which nothing is left open; of a bracket, with which there is a root."""
         if {"exists", "defined"} & witnesses.keys() and {"ordered", "change"} & self.outcome.open.keys():
             wanted = ("ordered", "defined", "change", "continuous")
-            points = [{name: _value(text) for name, text in witness.point} for witness in witnesses.values()]
+            points = [{name: Fraction(middle(text)) for name, text in witness.point} for witness in witnesses.values()]
             lines = self._first((proposal for proposal in brackets(self.model) if _reaches(proposal.model, points)), wanted, _BRACKETS)
             if lines:
                 return lines
@@ -211,10 +211,6 @@ class _Proof:
             if not any(need in trial.outcome.open for need in wanted) and ("unique" not in wanted or len(trial.outcome.rises) == 1):
                 return proposal.lines
         return ()
-
-
-def _value(text):
-    return Fraction(middle(text))
 
 
 def _reaches(model, points):

@@ -25,11 +25,11 @@ def in_box(box, reason):
 
 
 def middle(text):
-    """The number of a witness's parameter as text: its decimal, or the middle of its box."""
-    if not text.startswith("["):
-        return text
-    low, high = text[1:-1].split(", ")
-    return repr(float((Fraction(low) + Fraction(high)) / 2))
+    """The number of a witness's parameter as text: its decimal, or the double nearest to a quotient or to the middle of a box."""
+    if text.startswith("["):
+        low, high = text[1:-1].split(", ")
+        return repr(float((Fraction(low) + Fraction(high)) / 2))
+    return repr(float(Fraction(text))) if "/" in text else text
 
 
 def simplest(low, high):

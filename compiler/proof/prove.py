@@ -34,6 +34,7 @@ from rootwright.proof.witness import middle
 
 BOXES = 60_000
 _ENDS, _INSIDE = 0.4, 0.9           # of the boxes that may be spent, by the end of each search
+_SMALL = 0.2                        # of the boxes: a search that leaves as many may be made twice
 _TRIAL = 12_000                     # boxes for trying a proposal
 _CUTS, _BRACKETS = 3, 3             # proposals that are tried
 _POINTS = 16                        # points whose zeros are looked for where only slope or kink is open
@@ -64,9 +65,20 @@ class _Proof:
         scaling = relative(self.plain.lower)
         self.domain = Domain(self.model, scaling) if scaling else self.plain
         self.outcome = Outcome()
+        self.exact = False          # the proof needs the ends of ranges that no double is
 
     def search(self):
-        """Both searches, as far as the limit goes."""
+        """Both searches, as far as the limit goes; once more with the exact ends of the ranges where that may be what is missing."""
+        self._search()
+        if {"ordered", "change"} & self.outcome.open.keys() and self.limit.spent < _SMALL * self.limit.boxes and not _are_doubles(self.model):
+            before = self.domain, self.outcome
+            self.domain, self.outcome = Domain(self.model, edges=True), Outcome()
+            self._search()
+            self.exact = not {"ordered", "change"} & self.outcome.open.keys()
+            if not self.exact:
+                self.domain, self.outcome = before
+
+    def _search(self):
         boxes = self.limit.boxes
         with Crew(self.domain.judges(), self.workers) as crew:
             search_ends(self.domain, crew, self.limit, _ENDS * boxes, self.outcome)
@@ -91,7 +103,7 @@ class _Proof:
             proved -= {"slope"}
         witnesses = {} if self.nowhere else self._refutations(set(_NEEDS) - proved)
         sensitivities = sensitivity_bounds(self.plain, self.closure, self.limit) if "slope" in proved else {}
-        finite = doubles_are_finite(self.plain, self.closure, self.limit)
+        finite = not self.exact and doubles_are_finite(self.plain, self.closure, self.limit)
         claims = tuple(self._claim(name, proved, witnesses, slope, sensitivities, finite, seen) for name in _NEEDS)
         return Certificate(self.model.name, self.model.digest,
                            tuple((p.name, p.low.text, p.high.text) for p in self.model.parameters),
@@ -220,6 +232,11 @@ def _reaches(model, points):
     except NotReal:
         return False
     return all(examiner.changes_sign(point) for point in map(examiner.points.exact, points) if point)
+
+
+def _are_doubles(model):
+    """True where every end of every range is a double."""
+    return all(isinstance(end, Fraction) and Fraction(float(end)) == end for pair in exact_ends(model).values() for end in pair)
 
 
 def relative(chart):

@@ -67,13 +67,13 @@ class Limit:
 class Domain:
     """Charts of one model, plain or relative to the pivots of a scaling, with their ranges."""
 
-    def __init__(self, model, scaling=None):
+    def __init__(self, model, scaling=None, edges=False):
         self.model, self.scaling = model, scaling
         fixed = scaling.pivots if scaling else ()
-        self.lower = Chart(model, fixed)
+        self.lower = Chart(model, fixed, edges=edges)
         self.charts = [self.lower]
         if model.unknown.open_upper:
-            self.charts.append(Chart(model, fixed, from_upper=True))
+            self.charts.append(Chart(model, fixed, from_upper=True, edges=edges))
         self.upper = self.charts[-1]
         self.ranges = ranges(model, self.lower.variables, scaling)
         self.opened = [model.unknown.open_lower, True]

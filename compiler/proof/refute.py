@@ -24,6 +24,7 @@ from rootwright.proof.witness import at_point, simplest
 SHARES = tuple(Fraction(k, 16) for k in range(17))
 _EFFORT = 600               # boxes at one point
 _WAVES = 160                # waves at all points together
+_REWRITTEN = 12             # points at which the residual is written anew
 _PIECES = 8                 # of a part of the bracket that is cut
 _FINEST = 2.0 ** -48
 
@@ -36,7 +37,7 @@ class Examiner:
         self.points = Points(domain.model)
         self.found = {}
         self.seen, self.searched = {}, set()
-        self.limit, self.waves = limit, 0
+        self.limit, self.waves, self.rewritten = limit, 0, 0
 
     def examine(self, values, wanted, shares=()):
         """Look at the point near some numbers for refutations of the wanted claims, as far as exact places of the bracket tell."""
@@ -45,7 +46,7 @@ class Examiner:
             return
         key = tuple(point.items())
         if key not in self.seen and self.in_range(point):
-            self.seen[key] = self._bracket(point) and self._values(point, shares)
+            self.seen[key] = self._bracket(point) and self._values(point, shares, wanted)
 
     def search(self, values, wanted):
         """Look for the zeros at a point that has been examined, and judge the claims from them."""
@@ -112,13 +113,13 @@ class Examiner:
             return False
         return sign(values[width]) == 1
 
-    def _values(self, point, shares):
+    def _values(self, point, shares, wanted):
         """False where the residual has no value somewhere in the bracket."""
         unknown = self.model.unknown
         signs = []
         for share, name, opened in ((Fraction(0), "lower", unknown.open_lower), (Fraction(1), "upper", unknown.open_upper)):
             if opened:
-                signs.append(self._beside(point, name))
+                signs.append(self._beside(point, name) if "exists" in wanted else None)
             elif self._undefined_at(point, share):
                 return False
             else:
@@ -151,11 +152,11 @@ class Examiner:
     def _beside(self, point, end):
         """Sign of the residual next to an open end; None where it is not certain."""
         chart = self.domain.upper if end == "upper" else self.domain.lower
-        for form in (None, chart.at_point(chart.residual, point)):
-            (rise, fall), _ = next_to(chart, *self.box(point), form)
-            if rise[0] or fall[0]:
-                return 1 if rise[0] else -1
-        return None
+        (rise, fall), _ = next_to(chart, *self.box(point))
+        if not (rise[0] or fall[0]) and self.rewritten < _REWRITTEN:
+            self.rewritten += 1
+            (rise, fall), _ = next_to(chart, *self.box(point), chart.at_point(chart.residual, point))
+        return 1 if rise[0] else -1 if fall[0] else None
 
     def _undefined_at(self, point, share):
         form = self._form(share)

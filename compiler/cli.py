@@ -79,7 +79,8 @@ def _parser():
                        help="processes that prove specs side by side; the results do not depend on it (default 1)")
     prove.add_argument("--strict", action="store_true", help="exit 1 unless every claim is proved")
     prove.add_argument("--save", action="store_true", help="write the certificate beside the spec, as NAME.proof; compile reads it")
-    prove.add_argument("--replay", metavar="OUT.csv", help="write the witnesses as a table of points that eval takes (one spec)")
+    prove.add_argument("--replay", metavar="OUT.csv", 
+                       help="write the witnesses, and the points where the module contradicts the proof, as points that eval takes (one spec)")
     _add_json(prove)
 
     compile_ = _command(commands, "compile", _compile, "write a standalone module for each spec", _SPECS)
@@ -223,36 +224,39 @@ def _verify(arguments):
 
 
 def _prove(arguments):
+    from dataclasses import asdict
+
     from rootwright import pipeline
-    from rootwright.evidence.proving import failed, in_processes, table, write_replay
+    from rootwright.evidence.proving import failed, in_processes, table, told, write_replay
     from rootwright.proof.certificate import dump, render, to_json
 
     if arguments.replay and len(arguments.specs) > 1:
         raise Refusal("--replay takes one spec at a time")
     closures = [(spec, *_closure(spec)) for spec in arguments.specs]
     jobs = [(spec, arguments.boxes, arguments.seconds) for spec, closure, _ in closures if closure is not None]
-    certificates, found, worst = {}, [], OK
+    certificates, against, found, worst = {}, {}, [], OK
     with _progress() as progress:
-        for (spec, *_), certificate in zip(jobs, in_processes(pipeline.prove, jobs, arguments.workers)):
-            certificates[spec] = certificate
+        for (spec, *_), (certificate, contradictions) in zip(jobs, in_processes(pipeline.prove, jobs, arguments.workers)):
+            certificates[spec], against[spec] = certificate, contradictions
             if progress:
                 progress(f"{len(certificates)} of {len(jobs)} specs proved: {spec}")
     for spec, closure, diagnostics in closures:
         certificate = certificates.get(spec)
-        worst = max(worst, WRONG if certificate is None else FOUND if failed(certificate, arguments.strict) else OK)
+        worst = max(worst, WRONG if certificate is None else FOUND if failed(certificate, arguments.strict) or against[spec] else OK)
         found.append({"spec": spec, "valid": closure is not None} | (to_json(certificate) if certificate else {})
+                     | ({"contradictions": [asdict(each) | {"point": dict(each.point)} for each in against[spec]]} if certificate else {})
                      | {"diagnostics": diagnostics})
         if certificate and arguments.save:
             _write(pipeline.certificate_path(spec), dump(certificate), arguments.json)
         if certificate and arguments.replay:
             with _sink(arguments.replay) as stream:
-                write_replay(stream, certificate)
+                write_replay(stream, certificate, against[spec])
     if arguments.json:
         print(json.dumps(_finite(found[0] if len(found) == 1 else {"specs": found}), indent=2))
     elif len(certificates) == 1:
-        print(render(*certificates.values()))
+        print("\n".join([render(*certificates.values()), *told(*against.values())]))
     elif certificates:
-        print("\n".join(table(list(certificates.values()))))
+        print("\n".join([*table(list(certificates.values())), *(line for each in against.values() for line in told(each))]))
     return worst
 
 

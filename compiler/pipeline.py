@@ -108,17 +108,13 @@ def has_root_proved(closed):
 
 
 def prove(job):
-    """Certificate of a job (spec, boxes or None, seconds or None); a spec that is known to be valid."""
+    """(Certificate, contradictions) of a job (spec, boxes or None, seconds or None); a spec that is known to be valid."""
     from rootwright.evidence.proving import certify
 
     spec, boxes, seconds = job
-    from rootwright.binding.module import load as load_module
-    from rootwright.plan.plan import PLAIN
-
     closed, _ = closure(*find(spec))
-    module = load_module(closed, emit(closed, "python", PLAIN), "python")
     limits = {name: value for name, value in (("boxes", boxes), ("seconds", seconds)) if value is not None}
-    return certify(closed, module, **limits)
+    return certify(closed, **limits)
 
 
 def plan(closed):

@@ -1,5 +1,6 @@
 """The proof against mathematics that is known, and its arithmetic against balls of high precision."""
 
+import json
 import math
 from fractions import Fraction
 
@@ -175,13 +176,22 @@ def test_a_bound_relative_to_a_pivot_holds_in_the_units_of_the_spec():
     assert 1.0 <= numbers["least_slope"] <= 3.0
 
 
-def test_a_requirement_that_makes_the_proof_go_through_is_proposed():
-    text = spec("branch", "x^2 = a", ("0", "2"), {"a": (0, 4)})
-    found = certificate(text, 3000)
-    assert found.claim("slope").verdict != "proved"
-    assert any("a >= " in line for line in found.advice)
-    limit = found.advice[0].split("a >= ")[1].split('"')[0]
-    assert certificate(spec("branch", "x^2 = a", ("0", "2"), {"a": (0, 4)}, require=(f"a >= {limit}",)), 20_000).claim("unique").verdict == "proved"
+def test_a_tighter_range_and_a_requirement_that_make_the_proof_go_through_are_proposed():
+    found = certificate(spec("branch", "x^2 = a", ("0", "2"), {"a": (0, 4)}), 3000)
+    assert found.claim("slope").verdict == "refuted"
+    tighter, requirement = found.advice
+    low = float(tighter.split("range = [")[1].split(",")[0])
+    assert f'"a >= {low!r}"' in requirement
+    assert set(certificate(spec("branch", "x^2 = a", ("0", "2"), {"a": (low, 4)}), 20_000).verdicts.values()) == {"proved"}
+
+
+@pytest.mark.parametrize("equation, bracket", [("x = a", ("0", "1.999")), ("x + x^3 = a", ("0.1", "4")), ("x + x^3 = a", ("1 + a/2", "3"))])
+def test_a_bracket_that_reaches_the_root_is_proposed(equation, bracket):
+    found = certificate(spec("narrow", equation, bracket, {"a": (0, 2)}), 3000)
+    assert found.claim("exists").verdict == "refuted"
+    (line,) = found.advice
+    wider = json.loads(line.split("bracket = ")[1])
+    assert certificate(spec("narrow", equation, wider, {"a": (0, 2)}), 20_000).claim("exists").verdict == "proved"
 
 
 # -- the certificate

@@ -87,9 +87,25 @@ class Cancelling:
                 return inner.args[0]
             if (op, inner.op) in (("cos", "asin"), ("sin", "acos")):
                 return graph.sqrt(self._rational(graph.sub(1, graph.mul(inner.args[0], inner.args[0]))))
+        if op in ("sin", "cos", "tan"):
+            value = _at_turn(op, self._turns(args[0]))
+            if value is not None:
+                return graph.number(value)
         if op == "pow" and graph.rational(args[0]) == 1:
             return graph.number(1)
         return graph.enter(op, args)
+
+    def _turns(self, node):
+        """The value as a multiple of pi, a Fraction; None where it is none."""
+        if not self.graph.is_constant(node):
+            return None
+        try:
+            (numerator, denominator), (pi, _) = self.fraction(node), self._atom(self.graph.pi())
+        except _Full:
+            return None
+        if denominator.is_constant() and len(numerator) == 1 and (numerator / numerator.leading_coefficient()) == pi:
+            return _exact(numerator.leading_coefficient()) / _exact(denominator.leading_coefficient())
+        return None
 
     # -- fractions of polynomials
 
@@ -290,6 +306,15 @@ class Cancelling:
         return product if not rest else graph.add(product, self._horner(rest, atoms))
 
 
+def _at_turn(op, turns):
+    """sin, cos or tan of a whole multiple of pi/2, given in multiples of pi; None elsewhere, and at a pole."""
+    if turns is None or (2 * turns).denominator != 1:
+        return None
+    quarter = int(2 * turns) % 4
+    sine, cosine = (0, 1, 0, -1)[quarter], (1, 0, -1, 0)[quarter]
+    return {"sin": sine, "cos": cosine, "tan": 0 if sine == 0 else None}[op]
+
+
 def _exact(value):
     value = flint.fmpq(value)
     return Fraction(int(value.p), int(value.q))
@@ -313,13 +338,13 @@ def factors(graph, node):
     return constant, dict(sorted(counts.items()))
 
 
-def substituted(graph, node, name, value):
-    """The node with another node in the place of an input."""
+def substituted(graph, node, inputs):
+    """The node with other nodes in the place of some inputs, {name: node}."""
     twins = {}
     for step in needed(graph.instructions, [node]):
         instruction = graph.instructions[step]
-        if instruction.op == "input" and instruction.value == name:
-            twins[step] = value
+        if instruction.op == "input" and instruction.value in inputs:
+            twins[step] = inputs[instruction.value]
         else:
             twins[step] = graph.enter(instruction.op, [twins[arg] for arg in instruction.args], instruction.value)
     return twins[node]

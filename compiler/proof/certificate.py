@@ -4,6 +4,8 @@ import json
 import tomllib
 from dataclasses import asdict, dataclass
 
+from rootwright.proof.witness import Witness
+
 FORMAT = 1
 CLAIMS = ("defined", "exists", "unique", "slope", "kink", "iterations")
 MEANINGS = {
@@ -14,13 +16,6 @@ MEANINGS = {
     "kink": "no zero lies on a switch of where, min, max, abs or sign",
     "iterations": "the solver's limit of evaluations suffices",
 }
-
-
-@dataclass(frozen=True)
-class Witness:
-    """A point at which a claim fails, {parameter: decimal}; `reason` says how, with the values that decide."""
-    point: tuple[tuple[str, str], ...]
-    reason: str
 
 
 @dataclass(frozen=True)
@@ -92,7 +87,7 @@ def to_json(certificate):
         if claim.doubles:
             entry["doubles"] = claim.doubles
         if claim.witness:
-            entry["witness"] = dict(claim.witness.point)
+            entry["witness"] = {name: text[1:-1].split(", ") if text.startswith("[") else text for name, text in claim.witness.point}
             entry["because"] = claim.witness.reason
         if claim.worst:
             entry["worst"] = {name: [low, high] for name, low, high in claim.worst}

@@ -8,6 +8,7 @@ what is left (A. Neumaier, Interval Methods for Systems of Equations, 1990, sect
 """
 
 from dataclasses import dataclass
+from fractions import Fraction
 
 import flint
 import numpy as np
@@ -18,7 +19,7 @@ from rootwright.calculus.lower import Lowering
 from rootwright.calculus.program import Graph, evaluate, needed
 from rootwright.calculus.switches import switches
 from rootwright.proof.cancel import Cancelling, domain, factors, substituted
-from rootwright.proof.functions import ends
+from rootwright.proof.functions import around, ends
 from rootwright.proof.intervals import Interval, Intervals
 
 SHARE = "_share"            # the input t: names of a spec begin with a letter
@@ -60,9 +61,12 @@ class Values:
 
 
 class Chart:
-    """`variables` are the names of the inputs in order, the share of the bracket last. `fixed` parameters are 1."""
+    """`variables` are the names of the inputs in order, the share of the bracket last. `fixed` parameters are 1.
 
-    def __init__(self, model, fixed=(), from_upper=False):
+    With `edges` a range ends where its decimals say, not at the next double: its ends are requirements as well.
+    """
+
+    def __init__(self, model, fixed=(), from_upper=False, edges=False):
         self.model = model
         self.graph = graph = Graph()
         self.arithmetic = Intervals()
@@ -80,6 +84,7 @@ class Chart:
             bound.declare(output.name, outputs[-1])
         self.requirements = [bound.lower(condition) for condition in model.require]
         self.slacks = [graph.sub(*reversed(pair)) for condition in self.requirements for pair in self._at_most(condition)]
+        self.slacks += self._edges(free) if edges else []
         passed = [(guard, graph.sub(left, right)) for guard, left, right in switches(graph, [residuals[0], *outputs])]
         roots = [*residuals, width, lower, upper, *self.slacks, *(node for _, node in passed)]
         roots.append(free.lower(model.residual))
@@ -110,6 +115,18 @@ class Chart:
             lowering.declare(definition.name, lowering.lower(definition.expression))
         return lowering
 
+    def _edges(self, lowering):
+        """end - parameter and parameter - end, for the ends of ranges that are no doubles."""
+        graph, slacks = self.graph, []
+        for parameter in self.model.parameters:
+            node = graph.input(parameter.name)
+            for end, slack in ((lowering.lower(parameter.low), lambda end: graph.sub(node, end)),
+                               (lowering.lower(parameter.high), lambda end: graph.sub(end, node))):
+                value = graph.rational(end)
+                if value is None or Fraction(float(value)) != value:
+                    slacks.append(slack(end))
+        return slacks
+
     def _form(self, node, expand=False):
         twin = self.cancelling.of(node)
         expanded = self._expanded(node) if expand else []
@@ -128,7 +145,7 @@ class Chart:
         (node,) = partials(graph, free, [graph.input(name)])
         along = self._gradient(self.residual.nodes[-1])[-1]
         forms = [node, self.cancelling.of(node), *self._expanded(node)]
-        forms = [substituted(graph, form, name, inside) for form in forms]
+        forms = [substituted(graph, form, {name: inside}) for form in forms]
         forms += [self.cancelling.of(forms[0]), graph.div(along, graph.mul(direction, self.width.nodes[-1]))]
         others = sorted(dict.fromkeys(forms[1:]), key=lambda form: (-self._cost(form), form))
         return Form((forms[0], *(form for form in others if form != forms[0])), ())
@@ -189,6 +206,18 @@ class Chart:
             self.gradients[node] = partials(self.graph, node, inputs)
         return self.gradients[node]
 
+    def at_point(self, form, point):
+        """The form at exact parameters {name: Fraction}, written anew, so that what they cancel is gone."""
+        graph = self.graph
+        numbers = {name: graph.number(value) for name, value in point.items()}
+        node = substituted(graph, form.nodes[0], numbers)
+        return Form((node, *self._expanded(node), self.cancelling.of(node)), None)
+
+    def corners(self):
+        """{parameter: (low, high)} as nodes, of all that are inputs of the chart."""
+        lowering = self._lowering((), self.graph.input(self.model.unknown.name))
+        return {p.name: (lowering.lower(p.low), lowering.lower(p.high)) for p in self.model.parameters}
+
     # -- evaluation
 
     def evaluate(self, nodes, low, high, opened=False):
@@ -207,7 +236,8 @@ class Chart:
             if graph.is_constant(node):
                 with precision(_BITS):
                     value = evaluate(graph.instructions, [node], Balls(), {})[node]
-                    low, high = ends(value)
+                    exact = graph.rational(node)
+                    low, high = ends(value) if exact is None else around(exact)
                 undefined = False if value.is_finite() else np.array([True])
                 self.constants[node] = Interval(np.array([low]), np.array([high]), undefined)
 

@@ -8,6 +8,8 @@ singularity or far out, the value itself comes from ball arithmetic.
 """
 
 import math
+import sys
+from fractions import Fraction
 
 import flint
 import numpy as np
@@ -39,6 +41,17 @@ def ends(ball):
         return middle, middle
     low, high = float(ball.lower()), float(ball.upper())
     return float(down(low)), float(up(high))
+
+
+def around(value):
+    """The doubles next to a Fraction: (low, high), the same one twice where it is a double."""
+    try:
+        near = float(value)
+    except OverflowError:
+        return (sys.float_info.max, math.inf) if value > 0 else (-math.inf, -sys.float_info.max)
+    if Fraction(near) == value:
+        return near, near
+    return (near, float(up(near))) if Fraction(near) < value else (float(down(near)), near)
 
 
 class Function:

@@ -15,8 +15,7 @@ import math
 import flint
 import numpy as np
 
-from rootwright.calculus.balls import precision
-from rootwright.proof.functions import FUNCTIONS, down, ends, power, up
+from rootwright.proof.functions import FUNCTIONS, around, down, power, up
 
 
 class Interval:
@@ -68,8 +67,7 @@ class Intervals:
     # -- leaves
 
     def number(self, value):
-        with precision(200):
-            low, high = ends(flint.arb(flint.fmpq(value.numerator, value.denominator)))
+        low, high = around(value)
         return Interval(np.array([low]), np.array([high]))
 
     def pi(self):

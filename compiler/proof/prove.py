@@ -10,26 +10,34 @@ Over the real numbers, with the decimals that the author wrote:
 What is not proved is looked at point by point for a refutation. What is neither is open, with its share of the range.
 """
 
-import json
 from dataclasses import replace
+from fractions import Fraction
+from itertools import islice
 
 import numpy as np
 
-from rootwright.calculus.lower import Lowering
-from rootwright.proof.advice import proposals, relative_name, with_requirement
+from rootwright.calculus.constants import NotReal
+from rootwright.proof.advice import brackets, cuts, relative_name
 from rootwright.proof.certificate import Certificate, Claim
 from rootwright.proof.crew import Crew
+from rootwright.proof.crossings import refute_divisors, refute_parameter_switch
+from rootwright.proof.flat import refute_slope
 from rootwright.proof.numbers import doubles_are_finite, slope_bound, slope_is_sure
+from rootwright.proof.phantoms import drop_phantoms
 from rootwright.proof.ranges import as_ball, exact_ends
 from rootwright.proof.refute import Examiner
 from rootwright.proof.scaling import symmetries
 from rootwright.proof.sensitivities import sensitivity_bounds
 from rootwright.proof.settle import Domain, Limit, Outcome, search_ends, search_inside, share
 from rootwright.proof.switches import refute_kink
+from rootwright.proof.witness import middle
 
 BOXES = 60_000
 _ENDS, _INSIDE = 0.4, 0.9           # of the boxes that may be spent, by the end of each search
-_TRIAL = 20_000                     # boxes for trying a proposal
+_SMALL = 0.2                        # of the boxes: a search that leaves as many may be made twice
+_TRIAL = 12_000                     # boxes for trying a proposal
+_CUTS, _BRACKETS = 3, 3             # proposals that are tried
+_POINTS = 16                        # points whose zeros are looked for where only slope or kink is open
 _NEEDS = {                          # what is asked of the boxes for each claim
     "defined": ("ordered", "defined"),
     "exists": ("ordered", "change", "continuous"),
@@ -57,9 +65,20 @@ class _Proof:
         scaling = relative(self.plain.lower)
         self.domain = Domain(self.model, scaling) if scaling else self.plain
         self.outcome = Outcome()
+        self.exact = False          # the proof needs the ends of ranges that no double is
 
     def search(self):
-        """Both searches, as far as the limit goes."""
+        """Both searches, as far as the limit goes; once more with the exact ends of the ranges where that may be what is missing."""
+        self._search()
+        if {"ordered", "change"} & self.outcome.open.keys() and self.limit.spent < _SMALL * self.limit.boxes and not _are_doubles(self.model):
+            before = self.domain, self.outcome
+            self.domain, self.outcome = Domain(self.model, edges=True), Outcome()
+            self._search()
+            self.exact = not {"ordered", "change"} & self.outcome.open.keys()
+            if not self.exact:
+                self.domain, self.outcome = before
+
+    def _search(self):
         boxes = self.limit.boxes
         with Crew(self.domain.judges(), self.workers) as crew:
             search_ends(self.domain, crew, self.limit, _ENDS * boxes, self.outcome)
@@ -67,6 +86,7 @@ class _Proof:
                 last = index == len(self.domain.charts) - 1
                 ceiling = (_INSIDE if last else 0.5 * (_ENDS + _INSIDE)) * boxes
                 search_inside(self.domain, index, crew, self.limit, ceiling, self.outcome, ("defined", "continuous", "unique", "kink"))
+            drop_phantoms(self.domain, crew, self.limit, self.outcome)
 
     def certificate(self, seen):
         self.search()
@@ -74,12 +94,16 @@ class _Proof:
         if len(self.outcome.rises) > 1:
             if self.model.unknown.root == "only":
                 proved -= {"unique"}
+        # A point of the range would have a zero, and that zero would lie in a box that may hold one.
+        self.nowhere = "exists" in proved and not any(len(low) for _, low, _, _ in self.outcome.active)
+        if self.nowhere:
+            proved = set()
         slope = slope_bound(self.domain, self.outcome, self.limit) if "slope" in proved else 0.0
         if not slope > 0.0:
             proved -= {"slope"}
-        witnesses = self._refutations(set(_NEEDS) - proved)
+        witnesses = {} if self.nowhere else self._refutations(set(_NEEDS) - proved)
         sensitivities = sensitivity_bounds(self.plain, self.closure, self.limit) if "slope" in proved else {}
-        finite = doubles_are_finite(self.plain, self.closure, self.limit)
+        finite = not self.exact and doubles_are_finite(self.plain, self.closure, self.limit)
         computed = {"defined", "exists", "iterations"} if finite else set()
         if finite and "slope" in proved and slope_is_sure(self.plain, self.closure, self.limit):
             computed.add("slope")
@@ -87,27 +111,54 @@ class _Proof:
         return Certificate(self.model.name, self.model.digest,
                            tuple((p.name, p.low.text, p.high.text) for p in self.model.parameters),
                            tuple(condition.text for condition in self.model.require), self._relative(),
-                           self.limit.spent, claims, self._advice())
+                           self.limit.spent, claims, self._advice(witnesses))
 
     def _refutations(self, open_claims):
         if not open_claims:
             return {}
         examiner = Examiner(self.plain, self.limit)
-        for values in examiner.corners():
+        points = examiner.points
+        corners, places = list(points.corners()), list(self._places(points, open_claims))
+        for values, shares in (*((values, ()) for values in corners), *places):
+            examiner.examine(values, open_claims, shares)
+        for values in points.edges([*corners, *(values for values, _ in places)], examiner.in_range) if self.model.require else ():
             examiner.examine(values, open_claims)
-        if "unique" in open_claims:
-            for values in examiner.from_turns(self.domain, self.outcome):
+        for count, values in enumerate((*(values for values, _ in places), *corners)):
+            if count < _POINTS or open_claims - examiner.found.keys() - {"slope", "kink"}:
+                examiner.search(values, open_claims)
+        self._refute_between(examiner, places, open_claims)
+        return {claim: witness for claim, witness in examiner.found.items() if claim in open_claims}
+
+    def _refute_between(self, examiner, places, open_claims):
+        """Refutations at points that no decimal names."""
+        found = examiner.found
+        if "defined" in open_claims - found.keys():
+            witness = refute_divisors(examiner)
+            if witness:
+                found["defined"] = witness
+        if "slope" in open_claims - found.keys() and not {"defined", "exists"} & found.keys():
+            witness, beside = refute_slope(examiner, [(values, share) for values, shares in places for share in shares])
+            if witness:
+                found["slope"] = witness
+            examiner.waves = 0
+            for values in beside if "unique" in open_claims - found.keys() else ():
                 examiner.examine(values, open_claims)
+                examiner.search(values, open_claims)
+        if "kink" in open_claims - found.keys() and self.plain.lower.switches:
+            witness = refute_kink(examiner) or (None if "exists" in open_claims else refute_parameter_switch(examiner))
+            if witness:
+                found["kink"] = witness
+
+    def _places(self, points, open_claims):
+        """(point, shares of the bracket) that the searches point to."""
+        if "unique" in open_claims:
+            for values in points.from_turns(self.domain, self.outcome):
+                yield values, ()
         lefts = [left for need, boxes in self.outcome.open.items() if need != "kink" for left in boxes]
         for left in lefts[:12]:
             shares = _shares(self.domain, left)
-            for values in examiner.from_boxes(self.domain, left.low, left.high):
-                examiner.examine(values, open_claims, shares)
-        if "kink" in open_claims and self.plain.lower.switches:
-            witness = refute_kink(examiner)
-            if witness:
-                examiner.found["kink"] = witness
-        return {claim: witness for claim, witness in examiner.found.items() if claim in open_claims}
+            for values in points.from_boxes(self.domain, left.low, left.high):
+                yield values, shares
 
     def _claim(self, name, proved, witnesses, slope, sensitivities, computed, seen):
         verdict = "refuted" if name in witnesses else "proved" if name in proved else "open"
@@ -116,7 +167,9 @@ class _Proof:
         failed = next((other for other in ("defined", "exists") if other in witnesses and other != name), None)
         if verdict == "open":
             left_open = share(self.domain, lefts, self.outcome.inside_range)
-            if failed and name != "kink":
+            if self.nowhere:
+                reason, left_open = "no point of the ranges meets the requirements", 1.0
+            elif failed and name != "kink":
                 reason, left_open = f"without meaning where `{failed}` fails", 1.0
             elif name == "unique" and len(self.outcome.rises) > 1 and not lefts:
                 reason, left_open = "the slope has different signs in different parts of the range", 1.0
@@ -148,20 +201,45 @@ class _Proof:
         names = ((name, relative_name(self.domain, name)) for name in self.domain.ranges.names[:-1])
         return tuple((name, text) for name, text in names if name != text)
 
-    def _advice(self):
-        """The first proposal with which nothing is left open."""
-        for condition in proposals(self.domain, self.outcome)[:2]:
+    def _advice(self, witnesses):
+        """The lines of the first proposals with which nothing is left open; of a bracket, with which there is a root."""
+        if {"exists", "defined"} & witnesses.keys() and {"ordered", "change"} & self.outcome.open.keys():
+            wanted = ("ordered", "defined", "change", "continuous")
+            points = [{name: Fraction(middle(text)) for name, text in witness.point} for witness in witnesses.values()]
+            lines = self._first((proposal for proposal in brackets(self.model) if _reaches(proposal.model, points)), wanted, _BRACKETS)
+            if lines:
+                return lines
+        if self.outcome.open:
+            wanted = tuple(self.outcome.open.keys() | {"ordered", "defined", "change", "continuous", "unique"})
+            return self._first(cuts(self.model, self.domain, self.outcome), wanted, _CUTS)
+        return ()
+
+    def _first(self, proposals, wanted, most):
+        """Lines of the first proposal whose proof leaves nothing open that is wanted."""
+        for proposal in islice(proposals, most):
             if self.limit.reached(np.inf):
                 break
-            model = with_requirement(self.model, condition)
             limit = Limit(min(self.limit.boxes, _TRIAL))
             limit.until = self.limit.until
-            trial = _Proof(replace(self.closure, model=model), limit, self.workers)
+            trial = _Proof(replace(self.closure, model=proposal.model), limit, self.workers)
             trial.search()
-            if not any(need != "kink" for need in trial.outcome.open) and len(trial.outcome.rises) == 1:
-                require = ", ".join(json.dumps(text) for text in (*(condition.text for condition in self.model.require), condition))
-                return (f"with this under [domain] the proof goes through: require = [{require}]",)
+            if not any(need in trial.outcome.open for need in wanted) and ("unique" not in wanted or len(trial.outcome.rises) == 1):
+                return proposal.lines
         return ()
+
+
+def _reaches(model, points):
+    """True where at all these points the residual of a model has different signs at the ends of its bracket, or is 0 at one."""
+    try:
+        examiner = Examiner(Domain(model), Limit(0))
+    except NotReal:
+        return False
+    return all(examiner.changes_sign(point) for point in map(examiner.points.exact, points) if point)
+
+
+def _are_doubles(model):
+    """True where every end of every range is a double."""
+    return all(isinstance(end, Fraction) and Fraction(float(end)) == end for pair in exact_ends(model).values() for end in pair)
 
 
 def relative(chart):
@@ -182,7 +260,6 @@ def relative(chart):
 
 def _shares(domain, left):
     """Places in the bracket that boxes left open point to."""
-    from fractions import Fraction
     if left.chart:
         return ()
     places = np.unique(np.concatenate([left.low[:6, -1], left.high[:6, -1], 0.5 * (left.low[:6, -1] + left.high[:6, -1])]))

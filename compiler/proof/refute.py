@@ -6,27 +6,27 @@ there (intermediate value theorem), so that neither a pole nor a jump is taken f
 """
 
 from fractions import Fraction
-from itertools import islice, product
-import math
-import random
 
 import numpy as np
 
 from rootwright.calculus.balls import ball, precision
+from rootwright.calculus.program import needed
 from rootwright.proof.cancel import factors
-from rootwright.proof.certificate import Witness
 from rootwright.proof.chart import SHARE
-from rootwright.proof.crew import Crew
-from rootwright.proof.exact import BITS, UNDEFINED, decimal, sign, value_at
+from rootwright.proof.crossings import arrays
+from rootwright.proof.exact import BITS, UNDEFINED, sign, value_at
 from rootwright.proof.functions import ends
-from rootwright.proof.ranges import as_ball, exact_ends
-from rootwright.proof.search import judge_inside
-from rootwright.proof.settle import Limit, Outcome, search_inside
+from rootwright.proof.jumps import clears_jumps
+from rootwright.proof.points import Points
+from rootwright.proof.search import judge_inside, next_to
+from rootwright.proof.witness import at_point, simplest
 
 SHARES = tuple(Fraction(k, 16) for k in range(17))
-_EFFORT = 400               # boxes at one point
-_WAVES = 250                # waves at all points together
-_DIGITS = 30                # of a decimal next to an irrational end
+_EFFORT = 600               # boxes at one point
+_WAVES = 160                # waves at all points together
+_REWRITTEN = 12             # points at which the residual is written anew
+_PIECES = 8                 # of a part of the bracket that is cut
+_FINEST = 2.0 ** -48
 
 
 class Examiner:
@@ -34,125 +34,69 @@ class Examiner:
 
     def __init__(self, domain, limit):
         self.domain, self.model = domain, domain.model
-        self.exact = exact_ends(domain.model)
+        self.points = Points(domain.model)
         self.found = {}
-        self.seen = set()
-        self.limit = Limit(10 ** 9)
-        self.limit.until = limit.until
-        self.crew = Crew(domain.judges())
-
-    # -- points
-
-    def point(self, values):
-        """{parameter: Fraction} near some numbers, inside the exact range: doubles as the shortest decimals that mean them, Fractions as they are.
-
-        None where the range has no such number.
-        """
-        result = {}
-        for name, (low, high) in self.exact.items():
-            value = values[name]
-            value = value if isinstance(value, Fraction) else Fraction(repr(float(value)))
-            for end, inward in ((low, 1), (high, -1)):
-                if not _within(value, end, inward):
-                    value = end if isinstance(end, Fraction) else _decimal_inside(end, inward)
-            if not (_within(value, low, 1) and _within(value, high, -1)):
-                return None
-            result[name] = value
-        return result
-
-    def corners(self, count=24):
-        """Corners of the range, its middle, and a fixed sequence of points inside."""
-        ranges = {name: [ends(as_ball(end)) for end in pair] for name, pair in self.exact.items()}
-        bounds = {name: (low[0], high[1]) for name, (low, high) in ranges.items()}
-        for corner in islice(product((0, 1), repeat=len(bounds)), count):
-            yield {name: pair[side] for (name, pair), side in zip(bounds.items(), corner)}
-        yield {name: _between(pair, 0.5) for name, pair in bounds.items()}
-        yield {name: 0.5 * (pair[0] + pair[1]) for name, pair in bounds.items()}
-        generator = random.Random(2)
-        for _ in range(count):
-            yield {name: _between(pair, generator.random()) for name, pair in bounds.items()}
-
-    def from_boxes(self, domain, low, high, count=8):
-        """Points of the operating range in boxes of a domain, whose parameters may be relative to pivots."""
-        order = np.linspace(0, len(low) - 1, min(count, len(low))).astype(int) if len(low) else []
-        for row in order:
-            for share in (0.5, 0.0, 1.0):
-                values = {name: _between((low[row, k], high[row, k]), share) for k, name in enumerate(domain.ranges.names[:-1])}
-                yield self._absolute(domain, values)
-
-    def from_turns(self, domain, outcome, count=12):
-        """Points whose box holds a certain zero of the rarer sign of slope: where another zero must be."""
-        for index, low, high, rise in self._rarer(outcome):
-            chart, opened = domain.charts[index], domain.opened[index]
-            middle_low, middle_high = low.copy(), high.copy()
-            middle_low[:, :-1] = middle_high[:, :-1] = 0.5 * low[:, :-1] + 0.5 * high[:, :-1]
-            signs = []
-            for end in (low[:, -1], high[:, -1]):
-                middle_low[:, -1] = middle_high[:, -1] = end
-                values = chart.natural(chart.residual, middle_low, middle_high, opened)
-                signs.append(np.where(values.low > 0, 1, np.where(values.high < 0, -1, 0)))
-            for row in np.nonzero(signs[0] * signs[1] < 0)[0][:count]:
-                values = dict(zip(domain.ranges.names[:-1], middle_low[row, :-1]))
-                yield self._absolute(domain, {name: float(value) for name, value in values.items()})
-
-    def _rarer(self, outcome):
-        counts = {sign: sum(int((rise == sign).sum()) for *_, rise in outcome.active) for sign in (1, -1)}
-        rarer = min((1, -1), key=lambda sign: counts[sign])
-        for index, low, high, rise in outcome.active:
-            at = rise == rarer
-            if at.any():
-                yield index, low[at], high[at], rise[at]
-
-    def _absolute(self, domain, values):
-        bounds = {name: (ends(as_ball(low))[0], ends(as_ball(high))[1]) for name, (low, high) in self.exact.items()}
-        middle = {name: _between(pair, 0.5) for name, pair in bounds.items()}
-        if not domain.scaling:
-            return middle | values
-        pivots = domain.scaling.pivots
-        best = None
-        for shares in islice(product((0.5, 0.0, 1.0), repeat=len(pivots)), 243):
-            at = {name: _between(bounds[name], share) for name, share in zip(pivots, shares)}
-            full, out = middle | at, 0.0
-            for name, value in values.items():
-                for pivot, power in domain.scaling.powers.get(name, {}).items():
-                    value *= at[pivot] ** float(power)
-                low, high = bounds[name]
-                out += max(low - value, value - high, 0.0) / max(abs(value), 1e-300)
-                full[name] = min(max(value, low), high)
-            if best is None or out < best[0]:
-                best = out, full
-        return best[1]
-
-    # -- one point
+        self.seen, self.searched = {}, set()
+        self.limit, self.waves, self.rewritten = limit, 0, 0
 
     def examine(self, values, wanted, shares=()):
-        """Look at the point near some doubles for refutations of the wanted claims. Where a residual is undefined, the rest means nothing."""
-        wanted = set() if "defined" in self.found else wanted - self.found.keys()
-        if "exists" in self.found:
-            wanted &= {"defined"}
-        point = self.point(values) if wanted and self.limit.waves < _WAVES and not self.limit.reached(np.inf) else None
+        """Look at the point near some numbers for refutations of the wanted claims, as far as exact places of the bracket tell."""
+        point = self.points.exact(values) if self._left(wanted) else None
         if point is None:
             return
         key = tuple(point.items())
-        if key in self.seen or not self.in_range(point):
-            return
-        self.seen.add(key)
-        if not self._bracket(point) or not self._values(point, shares):
-            return
-        if wanted - {"kink", "slope"}:
-            self._zeros(point, wanted)
+        if key not in self.seen and self.in_range(point):
+            self.seen[key] = self._bracket(point) and self._values(point, shares, wanted)
 
-    def _refute(self, claim, point, reason):
-        self.found.setdefault(claim, Witness(tuple((name, decimal(value)) for name, value in point.items()), reason))
+    def search(self, values, wanted):
+        """Look for the zeros at a point that has been examined, and judge the claims from them."""
+        wanted = self._left(wanted)
+        point = self.points.exact(values) if wanted and self.waves < _WAVES else None
+        if point is None or not self.seen.get(tuple(point.items())) or tuple(point.items()) in self.searched:
+            return
+        self.searched.add(tuple(point.items()))
+        self._zeros(point, wanted)
+
+    def _left(self, wanted):
+        """Claims still to be refuted. Where a residual is undefined, the rest means nothing."""
+        if "defined" in self.found or self.limit.late():
+            return set()
+        wanted = wanted - self.found.keys()
+        return wanted & {"defined"} if "exists" in self.found else wanted
+
+    def refute(self, claim, witness):
+        self.found.setdefault(claim, witness)
 
     def at(self, chart, nodes, point, share=Fraction(0)):
+        """{node: exact value} at a point and a share of the bracket."""
         names = {name: value for name, value in point.items()} | {SHARE: share, self.model.unknown.name: UNDEFINED}
         return value_at(chart.graph.instructions, nodes, names)
+
+    def box(self, point):
+        """(low, high): the thin box of a point, over the whole bracket."""
+        thin = [_thin(point[name]) for name in self.domain.lower.variables[:-1]]
+        return np.array([[pair[0] for pair in thin] + [0.0]]), np.array([[pair[1] for pair in thin] + [1.0]])
+
+    def inside(self, count):
+        """Points of the operating range: corners first."""
+        points = map(self.points.exact, self.points.corners(count))
+        return [point for point in points if point and self.in_range(point)]
+
+    def place(self, box, share):
+        """The unknown in words, at the middle of a box {parameter: (low, high)}."""
+        return self._place({name: (low + high) / 2 for name, (low, high) in box.items()}, share)
+
+    def meets_switch(self, box, share):
+        """True where a switch may be met at a share of the bracket in a box."""
+        low, high = arrays(self, box, (share, share))
+        return any(not self.domain.lower.natural(form, low, high).definite()[0] for _, form in self.domain.lower.switches)
 
     def in_range(self, point):
         chart = self.domain.lower
         values = self.at(chart, chart.requirements, point)
         return all(values[node] is True for node in chart.requirements)
+
+    # -- exact places
 
     def _bracket(self, point):
         chart = self.domain.lower
@@ -161,160 +105,205 @@ class Examiner:
         values = self.at(chart, [lower, upper, width], point)
         for name, node in (("lower", lower), ("upper", upper)):
             if values[node] is UNDEFINED:
-                self._refute("defined", point, f"the {name} end of the bracket has no value")
+                self.refute("defined", at_point(point, f"the {name} end of the bracket has no value"))
                 return False
         if sign(values[width]) in (0, -1):
-            self._refute("defined", point, "the bracket's lower end is not below its upper end: "
-                         f"[{_digits(values[lower])}, {_digits(values[upper])}]")
+            self.refute("defined", at_point(point, "the bracket's lower end is not below its upper end: "
+                                            f"[{_digits(values[lower])}, {_digits(values[upper])}]"))
             return False
         return sign(values[width]) == 1
 
-    def _values(self, point, shares):
+    def _values(self, point, shares, wanted):
         """False where the residual has no value somewhere in the bracket."""
-        chart = self.domain.lower
         unknown = self.model.unknown
-        ends_ = (("lower", chart.at_lower, unknown.open_lower), ("upper", chart.at_upper, unknown.open_upper))
         signs = []
-        for name, form, opened in ends_:
+        for share, name, opened in ((Fraction(0), "lower", unknown.open_lower), (Fraction(1), "upper", unknown.open_upper)):
             if opened:
-                signs.append(None)
-                continue
-            conditions = [node for _, node in form.domain or ()]
-            values = self.at(chart, [*form.nodes, *conditions], point)
-            broken = any(_fails(kind, values[node]) for kind, node in form.domain or ())
-            if values[form.nodes[0]] is UNDEFINED or broken:
-                self._refute("defined", point, f"the residual has no value at the {name} end of the bracket")
+                signs.append(self._beside(point, name) if "exists" in wanted else None)
+            elif self._undefined_at(point, share):
                 return False
-            signs.append(next((s for s in (sign(values[node]) for node in form.nodes) if s is not None), None))
-        for share in (*SHARES, *shares):
-            if 0 < share < 1 and self._undefined_at(chart, point, share):
-                return False
-        self._flat(chart, point, shares)
+            else:
+                signs.append(self._sign_at(point, share))
+        if any(0 < share < 1 and self._undefined_at(point, share) for share in (*SHARES, *shares)):
+            return False
+        self._exact_zeros(point, dict.fromkeys((*SHARES, *(share.limit_denominator(1000) for share in shares))))
         if signs[0] and signs[0] == signs[1]:
-            self._refute("exists", point, f"the residual is {'positive' if signs[0] > 0 else 'negative'} at both ends of the bracket")
+            places = " and ".join(f"{'next to' if opened else 'at'} the {name} end" for name, opened in
+                                  (("lower", unknown.open_lower), ("upper", unknown.open_upper)))
+            self.refute("exists", at_point(point, f"the residual is {'positive' if signs[0] > 0 else 'negative'} {places} of the bracket"))
         return True
 
-    def _flat(self, chart, point, shares):
-        """A zero at an exact place whose slope is exactly 0."""
+    def changes_sign(self, point):
+        """True where the residual certainly has different signs at the closed ends of the bracket at a point, or is 0 at one."""
         unknown = self.model.unknown
-        nodes = [chart.residual.nodes[0], *chart.slope.nodes]
-        for share in dict.fromkeys((*SHARES, *(share.limit_denominator(1000) for share in shares))):
-            if share == 0 and unknown.open_lower or share == 1 and unknown.open_upper:
-                continue
-            values = self.at(chart, nodes[:1], point, share)
-            if sign(values[nodes[0]]) == 0:
-                slopes = self.at(chart, nodes[1:], point, share)
-                if any(sign(slopes[node]) == 0 for node in nodes[1:]):
-                    self._refute("slope", point, f"the zero at {self._place(chart, point, share)} has slope 0")
+        signs = [self._beside(point, name) if opened else self._sign_at(point, share) for share, name, opened in
+                 ((Fraction(0), "lower", unknown.open_lower), (Fraction(1), "upper", unknown.open_upper))]
+        return None not in signs and signs[0] * signs[1] <= 0
 
-    def _undefined_at(self, chart, point, share):
-        form = chart.residual
+    def _form(self, share):
+        chart = self.domain.lower
+        return chart.at_lower if share == 0 else chart.at_upper if share == 1 else chart.residual
+
+    def _sign_at(self, point, share):
+        nodes = self._form(share).nodes
+        values = self.at(self.domain.lower, nodes, point, share)
+        return next((known for known in (sign(values[node]) for node in nodes) if known is not None), None)
+
+    def _beside(self, point, end):
+        """Sign of the residual next to an open end; None where it is not certain."""
+        chart = self.domain.upper if end == "upper" else self.domain.lower
+        (rise, fall), _ = next_to(chart, *self.box(point))
+        if not (rise[0] or fall[0]) and self.rewritten < _REWRITTEN:
+            self.rewritten += 1
+            (rise, fall), _ = next_to(chart, *self.box(point), chart.at_point(chart.residual, point))
+        return 1 if rise[0] else -1 if fall[0] else None
+
+    def _undefined_at(self, point, share):
+        form = self._form(share)
         conditions = form.domain or ()
-        values = self.at(chart, [form.nodes[0], *(node for _, node in conditions)], point, share)
+        values = self.at(self.domain.lower, [form.nodes[0], *(node for _, node in conditions)], point, share)
         if values[form.nodes[0]] is UNDEFINED or any(_fails(kind, values[node]) for kind, node in conditions):
-            self._refute("defined", point, f"the residual has no value at {self._place(chart, point, share)}")
+            self.refute("defined", at_point(point, f"the residual has no value at {self._place(point, share)}"))
             return True
         return False
 
-    def _place(self, chart, point, share):
+    def _exact_zeros(self, point, shares):
+        """Those of some exact places where the residual certainly is 0; refutes slope and kink there."""
+        unknown, zeros = self.model.unknown, []
+        for share in shares:
+            if share == 0 and unknown.open_lower or share == 1 and unknown.open_upper or self._sign_at(point, share) != 0:
+                continue
+            zeros.append(share)
+            if self._on_switch(point, share):
+                self.refute("kink", at_point(point, f"the zero at {self._place(point, share)} lies on a switch"))
+                continue                # a slope means nothing there
+            nodes = self.domain.lower.slope.nodes
+            slopes = self.at(self.domain.lower, nodes, point, share)
+            if any(sign(slopes[node]) == 0 for node in nodes):
+                self.refute("slope", at_point(point, f"the zero at {self._place(point, share)} has slope 0"))
+        return zeros
+
+    def _on_switch(self, point, share):
+        chart = self.domain.lower
+        for guard, form in chart.switches:
+            values = self.at(chart, [*form.nodes, *([] if guard is None else [guard])], point, share)
+            if any(sign(values[node]) == 0 for node in form.nodes) and (guard is None or values[guard] is True):
+                return True
+        return False
+
+    def _place(self, point, share):
+        chart = self.domain.lower
         node = chart.graph.add(chart.bracket[0].nodes[0], chart.graph.mul(chart.graph.input(SHARE), chart.width.nodes[0]))
-        value = self.at(chart, [node], point, share)[node]
-        return f"{self.model.unknown.name} = {_digits(value)}"
+        return f"{self.model.unknown.name} = {_digits(self.at(chart, [node], point, share)[node])}"
+
+    # -- zeros between
 
     def _zeros(self, point, wanted):
         """Isolates the zeros over the bracket, and judges the claims from them."""
-        chart = self.domain.lower
         opened = self.model.unknown.open_lower
-        thin = [_thin(point[name]) for name in chart.variables[:-1]]
-        low = np.array([[pair[0] for pair in thin] + [0.0]])
-        high = np.array([[pair[1] for pair in thin] + [1.0]])
+        low, high = self.box(point)
         if self.model.unknown.open_upper:
             high[0, -1] = 1.0 - 2.0 ** -20
-        outcome = Outcome()
-        search_inside(self.domain, 0, self.crew, self.limit, self.limit.spent + _EFFORT, outcome, ("unique",), low, high, share_only=True)
-        undefined = outcome.open.get("defined", [])
-        if undefined:
-            places = np.concatenate([left.low[:, -1] for left in undefined] + [left.high[:, -1] for left in undefined])
-            for share in sorted({Fraction(float(place)) for place in places})[:40]:
-                if 0 < share < 1 and self._undefined_at(chart, point, share):
-                    return
-            if self._pole(chart, point, low, high, undefined):
+        suspects, broken = self._scan(low, high, opened)
+        parts, undefined = merged(*suspects), merged(*broken)
+        for share in self._candidates(point, undefined[:12]):
+            if 0 < share < 1 and self._undefined_at(point, share):
                 return
-        if "exists" in wanted and self._nowhere_zero(chart, outcome, opened):
-            self._refute("exists", point, "the sign changes only where the residual jumps; it is 0 nowhere in the bracket")
-        zeros = self._isolated(chart, point, outcome, low, high, opened)
+        if undefined and self._pole(point, low, high, undefined):
+            return
+        exact = self._exact_zeros(point, self._candidates(point, parts[:12]))
+        zeros = [part for part in parts if not any(part[0] <= share <= part[1] for share in exact)]
+        zeros = sorted([*(part for part in zeros if self._crosses(point, part, low, high, opened)), *((share, share) for share in exact)])
+        if "exists" in wanted and not zeros and not self.model.unknown.open_upper \
+                and clears_jumps(self.domain.lower, suspects, parts, low, high, opened):
+            self.refute("exists", at_point(point, "the sign changes only where the residual jumps; it is 0 nowhere in the bracket"))
         if len(zeros) > 1 and self.model.unknown.root == "only":
-            places = ", ".join(self._place(chart, point, (Fraction(a) + Fraction(b)) / 2).split(" = ")[1] for a, b in zeros[:3])
-            self._refute("unique", point, f"{len(zeros)} zeros at least, near {self.model.unknown.name} = {places}")
+            places = ", ".join(self._place(point, (Fraction(a) + Fraction(b)) / 2).split(" = ")[1] for a, b in zeros[:3])
+            self.refute("unique", at_point(point, f"{len(zeros)} zeros at least, near {self.model.unknown.name} = {places}"))
+        if zeros and "kink" in wanted:
+            self._parameter_switch(point)
 
-    def _pole(self, chart, point, low, high, undefined):
+    def _scan(self, low, high, opened):
+        """Parts of the bracket's share at a point that may hold a zero, and where the residual may be undefined: two pairs (low, high) of arrays."""
+        chart = self.domain.lower
+        ends = np.linspace(low[0, -1], high[0, -1], 2 * _PIECES + 1)
+        a, b = ends[:-1], ends[1:]
+        kept, broken, looked = [], [], 0
+        while len(a):
+            box_low, box_high = np.repeat(low, len(a), 0), np.repeat(high, len(a), 0)
+            box_low[:, -1], box_high[:, -1] = a, b
+            judged = judge_inside(chart, box_low, box_high, opened)
+            looked, self.waves = looked + len(a), self.waves + 1
+            unsettled = judged.undefined | judged.active & (judged.jump | (judged.rise == 0))
+            cut = unsettled & (b - a > _FINEST) if looked < _EFFORT else np.zeros(len(a), bool)
+            kept.append((a[judged.active & ~cut], b[judged.active & ~cut]))
+            broken.append((a[judged.undefined & ~cut], b[judged.undefined & ~cut]))
+            steps = np.linspace(0.0, 1.0, _PIECES + 1)
+            ends = a[cut, None] + (b - a)[cut, None] * steps
+            ends[:, -1] = b[cut]
+            a, b = ends[:, :-1].ravel(), ends[:, 1:].ravel()
+        return tuple(tuple(np.concatenate(part) for part in zip(*pairs)) for pairs in (kept, broken))
+
+    def _parameter_switch(self, point):
+        """A switch on parameters alone that every zero at this point lies on."""
+        chart = self.domain.lower
+        share = chart.graph.input(SHARE)
+        for guard, form in chart.switches:
+            nodes = [*form.nodes, *([] if guard is None else [guard])]
+            if share in needed(chart.graph.instructions, nodes):
+                continue
+            values = self.at(chart, nodes, point)
+            if any(sign(values[node]) == 0 for node in form.nodes) and (guard is None or values[guard] is True):
+                self.refute("kink", at_point(point, "a switch on parameters alone is met, and there is a zero"))
+
+    def _candidates(self, point, parts):
+        """Exact shares of the bracket in or next to its parts [(a, b)]: their ends, and where share or unknown are round numbers."""
+        chart = self.domain.lower
+        lower, width = chart.bracket[0].nodes[0], chart.width.nodes[-1]
+        values = self.at(chart, [lower, width], point)
+        lower, width = values[lower], values[width]
+        shares = {Fraction(0), Fraction(1)}
+        for a, b in parts:
+            a, b = Fraction(float(a)), Fraction(float(b))
+            shares |= {a, b}
+            margin = Fraction(1, 2 ** 50)
+            shares.add(simplest(a - margin, b + margin))
+            if isinstance(lower, Fraction) and isinstance(width, Fraction):
+                shares.add((simplest(lower + (a - margin) * width, lower + (b + margin) * width) - lower) / width)
+        return sorted(share for share in shares if 0 <= share <= 1)
+
+    def _pole(self, point, low, high, undefined):
         """A divisor that changes its sign inside the bracket, continuously, is 0 there."""
+        chart = self.domain.lower
         for kind, node in chart.residual.domain or ():
             if kind != "nonzero":
                 continue
             for factor in factors(chart.graph, node)[1]:
-                for left in undefined:
-                    for a, b in _merged(left.low[:, -1], left.high[:, -1]):
-                        a, b = max(a - 1e-9 * (b - a + 1e-9), 0.0), min(b + 1e-9 * (b - a + 1e-9), 1.0)
-                        signs = [sign(self.at(chart, [factor], point, Fraction(share))[factor]) for share in (a, b)]
-                        if None in signs or signs[0] * signs[1] >= 0:
-                            continue
-                        box = low.copy(), high.copy()
-                        box[0][:, -1], box[1][:, -1] = a, b
-                        value = chart.evaluate([factor], *box)[factor]
-                        if not np.any(value.undefined) and not np.any(value.jump):
-                            self._refute("defined", point, "a divisor passes through 0 near "
-                                         + self._place(chart, point, (Fraction(a) + Fraction(b)) / 2))
-                            return True
+                for a, b in undefined:
+                    a, b = max(a - 1e-9 * (b - a + 1e-9), 0.0), min(b + 1e-9 * (b - a + 1e-9), 1.0)
+                    signs = [sign(self.at(chart, [factor], point, Fraction(share))[factor]) for share in (a, b)]
+                    if None in signs or signs[0] * signs[1] >= 0:
+                        continue
+                    box = low.copy(), high.copy()
+                    box[0][:, -1], box[1][:, -1] = a, b
+                    value = chart.evaluate([factor], *box)[factor]
+                    if not np.any(value.undefined) and not np.any(value.jump):
+                        self.refute("defined", at_point(point, "a divisor passes through 0 near "
+                                                        + self._place(point, (Fraction(a) + Fraction(b)) / 2)))
+                        return True
         return False
 
-    def _nowhere_zero(self, chart, outcome, opened):
-        """True where no box that is left can hold a zero, whatever its sign does."""
-        for _, low, high, _ in outcome.active:
-            if len(low) and not chart.natural(chart.residual, low, high, opened).nonzero.all():
-                return False
-        return not self.model.unknown.open_upper
-
-    def _isolated(self, chart, point, outcome, low, high, opened):
-        """[(a, b)]: disjoint parts of the bracket's share, each with one certain zero inside."""
-        parts = [(a, b) for _, boxes_low, boxes_high, _ in outcome.active if len(boxes_low)
-                 for a, b in zip(boxes_low[:, -1], boxes_high[:, -1])]
-        if not parts:
-            return []
-        zeros = []
-        for a, b in _merged(*map(np.array, zip(*parts))):
-            signs = []
-            for share in (a, b):
-                end = "at_lower" if share == 0.0 else "at_upper" if share == 1.0 else None
-                form = getattr(chart, end) if end else chart.residual
-                node = form.nodes[-1]
-                signs.append(None if share == 0.0 and opened else sign(self.at(chart, [node], point, Fraction(float(share)))[node]))
-            if None in signs or signs[0] * signs[1] >= 0:
-                continue
-            pieces = np.linspace(a, b, 17)
-            box_low, box_high = np.repeat(low, 16, 0), np.repeat(high, 16, 0)
-            box_low[:, -1], box_high[:, -1] = pieces[:-1], pieces[1:]
-            judged = judge_inside(chart, box_low, box_high, opened)
-            if not (judged.undefined.any() or judged.jump.any()):
-                zeros.append((float(a), float(b)))
-        return zeros
-
-
-def _within(value, end, inward):
-    """True where a Fraction certainly lies on the inner side of an end of a range, or on it."""
-    if isinstance(end, Fraction):
-        return (value - end) * inward >= 0
-    with precision(BITS):
-        return bool((ball(value) - end) * inward > 0)
-
-
-def _decimal_inside(end, inward):
-    """The last decimal of some digits on the inner side of an irrational end."""
-    with precision(BITS):
-        exact = end.mid().fmpq()
-        middle = Fraction(int(exact.p), int(exact.q))
-        place = Fraction(10) ** (math.floor(math.log10(abs(float(middle)))) - _DIGITS)
-        return (middle // place + (1 if inward > 0 else 0)) * place
+    def _crosses(self, point, part, low, high, opened):
+        """True where the residual certainly has a zero inside a part (a, b) of the bracket's share."""
+        a, b = part
+        signs = [None if share == 0.0 and opened else self._sign_at(point, Fraction(float(share))) for share in (a, b)]
+        if None in signs or signs[0] * signs[1] >= 0:
+            return False
+        pieces = np.linspace(a, b, 17)
+        box_low, box_high = np.repeat(low, 16, 0), np.repeat(high, 16, 0)
+        box_low[:, -1], box_high[:, -1] = pieces[:-1], pieces[1:]
+        judged = judge_inside(self.domain.lower, box_low, box_high, opened)
+        return not (judged.undefined.any() or judged.jump.any())
 
 
 def _fails(kind, value):
@@ -325,7 +314,7 @@ def _fails(kind, value):
     return known == 0 if kind == "nonzero" else known in (0, -1) if kind == "positive" else known == -1
 
 
-def _merged(low, high):
+def merged(low, high):
     """Unions of touching intervals."""
     parts = []
     for a, b in sorted(zip(low.tolist(), high.tolist())):
@@ -339,14 +328,6 @@ def _merged(low, high):
 def _thin(value):
     with precision(BITS):
         return ends(ball(value))
-
-
-def _between(pair, share):
-    low, high = pair
-    if share in (0.0, 1.0):
-        return float(high if share else low)
-    value = low * (high / low) ** share if low > 0 and high / low > 50 else low + (high - low) * share
-    return float(min(max(value, low), high))
 
 
 def _digits(value):

@@ -12,6 +12,7 @@ import numpy as np
 from rootwright.proof.chart import mean_value, normalised
 from rootwright.proof.intervals import Interval, Intervals
 
+_THIN = 2.0 ** -160
 # Shares of the bracket within which the sign next to an open end is asked for.
 NEAR = (2.0 ** -6, 2.0 ** -20, 2.0 ** -50, 2.0 ** -300, 2.0 ** -1050)
 
@@ -67,7 +68,7 @@ def judge_ends(near_lower, near_upper, model, low, high):
     signs = []
     for end, opened, own in (("lower", model.unknown.open_lower, near_lower), ("upper", model.unknown.open_upper, near_upper)):
         if opened:
-            sign, part = _next_to(own, low, high)
+            sign, part = next_to(own, low, high)
         else:
             (*sign, _, _), part = _at_end(chart, end, low, high)
         signs.append(sign)
@@ -235,15 +236,15 @@ def _relaxed_bound(value, slack, slopes, slack_slopes, m, low, high, centre):
     return np.where(undefined, -np.inf, total.low), np.where(undefined, np.inf, total.high)
 
 
-def _next_to(chart, low, high):
-    """((g > 0, g < 0), smear) in some half-open interval of the bracket next to an open end."""
+def next_to(chart, low, high, form=None):
+    """((g > 0, g < 0), smear) in some half-open interval of the bracket next to an open end; `form` stands for g at a single point."""
     sign, smear = np.zeros(len(low), int), np.zeros(low.shape)
     for near in NEAR:
         left = np.nonzero(sign == 0)[0]
         if len(left):
             inside_low, inside_high = low[left].copy(), high[left].copy()
             inside_low[:, -1], inside_high[:, -1] = 0.0, near
-            sign[left], smear[left] = _signed(chart, chart.residual, inside_low, inside_high, True)
+            sign[left], smear[left] = _signed(chart, form or chart.residual, inside_low, inside_high, True)
     smear[:, -1] = 0.0
     return (sign > 0, sign < 0), smear
 
@@ -297,18 +298,20 @@ def _on_switch(chart, low, high, opened):
     return touched, smear
 
 
-def split(low, high, smear, widths, logs, finest=2.0 ** -160):
+def split(low, high, smear, widths, logs, finest=_THIN):
     """Halves of boxes, cut in the variable of the largest smear; `widths` (boxes, variables) are shares of the range, which break ties.
 
-    Returns (low, high) of twice as many boxes, and where a box is too thin to cut: its share of the bracket below `finest`, or its
-    ends next to each other.
+    Returns (low, high) of twice as many boxes, and where a box is too thin to cut: its share of the bracket below `finest`, its share of
+    a parameter's range below _THIN, or its ends next to each other.
     """
-    choice = np.argmax(np.where(high > np.nextafter(low, np.inf), (smear + 1e-3) * np.sqrt(widths) + 0.05 * widths, -np.inf), axis=1)
+    room = (high > np.nextafter(low, np.inf)) & (widths > _THIN)
+    room[:, -1] &= high[:, -1] - low[:, -1] >= finest
+    choice = np.argmax(np.where(room, (smear + 1e-3) * np.sqrt(widths) + 0.05 * widths, -np.inf), axis=1)
     rows = np.arange(len(low))
     a, b = low[rows, choice], high[rows, choice]
     with np.errstate(all="ignore"):
         middle = np.where(logs[choice] & (a > 0), np.sqrt(a) * np.sqrt(b), 0.5 * a + 0.5 * b)
-    stuck = ~((middle > a) & (middle < b)) | (choice == low.shape[1] - 1) & (b - a < finest)
+    stuck = ~room.any(axis=1) | ~((middle > a) & (middle < b))
     first_high, second_low = high.copy(), low.copy()
     first_high[rows, choice], second_low[rows, choice] = middle, middle
     return np.concatenate([low, second_low]), np.concatenate([first_high, high]), stuck

@@ -77,19 +77,23 @@ class Limit:
             self.progress(stage, self.spent, waiting, settled())
 
     def reached(self, ceiling):
-        return self.spent >= ceiling or self.until is not None and time.monotonic() > self.until
+        return self.spent >= ceiling or self.late()
+
+    def late(self):
+        """True where the time is over."""
+        return self.until is not None and time.monotonic() > self.until
 
 
 class Domain:
     """Charts of one model, plain or relative to the pivots of a scaling, with their ranges."""
 
-    def __init__(self, model, scaling=None):
+    def __init__(self, model, scaling=None, edges=False):
         self.model, self.scaling = model, scaling
         fixed = scaling.pivots if scaling else ()
-        self.lower = Chart(model, fixed)
+        self.lower = Chart(model, fixed, edges=edges)
         self.charts = [self.lower]
         if model.unknown.open_upper:
-            self.charts.append(Chart(model, fixed, from_upper=True))
+            self.charts.append(Chart(model, fixed, from_upper=True, edges=edges))
         self.upper = self.charts[-1]
         self.ranges = ranges(model, self.lower.variables, scaling)
         self.opened = [model.unknown.open_lower, True]
@@ -125,13 +129,8 @@ def search_ends(domain, crew, limit, ceiling, outcome):
         outcome.leave(claim, ~left.judged.outside & ~getattr(left.judged, claim), left.low, left.high, 0)
 
 
-def search_inside(domain, index, crew, limit, ceiling, outcome, wanted, low=None, high=None, share_only=False):
-    """Cuts boxes of parameters and share until nothing that the claims in `wanted` need is open; fills the outcome.
-
-    `share_only`: the boxes hold single points of the parameters, whose rounding is not worth a cut.
-    """
-    if low is None:
-        low, high = domain.whole()
+def search_inside(domain, index, crew, limit, ceiling, outcome, wanted):
+    """Cuts boxes of parameters and share until nothing that the claims in `wanted` need is open; fills the outcome."""
 
     def open_of(judged):
         needs = needs_of(judged)
@@ -139,10 +138,8 @@ def search_inside(domain, index, crew, limit, ceiling, outcome, wanted, low=None
 
     def note(judged, done, low, high):
         outcome.keep(judged, done, low, high, index)
-        if share_only:
-            judged.smear[:, :-1] = -1e9
 
-    left = _search(domain, crew, limit, ceiling, f"inside {index}", open_of, note, low, high, 2.0 ** (-48 if share_only else -160))
+    left = _search(domain, crew, limit, ceiling, f"inside {index}", open_of, note, *domain.whole(), 2.0 ** -160)
     for claim, need in needs_of(left.judged).items():
         outcome.leave(claim, need, left.low, left.high, index)
     outcome.keep(left.judged, np.ones(len(left.low), bool), left.low, left.high, index)

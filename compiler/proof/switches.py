@@ -10,7 +10,7 @@ from fractions import Fraction
 import numpy as np
 
 from rootwright.proof.exact import decimal, sign
-from rootwright.proof.refute import Witness
+from rootwright.proof.witness import Witness
 from rootwright.proof.search import judge_inside
 
 _HALVINGS = 40
@@ -22,11 +22,11 @@ def refute_kink(examiner):
     domain = examiner.domain
     if domain.opened[0] or len(domain.charts) > 1:
         return None
-    points = [point for point in map(examiner.point, examiner.corners(12)) if point and examiner.in_range(point)]
+    points = [point for point in map(examiner.points.exact, examiner.points.corners(12)) if point and examiner.in_range(point)]
     zeros = [(point, _zero(examiner, point)) for point in points]
     zeros = [(point, zero) for point, zero in zeros if zero is not None]
     for guard, form in domain.lower.switches:
-        if examiner.limit.reached(np.inf):
+        if examiner.limit.late():
             break
         signs = [_side(examiner, form, point, zero) for point, zero in zeros]
         below = next((place for place, side in zip(zeros, signs) if side == -1), None)
@@ -49,7 +49,9 @@ def _zero(examiner, point):
     for _ in range(_HALVINGS):
         middle = (a + b) / 2
         here = sign(examiner.at(chart, [node], point, middle)[node])
-        if here is None or here == 0:
+        if here is None:
+            break
+        if here == 0:
             step = (b - a) / 8
             return middle - step, middle + step
         a, b = (middle, b) if here == first else (a, middle)
@@ -78,7 +80,7 @@ def _between(examiner, guard, form, below, above):
             (point, _), (other, _) = below, above
             return Witness(tuple((name, decimal(value)) for name, value in point.items()), "a zero crosses a switch on the way to "
                            + ", ".join(f"{name} = {decimal(value)}" for name, value in other.items() if value != point[name]))
-        middle = examiner.point({name: float((below[0][name] + above[0][name]) / 2) for name in below[0]})
+        middle = examiner.points.exact({name: float((below[0][name] + above[0][name]) / 2) for name in below[0]})
         zero = _zero(examiner, middle) if middle and examiner.in_range(middle) else None
         side = _side(examiner, form, middle, zero) if zero else 0
         if side == 0:

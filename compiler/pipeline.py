@@ -78,9 +78,10 @@ def certificate_path(spec):
 
 
 def certificate(spec):
-    """Text of the certificate beside a spec (a file, or a shipped spec's name); None where there is none."""
-    if spec in shipped() and not Path(spec).is_file():
-        resource = resources.files("rootwright.specs").joinpath(f"{spec}.proof")
+    """Text of the certificate beside a spec (a file, or a shipped spec's name, or its file name); None where there is none."""
+    name = spec.removesuffix(".toml")
+    if name in shipped() and not Path(spec).is_file():
+        resource = resources.files("rootwright.specs").joinpath(f"{name}.proof")
         return resource.read_text(encoding="utf-8") if resource.is_file() else None
     try:
         return certificate_path(spec).read_text(encoding="utf-8")
@@ -108,17 +109,12 @@ def has_root_proved(closed):
 
 def prove(job):
     """(Certificate, contradictions) of a job (spec, boxes or None, seconds or None); a spec that is known to be valid."""
-    from rootwright.binding.build import BuildFailed, NoCompiler
     from rootwright.evidence.proving import certify
 
     spec, boxes, seconds = job
     closed, _ = closure(*find(spec))
     limits = {name: value for name, value in (("boxes", boxes), ("seconds", seconds)) if value is not None}
-    try:
-        module = load(spec)
-    except (NoCompiler, BuildFailed):
-        module = load(spec, "python")       # the same bits
-    return certify(closed, module, **limits)
+    return certify(closed, **limits)
 
 
 def plan(closed):
@@ -129,14 +125,13 @@ def plan(closed):
 
 
 def emit(closed, target="c", chosen=None, **options):
-    """Files of the module, {name: text}, for a Plan; the plain one where none is given.
+    """Files of the module, {name: text}, for a Plan; the one that `plan` chooses where none is given.
 
     options: `assemble` lists them; raises its Unsuitable.
     """
     from rootwright.emit.assemble import assemble
-    from rootwright.plan.plan import PLAIN
 
-    return assemble(closed, target, chosen or PLAIN, **options)
+    return assemble(closed, target, chosen or plan(closed), **options)
 
 
 def load(spec, target="c", order=1):
@@ -144,17 +139,20 @@ def load(spec, target="c", order=1):
     from rootwright.binding.module import load as load_module
 
     closed, _ = closure(*find(str(spec)), order)
+    closed, _ = promised(closed, str(spec))
     return load_module(closed, emit(closed, target), target)
 
 
 def remake(data, filename, options):
     """Texts that this compiler emits for a spec with the options that an emitted file names; None where it cannot."""
+    from rootwright.plan.plan import PLAIN
+
     others = {name.replace("-", "_"): value or True for name, value in options.items()}
     shaping = {"order": int(others.pop("order", 1)), "precision": others.pop("precision", "double")}
     try:
         closed, _ = closure(data, filename, **shaping)
         closed, _ = promised(closed, filename)
-        chosen = plan(closed) if others.pop("plan", "plain") == "chosen" else None
+        chosen = PLAIN if others.pop("plan", "chosen") == "plain" else None
         return tuple(emit(closed, chosen=chosen, **others).values())
     except (SpecError, LookupError, TypeError, ValueError):
         return None
@@ -191,9 +189,10 @@ def _cached(checked, data, filename, target, order):
 
     def made():
         closed, _ = closure(data, filename, order)
+        closed, _ = promised(closed, filename)
         return make(checked, emit(closed, target), target, order)
 
-    shaping = [checked.digest, target, str(order)]
+    shaping = [checked.digest, certificate(filename), target, str(order)]
     if target == "c":
         compiler = find_compiler()
         shaping += [compiler, compiler_version(compiler), *FLAGS]

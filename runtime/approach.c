@@ -1,87 +1,114 @@
 /* SPDX-License-Identifier: 0BSD */
 
-/* The short way to the root: a few of Halley's steps from a good first guess, then the certificate of the point that
-   they lead to. Fills r but for the outputs. Inside the operating range only. Any doubt returns RW_NOT_FINITE and leaves
-   the point to rw_locate, which needs no luck: a step that leaves the bracket or does not contract, a residual that is
-   not zero up to rounding, a curve that is not straight, an error bound that reaches an end of the bracket.
-   That the residual's signs at the ends differ is looked at, or was proved for the whole operating range. */
-static int rw_approach(const double p[], double start, rw_point *r)
+/* The next point, or where it leaves the bracket the middle between the last one and the end that it went past. */
+static double rw_inside(const double end[2], double last, double next)
 {
-    double end[2], rounding[2], x, g, slope, bound, slope_rounding, curvature, least, error, bend, step;
-#if RW_STILL
-    double kept[RW_KEPT];
+    return next > end[0] ? (next < end[1] ? next : 0.5 * last + 0.5 * end[1]) : 0.5 * last + 0.5 * end[0];
+}
+
+/* The short way to the root, inside the operating range only: a first guess, RW_STEPS of RW_METHOD, and the certificate of the
+   point that they lead to. Fills r but for the outputs, and known with what the derivatives share with it. Any doubt
+   returns RW_NOT_FINITE and leaves the point to rw_locate, which needs no luck: a residual that is not zero up to rounding,
+   a curve that is not straight, an error bound that reaches an end of the bracket.
+   That the residual's signs at the ends differ is RW_HOW. */
+static int rw_approach(const double p[], double start, double known[], rw_point *r)
+{
+    double end[2], rounding[2], x, g, slope, bound, error, reach;
+#if RW_HALLEY || RW_HOUSEHOLDER
+    double product, square;
 #endif
-    double longest = HUGE_VAL; /* the next step must be shorter */
-    int trials = 0, closing = 0;
+#if RW_HALLEY || RW_HOUSEHOLDER || RW_CAREFUL
+    double curvature;
+#endif
+#if RW_HOUSEHOLDER
+    double third;
+#endif
+#if RW_CAREFUL
+    double slope_rounding, least, turn, beyond, next;
+#endif
 #if RW_ENDS
     double low, high;
 #endif
+    int k;
 
     rw_bracket(p, end, rounding);
+#if RW_ENDS
     if (!(isfinite(end[0]) && isfinite(end[1]))) {
         return RW_NOT_FINITE;
     }
-#if RW_STILL
-    rw_still(p, kept);
-#endif
-#if RW_ENDS
-    low = rw_trial(p, kept, end[0], &slope, &bound, &slope_rounding, &curvature);
-    high = rw_trial(p, kept, end[1], &slope, &bound, &slope_rounding, &curvature);
+    low = rw_residual(p, end[0], &slope);
+    high = rw_residual(p, end[1], &slope);
     r->evaluations += 2;
     if (!((low < 0.0 && high > 0.0) || (high < 0.0 && low > 0.0))) {
         return RW_NOT_FINITE;
     }
 #endif
-    x = isnan(start) ? rw_guess(p) : start;
-    if (!(end[0] < x && x < end[1])) {
-        x = 0.5 * end[0] + 0.5 * end[1];
+#if RW_STILL
+    rw_still(p, known);
+#endif
+    x = 0.5 * end[0] + 0.5 * end[1];
+    x = rw_inside(end, x, isnan(start) ? rw_guess(p) : start);
+#if RW_NEWTON || RW_HALLEY || RW_HOUSEHOLDER
+    for (k = 0; k < RW_STEPS; k++) {
+#if RW_NEWTON
+        g = rw_curve(p, known, x, &slope);
+        x = rw_inside(end, x, x - g / slope);
+#endif
+#if RW_HALLEY
+        g = rw_curve(p, known, x, &slope, &curvature);
+        product = g * curvature;
+        square = slope * slope;
+        x = rw_inside(end, x, x - 2.0 * g * slope / (2.0 * square - product));
+#endif
+#if RW_HOUSEHOLDER
+        g = rw_curve(p, known, x, &slope, &curvature, &third);
+        product = g * curvature;
+        square = slope * slope;
+        x = rw_inside(end, x, x - g * (6.0 * square - 3.0 * product) / (6.0 * slope * (square - product) + g * g * third));
+#endif
     }
-    while (!closing) {
-        g = rw_curve(p, kept, x, &slope, &curvature);
-        trials += 1;
-        /* Halley's step, which leaves an error of about bend^2 of itself. */
-        step = -g * slope / (slope * slope - 0.5 * g * curvature);
-        bend = g * curvature / (slope * slope);
-        if (!(fabs(step) <= longest && fabs(bend) <= 1.0)) {
-            break;
-        }
-        closing = bend * bend * fabs(step) <= 0x1p-53 * fabs(x);
-        longest = 0.5 * fabs(step);
-        x += step;
-        if (!(end[0] < x && x < end[1]) || trials >= RW_TRIALS) {
-            closing = 0;
-            break;
-        }
-    }
-    r->iterations += trials;
-    r->evaluations += trials;
-    for (trials = 0; closing && trials < 2; trials++) {
-        g = rw_trial(p, kept, x, &slope, &bound, &slope_rounding, &curvature);
+    r->iterations += RW_STEPS;
+    r->evaluations += RW_STEPS;
+#endif
+    for (k = 0; k < RW_TRIALS; k++) {
+#if RW_CAREFUL
+        g = rw_trial(p, known, x, &slope, &bound, &slope_rounding, &curvature);
+#else
+        g = rw_trial(p, known, x, &slope, &bound);
+#endif
         r->evaluations += 1;
-        if (fabs(g) <= bound) {
+        if (fabs(g) <= bound + fabs(slope) * (0.5 * DBL_EPSILON * fabs(x))) { /* zero up to rounding, of g and of x */
+#if RW_CAREFUL
             least = fabs(slope) - slope_rounding;
-            if (!(least > 0.0)) {
-                break;
-            }
             error = (fabs(g) + bound) / least;
-            bend = fabs(curvature) * error / least;
-            if (rw_is_flat(bend)) {
+            turn = fabs(curvature) * error / least;
+            if (!(least > 0.0) || rw_is_flat(turn)) {
                 break;
             }
-            /* As in rw_certify. */
-            error *= (1.0 + bend) * (1.0 + 0x1p-10);
-            if (fabs(g) + bound > 0.0) {
-                error = fmax(error, 0x1p-1074);
+            if (fabs(g) > bound) { /* then the next double on the other side of the root tells whether the curve is straight */
+                beyond = rw_residual(p, nextafter(x, (g < 0.0) == (slope > 0.0) ? end[1] : end[0]), &next);
+                r->evaluations += 1;
+                if ((beyond < 0.0) == (g < 0.0) || !(fabs(next - slope) <= 0.25 * fabs(slope))) {
+                    break;
+                }
             }
-            r->lower = error > 0.0 ? nextafter(x - error, -HUGE_VAL) : x;
-            r->upper = error > 0.0 ? nextafter(x + error, HUGE_VAL) : x;
-            if (!(end[0] < r->lower && r->upper < end[1])) {
+            error *= (1.0 + turn) * (1.0 + 0x1p-10); /* as in rw_certify */
+#else
+            /* The slope is proved, for the whole operating range, to be right to 2^-12 of itself and to change by no more
+               within this error: no root is flat there. */
+            error = (fabs(g) + bound) / fabs(slope) * (1.0 + 0x1p-10);
+#endif
+            reach = error + 0x1p-51 * (fabs(x) + error);
+            r->lower = x - reach;
+            r->upper = x + reach;
+            if (!(error > 0.0 && end[0] < r->lower && r->upper < end[1])) {
                 break;
             }
 #if RW_STEEP
             /* From end to end the residual is monotone and changes by RW_LEAST_RISE at least, as was proved for the whole
                operating range: with so small a residual here the signs at the ends differ. */
-            if (!((fabs(g) + bound) * (end[1] - end[0]) < RW_LEAST_RISE * fmin(x - end[0], end[1] - x))) {
+            reach = (fabs(g) + bound) * (end[1] - end[0]) / RW_LEAST_RISE;
+            if (!(reach < x - end[0] && reach < end[1] - x)) {
                 break;
             }
 #endif
@@ -97,7 +124,7 @@ static int rw_approach(const double p[], double start, rw_point *r)
 #endif
             return r->status;
         }
-        x -= g / slope;
+        x = rw_inside(end, x, x - g / slope);
         r->iterations += 1;
     }
     return RW_NOT_FINITE;
@@ -108,10 +135,7 @@ static int rw_resume(const double p[], double start, rw_point *r)
 {
     const int iterations = r->iterations, evaluations = r->evaluations;
     int status;
-    r->iterations = 0;
-    r->evaluations = 0;
-    r->lower = NAN;
-    r->upper = NAN;
+    rw_clear(r);
     status = rw_locate(p, start, r);
     r->iterations += iterations;
     r->evaluations += evaluations;

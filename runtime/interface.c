@@ -1,6 +1,91 @@
 /* SPDX-License-Identifier: 0BSD */
 
+#if RW_KNOWN
+/* Fills known as the derivatives want it, at a given root. */
+static void rw_recall(const double p[], double root, double known[])
+{
+#if RW_CAREFUL
+    double slope, bound, slope_rounding, curvature;
+#if RW_STILL
+    rw_still(p, known);
+#endif
+    (void)rw_trial(p, known, root, &slope, &bound, &slope_rounding, &curvature);
+#else
+    double slope, bound;
+#if RW_STILL
+    rw_still(p, known);
+#endif
+    (void)rw_trial(p, known, root, &slope, &bound);
+#endif
+}
+
+#endif
+static int rw_find(const double p[], double start, double known[], rw_point *r)
+{
+    int k, finite = 1, outside = rw_outside(p);
+#if RW_PLANNED
+    r->iterations = 0;
+    r->evaluations = 0;
+    if (!outside && rw_approach(p, start, known, r) >= 0) {
+#if RW_OUTPUTS
+        rw_outputs(p, known, r->y[0], r->y);
+#endif
+        return r->status;
+    }
+    if (outside) {
+        rw_clear(r);
+    }
+#else
+    rw_clear(r);
+#endif
+    for (k = 0; k < RW_N; k++) {
+        finite = finite && isfinite(p[k]);
+    }
+    if (finite) {
+#if RW_PLANNED
+        rw_resume(p, start, r);
+#else
+        rw_locate(p, start, r);
+#endif
+    }
+    if (r->status >= 0) {
+        r->status |= outside ? RW_OUTSIDE_RANGE : 0;
+#if RW_KNOWN
+        rw_recall(p, r->y[0], known);
+#endif
+#if RW_OUTPUTS
+        rw_outputs(p, known, r->y[0], r->y);
+#endif
+    }
+    return r->status;
+}
+
+int rw_solve(const double p[RW_N], double start, rw_point *r)
+{
+#if RW_KNOWN
+    double known[RW_K];
+#endif
+    return rw_find(p, start, known, r);
+}
+
 #if RW_JACOBIAN
+int rw_solve_jacobian(const double p[RW_N], double start, rw_point *r, double jac[RW_M*RW_N])
+{
+#if RW_KNOWN
+    double known[RW_K];
+#endif
+    const int status = rw_find(p, start, known, r);
+    int k;
+    if (status >= 0 && (status & RW_FLAT) == 0) {
+        rw_partials(p, known, r->y[0], jac);
+    } else {
+        for (k = 0; k < RW_M*RW_N; k++) {
+            jac[k] = (double)NAN;
+        }
+    }
+    return status;
+}
+
 /* True where the root has no usable slope: derivatives there are NaN. Same test as in the solver. */
 static int rw_without_slope(const double p[], double root)
 {
@@ -8,54 +93,6 @@ static int rw_without_slope(const double p[], double root)
     const double g = rw_residual(p, root, &slope);
     const double rounding = rw_rounding(p, root, &slope_rounding, &curvature);
     return rw_is_flat(rw_bend(p, root, g, slope, rounding, slope_rounding, curvature));
-}
-#endif
-
-int rw_solve(const double p[RW_N], double start, rw_point *r)
-{
-    int k, outside, status = RW_NOT_FINITE, finite = 1;
-    rw_clear(r);
-    for (k = 0; k < RW_N; k++) {
-        finite = finite && isfinite(p[k]);
-    }
-    if (finite) {
-        outside = rw_outside(p);
-#if RW_PLANNED
-        if (!outside) {
-            status = rw_approach(p, start, r);
-        }
-        if (status < 0) {
-            status = rw_resume(p, start, r);
-        }
-#else
-        status = rw_locate(p, start, r);
-#endif
-        if (status >= 0 && outside) {
-            status |= RW_OUTSIDE_RANGE;
-        }
-#if RW_OUTPUTS
-        if (status >= 0) {
-            rw_outputs(p, r->y[0], r->y);
-        }
-#endif
-    }
-    r->status = status;
-    return status;
-}
-
-#if RW_JACOBIAN
-int rw_solve_jacobian(const double p[RW_N], double start, rw_point *r, double jac[RW_M*RW_N])
-{
-    const int status = rw_solve(p, start, r);
-    int k;
-    if (status >= 0 && (status & RW_FLAT) == 0) {
-        rw_partials(p, r->y[0], jac);
-    } else {
-        for (k = 0; k < RW_M*RW_N; k++) {
-            jac[k] = (double)NAN;
-        }
-    }
-    return status;
 }
 
 void rw_jacobian(const double p[RW_N], double root, double jac[RW_M*RW_N])
@@ -66,7 +103,11 @@ void rw_jacobian(const double p[RW_N], double root, double jac[RW_M*RW_N])
             jac[k] = (double)NAN;
         }
     } else {
-        rw_partials(p, root, jac);
+#if RW_KNOWN
+        double known[RW_K];
+        rw_recall(p, root, known);
+#endif
+        rw_partials(p, known, root, jac);
     }
 }
 
@@ -105,7 +146,11 @@ void rw_hessian(const double p[RW_N], double root, double hess[RW_M*RW_N*RW_N])
             hess[k] = (double)NAN;
         }
     } else {
-        rw_second_partials(p, root, hess);
+#if RW_KNOWN
+        double known[RW_K];
+        rw_recall(p, root, known);
+#endif
+        rw_second_partials(p, known, root, hess);
     }
 }
 

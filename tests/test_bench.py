@@ -16,9 +16,10 @@ from scipy import stats
 from rootwright import cli, pipeline
 from rootwright.binding.build import FLAGS
 from rootwright.evidence.bench import benchmark as bench
-from rootwright.evidence.bench import page, rivals
+from rootwright.evidence.bench import goals, page, rivals
 from rootwright.evidence.bench.build import build
 from rootwright.evidence.bench.judge import judge
+from rootwright.evidence.bench.measure import crew
 from rootwright.evidence.bench.pitfalls import pitfalls
 from rootwright.evidence.bench.problem import pose
 from rootwright.evidence.bench.rows import BY_KEY, LIMIT, ROWS, make, solver
@@ -37,7 +38,7 @@ def closed(name):
 def friction(tmp_path_factory):
     """(Problem, Built) of a shipped spec, small."""
     closure = closed("pipe_friction")
-    built = build(closure, tmp_path_factory.mktemp("friction"))
+    built = build(closure, pipeline.plan(closure), tmp_path_factory.mktemp("friction"))
     return pose(closure, solver(built, closure), points=40, checked=10), built
 
 
@@ -51,7 +52,9 @@ def facts():
     """A small run of the whole, two processes, without the rows that need other people's libraries."""
     with pytest.MonkeyPatch.context() as patch:
         patch.setattr(rivals, "_need", refuse)
-        return bench.benchmark(closed("lambert_w"), seconds=0.0, count=2, points=16, checked=4)
+        closure = closed("lambert_w")
+        with crew(2) as processes:
+            return bench.benchmark(closure, pipeline.plan(closure), processes, seconds=0.0, points=16, checked=4)
 
 
 def refuse(module):
@@ -75,9 +78,9 @@ def test_differences_are_far_from_the_digits_of_the_implicit_rule(judged):
 
 
 @pytest.mark.parametrize("key", ["tape", "tape_forward", "dual"])
-def test_the_loop_over_other_numbers_is_the_modules_to_the_last_bit(friction, key):
+def test_the_loop_over_other_numbers_is_the_plain_modules_to_the_last_bit(friction, key):
     problem, built = friction
-    module = make(BY_KEY["jacobian"], problem, built).outcome(len(problem.points))
+    module = make(BY_KEY["plain"], problem, built).outcome(len(problem.points))
     through = make(BY_KEY[key], problem, built).outcome(len(problem.points))
     assert np.array_equal(through.y, module.y)
 
@@ -93,8 +96,17 @@ def test_a_dependent_run_computes_the_same(friction):
 
 def test_the_limit_is_the_modules_own_jacobian_at_the_root(friction):
     problem, built = friction
-    limit, module = (make(BY_KEY[key], problem, built).outcome(len(problem.points)) for key in (LIMIT, "jacobian"))
-    assert np.array_equal(limit.jac, module.jac)
+    limit, kernels, module = (make(BY_KEY[key], problem, built).outcome(len(problem.points)).jac
+                              for key in (LIMIT, "kernels", "jacobian"))
+    assert np.array_equal(limit, kernels)
+    assert np.allclose(limit, module, rtol=1e-14, atol=0.0)
+
+
+def test_the_module_is_the_planned_one_and_the_plain_one_stands_beside_it(friction):
+    problem, built = friction
+    planned, plain = (make(BY_KEY[key], problem, built).outcome(len(problem.points)) for key in ("solve", "plain"))
+    assert np.median(planned.count) < np.median(plain.count)
+    assert np.allclose(planned.y, plain.y, rtol=4e-15, atol=0.0)
 
 
 def test_a_bisection_on_the_tape_has_the_root_and_no_derivative(friction):
@@ -211,7 +223,7 @@ def test_the_interval_of_a_ratio_is_students(facts):
 def test_the_json_has_its_members(facts):
     data = json.loads(json.dumps(facts))
     assert {"name", "title", "digest", "environment", "rows", "evaluations", "tape", "pitfalls", "goals",
-            "terms"} <= set(data)
+            "terms", "plan", "wrong"} <= set(data)
     assert [row["key"] for row in data["rows"]] == [row.key for row in ROWS]
     for row in data["rows"]:
         assert {"key", "group", "title", "setting", "absent", "derivative_error", "root_error", "failures",
@@ -249,19 +261,67 @@ def test_a_tape_has_its_operations_and_bytes(facts):
     assert rows["jacobian"]["operations"] is None
 
 
+def judged_goal(facts, key, ratio, at_least=None, at_most=None):
+    """(verdict, missed by) of the goal with this bound, were a row's ratio to the module or the limit so."""
+    numbers = dict(zip(("low", "value", "high"), ratio))
+    rows = [row | ({"to_module": numbers, "to_limit": numbers} if row["key"] == key else {}) for row in facts["rows"]]
+    return next((goal["verdict"], goal["by"]) for goal in goals.goals(facts | {"rows": rows})
+                if (goal["at_least"], goal["at_most"]) == (at_least, at_most))
+
+
 def test_goals_are_met_where_the_whole_interval_clears_them(facts):
-    from rootwright.evidence.bench.goals import TAPES, goals
+    found = [judged_goal(facts, "tape", ratio, at_least=goals.TAPES) for ratio in ((21, 25, 30), (15, 25, 30), (4, 5, 7))]
+    assert found == [("met", None), ("open", 0.8), ("missed", 4.0)]
 
-    def verdict(low, value, high):
-        rows = [row | ({"to_module": {"value": value, "low": low, "high": high}} if row["key"] == "tape" else {})
-                for row in facts["rows"]]
-        return next(goal["verdict"] for goal in goals(facts | {"rows": rows}) if goal["at_least"] == TAPES)
 
-    assert [verdict(*numbers) for numbers in ((21, 25, 30), (15, 22, 30), (5, 6, 7))] == ["met", "open", "missed"]
+def test_the_jacobian_is_judged_by_the_inverse_of_what_the_solve_takes_of_it(facts):
+    found = [judged_goal(facts, "solve", ratio, at_most=goals.JACOBIAN)[0]
+             for ratio in ((0.9, 0.95, 1.0), (0.8, 0.9, 1.0), (0.5, 0.6, 0.7))]
+    assert found == ["met", "open", "missed"]
+
+
+@pytest.mark.parametrize("name", goals.LIMITS)
+def test_a_kind_of_closure_has_its_goal_against_the_limit(facts, name):
+    most = goals.LIMITS[name]
+    assert name in pipeline.shipped()
+    found = [judged_goal(facts | {"name": name}, "jacobian", (0.9*most, ratio*most, high*most), at_most=most)[0]
+             for ratio, high in ((0.95, 1.0), (0.95, 1.1))]
+    assert found == ["met", "open"]
+
+
+def test_evaluations_have_their_goals(facts):
+    counted = facts | {"evaluations": {"median": 4, "worst": 24}}
+    verdicts = {goal["goal"]: goal["verdict"] for goal in goals.goals(counted) if goal["goal"].startswith("evaluations")}
+    assert list(verdicts.values()) == ["missed", "met"]
+
+
+def test_a_module_that_is_wrong_ends_with_status_1_and_says_so_first(facts, monkeypatch, capsys):
+    rows = [row | ({"failures": 3} if row["key"] == "solve" else {}) |
+            ({"derivative_error": {"median": 1e-16, "worst": 1e-3}} if row["key"] == "jacobian" else {})
+            for row in facts["rows"]]
+    assert facts["wrong"] == []
+    found = facts | {"rows": rows, "wrong": goals.wrong(facts | {"rows": rows})}
+    monkeypatch.setattr(bench, "benchmark", lambda closure, plan, crew, seconds, progress: found)
+    assert cli.main(["bench", "lambert_w"]) == 1
+    page_text = capsys.readouterr().out
+    assert "Wrong: solve: 3 of 16 points failed" in page_text
+    assert "Wrong: solve with jacobian: a derivative is off by 1.0e-03; the limit is 1e-06" in page_text
+
+
+def test_a_goal_that_is_missed_is_no_fault(facts, monkeypatch, capsys):
+    slow = facts | {"goals": [goal | {"verdict": "missed", "by": 2.0} for goal in facts["goals"]]}
+    monkeypatch.setattr(bench, "benchmark", lambda closure, plan, crew, seconds, progress: slow)
+    assert cli.main(["bench", "lambert_w"]) == 0
+    assert "missed, factor 2.00" in capsys.readouterr().out
+
+
+def test_many_specs_share_the_time():
+    assert bench.share(1) == bench.SECONDS[1]
+    assert bench.share(1) > bench.share(4) > bench.share(100) == bench.SECONDS[0]
 
 
 def test_the_command_prints_the_page_or_one_json_object(facts, monkeypatch, capsys):
-    monkeypatch.setattr(bench, "benchmark", lambda closure, seconds, progress: facts)
+    monkeypatch.setattr(bench, "benchmark", lambda closure, plan, crew, seconds, progress: facts)
     assert cli.main(["bench", "lambert_w"]) == 0
     assert capsys.readouterr().out == page.render(facts)
     assert cli.main(["bench", "lambert_w", "--json"]) == 0
@@ -287,7 +347,7 @@ def test_a_plot_is_written_where_its_library_is_installed(facts, tmp_path):
 
 
 def test_a_range_that_no_point_meets_is_refused_in_one_line(monkeypatch, capsys):
-    def nothing(closure, seconds, progress):
+    def nothing(closure, plan, crew, seconds, progress):
         raise bench.NotMeasured("no point of the operating range was found at which the reference settles a root")
 
     monkeypatch.setattr(bench, "benchmark", nothing)

@@ -111,6 +111,7 @@ def test_the_same_spec_gives_the_same_plan_and_the_same_bytes(name):
 
 
 def test_four_in_five_shipped_specs_have_a_short_way_that_takes_fewer_evaluations():
+    """But for one, two evaluations go to the ends where no proof shows that their signs differ."""
     planned = fewer = 0
     for name in SHIPPED:
         closure, plan, short, plain = shipped(name)
@@ -162,14 +163,14 @@ equation = "1/(x - a)"
         assert planned.solve([a]).status == -5
 
 
-def test_compile_prints_the_chosen_plan_and_why_and_fresh_makes_it_again(tmp_path, capsys):
-    assert cli.main(["compile", "kepler", "--into", str(tmp_path/"chosen"), "--plan", "chosen"]) == 0
+def test_compile_prints_the_plan_and_why_and_fresh_makes_it_again(tmp_path, capsys):
+    assert cli.main(["compile", "kepler", "--into", str(tmp_path/"chosen")]) == 0
     said = capsys.readouterr().out
     assert "start: " in said and "ends: " in said
-    assert cli.main(["compile", "kepler", "--into", str(tmp_path/"plain")]) == 0
+    assert cli.main(["compile", "kepler", "--into", str(tmp_path/"plain"), "--plan", "plain"]) == 0
     chosen, plain = ((tmp_path/way/"kepler.c").read_text() for way in ("chosen", "plain"))
     assert "kepler_approach" in chosen and "kepler_approach" not in plain
-    assert "--plan chosen" in chosen and len(chosen) - len(plain) < 8000
+    assert "--plan plain" in plain and "--plan" not in chosen and len(chosen) - len(plain) < 9000
     assert cli.main(["fresh", str(tmp_path)]) == 0
 
 

@@ -14,6 +14,7 @@ from test_code_bases import LINES
 from test_emission import EVERYTHING, SWITCH, run, together, write
 
 from rootwright import cli, pipeline
+from rootwright.binding.module import load
 from rootwright.calculus.precision import DOUBLE, SINGLE
 from rootwright.emit.c import in_single
 from rootwright.evidence.noise import noise
@@ -21,6 +22,7 @@ from rootwright.evidence.points import choose, in_range
 from rootwright.evidence.reference import NotSettled, Reference
 from rootwright.operations import OPERATIONS
 from rootwright.pipeline import closure, emit, find
+from rootwright.plan.plan import PLAIN
 
 pytestmark = pytest.mark.skipif(shutil.which("gcc") is None, reason="gcc is not installed")
 
@@ -191,7 +193,6 @@ BARE = spec_text("bare", "x*x = a", {"a": (0.0, 4.0)}, ("b", "2"), constants={"b
 def test_every_solve_ends_within_the_limit_and_failures_leave_nothing(tmp_path):
     closures = [single(text) for text in (STEEP, STEP, WIDE, BARE)]
     built, seen = Library(closures, tmp_path), {}
-    (tmp_path / "wide.toml").write_text(WIDE)
     for closed, points in zip(closures, ([[27.0], [-1e30], [1e-45], [0.0], [math.nan], [math.inf]],
                                          [[0.3, 0.25], [0.0, -0.3], [1e-40, 0.1]],
                                          [[0.3, 0.25], [0.0, 0.0], [-1.0, 0.5]], [[1.0], [0.01], [9.0]])):
@@ -205,7 +206,8 @@ def test_every_solve_ends_within_the_limit_and_failures_leave_nothing(tmp_path):
                 assert math.isfinite(r.y[0]) and math.isfinite(r.error_bound)
     assert seen["steep"][0] == 0 and seen["steep"][4:] == [-1, -1]
     assert seen["step"] == [-5, -5, -5] and seen["bare"] == [0, -2, -2]
-    double = pipeline.load(tmp_path / "wide.toml", "python")
+    closed, _ = pipeline.closure(WIDE.encode(), "wide.toml")
+    double = load(closed, pipeline.emit(closed, "python", PLAIN), "python")
     assert seen["wide"] == [double.solve(p).status for p in ([0.3, 0.25], [0.0, 0.0], [-1.0, 0.5])]
 
 

@@ -32,9 +32,11 @@ from rootwright.spec.model import Model
 
 @dataclass(frozen=True, slots=True)
 class Promise:
-    """What was proved over the operating range, in plain lines; the claims proved; the SHA-256 of the certificate that says so."""
+    """What was proved over the operating range, in plain lines; the claims proved for real numbers, and those proved for the
+    module's doubles besides; the SHA-256 of the certificate that says so."""
     lines: tuple[str, ...]
     proved: tuple[str, ...]
+    computed: tuple[str, ...]
     digest: str
 
 
@@ -114,10 +116,9 @@ class _Closing:
         (curvature,) = partials(graph, slope, [self.unknown])
         jacobian = self._jacobian(g, slope, outputs) if self.order >= 1 else {}
 
-        parameters = Magnitudes(graph, self.ranges)
-        hull = [parameters.of(end) for end in ends]
-        box = self.ranges | {model.unknown.name: (hull[0][0], hull[1][1])}
-        rounding = Rounding(graph, Magnitudes(graph, box))
+        magnitudes = Magnitudes(graph, self.ranges)
+        places = [magnitudes.of(end) for end in ends]
+        rounding = running(graph, self.ranges, model.unknown.name, places)
 
         self._kernel("bracket", lower=ends[0], upper=ends[1],
                      lower_rounding=rounding.bound(ends[0]), upper_rounding=rounding.bound(ends[1]))
@@ -141,7 +142,7 @@ class _Closing:
             if graph.is_constant(node):
                 _touch(graph, node)
         program = Program(tuple(graph.instructions), dict(graph.labels), self.results)
-        return Closure(model, program, self.kernels, tuple(self.ranges.values()), limit(*hull, graph.precision),
+        return Closure(model, program, self.kernels, tuple(self.ranges.values()), limit(*places, graph.precision),
                        dict(graph.constants), self.order, graph.precision)
 
     def _derivatives(self, prefix, result):
@@ -174,19 +175,20 @@ class _Closing:
                 for parameter, entry in zip(self.parameters, row)}
 
     def _outside(self, require):
+        """Condition: not (all parameters in their ranges and every requirement holds); true where a parameter is NaN."""
         graph = self.graph
-        outside = None
+        inside = None
         for name, (low, high) in self.ranges.items():
             node = self.parameters[name]
-            for test, end in (("lt", low), ("gt", high)):
-                beyond = graph.apply(test, node, graph.number(Fraction(end)))
-                outside = beyond if outside is None else graph.or_(outside, beyond)
+            for test, end in (("ge", low), ("le", high)):
+                within = graph.apply(test, node, graph.number(Fraction(end)))
+                inside = within if inside is None else graph.and_(inside, within)
         for condition in require:
             for left, right in comparisons(graph, condition):
                 if not (self.lowering.is_finite(left) and self.lowering.is_finite(right)):
-                    outside = graph.or_(outside, graph.not_(graph.apply("ordered", left, right)))
-            outside = graph.or_(outside, graph.not_(condition))
-        return outside
+                    inside = graph.and_(inside, graph.apply("ordered", left, right))
+            inside = graph.and_(inside, condition)
+        return graph.not_(inside)
 
     def _kink(self, results, rounding):
         """Condition: at some switch, |left - right| is within its rounding error and what the root's error bound moves it by."""
@@ -201,6 +203,11 @@ class _Closing:
             near = near if guard is None else graph.and_(guard, near)
             kink = near if kink is None else graph.or_(kink, near)
         return kink
+
+
+def running(graph, ranges, unknown, places):
+    """Rounding bounds over the box of ranges {parameter: (low, high)}; places: (low, high) of either end of the bracket."""
+    return Rounding(graph, Magnitudes(graph, ranges | {unknown: (places[0][0], places[1][1])}))
 
 
 def _touch(graph, node):

@@ -13,10 +13,11 @@ from rootwright.calculus.program import Graph
 from rootwright.calculus.sampling import between
 from rootwright.emit import c, python
 from rootwright.emit.describe import comments
+from rootwright.emit.layout import known, shared
 from rootwright.emit.manual import STATUS, manual
 from rootwright.emit.provenance import provenance, seal
 from rootwright.emit.text import paragraph
-from rootwright.plan.plan import PLAIN
+from rootwright.plan.plan import METHODS, PLAIN, TRIALS
 
 _KERNELS = ("bracket", "residual", "rounding", "outside", "kink", "start", "guess", "still", "curve", "trial", "outputs", "jacobian", "hessian")
 
@@ -46,7 +47,7 @@ def _assemble_c(closure, plan, single_header=False, fortran=False):
     def runtime(name):
         text = resolve(_source(name), _features(closure, plan))
         words = {"RW_M*RW_N*RW_N": sizes["MNN"], "RW_M*RW_N": sizes["MN"], "RW_N": sizes["N"], "RW_M": sizes["M"],
-                 "RW_LIMIT": closure.limit, "RW_TRIALS": plan.trials, "RW_LEAST_RISE": _below(plan.least_rise), "RW_KEPT": len(closure.kernels.get("still", ()))}
+                 "RW_LIMIT": closure.limit, **{f"RW_{word}": value for word, value in _plan_words(closure, plan).items()}}
         for word, value in words.items():
             text = re.sub(rf"\b{re.escape(word)}\b", str(value), text)
         if closure.precision is SINGLE:
@@ -56,7 +57,8 @@ def _assemble_c(closure, plan, single_header=False, fortran=False):
     kernels = "\n\n".join(c.kernel(closure, name, comments(closure)[name]) for name in _KERNELS if name in closure.kernels)
     solver, interface = runtime("solver.c"), runtime("interface.c")
     if plan.closure:
-        solver += "\n\n" + _with_still(closure, runtime("approach.c"))
+        solver += "\n\n" + _with_known(closure, runtime("approach.c"))
+    interface = _with_known(closure, interface)
     helpers = _used(runtime("arithmetic.c"), kernels + solver + interface, r"^static \w+ (\w+)\(")
     origin = _origin(closure, plan, "c", {"single-header": ""} if single_header else {})
     page = manual(closure, plan, _example_c(closure), _interface_c(closure, single_header), origin)
@@ -109,7 +111,7 @@ def _assemble_python(closure, plan):
 
     def runtime(name):
         text = resolve(_source(name), _features(closure, plan))
-        words = {"LIMIT": closure.limit, "TRIALS": plan.trials, "LEAST_RISE": _below(plan.least_rise)}
+        words = {"LIMIT": closure.limit, **_plan_words(closure, plan)}
         for word, value in words.items():
             text = re.sub(rf"\b{word}\b", str(value), text)
         return text
@@ -117,7 +119,8 @@ def _assemble_python(closure, plan):
     kernels = "\n\n\n".join(python.kernel(closure, name, comments(closure)[name]) for name in _KERNELS if name in closure.kernels)
     solver, interface = runtime("solver.py"), runtime("interface.py")
     if plan.closure:
-        solver += "\n\n\n" + _with_still(closure, runtime("approach.py"))
+        solver += "\n\n\n" + _with_known(closure, runtime("approach.py"))
+    interface = _with_known(closure, interface)
     helpers = _used(runtime("arithmetic.py"), kernels + solver + interface, r"^def (\w+)\(")
     page = manual(closure, plan, _example_python(closure), [
         f"Interface: p is a sequence of the {sizes['N']} parameters, y a list of the {sizes['M']} results, each in the "
@@ -130,7 +133,7 @@ def _assemble_python(closure, plan):
 
 def _origin(closure, plan, target, flags):
     """The lines that say where a file comes from; flags: the options that shaped it besides."""
-    flags = flags if plan.option == "plain" else flags | {"plan": plan.option}
+    flags = flags | {"plan": "plain"} if plan is PLAIN else flags
     certificate = closure.promise.digest if closure.promise else None
     precision = {} if closure.precision is DOUBLE else {"precision": closure.precision.name}
     options = {"target": target, "order": closure.order} | precision | flags
@@ -146,7 +149,9 @@ def _features(closure, plan):
     unknown = closure.model.unknown
     return {"OPEN_LOWER": unknown.open_lower, "OPEN_UPPER": unknown.open_upper, "SWITCHES": "kink" in closure.kernels,
             "START": "start" in closure.kernels, "OUTPUTS": "outputs" in closure.kernels,
-            "STILL": "still" in closure.kernels, "PLANNED": plan.closure is not None, "ENDS": plan.ends == "evaluated", "STEEP": plan.ends == "steep",
+            "STILL": "still" in closure.kernels, "KNOWN": _known(closure) > 0, "PLANNED": plan.closure is not None,
+            "ENDS": plan.ends == "evaluated", "STEEP": plan.ends == "steep", "CAREFUL": not plan.sure,
+            **{method.upper(): plan.method == method and plan.steps > 0 for method in METHODS},
             "JACOBIAN": "jacobian" in closure.kernels, "HESSIAN": "hessian" in closure.kernels}
 
 
@@ -176,9 +181,26 @@ def _below(value):
     return float(f"{0.99*value:.3g}")
 
 
-def _with_still(closure, text):
-    """The kernels take what was kept where anything is."""
-    return text if "still" in closure.kernels else text.replace("(p, kept, ", "(p, ")
+def _known(closure):
+    """How many values are known to the kernels besides their arguments."""
+    return len(closure.kernels.get("still", ())) + len(shared(closure))
+
+
+def _with_known(closure, text):
+    """Every kernel takes what is known, where anything is to it."""
+    for kernel, function in (("curve", "curve"), ("trial", "trial"), ("outputs", "outputs"), ("jacobian", "partials"),
+                             ("hessian", "second_partials")):
+        if not (known(closure, kernel) or kernel == "trial" and shared(closure)):
+            text = text.replace(f"_{function}(p, known, ", f"_{function}(p, ")
+    return text if _known(closure) else re.sub(r"\w+ known\[\], ", "", text).replace("start, known", "start")
+
+
+def _plan_words(closure, plan):
+    """What the text of the short way says of a plan."""
+    return {"TRIALS": TRIALS, "STEPS": plan.steps, "LEAST_RISE": _below(plan.least_rise), "METHOD": METHODS.get(plan.method, ""),
+            "K": _known(closure), "STANDING": len(closure.kernels.get("still", ())),
+            "HOW": {"proved": "proved for the whole operating range", "steep": "seen from the residual at the root",
+                    "evaluated": "looked at first"}[plan.ends]}
 
 
 def _source(name):

@@ -4,7 +4,8 @@ import math
 import re
 
 from rootwright.calculus.precision import SINGLE
-from rootwright.emit.layout import given, lay_out
+from rootwright.emit import parts
+from rootwright.emit.layout import given, known, lay_out, shared
 from rootwright.emit.names import Names, taken_in_c
 from rootwright.emit.text import statement
 from rootwright.operations import OPERATIONS
@@ -64,23 +65,25 @@ _SIGNATURES = {
     "kink": ("int", "double {x}, double {error_bound}"),
     "start": ("double", ""),
     "guess": ("double", ""),
-    "still": ("void", "double {still}[]"),
-    "curve": ("double", "const double {still}[], double {x}, double *{slope}, double *{curvature}"),
-    "trial": ("double", "const double {still}[], double {x}, double *{slope}, double *{rounding}, double *{slope_rounding}, double *{curvature}"),
-    "outputs": ("void", "double {x}, double {y}[]"),
-    "jacobian": ("void", "double {x}, double {jac}[]"),
-    "hessian": ("void", "double {x}, double {hess}[]"),
+    "still": ("void", "double {known}[]"),
+    "curve": ("double", "const double {known}[], double {x}, {pointers}"),
+    "trial": ("double", "double {known}[], double {x}, {pointers}"),
+    "outputs": ("void", "const double {known}[], double {x}, double {y}[]"),
+    "jacobian": ("void", "const double {known}[], double {x}, double {jac}[]"),
+    "hessian": ("void", "const double {known}[], double {x}, double {hess}[]"),
 }
 _TARGETS = {
     "lower": "{end}[0]", "upper": "{end}[1]", "lower_rounding": "{rounding}[0]", "upper_rounding": "{rounding}[1]",
     "slope": "*{slope}", "rounding": "*{rounding}", "slope_rounding": "*{slope_rounding}", "curvature": "*{curvature}",
-    "near_slope": "*{slope}", "near_curvature": "*{curvature}",
+    "near_slope": "*{slope}", "near_curvature": "*{curvature}", "near_third": "*{third}",
+    "tried_slope": "*{slope}", "tried_rounding": "*{rounding}", "tried_slope_rounding": "*{slope_rounding}",
+    "tried_curvature": "*{curvature}",
 }
 _RETURNED = {"residual": "g", "rounding": "rounding", "outside": "outside", "kink": "kink", "start": "start", "guess": "guess",
              "curve": "near_g", "trial": "g"}
-_FORMALS = ("p", "end", "rounding", "slope", "slope_rounding", "curvature", "error_bound", "y", "jac", "hess", "still")
+_FORMALS = ("p", "end", "rounding", "slope", "slope_rounding", "curvature", "third", "error_bound", "y", "jac", "hess", "known", "work")
 _FUNCTIONS = {"jacobian": "partials", "hessian": "second_partials"}      # where the kernel's name is the interface's
-_FLAT = {"jacobian": "jac", "hessian": "hess", "still": "still"}                          # kernels whose results are one array
+_FLAT = {"jacobian": "jac", "hessian": "hess", "still": "known"}                          # kernels whose results are one array
 
 
 def kernel(closure, name, comment):
@@ -89,29 +92,62 @@ def kernel(closure, name, comment):
     spelling = CSpelling(model, closure.precision)
     real = spelling.real
     formals = {formal: spelling.names.ours(formal) for formal in _FORMALS} | {"x": spelling.name(model.unknown.name)}
-    kind, arguments = (text.replace("double", real) for text in _SIGNATURES[name])
-    if "still" not in closure.kernels:
-        arguments = arguments.replace(f"const {real} {{still}}[], ", "")
-    first = f"static {kind} {model.name}_{_FUNCTIONS.get(name, name)}(const {real} {formals['p']}[]"
-    signature = first + (", " + arguments.format(**formals) if arguments else "") + ")"
+    kind, arguments = _SIGNATURES[name]
+    arguments = arguments.replace("{pointers}", ", ".join(f"double {_TARGETS[result]}" for result in closure.kernels[name]
+                                                          if result in _TARGETS))
+    if not (known(closure, name) or name == "still" or name == "trial" and shared(closure)):
+        arguments = arguments.replace("const double {known}[], ", "").replace("double {known}[], ", "")
+    kind, arguments = (text.replace("double", real) for text in (kind, arguments))
+    function = f"{model.name}_{_FUNCTIONS.get(name, name)}"
+    first = f"const {real} {formals['p']}[]"
+    signature = f"static {kind} {function}({first}, {arguments.format(**formals)})" if arguments else f"static {kind} {function}({first})"
     taken = {*spelling.names.used, *formals.values()}
-    laid = lay_out(closure, name, spelling, taken, given(closure, name, formals["still"]))
+    laid = lay_out(closure, name, spelling, taken, given(closure, name, formals["known"]))
     lines = [f"/* {line}" if k == 0 else f"   {line}" for k, line in enumerate(comment)]
     lines[-1] += " */"
-    lines += [signature, "{"]
-    lines += _unpack(model, laid, formals, spelling)
-    if f"const {real} {{still}}[]" in arguments and not laid.reads_given:
-        lines.append(f"    (void){formals['still']};")
-    for step in laid.statements:
-        lines += statement(f"const {'int' if step.condition else real} {step.name} = {step.text};", "    ")
-    lines += _results(name, model, laid, formals)
-    lines.append("}")
-    return "\n".join(lines)
+    if len(laid.statements) > parts.WHOLE:
+        read = [formal for formal in ("known", "x", "error_bound") if f"{{{formal}}}" in arguments]
+        before, body = _in_parts(model, laid, formals, read, spelling, function)
+    else:
+        before, body = [], _unpack(model, laid.inputs, formals, spelling)
+        if f"{real} {{known}}[]" in arguments and not laid.reads_given and name != "still" and not (name == "trial" and shared(closure)):
+            body.append(f"    (void){formals['known']};")
+        body += _statements(laid.statements, real)
+    body += _results(name, model, laid, formals)
+    return "\n".join([*before, *lines, signature, "{", *body, "}"])
 
 
-def _unpack(model, laid, formals, spelling):
+def _statements(statements, real):
+    return [line for step in statements
+            for line in statement(f"const {'int' if step.condition else real} {step.name} = {step.text};", "    ")]
+
+
+def _in_parts(model, laid, formals, read, spelling, function):
+    """(lines of functions for the parts of a large kernel, lines that call them and fetch what the results need). read: the
+    formal arguments that are read besides the parameters."""
+    real, array = spelling.real, formals["work"]
+    names = [formals[formal] for formal in ("p", *read)]
+    inputs = [f"const {real} {name}[]" if formal in ("p", "known") else f"{real} {name}" for formal, name in zip(("p", *read), names)]
+    (*groups, last), size = parts.in_parts(laid.statements, tuple(laid.results.values()))
+    before, calls = [f"/* {function}, below, in parts: compilers are slow with long functions. */"], []
+
+    def body(part):
+        lines = _unpack(model, [name for name in laid.inputs if spelling.name(name) in part.words], formals, spelling)
+        lines += [f"    (void){name};" for name in names[1:] if name not in part.words and part is not last]
+        for step, place in part.reads:
+            kind, test = ("int", " > 0.0") if step.condition else (real, "")
+            lines.append(f"    const {kind} {step.name} = {array}[{place}]{test};")
+        return lines + _statements(part.statements, real) + [f"    {array}[{place}] = {step.name};" for step, place in part.keeps]
+
+    for k, part in enumerate(groups, 1):
+        calls.append(f"    {function}_{k}({', '.join([*names, array])});")
+        before += [f"static void {function}_{k}({', '.join([*inputs, f'{real} {array}[]'])})", "{", *body(part), "}", ""]
+    return before, [f"    {real} {array}[{max(1, size)}];", *calls, *body(last)]
+
+
+def _unpack(model, inputs, formals, spelling):
     """The parameters read, by name; what is not used is said to be unused."""
-    read = [(k, parameter.name) for k, parameter in enumerate(model.parameters) if parameter.name in laid.inputs]
+    read = [(k, parameter.name) for k, parameter in enumerate(model.parameters) if parameter.name in inputs]
     lines = []
     for k, parameter in read:
         lines.append(f"    const {spelling.real} {spelling.name(parameter)} = {formals['p']}[{k}];")
@@ -129,8 +165,10 @@ def _results(name, model, laid, formals):
             lines += statement(f"{formals['y']}[{k + 1}] = {text};", "    ")
         elif name in _FLAT:
             lines += statement(f"{formals[_FLAT[name]]}[{k}] = {text};", "    ")
-        else:
+        elif result in _TARGETS:
             lines += statement(f"{_TARGETS[result].format(**formals)} = {text};", "    ")
+        else:
+            lines += statement(f"{formals['known']}[{result.removeprefix('known_')}] = {text};", "    ")
     for formal, read in (("error_bound", "error_bound"), ("x", model.unknown.name)):
         if f"{{{formal}}}" in _SIGNATURES[name][1] and read not in laid.inputs:
             lines.insert(0, f"    (void){formals[formal]};")

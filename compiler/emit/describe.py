@@ -1,6 +1,11 @@
 """The comment above each kernel."""
 
+from rootwright.emit.layout import shared
 from rootwright.emit.text import paragraph
+
+NEAR = {"near_g": "the residual", "near_slope": "its slope", "near_curvature": "its curvature", "near_third": "its third derivative"}
+TRIED = {"g": "the residual as written", "tried_slope": "its slope", "tried_rounding": "bound of its rounding error",
+         "tried_slope_rounding": "the same of the slope", "tried_curvature": "the curvature"}
 
 
 def comments(closure):
@@ -16,8 +21,10 @@ def comments(closure):
         "outside": "True where the parameters are outside what the closure is meant for.",
         "kink": f"True where {switches}.",
         "still": "What depends on the parameters alone, worked out once for a solve.",
-        "curve": "Residual, slope and curvature for a step; the last bits may differ from the form as written.",
-        "trial": "Residual and slope, the bounds of their rounding errors, and the curvature, all at once.",
+        "curve": f"What a step takes: {_among(closure, 'curve', NEAR)}. Forms other than the spec's, whose last bits may "
+                 "differ.",
+        "trial": f"What the certificate of a root takes: {_among(closure, 'trial', TRIED)}."
+                 + (" What the derivatives share with it is left in known." if shared(closure) else ""),
         "guess": f"The first guess of {x}.",
         "start": f"The starting guess of the spec for {x}.",
         "outputs": "The outputs at the root.",
@@ -27,3 +34,7 @@ def comments(closure):
                    f"where d/dQ is the total derivative with respect to a parameter as {x} follows.",
     }
     return {kernel: paragraph(texts[kernel], 104) for kernel in closure.kernels}
+
+
+def _among(closure, kernel, words):
+    return ", ".join(words[result] for result in closure.kernels.get(kernel, ()) if result in words)

@@ -10,7 +10,6 @@ from itertools import count
 from rootwright.calculus.program import CONDITIONS
 from rootwright.operations import OPERATIONS
 
-STILL = ("curve", "trial")      # kernels that take those values
 LONGEST = 96                    # characters of an expression before it is split into statements
 
 # Binding strength in C and in Python alike.
@@ -43,11 +42,24 @@ def lay_out(closure, kernel, target, taken, given=None):
     return _Layout(closure, target, taken, given or {}).kernel(closure.kernels[kernel], roots)
 
 
+def known(closure, kernel):
+    """Names of the results that a kernel finds known when it is called, in the order of the array that holds them."""
+    still = closure.kernels.get("still", ())
+    if kernel in ("curve", "trial"):
+        return still
+    if kernel in ("outputs", "jacobian", "hessian"):
+        return still + shared(closure)
+    return ()
+
+
+def shared(closure):
+    """Names of the results that the certificate of a root leaves for the kernels after it."""
+    return tuple(name for name in closure.kernels.get("trial", ()) if name.startswith("known_"))
+
+
 def given(closure, kernel, array):
-    """What a kernel reads from the array of values that do not depend on the unknown: {instruction: text}."""
-    if kernel not in STILL:
-        return {}
-    return {closure.program.results[name]: f"{array}[{k}]" for k, name in enumerate(closure.kernels.get("still", ()))}
+    """What a kernel reads from the array of what is known: {instruction: text}."""
+    return {closure.program.results[name]: f"{array}[{k}]" for k, name in enumerate(known(closure, kernel))}
 
 
 class _Layout:

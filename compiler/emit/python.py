@@ -2,7 +2,7 @@
 
 import math
 
-from rootwright.emit.layout import ATOM, PRODUCT, given, lay_out
+from rootwright.emit.layout import ATOM, PRODUCT, given, known, lay_out, shared
 from rootwright.emit.names import Names, taken_in_python
 from rootwright.emit.text import statement
 from rootwright.operations import OPERATIONS
@@ -28,10 +28,10 @@ class PythonSpelling:
         return OPERATIONS[op].python, strength
 
 
-_ARGUMENTS = {"residual": ("x",), "curve": ("still", "x"), "trial": ("still", "x"), "rounding": ("x",), "kink": ("x", "error_bound"), "outputs": ("x",), "jacobian": ("x",),
-              "hessian": ("x",)}
+_ARGUMENTS = {"residual": ("x",), "curve": ("known", "x"), "trial": ("known", "x"), "rounding": ("x",),
+              "kink": ("x", "error_bound"), "outputs": ("known", "x"), "jacobian": ("known", "x"), "hessian": ("known", "x")}
 _FUNCTIONS = {"jacobian": "_partials", "hessian": "_second_partials"}
-_FORMALS = ("p", "still", "error_bound")
+_FORMALS = ("p", "known", "error_bound")
 
 
 def kernel(closure, name, comment):
@@ -39,15 +39,18 @@ def kernel(closure, name, comment):
     model = closure.model
     spelling = PythonSpelling(model)
     formals = {formal: spelling.names.ours(formal) for formal in _FORMALS} | {"x": spelling.name(model.unknown.name)}
-    wanted = [formal for formal in ("p", *_ARGUMENTS.get(name, ())) if formal != "still" or "still" in closure.kernels]
+    wanted = [formal for formal in ("p", *_ARGUMENTS.get(name, ())) if formal != "known" or known(closure, name) or name == "trial" and shared(closure)]
     arguments = ", ".join(formals[formal] for formal in wanted)
-    laid = lay_out(closure, name, spelling, {*spelling.names.used, *formals.values()}, given(closure, name, formals["still"]))
+    laid = lay_out(closure, name, spelling, {*spelling.names.used, *formals.values()}, given(closure, name, formals["known"]))
     lines = [f"def {_FUNCTIONS.get(name, '_' + name)}({arguments}):"]
     lines += [f"    # {line}" for line in comment]
     lines += _unpack(model, laid, formals, spelling)
     for step in laid.statements:
         lines += _statement(f"{step.name} = ", step.text)
-    values = list(laid.results.values())
+    values = [text for result, text in laid.results.items() if name != "trial" or result not in shared(closure)]
+    if name == "trial":
+        for result in shared(closure):
+            lines += _statement(f"{formals['known']}[{result.removeprefix('known_')}] = ", laid.results[result])
     if name in ("outside", "kink", "start", "guess"):
         lines += _statement("return ", values[0])
     elif name == "jacobian":

@@ -2,10 +2,17 @@
 
 import csv
 from concurrent.futures import ProcessPoolExecutor
+from dataclasses import replace
 
+from rootwright.binding.build import BuildFailed, NoCompiler
+from rootwright.binding.module import load
 from rootwright.calculus.sampling import sample
+from rootwright.emit.assemble import assemble
 from rootwright.evidence.contradictions import contradictions
-from rootwright.proof.certificate import CLAIMS
+from rootwright.plan.choose import choose
+from rootwright.plan.plan import PLAIN
+from rootwright.proof.certificate import CLAIMS, dump
+from rootwright.proof.promise import promise
 from rootwright.proof.prove import BOXES, prove
 from rootwright.proof.witness import middle
 
@@ -13,12 +20,25 @@ SAMPLED = 100                       # solves that tell the most iterations seen
 _SHORT = {"proved": "proved", "refuted": "REFUTED"}
 
 
-def certify(closure, module, boxes=BOXES, seconds=None, progress=None):
-    """(Certificate of a Closure, contradictions of its loaded module, which also tells the most iterations of a sample)."""
-    solved = [module.solve(list(point.values())) for point in sample(closure, SAMPLED)]
+def certify(closure, boxes=BOXES, seconds=None, progress=None):
+    """(Certificate of a Closure, contradictions of the module that would be emitted with it).
+
+    The most iterations of a sample are those of the safeguarded solver alone: a plan rests on the certificate.
+    """
+    plain = _built(closure, PLAIN)
+    solved = [plain.solve(list(point.values())) for point in sample(closure, SAMPLED)]
     seen = max((point.iterations for point in solved if point.status >= 0), default=None)
     certificate = prove(closure, boxes=boxes, seconds=seconds, progress=progress, seen=seen)
-    return certificate, contradictions(closure, module, certificate)
+    promised = replace(closure, promise=promise(dump(certificate), closure.model))
+    return certificate, contradictions(closure, _built(promised, choose(promised)), certificate)
+
+
+def _built(closure, plan):
+    """The loaded module in C, or in Python where C cannot be built."""
+    try:
+        return load(closure, assemble(closure, "c", plan), "c")
+    except (NoCompiler, BuildFailed):
+        return load(closure, assemble(closure, "python", plan), "python")
 
 
 def in_processes(work, jobs, workers):

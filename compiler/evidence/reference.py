@@ -280,17 +280,17 @@ class Differences:
     def _results(self, place):
         """Balls of the unknown and the outputs at a place near the root, or None where they are undefined."""
         x = self.x
-        for _ in range(12):
-            g = place.residual(x, FINE) - self.level
-            if not g.is_finite():
+        error = flint.arb("inf")
+        fine, enough = (self.size * flint.arb(2) ** (bits - FINE) for bits in (40, 100))
+        for _ in range(13):
+            before, away = error, (place.residual(x, FINE) - self.level) / self.slope
+            if not away.is_finite():
                 return None
-            step = (g / self.slope).mid()
-            x = (x - step).mid()
-            if abs(step) <= self.size * flint.arb(2) ** (40 - FINE):
+            error = 2 * away.abs_upper()
+            if error <= fine or error <= enough and 2 * error > before:
                 break
-        g = place.residual(x, FINE) - self.level
-        error = 2 * (g / self.slope).abs_upper()
-        if not (error.is_finite() and error <= self.size * flint.arb(2) ** (100 - FINE)):
+            x = (x - away).mid()
+        if not error <= enough:
             return None
         around = x + flint.arb(0, error)
         values = {self.model.unknown.name: around}

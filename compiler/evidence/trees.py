@@ -52,6 +52,7 @@ class Trees:
             self.outputs[output.name] = self.names[output.name] = self.add(output.expression)
         self._orders = {}
         self._constants = {}
+        self._moving = {}
 
     def add(self, expression):
         """Steps of an expression over the declared names; returns the number of its last step."""
@@ -106,6 +107,15 @@ class Trees:
                                          for kind in (CONSTANT, FIXED, MOVING))
         return self._orders[target]
 
+    def moving(self, target):
+        """The steps of a target that move with the unknown, in order: (step, function, first argument, second or None,
+        all of them where there are more)."""
+        if target not in self._moving:
+            self._moving[target] = [
+                (k, step.apply, step.args[0], step.args[1] if len(step.args) > 1 else None, step.args[2:] and step.args)
+                for k in self.order(target)[MOVING] for step in [self.steps[k]]]
+        return self._moving[target]
+
     def constants(self, target, bits):
         """Values of the constant steps of a target at a precision, worked out once."""
         known = self._constants.setdefault(bits, {})
@@ -140,12 +150,12 @@ class Place:
                     values[self.trees.names[name]] = value
                 for k in self.trees.order(target)[FIXED]:
                     values[k] = run(self.trees.steps[k], values)
-                moving = [(k, self.trees.steps[k]) for k in self.trees.order(target)[MOVING]]
-                self._fixed[target, bits] = values, [(k, step.apply, step.args) for k, step in moving]
-            values, moving = self._fixed[target, bits]
+                self._fixed[target, bits] = values
+            values = self._fixed[target, bits]
             values[self.trees.unknown] = x
-            for k, apply, args in moving:
-                values[k] = apply(*[values[arg] for arg in args])
+            for k, apply, a, b, more in self.trees.moving(target):       # nearly all of the time of `verify` is spent here
+                values[k] = apply(*[values[arg] for arg in more]) if more else \
+                    apply(values[a]) if b is None else apply(values[a], values[b])
             return values
 
     def value(self, target, x, bits):

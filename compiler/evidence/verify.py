@@ -22,6 +22,7 @@ from rootwright.evidence.points import choose, exact, in_range, published
 from rootwright.evidence.reference import FINE, NotSettled, Reference
 from rootwright.evidence.report import Finding, Measure, Report, Value, render, to_json
 from rootwright.evidence.second_order import SecondOrder
+from rootwright.plan.choose import choose as choose_plan
 
 __all__ = ["hold", "modules", "render", "to_json", "verify"]
 
@@ -41,12 +42,12 @@ def verify(closure, points=200, seed=1, progress=None):
 
 def modules(closure):
     """({target: module}, notes) of what can be built here."""
-    built, notes = {}, []
+    built, notes, plan = {}, [], choose_plan(closure)
     try:
-        built["c"] = load(closure, assemble(closure, "c"), "c")
+        built["c"] = load(closure, assemble(closure, "c", plan), "c")
     except NoCompiler as error:
         notes.append(f"the C module is left out: {error}")
-    built["python"] = load(closure, assemble(closure, "python"), "python")
+    built["python"] = load(closure, assemble(closure, "python", plan), "python")
     return built, notes
 
 

@@ -1,36 +1,42 @@
-"""A Closure to its Plan: whether the module tries a short way to the root before the safeguarded solver, and from where.
+"""A Closure to its Plan: whether the module tries a short way to the root before the safeguarded solver, and which one.
 
-The plan rests on three things: whether the signs at the ends of the bracket are proved to differ over the whole
-operating range, so that the ends need no evaluation; the convergence measured from every candidate start over sampled
-points of it; and counts of operations.
+The plan rests on three things: what is proved of the operating range (the signs at the ends of the bracket, the size of the
+slope), so that no solve has to look at it; the convergence of every candidate, a start with a number of steps of some
+method, measured over sampled points; and counts of operations.
 """
 
-import math
 from dataclasses import dataclass, replace
-from fractions import Fraction
 
 import numpy as np
 
+from rootwright.calculus.closure import running
+from rootwright.calculus.differentiate import partials
+from rootwright.calculus.magnitude import Magnitudes
 from rootwright.calculus.precision import SINGLE
 from rootwright.calculus.program import Graph, Program, needed
-from rootwright.plan.facts import computed_finite, domain, ends_differ, least_rise
-from rootwright.plan.fit import MOST_TERMS, columns, coordinates, exponents, fit, horner, polynomial
-from rootwright.plan.forms import constants_of, quick, still
-from rootwright.plan.measure import Range, depend_on, effort, mean
-from rootwright.plan.plan import TRIALS, Plan
+from rootwright.plan import facts
+from rootwright.plan.forms import Quick, constants_of, worth_keeping
+from rootwright.plan.measure import Range, depend_on, effort
+from rootwright.plan.plan import METHODS, Plan
+from rootwright.plan.starts import starts
 
 _TRIAL = ("g", "slope", "rounding", "slope_rounding", "curvature")
-_CURVE = ("g", "slope", "curvature")
 LARGEST = 1200              # instructions of a certificate beyond which the module keeps to one solver
-_PLAIN = 6.0                # evaluations, in trials, that the plain solver is taken to need
-_MARGIN = 0.9               # a dearer guess must save this much
+_PLAIN = 6.0                # evaluations, in certificates, that the plain solver is taken to need
+_STEP = 12.0                # effort of a step besides its evaluation
+_AGAIN = 1.5                # certificates that one more counts for: the processor did not expect it
+_MARGIN = 0.98              # a dearer way must save this much
 
 
 @dataclass(frozen=True)
-class _Candidate:
-    name: str
-    x: np.ndarray                   # starts at the measured points
-    node: int
+class _Way:
+    """One candidate, with what it costs in the mean and how often it comes to nothing."""
+    start: object
+    method: str
+    steps: int
+    cost: float
+    spent: float
+    missed: float
 
 
 def choose(closure):
@@ -48,132 +54,121 @@ def _choose(closure):
     program = closure.program
     if len(needed(program.instructions, [program.results[name] for name in _TRIAL])) > LARGEST:
         return _plain("the residual is so large that a short way would double the size of the module")
-    measured = Range(closure)
+    forms = _Forms(closure)
+    measured = Range(closure, forms.graph)
     if measured.size < 8:
         return _plain("too few sampled points of the operating range have a root")
-    graph = _reopened(closure)
-    trial = effort(closure.program.instructions, [closure.program.results[name] for name in _TRIAL])
-    best, figures = None, None
-    for candidate in _candidates(measured, graph):
-        spent = measured.trials(candidate.x)
-        missed = float(np.mean(np.isinf(spent)))
-        trials = mean(np.where(np.isinf(spent), TRIALS + _PLAIN, spent).tolist())
-        cost = trial * trials + effort(graph.instructions, [candidate.node], _known(closure))
-        if best is None or cost < _MARGIN * figures[0]:
-            best, figures = candidate, (cost, trials, missed)
-    cost, trials, missed = figures
-    if cost > _PLAIN * trial or missed > 0.25:
-        return _plain(f"no start came close enough: the best, {best.name}, took {trials:.2g} evaluations and missed "
-                      f"{100.0 * missed:.3g} % of {measured.size} sampled points")
-    known, least = _ends(closure)
-    if known == "evaluated":
+    way = _best(measured, forms)
+    worth = _PLAIN * forms.trial_effort
+    if way.cost > worth or way.missed > 0.25:
+        return _plain(f"no start came close enough: the best, {way.start.name}, took {way.spent:.2g} evaluations and missed "
+                      f"{100.0 * way.missed:.3g} % of {measured.size} sampled points")
+    known = facts.find(closure)
+    if known.ends == "evaluated":
         if unknown.open_lower or unknown.open_upper:
             return _plain("the signs beside an open end are not proved to differ")
-        cost += 2.0 * effort(closure.program.instructions, [closure.program.results["g"]])
-        if cost > _PLAIN * trial:
+        if way.cost + 2.0 * effort(program.instructions, [program.results["g"]]) > worth:
             return _plain("the residual at both ends and a short way would take more than the safeguarded solver")
-    why = (f"start: {best.name}; Halley's steps, {trials:.3g} evaluations in the mean of {measured.size} sampled points"
-           + (f", {100.0 * missed:.2g} % left to the plain solver" if missed else ""),
-           _ENDS[known].format(least=least))
-    return Plan(_with_kernels(closure, graph, best.node), known, best.name, why, least)
+    missed = f", {100.0 * way.missed:.2g} % left to the plain solver" if way.missed else ""
+    steps = f"{way.steps} step{'s' if way.steps > 1 else ''} of {METHODS[way.method]}" if way.steps else "no step before the certificate"
+    why = (f"start: {way.start.name}; {steps}; {way.spent:.3g} evaluations in the mean of {measured.size} sampled points{missed}",
+           *known.why)
+    return Plan(forms.planned(way, known.sure), why, known.ends, way.method, way.steps, known.least_rise, known.sure)
 
 
 def _plain(reason):
-    return Plan(None, "evaluated", "", (f"plain: {reason}",))
+    return Plan(None, (f"plain: {reason}",))
 
 
-def _known(closure):
-    """What the module works out anyhow before it starts."""
-    program = closure.program
-    return set(needed(program.instructions, [program.results["lower"], program.results["upper"]]))
+def _best(measured, forms):
+    """The way with the least effort in the mean."""
+    best = None
+    for start in starts(measured, forms.graph):
+        first = effort(forms.graph.instructions, [start.node], forms.ends)
+        if best is not None and first + forms.trial_effort > best.cost:
+            continue
+        for method in METHODS:
+            for steps, x in enumerate(measured.walk(start.x, method, forms.curve(method))):
+                way = first + steps * forms.step_effort[method]
+                if best is not None and way + _STEP + forms.trial_effort > best.cost:
+                    break
+                if steps == 0 and method != "newton":
+                    continue
+                certificates = measured.certificates(x, forms.author)
+                missed = np.isinf(certificates)
+                certificates = float(np.mean(np.where(missed, _PLAIN + 3.0, 1.0 + _AGAIN * (certificates - 1.0))))
+                cost = way + certificates * (_STEP + forms.trial_effort)
+                if best is None or cost < _MARGIN * best.cost:
+                    best = _Way(start, method, steps, cost, steps + certificates, float(np.mean(missed)))
+    return best
 
 
-def _ends(closure):
-    """(what is known of the signs at the ends, bound of the rise)."""
-    charts = domain(closure)
-    if charts is None or not computed_finite(charts, closure):
-        return "evaluated", 0.0
-    if closure.promise is not None and "exists" in closure.promise.proved:
-        return "proved", 0.0
-    least = least_rise(charts)
-    if ends_differ(charts):
-        return "proved", least
-    return ("steep", least) if least > 0.0 else ("evaluated", 0.0)
+def _rounding(graph, closure):
+    ranges = dict(zip((parameter.name for parameter in closure.model.parameters), closure.ranges))
+    magnitudes = Magnitudes(graph, ranges)
+    places = [magnitudes.of(closure.program.results[end]) for end in ("lower", "upper")]
+    return running(graph, ranges, closure.model.unknown.name, places)
 
 
-_ENDS = {
-    "proved": "ends: signs proved to differ over the operating range; not evaluated",
-    "steep": "ends: not evaluated; the residual is proved monotone over the operating range, and rises by {least:.3g} at least "
-             "from end to end",
-    "evaluated": "ends: evaluated first, since no short proof shows that their signs differ",
-}
+class _Forms:
+    """The closure's program, reopened, with the forms that the short way computes."""
 
+    def __init__(self, closure):
+        self.closure, program = closure, closure.program
+        self.graph = graph = Graph(labels=dict(program.labels), constants=dict(closure.constants))
+        for instruction in program.instructions:
+            graph.enter(instruction.op, instruction.args, instruction.value)
+        self.results = program.results
+        self.unknown = graph.input(closure.model.unknown.name)
+        self.author = [self.results[name] for name in _TRIAL]
+        self.ends = set(needed(graph.instructions, [self.results["lower"], self.results["upper"]]))
+        self.rounding = _rounding(graph, closure)
+        self.steps = Quick(graph, self._moving(), self.rounding.magnitudes, rough=True)
+        third, = partials(graph, self.results["curvature"], [self.unknown])
+        self.near = self.steps([self.results["g"], self.results["slope"], self.results["curvature"], third])
+        self.trial_effort = effort(graph.instructions, self.author)
+        self.step_effort = {method: self._step_effort(method) for method in METHODS}
 
-def _candidates(measured, graph):
-    """Starts, cheap ones first: the author's, shares of the bracket, fits."""
-    program = measured.program
-    lower, upper = program.results["lower"], program.results["upper"]
-    width = measured.upper - measured.lower
-    if "start" in measured.closure.kernels:
-        yield _Candidate("the author's", measured._column("start"), program.results["start"])
-    for eighths in (4, 2, 6, 1, 7):
-        node = graph.add(lower, graph.mul(graph.number(Fraction(eighths, 8)), graph.sub(upper, lower)))
-        name = "the middle of the bracket" if eighths == 4 else f"{eighths}/8 of the bracket from its lower end"
-        yield _Candidate(name, measured.lower + eighths / 8.0 * width, node)
-    variables = coordinates(measured)
-    values = columns(measured, variables)
-    nodes = [_variable(graph, *variable) for variable in variables]
-    for degree in (1, 2, 3, 4):
-        powers = exponents(len(variables), degree)
-        if len(powers) > MOST_TERMS or 2 * len(powers) > measured.size or not variables:
-            return
-        for name, target, back, finish in _targets(measured, graph, lower, upper):
-            coefficients = fit(values, powers, target)
-            if coefficients is None:
-                continue
-            guess = back(polynomial(values, powers, coefficients))
-            terms = {power: c for power, c in zip(powers, coefficients) if c}
-            yield _Candidate(f"a polynomial of degree {degree} fitted to {name}", guess,
-                             finish(horner(graph, nodes, terms)))
+    def _moving(self):
+        return depend_on(self.graph.instructions, {self.unknown})
 
+    def curve(self, method):
+        """Nodes of what a step takes."""
+        return self.near[:2 + list(METHODS).index(method)]
 
-def _targets(measured, graph, lower, upper):
-    """(what is fitted, its values, the way back to the root in arrays, and in the graph)."""
-    low, width, root = measured.lower, measured.upper - measured.lower, measured.root
-    yield "the root", root, lambda v: v, lambda node: node
-    if not (np.ptp(low) == 0.0 and np.ptp(width) == 0.0):
-        yield ("the root's share of the bracket", (root - low) / width, lambda v: low + v * width,
-               lambda node: graph.add(lower, graph.mul(node, graph.sub(upper, lower))))
-    if root.min() > 0.0 and root.max() > 4.0 * root.min():
-        yield ("the logarithm of the root", np.array([math.log(v) for v in root.tolist()]),
-               lambda v: np.array([math.exp(min(u, 700.0)) for u in v.tolist()]), graph.exp)
+    def _step_effort(self, method):
+        """Effort of a step's evaluation, without what is worked out once."""
+        nodes = self.curve(method)
+        still = set(needed(self.graph.instructions, nodes)) - self._moving()
+        return _STEP + effort(self.graph.instructions, nodes, still)
 
+    def planned(self, way, sure):
+        """The Closure with the kernels of the short way; sure: the certificate needs no look at the slope's error and change."""
+        graph, closure, results = self.graph, self.closure, dict(self.results)
+        after = [name for kernel in ("outputs", "jacobian", "hessian") for name in closure.kernels.get(kernel, ())]
+        forms = Quick(graph, self._moving(), self.rounding.magnitudes,
+                      [results["g"], *(results[name] for name in closure.kernels.get("outputs", ()))])
+        slope, curvature = forms([results["slope"], results["curvature"]])
+        bounds = forms([self.rounding.bound(results["g"]), self.rounding.bound(slope)])
+        tried = {"g": results["g"], "tried_slope": slope, "tried_rounding": bounds[0]}
+        if not sure:
+            tried |= {"tried_slope_rounding": bounds[1], "tried_curvature": curvature}
+        near = dict(zip(("near_g", "near_slope", "near_curvature", "near_third"), self.curve(way.method) if way.steps else ()))
+        results |= tried | near | {"guess": way.start.node} | dict(zip(after, forms([results[name] for name in after])))
 
-def _variable(graph, name, logarithmic, scale, shift):
-    node = graph.input(name)
-    scaled = graph.mul(graph.number(Fraction(repr(scale))), graph.log(node) if logarithmic else node)
-    return graph.add(scaled, graph.number(Fraction(repr(shift))))
-
-
-def _reopened(closure):
-    """A Graph that holds the closure's program, to enter more."""
-    graph = Graph(labels=dict(closure.program.labels), constants=dict(closure.constants))
-    for instruction in closure.program.instructions:
-        graph.enter(instruction.op, instruction.args, instruction.value)
-    return graph
-
-
-def _with_kernels(closure, graph, guess):
-    """The Closure with the kernels of the short way."""
-    first, results = len(closure.program.instructions), closure.program.results
-    moving = depend_on(graph.instructions, {graph.input(closure.model.unknown.name)})
-    near = quick(graph, [results[name] for name in _CURVE], moving)
-    moving = depend_on(graph.instructions, {graph.input(closure.model.unknown.name)})
-    kept = still(graph, [*near, *(results[name] for name in _TRIAL)], moving)
-    named = {"guess": guess} | {f"near_{name}": node for name, node in zip(_CURVE, near)} \
-        | {f"still_{k}": node for k, node in enumerate(kept)}
-    program = Program(tuple(graph.instructions), dict(graph.labels), results | named)
-    kernels = closure.kernels | {"guess": ("guess",), "curve": tuple(f"near_{name}" for name in _CURVE), "trial": _TRIAL}
-    if kept:
-        kernels["still"] = tuple(f"still_{k}" for k in range(len(kept)))
-    return replace(closure, program=program, kernels=kernels, constants=constants_of(graph, first, closure.constants))
+        moving, used = self._moving(), [*tried.values(), *near.values()]
+        later = needed(graph.instructions, [results[name] for name in after])
+        still = worth_keeping(graph, [*needed(graph.instructions, used), *later],
+                              {node for node in range(len(graph.instructions)) if node not in moving})
+        worked = set(needed(graph.instructions, tried.values(), still)) & moving
+        shared = worth_keeping(graph, needed(graph.instructions, [results[name] for name in after], still), worked)
+        names = [f"known_{k}" for k in range(len(still) + len(shared))]
+        results |= dict(zip(names, [*still, *shared]))
+        kernels = closure.kernels | {"guess": ("guess",), "trial": (*tried, *names[len(still):])}
+        if near:
+            kernels["curve"] = tuple(near)
+        if still:
+            kernels["still"] = tuple(names[:len(still)])
+        program = Program(tuple(graph.instructions), dict(graph.labels), results)
+        return replace(closure, program=program, kernels=kernels,
+                       constants=constants_of(graph, len(closure.program.instructions), closure.constants))

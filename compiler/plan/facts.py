@@ -1,15 +1,53 @@
 """What short proofs in interval arithmetic show for the whole operating range, so that no solve has to look at it."""
 
+from dataclasses import dataclass
+
 import numpy as np
 
 from rootwright.calculus.program import needed
 from rootwright.proof.crew import Crew
-from rootwright.proof.numbers import doubles_are_finite
+from rootwright.proof.numbers import doubles_are_finite, slope_is_sure
 from rootwright.proof.search import outside
 from rootwright.proof.settle import Domain, Limit, Outcome, search_ends
 
-BOXES = 200                 # that either proof may take, and one wave more
+BOXES = 200                 # that a proof may take, and one wave more
+FEW = 50                    # the same of the costly one of the signs at the ends
 LARGEST = 600               # operations of a residual beyond which neither is tried
+
+
+@dataclass(frozen=True)
+class Facts:
+    """ends: what is known of the signs there, "proved", "steep" or "evaluated"; sure: as `proof.numbers.slope_is_sure`; why: in words."""
+    ends: str
+    least_rise: float
+    sure: bool
+    why: tuple[str, ...]
+
+
+def find(closure):
+    """The Facts of a Closure."""
+    promised = () if closure.promise is None else closure.promise.computed
+    if "exists" in promised:
+        return Facts("proved", 0.0, "slope" in promised, (_ENDS["proved"], *(_SURE,)*("slope" in promised)))
+    charts = domain(closure)
+    if charts is None or not computed_finite(charts, closure):
+        return Facts("evaluated", 0.0, False, (_ENDS["evaluated"],))
+    sure = slope_is_sure(charts, closure, Limit(BOXES), BOXES)
+    why = (_SURE,) if sure else ()
+    if ends_differ(charts):
+        return Facts("proved", 0.0, sure, (_ENDS["proved"], *why))
+    least = least_rise(charts)
+    ends = "steep" if least > 0.0 else "evaluated"
+    return Facts(ends, least, sure, (_ENDS[ends].format(least=least), *why))
+
+
+_SURE = "slope: proved to be far from 0 and right over the operating range; not looked at"
+_ENDS = {
+    "proved": "ends: signs proved to differ over the operating range; not evaluated",
+    "steep": "ends: not evaluated; the residual is proved monotone over the operating range, and rises by {least:.3g} at least "
+             "from end to end",
+    "evaluated": "ends: evaluated first, since no short proof shows that their signs differ",
+}
 
 
 def domain(closure):
@@ -30,7 +68,7 @@ def ends_differ(charts):
     """True if the residual has different signs at (next to open) ends, or is 0 at a closed one, everywhere in the range."""
     outcome = Outcome()
     with Crew(charts.judges()) as crew:
-        search_ends(charts, crew, Limit(BOXES), BOXES, outcome)
+        search_ends(charts, crew, Limit(FEW), FEW, outcome)
     return not outcome.open
 
 

@@ -23,26 +23,29 @@ def exponents(count, degree):
     return found
 
 
-def coordinates(measured):
-    """[(name, logarithmic, scale, shift)]: the variable is scale*p + shift, or scale*log(p) + shift. Those without a range to speak of are left out."""
+def coordinates(measured, bent=False):
+    """[(name, shape, scale, shift)]: the variable is scale*f(p) + shift, f by shape: "" as it is, "log", "sqrt".
+
+    A log spread asks for the logarithm; bent asks for the square root of the other parameters that come down to 0. Parameters
+    without a range to speak of are left out.
+    """
     found = []
     for parameter, (low, high) in zip(measured.closure.model.parameters, measured.closure.ranges):
-        logarithmic = parameter.spread == "log"
-        a, b = (math.log(low), math.log(high)) if logarithmic else (low, high)
+        shape = "log" if parameter.spread == "log" else "sqrt" if bent and 0.0 <= low <= 0.05 * high else ""
+        a, b = (float(_BENT[shape](end)) for end in (low, high))
         if 1e-100 < b - a < 1e100 and max(abs(a), abs(b)) < 1e10 * (b - a):
             scale = _short(2.0 / (b - a))
-            found.append((parameter.name, logarithmic, scale, _short(-scale * 0.5 * (a + b))))
+            found.append((parameter.name, shape, scale, _short(-scale * 0.5 * (a + b))))
     return found
+
+
+_BENT = {"": float, "log": math.log, "sqrt": math.sqrt}
 
 
 def columns(measured, variables):
     """Values of the variables at the points, arrays."""
-    values = []
-    for name, logarithmic, scale, shift in variables:
-        p = measured.inputs[name]
-        u = np.array([math.log(v) for v in p.tolist()]) if logarithmic else p
-        values.append(scale * u + shift)
-    return values
+    return [scale * np.array([_BENT[shape](p) for p in measured.inputs[name].tolist()]) + shift
+            for name, shape, scale, shift in variables]
 
 
 def fit(values, powers, target):

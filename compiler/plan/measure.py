@@ -11,17 +11,18 @@ from rootwright.plan.arrays import Arrays
 from rootwright.plan.plan import TRIALS
 
 POINTS = 160
+MOST_STEPS = 4
 
 
 class Range:
     """Points of the operating range with their brackets and roots: arrays, one entry a point.
 
-    `inputs` maps parameters to arrays, `lower`, `upper` and `root` belong to the unknown. Points at which no change of
+    The graph holds the closure's program and may have grown. `inputs` maps parameters to arrays, `lower`, `upper` and `root` belong to the unknown. Points at which no change of
     sign was found between the ends are left out.
     """
 
-    def __init__(self, closure):
-        self.closure, self.program = closure, closure.program
+    def __init__(self, closure, graph):
+        self.closure, self.program, self.instructions = closure, closure.program, graph.instructions
         unknown = closure.model.unknown
         self.unknown = unknown.name
         points = [point for point in sample(closure, 2 * POINTS)
@@ -30,11 +31,12 @@ class Range:
         self.size = len(points)
         inputs = {closure.program.instructions[node].value: node for node in range(len(self.program.instructions))
                   if self.program.instructions[node].op == "input"}
-        self.moving = depend_on(self.program.instructions, {inputs.get(self.unknown), inputs.get("error_bound")})
-        self.lower, self.upper = self._column("lower"), self._column("upper")
+        self.moving = depend_on(self.instructions, {inputs.get(self.unknown), inputs.get("error_bound")})
+        self.lower, self.upper = self.column("lower"), self.column("upper")
         self._settle(self._roots(unknown))
 
-    def _column(self, result):
+    def column(self, result):
+        """A result that does not depend on the unknown, at the points."""
         with np.errstate(all="ignore"):
             values = evaluate(self.program.instructions, [self.program.results[result]], Arrays(), self.inputs)
         return np.broadcast_to(values[self.program.results[result]], (self.size,)).astype(float)
@@ -42,7 +44,7 @@ class Range:
     def at(self, nodes, x):
         """Values of the nodes at the points with the unknown x, as arrays."""
         with np.errstate(all="ignore"):
-            values = evaluate(self.program.instructions, nodes, Arrays(), self.inputs | {self.unknown: x}, dict(self.still))
+            values = evaluate(self.instructions, nodes, Arrays(), self.inputs | {self.unknown: x}, dict(self.still))
         return [np.broadcast_to(values[node], (self.size,)) for node in nodes]
 
     @property
@@ -80,35 +82,50 @@ class Range:
         self.size = int(keep.sum())
         self.__dict__.pop("_still", None)
 
-    def trials(self, x):
-        """Evaluations that the short way takes from the starts x; infinite where it gives up. As in runtime/approach."""
-        names = ("g", "slope", "rounding", "slope_rounding", "curvature")
-        nodes = [self.program.results[name] for name in names]
-        inside = (self.lower < x) & (x < self.upper)
-        x = np.where(inside, x, 0.5 * self.lower + 0.5 * self.upper)
-        spent = np.full(self.size, np.inf)
-        walking = np.ones(self.size, bool)
-        closing, longest = np.zeros(self.size, bool), np.full(self.size, np.inf)
-        for k in range(TRIALS):
-            walking &= (self.lower < x) & (x < self.upper)
-            if not walking.any():
-                break
-            g, slope, bound, slope_rounding, curvature = self.at(nodes, x)
+    def walk(self, x, method, curve):
+        """Points that the short way comes to from the starts x: at once, after one step, after two, ... As in runtime/approach.
+
+        curve: nodes of the residual, the slope and, as far as the method takes them, the second and third derivative.
+        """
+        x = self._inside(0.5 * self.lower + 0.5 * self.upper, x)
+        yield x
+        for _ in range(MOST_STEPS):
+            g, slope, *higher = self.at(curve, x)
             with np.errstate(all="ignore"):
-                step = -g / slope
-                bend = curvature * step / slope
-                walking &= (np.abs(step) <= longest) & (np.abs(bend) <= 1.0)
-                zero = np.abs(g) <= bound
-                done = walking & zero & (closing | (np.abs(step) <= 2.0 ** -50 * np.abs(x)))
+                if method == "newton":
+                    step = g / slope
+                else:
+                    product, square = g * higher[0], slope * slope
+                    step = 2.0 * g * slope / (2.0 * square - product) if method == "halley" else \
+                        g * (6.0 * square - 3.0 * product) / (6.0 * slope * (square - product) + g * g * higher[1])
+                x = self._inside(x, x - step)
+            yield x
+
+    def _inside(self, last, following):
+        with np.errstate(all="ignore"):
+            return np.where(following > self.lower, np.where(following < self.upper, following, 0.5 * last + 0.5 * self.upper),
+                            0.5 * last + 0.5 * self.lower)
+
+    def certificates(self, x, tried):
+        """How many certificates each point takes from x on, 1 to TRIALS; infinite where it is left to the plain solver.
+
+        tried: nodes of the residual as written, its slope, the bounds of their rounding errors and the curvature.
+        """
+        spent = np.full(self.size, np.inf)
+        waiting = np.ones(self.size, bool)
+        for k in range(TRIALS):
+            g, slope, bound, slope_rounding, curvature = self.at(tried, x)
+            with np.errstate(all="ignore"):
                 least = np.abs(slope) - slope_rounding
                 error = (np.abs(g) + bound) / least
-                good = (least > 0.0) & (np.abs(curvature) * error / least <= 0.25)
+                zero = waiting & (np.abs(g) <= bound + np.abs(slope) * (2.0**-53 * np.abs(x)))
+                good = (least > 0.0) & (error > 0.0) & (np.abs(curvature) * error / least <= 0.25)
                 good &= (self.lower < x - 2.0 * error) & (x + 2.0 * error < self.upper)
-                spent[done & good] = k + 1.0
-                walking &= ~done
-                closing = zero | (bend * bend * np.abs(step) <= 2.0 ** -53 * np.abs(x))
-                longest = 0.5 * np.abs(step)
-                x = np.where(walking, x + step / (1.0 + 0.5 * bend), x)
+                spent[zero & good] = k + 1.0
+                waiting &= ~zero
+                x = np.where(waiting, self._inside(x, x - g / slope), x)
+            if not waiting.any():
+                break
         return spent
 
 

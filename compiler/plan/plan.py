@@ -4,24 +4,25 @@ from dataclasses import dataclass
 
 from rootwright.calculus.closure import Closure
 
-TRIALS = 6                  # evaluations of the short way, before a point is left to the plain solver
+TRIALS = 3                  # certificates tried, with a step of Newton's between them, before a point is left to the plain solver
+METHODS = {"newton": "Newton's method", "halley": "Halley's method", "householder": "Householder's method of order 4"}
 
 
 @dataclass(frozen=True)
 class Plan:
-    """`closure` has the kernels `trial` and `guess` besides; None where the plain solver is all there is."""
+    """`closure` has the kernels `guess`, `curve` and `trial` besides; None where the plain solver is all there is."""
     closure: Closure | None
-    ends: str                       # signs there: "proved" to differ, "steep" (follow from `least_rise`), "evaluated"
-    start: str
     why: tuple[str, ...]            # lines for a reader
+    ends: str = "evaluated"         # signs there: "proved" to differ, "steep" (follow from `least_rise`), "evaluated"
+    method: str = "newton"          # a key of METHODS
+    steps: int = 0                  # of it, before the first certificate
     least_rise: float = 0.0         # lower bound of |dg/dt|, t the share of the bracket
-    trials: int = TRIALS
-    option: str = "chosen"          # of `compile --plan`
+    sure: bool = False              # proved over the operating range: no root is flat, the slope is right
 
     @property
     def extra(self):
-        """Evaluations that may go before those of the plain solver: both ends, the steps, two certificates."""
-        return 0 if self.closure is None else 2 * (self.ends == "evaluated") + self.trials + 2
+        """Evaluations that may go before those of the plain solver: both ends, the steps, the certificates, one beside a root."""
+        return 0 if self.closure is None else 2 * (self.ends == "evaluated") + self.steps + TRIALS + (not self.sure)
 
 
-PLAIN = Plan(None, "evaluated", "", (), option="plain")
+PLAIN = Plan(None, ())

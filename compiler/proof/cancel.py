@@ -250,38 +250,46 @@ class Cancelling:
 
     def _factored(self, polynomial, written):
         graph = self.graph
-        if polynomial == 0:
-            return graph.number(0)
-        unit, factors = polynomial.factor()
+        if polynomial.is_constant():
+            return graph.number(_exact(polynomial.leading_coefficient() if polynomial != 0 else 0))
+        used = [index for index, degree in enumerate(polynomial.degrees()) if degree]
+        terms = {tuple(int(exponents[index]) for index in used): value for exponents, value in polynomial.terms()}
+        atoms = [self.nodes[index] for index in used]
+        unit, factors = self._within(len(used)).from_dict(terms).factor()
         result = None
         for factor, multiplicity in factors:
             terms = {tuple(map(int, exponents)): _exact(value) for exponents, value in factor.terms()}
-            part = graph.power(written(terms), graph.number(int(multiplicity)))
+            part = graph.power(written(terms, atoms), graph.number(int(multiplicity)))
             result = part if result is None else graph.mul(result, part)
         unit = _exact(unit)
         return graph.number(unit) if result is None else graph.mul(graph.number(unit), result)
 
-    def _paired(self, terms):
+    @staticmethod
+    def _within(count):
+        """A context of so many generators: factors are found much faster among the few atoms that occur."""
+        return flint.fmpq_mpoly_ctx.get([f"a{k}" for k in range(count)], "lex")
+
+    def _paired(self, terms, atoms):
         """Terms of different signs brought together where they have most in common: a*(b - c) + d for a*b + d - a*c."""
         graph, rest, total = self.graph, dict(sorted(terms.items())), None
         for negative in [term for term, value in rest.items() if value < 0]:
             partners = [(sum(map(min, negative, term)), term) for term, value in rest.items() if value > 0]
             shared, partner = max(partners, default=(0, None))
             if shared:
-                group = self._horner({term: rest.pop(term) for term in (negative, partner)})
+                group = self._horner({term: rest.pop(term) for term in (negative, partner)}, atoms)
                 total = group if total is None else graph.add(total, group)
         for sign in (1, -1):
             part = {term: value for term, value in rest.items() if value * sign > 0}
             if part:
-                total = self._horner(part) if total is None else graph.add(total, self._horner(part))
+                total = self._horner(part, atoms) if total is None else graph.add(total, self._horner(part, atoms))
         return total
 
-    def _horner(self, terms):
+    def _horner(self, terms, atoms):
         """Horner's scheme: what all terms have in common taken out, then the atom of most terms."""
         graph = self.graph
-        counts = [0] * len(self.nodes)
+        counts = [0] * len(atoms)
         for exponents in terms:
-            for index in range(len(self.nodes)):
+            for index in range(len(atoms)):
                 counts[index] += exponents[index] > 0
         best = max(range(len(counts)), key=lambda index: (counts[index], -index), default=None)
         if best is None or not counts[best]:
@@ -294,8 +302,8 @@ class Cancelling:
                 inner[exponents[:best] + (exponents[best] - low,) + exponents[best + 1:]] = value
             else:
                 rest[exponents] = value
-        product = graph.mul(self._horner(inner), graph.power(self.nodes[best], graph.number(low)))
-        return product if not rest else graph.add(product, self._horner(rest))
+        product = graph.mul(self._horner(inner, atoms), graph.power(atoms[best], graph.number(low)))
+        return product if not rest else graph.add(product, self._horner(rest, atoms))
 
 
 def _at_turn(op, turns):

@@ -61,38 +61,71 @@ def doubles_are_finite(domain, closure, limit, boxes=4000):
     program, unknown = closure.program, domain.model.unknown
     if unknown.open_lower or unknown.open_upper:
         return False
-    chart = domain.lower
     names = [name for kernel in ("bracket", "residual", "rounding") for name in closure.kernels[kernel]]
-    roots = [program.results[name] for name in names]
-    order = needed(program.instructions, roots)
+    nodes = needed(program.instructions, [program.results[name] for name in names])
+
+    def holds(low, high):
+        values, fine = enclosures(domain, program, nodes, low, high)
+        for value in values:
+            fine = fine & (value.low >= -_LARGEST) & (value.high <= _LARGEST)
+        for share in (0.0, 1.0):
+            fine &= ~_vanishes(domain, program, *at_share(low, high, share))
+        return fine
+
+    return holds_everywhere(domain, holds, limit, boxes)
+
+
+def slope_is_sure(domain, closure, limit, boxes=4000):
+    """True if all over the brackets of the operating range the slope's rounding error is below 2^-12 of it, and the slope
+    changes by no more of itself within the error of a certified root, which is 2*rounding/|g_x| + 2^-53*|x| at most; here
+    with a factor of two to spare. Then no root that the module finds is flat.
+    """
+    program = closure.program
+    nodes = [program.results[name] for name in ("slope", "rounding", "slope_rounding", "curvature")]
+    nodes.append(next(node for node, instruction in enumerate(program.instructions)
+                      if instruction.op == "input" and instruction.value == domain.model.unknown.name))
+
+    def holds(low, high):
+        (slope, rounding, slope_rounding, curvature, x), fine = enclosures(domain, program, nodes, low, high)
+        least = np.maximum(slope.low, -slope.high)
+        bend = np.maximum(curvature.high, -curvature.low)
+        with np.errstate(all="ignore"):
+            error = 2.0 * rounding.high / least + 2.0**-53 * np.maximum(x.high, -x.low)
+            return fine & (least > 0.0) & (slope_rounding.high < 2.0**-12 * least) & (2.0 * bend * error < 2.0**-12 * least)
+
+    return holds_everywhere(domain, holds, limit, boxes)
+
+
+def holds_everywhere(domain, holds, limit, boxes):
+    """True where holds(low, high), one truth value a box, is true all over the brackets of the operating range, by subdivision."""
     low, high = domain.ranges.low[None, :].copy(), domain.ranges.high[None, :].copy()
     spent = 0
     while len(low) and spent < boxes:
-        now, low, high = (low[:CHUNK], high[:CHUNK]), low[CHUNK:], high[CHUNK:]
+        count = min(limit.wave(np.inf), CHUNK, boxes - spent)
+        if not count:
+            return False
+        now, low, high = (low[:count], high[:count]), low[count:], high[count:]
         spent += len(now[0])
-        limit.take(len(now[0]), "doubles", len(low))
-        bad = ~outside(chart, *now) & ~_finite(domain, program, roots, order, *now)
+        bad = ~outside(domain.lower, *now) & ~holds(*now)
         if bad.any():
             a, b = now[0][bad], now[1][bad]
             first, last, stuck = split(a, b, np.ones(a.shape), domain.ranges.widths(a, b), domain.ranges.logs)
             if stuck.any():
                 return False
             low, high = np.concatenate([low, first]), np.concatenate([high, last])
+        limit.take(len(now[0]), "doubles", len(low), lambda: domain.ranges.settled(low, high))
     return not len(low)
 
 
-def _finite(domain, program, roots, order, low, high):
-    inputs = program_inputs(domain, low, high)
+def enclosures(domain, program, nodes, low, high):
+    """(Intervals of the program's numbers, over the real numbers; truth, one a box, that all of them are defined)."""
     with np.errstate(all="ignore"):
-        values = evaluate(program.instructions, roots, domain.lower.arithmetic, inputs)
+        values = evaluate(program.instructions, nodes, domain.lower.arithmetic, program_inputs(domain, low, high))
+    values = [values[node] for node in nodes if isinstance(values[node], Interval)]
     fine = np.ones(len(low), bool)
-    for node in order:
-        value = values[node]
-        if isinstance(value, Interval):
-            fine &= np.broadcast_to(~np.asarray(value.undefined | (value.low < -_LARGEST) | (value.high > _LARGEST)), fine.shape)
-    for share in (0.0, 1.0):
-        fine &= ~_vanishes(domain, program, *at_share(low, high, share))
-    return fine
+    for value in values:
+        fine &= np.broadcast_to(~np.asarray(value.undefined), fine.shape)
+    return values, fine
 
 
 def _vanishes(domain, program, low, high):

@@ -26,7 +26,8 @@ def promise(text, model):
     if certificate.digest != model.digest:
         raise Foreign("it was made for another content of the spec")
     proved = tuple(claim.name for claim in certificate.claims if claim.verdict == "proved")
-    return Promise(tuple(_lines(certificate)), proved, hashlib.sha256(text.encode("utf-8")).hexdigest())
+    computed = tuple(claim.name for claim in certificate.claims if claim.verdict == claim.doubles == "proved")
+    return Promise(tuple(_lines(certificate)), proved, computed, hashlib.sha256(text.encode("utf-8")).hexdigest())
 
 
 def _lines(certificate, width=94):

@@ -22,7 +22,7 @@ from rootwright.proof.certificate import Certificate, Claim
 from rootwright.proof.crew import Crew
 from rootwright.proof.crossings import refute_divisors, refute_parameter_switch
 from rootwright.proof.flat import refute_slope
-from rootwright.proof.numbers import doubles_are_finite, slope_bound
+from rootwright.proof.numbers import doubles_are_finite, slope_bound, slope_is_sure
 from rootwright.proof.phantoms import drop_phantoms
 from rootwright.proof.ranges import as_ball, exact_ends
 from rootwright.proof.refute import Examiner
@@ -104,7 +104,10 @@ class _Proof:
         witnesses = {} if self.nowhere else self._refutations(set(_NEEDS) - proved)
         sensitivities = sensitivity_bounds(self.plain, self.closure, self.limit) if "slope" in proved else {}
         finite = not self.exact and doubles_are_finite(self.plain, self.closure, self.limit)
-        claims = tuple(self._claim(name, proved, witnesses, slope, sensitivities, finite, seen) for name in _NEEDS)
+        computed = {"defined", "exists", "iterations"} if finite else set()
+        if finite and "slope" in proved and slope_is_sure(self.plain, self.closure, self.limit):
+            computed.add("slope")
+        claims = tuple(self._claim(name, proved, witnesses, slope, sensitivities, computed, seen) for name in _NEEDS)
         return Certificate(self.model.name, self.model.digest,
                            tuple((p.name, p.low.text, p.high.text) for p in self.model.parameters),
                            tuple(condition.text for condition in self.model.require), self._relative(),
@@ -157,7 +160,7 @@ class _Proof:
             for values in points.from_boxes(self.domain, left.low, left.high):
                 yield values, shares
 
-    def _claim(self, name, proved, witnesses, slope, sensitivities, finite, seen):
+    def _claim(self, name, proved, witnesses, slope, sensitivities, computed, seen):
         verdict = "refuted" if name in witnesses else "proved" if name in proved else "open"
         lefts = [left for need in _NEEDS[name] for left in self.outcome.open.get(need, [])]
         reason, numbers, doubles, left_open = "", [], "", 0.0
@@ -178,8 +181,8 @@ class _Proof:
             numbers.append(("limit", float(self.closure.limit)))
             if seen is not None:
                 numbers.append(("seen", float(seen)))
-        if verdict == "proved" and name in ("defined", "exists", "iterations"):
-            doubles = "proved" if finite else "open"
+        if verdict == "proved" and name in ("defined", "exists", "slope", "iterations"):
+            doubles = "proved" if name in computed else "open"
         return Claim(name, verdict, doubles, left_open, reason, witnesses.get(name),
                      self._worst(lefts) if verdict == "open" and not failed else (), tuple(numbers))
 

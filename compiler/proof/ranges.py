@@ -35,6 +35,11 @@ class Ranges:
         """Shares of the range, the unknown left out."""
         return np.prod(self.widths(low, high)[:, :-1], axis=1)
 
+    def settled(self, low, high):
+        """Share of the range, and of the bracket where the boxes span it, that is left by boxes still waiting."""
+        share = np.where(high[:, -1] > low[:, -1], high[:, -1] - low[:, -1], 1.0)
+        return max(0.0, 1.0 - float((self.volume(low, high) * share).sum()))
+
 
 def exact_ends(model):
     """{parameter: (low, high)}: Fractions where the range is rational, else balls of high precision."""

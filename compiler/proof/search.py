@@ -38,6 +38,15 @@ class Inside:
     smear: np.ndarray
 
 
+def unjudged(name, low):
+    """What is known of boxes before the search of this name looks at them: nothing."""
+    size = len(low)
+    no, yes = np.zeros(size, bool), np.ones(size, bool)
+    if name == "ends":
+        return Ends(no, no, no, np.ones(low.shape))
+    return Inside(no, yes, yes, yes, np.zeros(size, int), yes, np.ones(low.shape))
+
+
 def judge_ends(near_lower, near_upper, model, low, high):
     """`near_lower` and `near_upper` are the charts that count t from those ends (the same one for closed ends)."""
     chart = near_lower

@@ -38,7 +38,7 @@ def sensitivity_bounds(domain, closure, limit):
         rest = np.ones(len(low), bool)
         rest[chosen[~stuck]] = False
         spent += int(fresh.sum())
-        limit.take(int(fresh.sum()), "sensitivities", 0)
+        limit.take(int(fresh.sum()), "sensitivities", 0, lambda: spent / _BOXES)
         fresh_bounds = _bounds(domain, closure, names, first, last)
         low, high = np.concatenate([low[rest], first]), np.concatenate([high[rest], last])
         bounds = np.concatenate([bounds[rest], fresh_bounds])

@@ -1,7 +1,8 @@
 """The two searches over the whole operating range: what is settled, what is left, and where."""
 
+import math
 import time
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, fields
 from functools import partial
 
 import numpy as np
@@ -10,7 +11,10 @@ from rootwright.proof.chart import Chart
 from rootwright.proof.crew import WAVE
 from rootwright.proof.functions import ends
 from rootwright.proof.ranges import as_ball, exact_ends, ranges
-from rootwright.proof.search import judge_ends, judge_inside, split
+from rootwright.proof.search import judge_ends, judge_inside, split, unjudged
+
+_FIRST, _FEWEST = 64, 8     # boxes of the first wave and of the shortest, where there is a time
+_SHORT = 0.3                # seconds that a wave should take then
 
 
 @dataclass
@@ -42,19 +46,35 @@ class Outcome:
 
 
 class Limit:
-    """How much work may be done: a number of boxes, and a time that is looked at between waves only."""
+    """How much work may be done: a number of boxes, and a time that is looked at between waves only.
+
+    Where there is a time, waves are kept short enough to be done with soon after it is over. What is found does not depend on their length.
+    """
 
     def __init__(self, boxes, seconds=None, progress=None):
         self.boxes, self.progress = boxes, progress
         self.waves = 0
         self.until = None if seconds is None else time.monotonic() + seconds
         self.spent = 0
+        self._pace, self._since = _FIRST, time.monotonic()
 
-    def take(self, count, stage, waiting):
+    def wave(self, ceiling):
+        """Boxes that the next wave may hold; 0 where a limit is reached."""
+        self._since = time.monotonic()
+        if self.reached(ceiling):
+            return 0
+        length = WAVE if self.until is None else self._pace
+        return math.ceil(min(length, ceiling - self.spent))
+
+    def take(self, count, stage, waiting, settled):
+        """A wave is done; `settled` is a function that tells the share of the work that is."""
         self.spent += count
         self.waves += 1
+        if self.until is not None:
+            used = max(time.monotonic() - self._since, 1e-6)
+            self._pace = int(min(max(count * _SHORT / used, _FEWEST), 2 * self._pace, WAVE))
         if self.progress:
-            self.progress(stage, self.spent, waiting)
+            self.progress(stage, self.spent, waiting, settled())
 
     def reached(self, ceiling):
         return self.spent >= ceiling or self.late()
@@ -97,40 +117,32 @@ def search_ends(domain, crew, limit, ceiling, outcome):
     """Cuts boxes of parameters until the bracket is in order and the signs differ at its ends; fills the outcome."""
     low, high = domain.ranges.low[None, :].copy(), domain.ranges.high[None, :].copy()
     low[:, -1] = high[:, -1] = 0.0
-    kept, beyond = [], 0.0
-    while len(low) and not limit.reached(ceiling):
-        now, low, high = (low[:WAVE], high[:WAVE]), low[WAVE:], high[WAVE:]
-        judged = crew.judge("ends", *now)
-        limit.take(len(now[0]), "ends", len(low))
-        beyond += domain.ranges.volume(*now)[judged.outside].sum()
-        open_ = ~judged.outside & ~(judged.ordered & judged.change)
-        low, high = _append(domain, now, open_, judged.smear, low, high, kept)
+    beyond = 0.0
+
+    def note(judged, _, low, high):
+        nonlocal beyond
+        beyond += domain.ranges.volume(low, high)[judged.outside].sum()
+
+    left = _search(domain, crew, limit, ceiling, "ends", lambda judged: ~judged.outside & ~(judged.ordered & judged.change), note, low, high)
     outcome.inside_range = max(1.0 - beyond, 0.0)
-    low, high = _together(kept, low, high)
-    if len(low):
-        judged = crew.judge("ends", low, high)
-        for claim, good in (("ordered", judged.ordered), ("change", judged.change)):
-            outcome.leave(claim, ~judged.outside & ~good, low, high, 0)
+    for claim in ("ordered", "change"):
+        outcome.leave(claim, ~left.judged.outside & ~getattr(left.judged, claim), left.low, left.high, 0)
 
 
 def search_inside(domain, index, crew, limit, ceiling, outcome, wanted):
     """Cuts boxes of parameters and share until nothing that the claims in `wanted` need is open; fills the outcome."""
-    low, high = domain.whole()
-    kept = []
-    while len(low) and not limit.reached(ceiling):
-        now, low, high = (low[:WAVE], high[:WAVE]), low[WAVE:], high[WAVE:]
-        judged = crew.judge(f"inside {index}", *now)
-        limit.take(len(now[0]), "inside", len(low))
+
+    def open_of(judged):
         needs = needs_of(judged)
-        open_ = np.logical_or.reduce([needs[claim] for claim in wanted])
-        outcome.keep(judged, ~open_, *now, index)
-        low, high = _append(domain, now, open_, judged.smear, low, high, kept, 2.0 ** -160)
-    low, high = _together(kept, low, high)
-    if len(low):
-        judged = crew.judge(f"inside {index}", low, high)
-        for claim, need in needs_of(judged).items():
-            outcome.leave(claim, need, low, high, index)
-        outcome.keep(judged, np.ones(len(low), bool), low, high, index)
+        return np.logical_or.reduce([needs[claim] for claim in wanted])
+
+    def note(judged, done, low, high):
+        outcome.keep(judged, done, low, high, index)
+
+    left = _search(domain, crew, limit, ceiling, f"inside {index}", open_of, note, *domain.whole(), 2.0 ** -160)
+    for claim, need in needs_of(left.judged).items():
+        outcome.leave(claim, need, left.low, left.high, index)
+    outcome.keep(left.judged, np.ones(len(left.low), bool), left.low, left.high, index)
 
 
 def needs_of(judged):
@@ -143,21 +155,54 @@ def needs_of(judged):
             "kink": active & judged.switch}
 
 
-def _together(kept, low, high):
-    parts = [*kept, (low, high)]
-    return np.concatenate([part[0] for part in parts]), np.concatenate([part[1] for part in parts])
+@dataclass
+class _Boxes:
+    """Boxes, and what was found of them: of what they were cut from, where they have not been looked at, which holds of its parts as well."""
+    low: np.ndarray
+    high: np.ndarray
+    judged: object
+
+    def rows(self, at):
+        return _Boxes(self.low[at], self.high[at], _judged(self.judged, lambda part: part[at]))
+
+    def with_(self, other):
+        both = {field.name: np.concatenate([getattr(self.judged, field.name), getattr(other.judged, field.name)])
+                for field in fields(self.judged)}
+        return _Boxes(np.concatenate([self.low, other.low]), np.concatenate([self.high, other.high]), type(self.judged)(**both))
 
 
-def _append(domain, now, open_, smear, low, high, kept, finest=0.0):
-    if not open_.any():
-        return low, high
-    a, b = now[0][open_], now[1][open_]
-    pieces = split(a, b, smear[open_], domain.ranges.widths(a, b), domain.ranges.logs, finest)
-    stuck = pieces[2]
-    if stuck.any():
-        kept.append((a[stuck], b[stuck]))
-    fresh = np.tile(~stuck, 2)
-    return np.concatenate([low, pieces[0][fresh]]), np.concatenate([high, pieces[1][fresh]])
+def _judged(judged, change):
+    return type(judged)(**{field.name: change(getattr(judged, field.name)) for field in fields(judged)})
+
+
+def _search(domain, crew, limit, ceiling, name, open_of, note, low, high, finest=0.0):
+    """Looks at boxes, first come first served, and cuts those where `open_of(judged)` holds; returns what is left when a limit is reached.
+
+    `note(judged, done, low, high)` is told of every wave. Parts of a box wait in its place, so the order does not depend on waves.
+    """
+    waiting = _Boxes(low, high, unjudged(name, low))
+    left = waiting.rows(slice(0, 0))
+    while len(waiting.low):
+        count = limit.wave(ceiling)
+        if not count:
+            break
+        now, waiting = waiting.rows(slice(0, count)), waiting.rows(slice(count, None))
+        now.judged = crew.judge(name, now.low, now.high)
+        open_ = open_of(now.judged)
+        note(now.judged, ~open_, now.low, now.high)
+        parts, stuck = _cut(domain, now.rows(open_), finest)
+        waiting, left = waiting.with_(parts), left.with_(stuck)
+        limit.take(len(now.low), name.split()[0], len(waiting.low), lambda: domain.ranges.settled(waiting.low, waiting.high))
+    return left.with_(waiting)
+
+
+def _cut(domain, boxes, finest):
+    """(halves of boxes, boxes too thin to cut)."""
+    widths = domain.ranges.widths(boxes.low, boxes.high)
+    low, high, stuck = split(boxes.low, boxes.high, boxes.judged.smear, widths, domain.ranges.logs, finest)
+    fresh = np.nonzero(~stuck)[0]
+    halves = np.stack([fresh, fresh + len(stuck)], axis=1).ravel()
+    return _Boxes(low[halves], high[halves], boxes.rows(np.repeat(fresh, 2)).judged), boxes.rows(stuck)
 
 
 def share(domain, lefts, inside_range):

@@ -8,25 +8,33 @@ from importlib import metadata
 
 from rootwright.binding.build import FLAGS, compiler_version, find_compiler
 from rootwright.evidence.bench.build import build
-from rootwright.evidence.bench.goals import goals
+from rootwright.evidence.bench.goals import goals, wrong
 from rootwright.evidence.bench.judge import KEPT, judge
 from rootwright.evidence.bench.measure import processes
 from rootwright.evidence.bench.pitfalls import pitfalls
 from rootwright.evidence.bench.problem import CHECKED, POINTS, pose
-from rootwright.evidence.bench.rows import BASE, LIMIT, ROWS, SOLVE, TAPE, TERMS, solver
+from rootwright.evidence.bench.rows import ADOLC, BASE, LIMIT, PLAIN, ROWS, SOLVE, TAPE, TERMS, solver
 from rootwright.evidence.bench.statistics import ratio, spread
 
-PROCESSES = 5
-SECONDS = 2.0                    # of timing in each process; divided among many specs
+PROCESSES = 5                    # in which a run measures
+SECONDS = (0.5, 3.0)             # of timing in each process: at least, where there are many specs, and at most
+TOGETHER = 6.0                   # ... and so many for all specs, between these
 LIBRARIES = ("numpy", "scipy", "autograd", "jax")
+
+
+def share(specs):
+    """Seconds of timing in each process for one of so many specs."""
+    least, most = SECONDS
+    return max(least, min(most, TOGETHER/specs))
 
 
 class NotMeasured(Exception):
     """There is nothing to measure; the message says why."""
 
 
-def benchmark(closure, seconds=SECONDS, count=PROCESSES, points=POINTS, checked=CHECKED, progress=None):
-    """Facts about a Closure of order 1 or more: every row's time, ratios, errors; see `page.render`.
+def benchmark(closure, plan, crew, seconds=SECONDS[1], points=POINTS, checked=CHECKED, progress=None):
+    """Facts about a Closure of order 1 or more and the Plan of its module, timed by a crew of processes: every row's time,
+    ratios, errors; see `page.render`.
 
     progress is called with a line of text now and then. Raises NoCompiler, BuildFailed, NotMeasured.
     """
@@ -36,25 +44,39 @@ def benchmark(closure, seconds=SECONDS, count=PROCESSES, points=POINTS, checked=
 
     with tempfile.TemporaryDirectory(prefix="rootwright-bench-") as folder:
         say("building the rows in C and C++")
-        built = build(closure, folder)
+        built = build(closure, plan, folder)
         say("certified roots and derivatives")
         problem = pose(closure, solver(built, closure), points, checked)
         if not len(problem.roots):
             raise NotMeasured("no point of the operating range was found at which the reference settles a root")
         judged = judge(problem, built, progress)
-        times = processes(problem, built, count, seconds, progress)
+        times = processes(problem, built, crew, seconds, progress)
         say("where the iterate-through approach goes wrong")
-        wrong = pitfalls(problem, built)
+        lost = pitfalls(problem, built)
     evaluations = judged[SOLVE].counts
     facts = {
         "name": closure.model.name, "title": closure.model.title, "digest": closure.model.digest,
+        "plan": {"option": plan.option if plan.closure else "plain", "why": list(plan.why)},
         "terms": TERMS, "environment": _environment(times, problem),
         "rows": [_row(row, judged[row.key], times) for row in ROWS],
         "evaluations": {"median": statistics.median(evaluations), "worst": max(evaluations)},
-        "tape": {"evaluations": list(evaluations[:KEPT]), "operations": list(judged[TAPE].counts[:KEPT])},
-        "pitfalls": wrong, "module_failures": judged[SOLVE].failures,
+        "tape": _tape(judged, times),
+        "pitfalls": lost,
     }
-    return facts | {"goals": goals(facts)}
+    return facts | {"goals": goals(facts), "wrong": wrong(facts)}
+
+
+def _tape(judged, times):
+    """Sizes of the tape through the plain loop, point by point, beside that loop's evaluations; its time for one operation
+    in ns; and its ratio to the library's tape of the same loop."""
+    found = {"evaluations": list(judged[PLAIN].counts[:KEPT]), "operations": list(judged[TAPE].counts[:KEPT]),
+             "ns_an_operation": None, "to_library": None}
+    own, library = ([process.throughput.get(key) for process in times] for key in (TAPE, ADOLC))
+    if judged[TAPE].counts and all(own):
+        found["ns_an_operation"] = statistics.median(own)/statistics.median(judged[TAPE].counts)
+    if all(own) and all(library):
+        found["to_library"] = _ratio(own, library)
+    return found
 
 
 def _row(row, judged, times):

@@ -4,7 +4,7 @@ import re
 import shutil
 import subprocess
 from concurrent.futures import ThreadPoolExecutor
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from importlib import resources
 from pathlib import Path
 
@@ -12,11 +12,14 @@ import cffi
 
 from rootwright.binding.build import FLAGS, BuildFailed, find_compiler
 from rootwright.emit.assemble import assemble
+from rootwright.emit.c import kernel
+from rootwright.plan.plan import PLAIN
 
 CXX_FLAGS = ("-std=c++17", *(flag for flag in FLAGS if not flag.startswith("-std=")), "-w")
 PASSIVE = "rounding|outside|kink"        # kernels that only decide: no derivative passes through them
 ROWS = {                                 # library: (source, header of its number, rows)
-    "module": ("rows.c", None, ("solve", "jacobian", "limit", "one_sided", "central")),
+    "module": ("rows.c", None, ("solve", "jacobian", "one_sided", "central")),
+    "plain": ("limit.c", None, ("solve", "jacobian", "limit", "kernels")),
     "byhand": ("byhand.c", None, ("brent", "newton")),
     "tape": ("through.cpp", "tape_number.hpp", ("loop", "loop_forward", "textbook", "last_step")),
     "dual": ("through.cpp", "dual_number.hpp", ("loop", "textbook")),
@@ -33,17 +36,18 @@ class Built:
     missing: dict[str, str]
 
 
-def build(closure, folder):
-    """Built libraries of a Closure in a folder. Raises NoCompiler, and BuildFailed where the module itself fails."""
+def build(closure, plan, folder):
+    """Built libraries of a Closure in a folder. `plan` is that of the module; the loops that are differentiated are the
+    plain solver's. Raises NoCompiler, and BuildFailed where the module itself fails."""
     folder = Path(folder)
     name = closure.model.name
-    files = assemble(closure, "c")
-    for file, text in files.items():
-        (folder/file).write_text(text, "utf-8")
-    whole = files[f"{name}.c"].replace(f'#include "{name}.h"', files[f"{name}.h"])
-    whole = whole.replace('extern "C" {', 'extern "C++" {')
-    (folder/"passive.inc").write_text(whole, "utf-8")
+    for file, way in (("planned", plan), ("passive", PLAIN)):
+        whole = _whole(assemble(closure, "c", way), name)
+        (folder/f"{file}.c").write_text(whole, "utf-8")
+        whole = whole.replace('extern "C" {', 'extern "C++" {')
+        (folder/f"{file}.inc").write_text(re.sub(rf"\b{name.upper()}_H\b", f"{file.upper()}_H", whole), "utf-8")
     (folder/"recorded.inc").write_text(_recorded(whole, name), "utf-8")
+    (folder/"limit.inc").write_text(_limit(closure), "utf-8")
     compilers = {"c": find_compiler(), "cpp": shutil.which("c++") or shutil.which("g++") or shutil.which("clang++")}
 
     def make(library):
@@ -54,10 +58,23 @@ def build(closure, folder):
         made = list(pool.map(make, ROWS))
     built = Built({library: path for library, path, _ in made if path},
                   {library: why for library, path, why in made if not path})
-    for library in ("module", "byhand"):
+    for library in ("module", "plain", "byhand"):
         if library in built.missing:
             raise BuildFailed(built.missing[library])
     return built
+
+
+def _whole(files, name):
+    """Header and source of a module in one."""
+    return files[f"{name}.c"].replace(f'#include "{name}.h"', files[f"{name}.h"])
+
+
+def _limit(closure):
+    """The residual, its slope and the jacobian in one function, which shares what they have in common, as the printer of
+    the module spells it: NAME_limit(p, x, results)."""
+    together = replace(closure, kernels=closure.kernels | {"jacobian": ("g", "slope", *closure.kernels["jacobian"])})
+    text = kernel(together, "jacobian", ["Residual, slope, jacobian."])
+    return text.replace(f"{closure.model.name}_partials", f"{closure.model.name}_limit")
 
 
 def _recorded(whole, name):
@@ -76,7 +93,7 @@ def _compile(closure, folder, library, source, number, compiler):
         return None, "not installed"
     here, runtime = (str(resources.files(package)) for package in ("rootwright.evidence.bench", "rootwright.runtime"))
     words = {
-        "NAME": model.name, "N": len(model.parameters), "M": len(model.results), "SOURCE": f'"{model.name}.c"',
+        "NAME": model.name, "N": len(model.parameters), "M": len(model.results), "SOURCE": '"planned.c"' if library == "module" else '"passive.c"', "PLANNED": '"planned.inc"',
         "PASSIVE": '"passive.inc"', "RECORDED": '"recorded.inc"', "OPEN_LOWER": int(model.unknown.open_lower),
         "OPEN_UPPER": int(model.unknown.open_upper), "START": int("start" in closure.kernels),
         "SWITCHES": int("kink" in closure.kernels), "NUMBER": f'"{number}"'}

@@ -3,7 +3,7 @@
 
    A row is defined by a function `int point(const double q[], double start, double y[], double jac[])` that returns 0,
    or 1 where it fails, and leaves a count in rw_count. RW_ROW makes of it a function over many points, independent or
-   one after another: then each point waits for the root of the one before, by a number that is always zero. */
+   one after another: then all parameters of a point wait for the root of the one before, by a zero made of it. */
 #ifndef RW_LOOP_H
 #define RW_LOOP_H
 
@@ -39,9 +39,8 @@ RW_EXPORT void rw_prepare(const double *floor, const double *middle, const int *
         double q[RW_N]; \
         int k; \
         for (k = 0; k < RW_N; k++) { \
-            q[k] = p[i * RW_N + (size_t)k]; \
+            q[k] = p[i * RW_N + (size_t)k] waiting; \
         } \
-        waiting; \
         failed[i] = point(q, start[i], y + i * RW_M, jac + i * RW_M * RW_N); \
         count[i] = rw_count; \
         carried; \
@@ -54,9 +53,9 @@ RW_EXPORT void rw_prepare(const double *floor, const double *middle, const int *
         double carry = 0.0; \
         size_t i; \
         if (dependent) { \
-            RW_POINTS(point, q[0] += 0.0 * carry, carry = failed[i] ? 0.0 : y[i * RW_M]) \
+            RW_POINTS(point, + carry, carry = failed[i] ? 0.0 : 0.0 * y[i * RW_M]) \
         } else { \
-            RW_POINTS(point, (void)carry, (void)carry) \
+            RW_POINTS(point, , (void)carry) \
         } \
     }
 

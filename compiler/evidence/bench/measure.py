@@ -1,6 +1,6 @@
 """Times of all rows in one process: rounds in which every row runs once, in an order that changes.
 
-Run several times in fresh processes (`processes`): what differs between them (where memory lies, who else works on the
+Run in several processes (`processes`): what differs between them (where memory lies, who else works on the
 machine) is part of the interval that a ratio comes with. Each process keeps to one core, and its CPU time is counted: a
 row does not pay for others who work on the machine, nor gain by a second core.
 """
@@ -29,14 +29,20 @@ class Times:
     rounds: int
 
 
-def processes(problem, built, count, seconds, progress=None):
-    """Times of `count` fresh processes, one after another, each measuring for about `seconds`."""
+@contextlib.contextmanager
+def crew(count):
+    """That many processes of their own, each started when it is first asked and kept for all specs of a run."""
+    with contextlib.ExitStack() as stack:
+        yield [stack.enter_context(ProcessPoolExecutor(1, mp_context=get_context("spawn"))) for _ in range(count)]
+
+
+def processes(problem, built, crew, seconds, progress=None):
+    """Times of the processes of a crew, one after another, each measuring for about `seconds`."""
     found = []
-    for k in range(count):
+    for k, process in enumerate(crew):
         if progress is not None:
-            progress(f"{problem.name}: timing, process {k + 1} of {count}")
-        with ProcessPoolExecutor(1, mp_context=get_context("spawn")) as pool:
-            found.append(pool.submit(measure, problem, built, seconds, k).result())
+            progress(f"{problem.name}: timing, process {k + 1} of {len(crew)}")
+        found.append(process.submit(measure, problem, built, seconds, k).result())
     return found
 
 

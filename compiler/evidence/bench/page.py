@@ -4,6 +4,7 @@ import math
 import textwrap
 
 from rootwright.emit.text import folded
+from rootwright.evidence.bench.rows import BASE
 
 WIDTH = 100
 _NAME = 35                       # widest title of a row
@@ -16,6 +17,7 @@ def render(facts):
     title = f"{facts['name']}: what a root and its derivatives cost"
     head = [title, *_wrapped(folded(facts["title"] or ""), "")]
     lines = [*head, "="*max(map(len, head)), ""]
+    lines += [f"Wrong: {line}" for line in facts["wrong"]] + [""]*bool(facts["wrong"])
     for section in (_cost, _accuracy, _latency, _pitfalls, _goals, _method, _settings):
         lines += section(facts)
     return "\n".join(line.rstrip() for line in lines) + "\n"
@@ -76,8 +78,15 @@ def _cost(facts):
     n = facts["environment"]["points"]
     lines = [f"Cost of a root with all its derivatives; the module's is 1 (throughput, {n:,} points in cache)"]
     lines += _times(facts, lambda row: row)
+    lines += _wrapped(f"The module's solve with jacobian, of the limit: {_of_limit(facts)}.", "    ") + [""]
     missing = [f"{row['title']}: {row['absent']}" for row in facts["rows"] if row["absent"]]
     return lines + [line for text in missing for line in _wrapped(text, "    ", " "*8)] + [""]*bool(missing)
+
+
+def _of_limit(facts):
+    base = next(row for row in facts["rows"] if row["key"] == BASE)
+    limits = [(timed["to_limit"], how) for timed, how in ((base, "throughput"), (base["latency"], "latency"))]
+    return ", ".join(f"{figure(ratio['value'])} ({_interval(ratio)}) in {how}" for ratio, how in limits)
 
 
 def _accuracy(facts):
@@ -98,8 +107,18 @@ def _accuracy(facts):
     return lines + _grouped(facts, line) + [""] + _wrapped(
         "Derivative errors are relative, against at least 1e-6 of |result/parameter|; failed points (no root, or a "
         "derivative that is not a number) are left out of them. The module evaluates its residual "
-        f"{evaluations['median']:g} times a solve in the median, {evaluations['worst']} at most, ends of the bracket "
-        "included. Tape sizes are medians of one root, bytes with those of the sweep.", "    ") + [""]
+        f"{evaluations['median']:g} times a solve in the median, {evaluations['worst']} at most, whatever it does at the "
+        "ends of the bracket included. Tape sizes are medians of one root, bytes with those of the sweep." + _tape(facts["tape"]), "    ") + [""]
+
+
+def _tape(found):
+    text = ""
+    if found["ns_an_operation"] is not None:
+        text += f" Our tape takes {figure(found['ns_an_operation'])} ns an operation, solver and sweep included"
+        if found["to_library"]:
+            text += f"; ADOL-C takes {figure(1.0/found['to_library']['value'])} times that for the same loop"
+        text += "."
+    return text
 
 
 def _latency(facts):
@@ -153,7 +172,8 @@ def _goals(facts):
         wanted = f"at most {goal['at_most']:g}" if most else f"at least {goal['at_least']:g}"
         exact = goal["low"] == goal["high"]
         measured = f"{goal['value']:g}" if exact else f"{figure(goal['value'])} ({_interval(goal)})"
-        lines.append(f"    {goal['goal']:46} {wanted:>13}:  {measured:22} {goal['verdict']}")
+        by = f", factor {figure(goal['by'])}" if goal["verdict"] == "missed" else ""
+        lines.append(f"    {goal['goal']:39} {wanted:>12}:  {measured:19} {goal['verdict']}{by}")
     return lines + [""]
 
 
@@ -164,7 +184,7 @@ def _method(facts):
     return ["How it was measured", ""] + _wrapped(
         f"{about['processor']}, {about['cores']} cores, {load}. {about['compiler']}, {about['flags']} (C++ rows: the "
         f"same optimisation). Python {about['python']}, {libraries}. All rows in one interleaved run, in an order that "
-        f"changes from round to round, at least {about['rounds']} rounds in each of {about['processes']} fresh "
+        f"changes from round to round, at least {about['rounds']} rounds in each of {about['processes']} "
         "processes. CPU time, on one core. A time is the median over rounds, then over processes; +- is half the range "
         "of the processes. A ratio is the geometric mean of the processes' own ratios, with the 95 % interval of "
         "Student's t over them. Rows slower than 20 ms a round take the first 4 to 1,024 of the points, but for those "
@@ -173,6 +193,7 @@ def _method(facts):
 
 def _settings(facts):
     lines = ["What each row is", ""]
+    lines += _wrapped(f"the module: as `compile` makes it ({facts['plan']['option']}). {'. '.join(facts['plan']['why'])}", "    ", " "*8)
     for term, meaning in facts["terms"].items():
         lines += _wrapped(f"{term}: {meaning}", "    ", " "*8)
     lines.append("")

@@ -25,14 +25,15 @@ _ARRAY = {"where": "m.where({0}, {1}, {2})", "and": "({0} & {1})", "or": "({0} |
 _SPELLINGS = {"math": _SCALAR, "numpy": _ARRAY, "jax": _ARRAY, "autograd": _ARRAY | {"where": _SCALAR["where"],
               "and": _SCALAR["and"], "or": _SCALAR["or"], "not": _SCALAR["not"]}}
 _FUNCTIONS = {                   # function: the kernel whose results it returns; all but bracket and start take x
-    "bracket": "bracket", "start": "start", "g": "residual", "residual": "residual", "outputs": "outputs",
-    "jacobian": "jacobian"}
+    "bracket": "bracket", "start": "start", "g": "residual", "slope": "residual", "residual": "residual",
+    "outputs": "outputs", "jacobian": "jacobian"}
 
 
 def spell(closure, library):
-    """Source of functions: bracket(*p), start(*p), g(x, *p), residual(x, *p), outputs(x, *p), jacobian(x, *p).
+    """Source of functions: bracket(*p), start(*p), g(x, *p), slope(x, *p), residual(x, *p), outputs(x, *p),
+    jacobian(x, *p).
 
-    start gives None where the spec has none; residual gives the slope too; outputs may be an empty tuple; the jacobian
+    start gives None where the spec has none; residual gives g and the slope; outputs may be an empty tuple; the jacobian
     comes flat, row-major.
     """
     spelling = _SPELLINGS[library]
@@ -43,8 +44,8 @@ def _function(closure, name, kernel, spelling):
     results = closure.kernels.get(kernel, ())
     if kernel == "bracket":
         results = results[:2]
-    if name == "g":
-        results = results[:1]
+    if name in ("g", "slope"):
+        results = results[:1] if name == "g" else results[1:]
     instructions, constants = closure.program.instructions, closure.constants
     places = {parameter.name: f"p{k}" for k, parameter in enumerate(closure.model.parameters)}
     arguments = ", ".join([*(["x"] if kernel not in ("bracket", "start") else []), *places.values()])
@@ -70,7 +71,7 @@ def _function(closure, name, kernel, spelling):
                 texts[node] = f"t{node}"
                 lines.append(f"    t{node} = {text}")
     values = [texts[root] for root in roots]
-    if name in ("g", "start"):
+    if name in ("g", "slope", "start"):
         lines.append(f"    return {values[0] if values else None}")
     else:
         lines.append(f"    return ({', '.join(values)}{',' if values else ''})")

@@ -84,7 +84,7 @@ def newton_scalar(problem):
     from scipy import optimize
 
     def find(formulas, p, start):
-        return optimize.newton(formulas["g"], start, fprime=lambda x, *p: formulas["residual"](x, *p)[1], args=tuple(p),
+        return optimize.newton(formulas["g"], start, fprime=formulas["slope"], args=tuple(p),
                                tol=5e-324, rtol=STILL, maxiter=STEPS)
     return _scalar(problem, find)
 
@@ -109,7 +109,7 @@ def newton_array(problem):
     from scipy import optimize
 
     def find(formulas, columns, start):
-        result = optimize.newton(formulas["g"], start, fprime=lambda x, *p: formulas["residual"](x, *p)[1],
+        result = optimize.newton(formulas["g"], start, fprime=formulas["slope"],
                                  args=tuple(columns), tol=1e-15*float(np.median(np.abs(start))), maxiter=20,
                                  full_output=True, disp=False)
         return result[0], np.isfinite(result[0])

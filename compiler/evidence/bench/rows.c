@@ -1,5 +1,5 @@
 /* SPDX-License-Identifier: 0BSD */
-/* The module itself, the limit, and finite differences of the module. RW_SOURCE is the emitted C file, compiled with
+/* The module itself, and finite differences of it. RW_SOURCE is the emitted C file, compiled with
    the flags of a module; its kernels are in reach here. */
 #include "loop.h"
 #include RW_SOURCE
@@ -7,8 +7,6 @@
 /* Steps, as shares of the parameter: the square and the cube root of 2^-52, where truncation and rounding balance. */
 #define RW_ONE_SIDED 1.4901161193847656e-08
 #define RW_CENTRAL 6.055454452393343e-06
-
-static volatile double rw_sink;
 
 static int solve(const double q[], double start, double y[], double jac[])
 {
@@ -36,19 +34,6 @@ static int jacobian(const double q[], double start, double y[], double jac[])
     return r.status < 0;
 }
 RW_ROW(jacobian)
-
-/* start is the root already. */
-static int limit(const double q[], double start, double y[], double jac[])
-{
-    double slope;
-    const double g = RW(residual)(q, start, &slope);
-    RW(partials)(q, start, jac);
-    y[0] = start + 0.0 * g;
-    rw_sink = slope;
-    rw_count = 1;
-    return 0;
-}
-RW_ROW(limit)
 
 static int differences(const double q[], double start, double y[], double jac[], int central)
 {

@@ -23,7 +23,8 @@ class Row:
     taped: bool = False
 
 
-BASE, SOLVE, LIMIT, TAPE, TAPE_LEAN, BRENT_PYTHON = "jacobian", "solve", "limit", "tape", "tape_textbook", "brentq"
+BASE, SOLVE, PLAIN, LIMIT = "jacobian", "solve", "plain", "limit"
+TAPE, TAPE_LEAN, ADOLC, BRENT_PYTHON = "tape", "tape_textbook", "adolc", "brentq"
 
 TERMS = {
     "cold": "nothing is known of the root but its bracket (and the author's start where the spec has one)",
@@ -35,33 +36,42 @@ TERMS = {
 
 ROWS = (
     Row(LIMIT, "limit", "one evaluation at the root",
-        "residual, slope and jacobian once, at the root: the module's kernels, compiler and flags",
-        ("module", "limit", ROOT)),
-    Row(SOLVE, "module", "solve", "root, outputs, error bound; cold", ("module", "solve", COLD), jacobian=False),
+        "residual, slope and jacobian once, at the root, in one loop that shares what they have in common; the "
+        "module's printer, compiler and flags",
+        ("plain", "limit", ROOT)),
+    Row("kernels", "limit", "the same by two kernels",
+        "the plain module's kernels of the residual and of the jacobian, one after the other, which share nothing",
+        ("plain", "kernels", ROOT)),
+    Row(SOLVE, "module", "solve", "root, outputs, error bound, as `compile` makes it; cold", ("module", "solve", COLD),
+        jacobian=False),
     Row(BASE, "module", "solve with jacobian", "the same and the jacobian; cold: ratios are to this row",
         ("module", "jacobian", COLD)),
-    Row("warm", "module", "solve with jacobian, warm", "the same, warm", ("module", "jacobian", WARM)),
-    Row(TAPE, "through", "tape, reverse: the module's loop",
-        "C++ over the module's own loop, operation for operation, on runtime/tape.hpp; bounds of rounding errors and "
-        "checks of the range are left off the tape; all results are swept back at once; cold",
+    Row("solve_warm", "module", "solve, warm", "root, outputs, error bound; warm", ("module", "solve", WARM),
+        jacobian=False),
+    Row("warm", "module", "solve with jacobian, warm", "the same and the jacobian; warm", ("module", "jacobian", WARM)),
+    Row(PLAIN, "module", "plain solve with jacobian",
+        "the module that `compile --plan plain` makes, the safeguarded solver alone; cold", ("plain", "jacobian", COLD)),
+    Row(TAPE, "through", "tape, reverse: the plain loop",
+        "C++ over the plain module's own loop, operation for operation, on runtime/tape.hpp; bounds of rounding errors "
+        "and checks of the range are left off the tape; all results are swept back at once; cold",
         ("tape", "loop", COLD), taped=True),
-    Row("tape_forward", "through", "tape, forward: the module's loop",
+    Row("tape_forward", "through", "tape, forward: the plain loop",
         "the same tape swept forward, all parameters at once; cold", ("tape", "loop_forward", COLD), taped=True),
     Row(TAPE_LEAN, "through", "tape, reverse: textbook loop", "the leanest loop that is still safe; warm",
         ("tape", "textbook", WARM), taped=True),
     Row("tape_last", "through", "tape, reverse: the last step only",
         "the module solves without a tape, warm; one step of Newton's method at the root is taped. The best that a "
         "tape can do, and no longer through the iterations", ("tape", "last_step", WARM), taped=True),
-    Row("adolc", "through", "ADOL-C, reverse: the module's loop", "the same loop on the tape of a C++ library; cold",
+    Row(ADOLC, "through", "ADOL-C, reverse: the plain loop", "the same loop on the tape of a C++ library; cold",
         ("adolc", "loop", COLD)),
     Row("adolc_textbook", "through", "ADOL-C, reverse: textbook loop", "warm", ("adolc", "textbook", WARM)),
-    Row("dual", "through", "dual numbers: the module's loop",
+    Row("dual", "through", "dual numbers: the plain loop",
         "forward, all parameters at once, runtime/dual.hpp; cold", ("dual", "loop", COLD)),
     Row("dual_textbook", "through", "dual numbers: textbook loop", "warm", ("dual", "textbook", WARM)),
     Row("autograd", "through", "autograd, reverse: textbook loop",
-        "a general-purpose tape in Python, point by point; warm", "autograd"),
+        "a general-purpose tape in Python, point by point, since the loop branches on values; warm", "autograd"),
     Row("jax_forward", "through", "JAX, forward: textbook loop",
-        "jitted, all points at once, double precision; warm", "jax_forward"),
+        "jitted, all points at once, double precision (its loops cannot be swept back); warm", "jax_forward"),
     Row("one_sided", "differences", "one-sided differences",
         "of the module: step 2^-26 of each parameter, into its range; every further solve warm from the root",
         ("module", "one_sided", WARM)),

@@ -1,8 +1,8 @@
 // SPDX-License-Identifier: 0BSD
 // Differentiation through the iterations: the module's own loop, and a textbook one, over a number that carries
-// derivatives. RW_NUMBER is its header. RW_PASSIVE and RW_RECORDED are the text of the emitted C file, over doubles and
+// derivatives. RW_NUMBER is its header. RW_PASSIVE and RW_RECORDED are the text of the plain module, over doubles and
 // over that number; in the second one the bounds of rounding errors, the range and the switches, which only decide, are
-// left to the first: they cost no derivative, as a careful user would have it.
+// left to the first: they cost no derivative, as a careful user would have it. RW_PLANNED is the module as it ships.
 #include <cfloat>
 #include <cmath>
 #include <cstddef>
@@ -14,6 +14,9 @@
 
 namespace passive {
 #include RW_PASSIVE
+}
+namespace planned {
+#include RW_PLANNED
 }
 
 static void rw_values(const real p[], double q[])
@@ -86,10 +89,10 @@ static int rw_by_textbook(const real p[], double start, real y[])
 static int rw_by_last_step(const real p[], double start, real y[])
 {
     double q[RW_N];
-    passive::RW(point) r;
+    planned::RW(point) r;
     real slope;
     rw_values(p, q);
-    passive::RW(solve)(q, start, &r);
+    planned::RW(solve)(q, start, &r);
     const real g = RW(residual)(p, real(r.y[0]), &slope);
     rw_results(p, real(r.y[0]) - g / rw_value(slope), y);
     return r.status < 0;

@@ -20,6 +20,7 @@ from rootwright.calculus.program import Graph, evaluate, needed
 from rootwright.calculus.switches import switches
 from rootwright.proof.cancel import Cancelling, domain, factors, substituted
 from rootwright.proof.functions import around, ends
+from rootwright.proof.limits import Limits
 from rootwright.proof.intervals import Interval, Intervals
 
 SHARE = "_share"            # the input t: names of a spec begin with a letter
@@ -90,6 +91,13 @@ class Chart:
         roots.append(free.lower(model.residual))
         self.cancelling, self.expanding = Cancelling(graph, roots), Cancelling(graph, roots, exponentials=True)
         self.residual = self._form(residuals[0])
+        self.limits, self.limit_names = None, ()
+        if from_upper or model.unknown.open_lower:
+            self.limits = Limits(graph, self.cancelling, residuals[0], share)
+            first, *others = self.residual.nodes
+            if self.limits.quotients:
+                self.limit_names = tuple(graph.instructions[node].value for node in self.limits.quotients)
+                self.residual = Form((first, self.limits.node, *(others or [first])), self.residual.domain)
         self.at_lower, self.at_upper, self.width = (self._form(node, True) for node in (*residuals[1:], width))
         self.bracket = [self._form(lower), self._form(upper)]
         self.slack_forms = [self._form(node) for node in self.slacks]
@@ -226,6 +234,8 @@ class Chart:
         inputs = {name: Interval(low[:, k], high[:, k]) for k, name in enumerate(self.variables)}
         if opened:
             inputs[SHARE].nonzero = np.ones(len(low), bool)
+        if self.limits:
+            inputs |= self.limits.values(self.evaluate, nodes, low, high)
         with np.errstate(all="ignore"):
             return evaluate(self.graph.instructions, nodes, self.arithmetic, inputs, dict(self.constants))
 

@@ -69,7 +69,7 @@ class Examiner:
 
     def at(self, chart, nodes, point, share=Fraction(0)):
         """{node: exact value} at a point and a share of the bracket."""
-        names = {name: value for name, value in point.items()} | {SHARE: share, self.model.unknown.name: UNDEFINED}
+        names = {name: UNDEFINED for name in (self.model.unknown.name, *chart.limit_names)} | dict(point) | {SHARE: share}
         return value_at(chart.graph.instructions, nodes, names)
 
     def box(self, point):

@@ -49,7 +49,7 @@ static int rw_approach(const double p[], double start, double known[], rw_point 
     x = 0.5 * end[0] + 0.5 * end[1];
     x = rw_inside(end, x, isnan(start) ? rw_guess(p) : start);
 #if RW_NEWTON || RW_HALLEY || RW_HOUSEHOLDER
-    for (k = isnan(start) ? 0 : RW_STEPS - 1; k < RW_STEPS; k++) { /* one step from a warm start, which is near */
+    for (k = 0; k < RW_STEPS; k++) {
         r->iterations += 1;
         r->evaluations += 1;
 #if RW_NEWTON
@@ -68,6 +68,9 @@ static int rw_approach(const double p[], double start, double known[], rw_point 
         square = slope * slope;
         x = rw_inside(end, x, x - g * (6.0 * square - 3.0 * product) / (6.0 * slope * (square - product) + g * g * third));
 #endif
+        if (!isnan(start)) {
+            break; /* one step from a warm start, which is near */
+        }
     }
 #endif
     for (k = 0; k < RW_TRIALS; k++) {

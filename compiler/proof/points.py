@@ -59,6 +59,8 @@ class Points:
         order = np.linspace(0, len(low) - 1, min(count, len(low))).astype(int) if len(low) else []
         for row in order:
             for share in ("round", 0.5, 0.0, 1.0):
+                if not (np.isfinite(low[row]).all() and np.isfinite(high[row]).all()):
+                    continue
                 values = {name: simplest(a, b) if share == "round" else _between((a, b), share)
                           for name, a, b in zip(domain.ranges.names[:-1], low[row].tolist(), high[row].tolist())}
                 yield self._absolute(domain, values)
@@ -140,6 +142,8 @@ def _decimal_inside(end, inward):
     with precision(BITS):
         exact = end.mid().fmpq()
         middle = Fraction(int(exact.p), int(exact.q))
+        if not middle:
+            return middle
         place = Fraction(10) ** (math.floor(math.log10(abs(float(middle)))) - _DIGITS)
         return (middle // place + (1 if inward > 0 else 0)) * place
 

@@ -63,7 +63,7 @@ class Points:
                     continue
                 values = {name: simplest(a, b) if share == "round" else _between((a, b), share)
                           for name, a, b in zip(domain.ranges.names[:-1], low[row].tolist(), high[row].tolist())}
-                yield self._absolute(domain, values)
+                yield self.absolute(domain, values)
 
     def from_turns(self, domain, outcome, count=12):
         """Points whose box holds a certain zero of the rarer sign of slope: where another zero must be."""
@@ -78,7 +78,7 @@ class Points:
                 signs.append(np.where(values.low > 0, 1, np.where(values.high < 0, -1, 0)))
             for row in np.nonzero(signs[0] * signs[1] < 0)[0][:count]:
                 values = dict(zip(domain.ranges.names[:-1], middle_low[row, :-1]))
-                yield self._absolute(domain, {name: float(value) for name, value in values.items()})
+                yield self.absolute(domain, {name: float(value) for name, value in values.items()})
 
     def edges(self, points, in_range, count=40):
         """Points just inside the requirements, on the way from a point that meets them to one that does not."""
@@ -98,7 +98,8 @@ class Points:
                 near, far = (middle, far) if in_range(middle) else (near, middle)
             yield near
 
-    def _absolute(self, domain, values):
+    def absolute(self, domain, values):
+        """A point of the range for values of the variables of a domain, which may be relative to pivots."""
         bounds = self.bounds
         middle = {name: _between(pair, 0.5) for name, pair in bounds.items()}
         if not domain.scaling:

@@ -19,8 +19,10 @@ import numpy as np
 from rootwright.calculus.constants import NotReal
 from rootwright.proof.advice import brackets, cuts, relative_name
 from rootwright.proof.certificate import Certificate, Claim
+from rootwright.proof.chart import SHARE, Form
 from rootwright.proof.crew import Crew
 from rootwright.proof.crossings import refute_divisors, refute_parameter_switch
+from rootwright.proof.dive import wrong_sign
 from rootwright.proof.flat import refute_slope
 from rootwright.proof.numbers import doubles_are_finite, slope_bound, slope_is_sure
 from rootwright.proof.phantoms import drop_phantoms
@@ -130,8 +132,9 @@ class _Proof:
         return {claim: witness for claim, witness in examiner.found.items() if claim in open_claims}
 
     def _refute_between(self, examiner, places, open_claims):
-        """Refutations at points that no decimal names."""
+        """Refutations at points that no decimal names, or that lie in a sliver."""
         found = examiner.found
+        self._dive(examiner, open_claims)
         if "defined" in open_claims - found.keys():
             witness = refute_divisors(examiner)
             if witness:
@@ -148,6 +151,23 @@ class _Proof:
             witness = refute_kink(examiner) or (None if "exists" in open_claims else refute_parameter_switch(examiner))
             if witness:
                 found["kink"] = witness
+
+    def _dive(self, examiner, open_claims):
+        """Points in slivers of the range: of the wrong sign at an end of the bracket, or out of the domain of the residual."""
+        chart, unknown, left_open = self.domain.lower, self.model.unknown, self.outcome.open
+        searches = [("ordered", [(chart.width, 1)], False)]
+        right = None if unknown.open_lower or unknown.open_upper else examiner.usual_signs()
+        if right:
+            searches.append(("change", list(zip((chart.at_lower, chart.at_upper), right)), False))
+        domains = [(Form((node,), ()), 1) for kind, node in chart.residual.domain or () if kind in ("positive", "not negative")]
+        if domains and not (unknown.open_lower or unknown.open_upper):
+            searches.append(("defined", domains, True))
+        for need, targets, inside in searches:
+            for left in left_open.get(need, ()):
+                values = wrong_sign(self.domain, left.low, left.high, targets, inside) if left.chart == 0 else None
+                if values:
+                    share = Fraction(values.pop(SHARE))
+                    examiner.examine(examiner.points.absolute(self.domain, values), open_claims, (share,))
 
     def _places(self, points, open_claims):
         """(point, shares of the bracket) that the searches point to."""

@@ -33,7 +33,7 @@ def refute_slope(examiner, starts):
     chart = examiner.domain.lower
     for values, share in starts[:_STARTS]:
         point = examiner.points.exact(values)
-        for name in chart.variables[:-1] if point else ():
+        for name in chart.variables[:-1] if point and not examiner.limit.late() else ():
             found = _fold(examiner, point, share, name)
             if found:
                 return found

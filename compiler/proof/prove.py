@@ -135,11 +135,11 @@ class _Proof:
         """Refutations at points that no decimal names, or that lie in a sliver."""
         found = examiner.found
         self._dive(examiner, open_claims)
-        if "defined" in open_claims - found.keys():
+        if "defined" in open_claims - found.keys() and not self.limit.late():
             witness = refute_divisors(examiner)
             if witness:
                 found["defined"] = witness
-        if "slope" in open_claims - found.keys() and not {"defined", "exists"} & found.keys():
+        if "slope" in open_claims - found.keys() and not {"defined", "exists"} & found.keys() and not self.limit.late():
             witness, beside = refute_slope(examiner, [(values, share) for values, shares in places for share in shares])
             if witness:
                 found["slope"] = witness
@@ -147,7 +147,7 @@ class _Proof:
             for values in beside if "unique" in open_claims - found.keys() else ():
                 examiner.examine(values, open_claims)
                 examiner.search(values, open_claims)
-        if "kink" in open_claims - found.keys() and self.plain.lower.switches:
+        if "kink" in open_claims - found.keys() and self.plain.lower.switches and not self.limit.late():
             witness = refute_kink(examiner) or (None if "exists" in open_claims else refute_parameter_switch(examiner))
             if witness:
                 found["kink"] = witness
@@ -164,6 +164,8 @@ class _Proof:
             searches.append(("defined", domains, True))
         for need, targets, inside in searches:
             for left in left_open.get(need, ()):
+                if self.limit.late():
+                    return
                 values = wrong_sign(self.domain, left.low, left.high, targets, inside) if left.chart == 0 else None
                 if values:
                     share = Fraction(values.pop(SHARE))

@@ -55,12 +55,14 @@ class Points:
             yield {name: _between(pair, generator.random()) for name, pair in bounds.items()}
 
     def from_boxes(self, domain, low, high, count=8):
-        """Points in boxes of a domain, whose parameters may be relative to pivots: the roundest numbers first."""
+        """Points in boxes of a domain, whose parameters may be relative to pivots: the roundest numbers first, of all boxes together and of some."""
+        if len(low) and np.isfinite(low).all() and np.isfinite(high).all():
+            ends = zip(domain.ranges.names[:-1], low.min(axis=0).tolist(), high.max(axis=0).tolist())
+            yield self.absolute(domain, {name: simplest(a, b) for name, a, b in ends})
         order = np.linspace(0, len(low) - 1, min(count, len(low))).astype(int) if len(low) else []
-        for row in order:
-            for share in ("round", 0.5, 0.0, 1.0):
-                if not (np.isfinite(low[row]).all() and np.isfinite(high[row]).all()):
-                    continue
+        order = [row for row in order if np.isfinite(low[row]).all() and np.isfinite(high[row]).all()]
+        for share in ("round", 0.5, 0.0, 1.0):
+            for row in order:
                 values = {name: simplest(a, b) if share == "round" else _between((a, b), share)
                           for name, a, b in zip(domain.ranges.names[:-1], low[row].tolist(), high[row].tolist())}
                 yield self.absolute(domain, values)

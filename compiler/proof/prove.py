@@ -12,7 +12,7 @@ What is not proved is looked at point by point for a refutation. What is neither
 
 from dataclasses import replace
 from fractions import Fraction
-from itertools import islice
+from itertools import islice, zip_longest
 
 import numpy as np
 
@@ -37,9 +37,10 @@ from rootwright.proof.witness import middle
 BOXES = 60_000
 _ENDS, _INSIDE = 0.4, 0.9           # of the boxes that may be spent, by the end of each search
 _SMALL = 0.2                        # of the boxes: a search that leaves as many may be made twice
-_TRIAL = 12_000                     # boxes for trying a proposal
-_CUTS, _BRACKETS = 3, 3             # proposals that are tried
-_POINTS = 16                        # points whose zeros are looked for where only slope or kink is open
+_TRIAL = 5_000                     # boxes for trying a proposal
+_CUTS, _BRACKETS = 2, 2             # proposals that are tried
+_TURNS = 48                         # points beside zeros of two slopes that are looked at
+_POINTS = 24                        # points whose zeros are looked for where only slope or kink is open
 _NEEDS = {                          # what is asked of the boxes for each claim
     "defined": ("ordered", "defined"),
     "exists": ("ordered", "change", "continuous"),
@@ -140,7 +141,7 @@ class _Proof:
             if witness:
                 found["defined"] = witness
         if "slope" in open_claims - found.keys() and not {"defined", "exists"} & found.keys() and not self.limit.late():
-            witness, beside = refute_slope(examiner, [(values, share) for values, shares in places for share in shares])
+            witness, beside = refute_slope(examiner, [(values, shares[len(shares) // 2]) for values, shares in places if shares])
             if witness:
                 found["slope"] = witness
             examiner.waves = 0
@@ -172,10 +173,12 @@ class _Proof:
                     examiner.examine(examiner.points.absolute(self.domain, values), open_claims, (share,))
 
     def _places(self, points, open_claims):
-        """(point, shares of the bracket) that the searches point to."""
-        if "unique" in open_claims:
-            for values in points.from_turns(self.domain, self.outcome):
-                yield values, ()
+        """(point, shares of the bracket) that the searches point to: from zeros of two slopes and from what is left, in turn."""
+        turns = islice(points.from_turns(self.domain, self.outcome), _TURNS) if "unique" in open_claims else ()
+        for pair in zip_longest(((values, ()) for values in turns), self._left_open(points)):
+            yield from (place for place in pair if place)
+
+    def _left_open(self, points):
         lefts = [left for need, boxes in self.outcome.open.items() if need != "kink" for left in boxes]
         for left in lefts[:12]:
             shares = _shares(self.domain, left)

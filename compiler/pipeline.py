@@ -134,13 +134,14 @@ def emit(closed, target="c", chosen=None, **options):
     return assemble(closed, target, chosen or plan(closed), **options)
 
 
-def load(spec, target="c", order=1):
-    """Compile a spec (a file, or a shipped spec's name) and load it: an object with the functions of the emitted module."""
+def load(spec, target="c", order=1, chosen=None):
+    """Compile a spec (a file, or a shipped spec's name) and load it: an object with the functions of the emitted module, for a Plan
+    as in `emit`."""
     from rootwright.binding.module import load as load_module
 
     closed, _ = closure(*find(str(spec)), order)
     closed, _ = promised(closed, str(spec))
-    return load_module(closed, emit(closed, target), target)
+    return load_module(closed, emit(closed, target, chosen), target)
 
 
 def remake(data, filename, options):

@@ -6,10 +6,10 @@ static double rw_inside(const double end[2], double last, double next)
     return next > end[0] ? (next < end[1] ? next : 0.5 * last + 0.5 * end[1]) : 0.5 * last + 0.5 * end[0];
 }
 
-/* The short way to the root, inside the operating range only: a first guess, RW_STEPS of RW_METHOD, and the certificate of the
-   point that they lead to. Fills r but for the outputs, and known with what the derivatives share with it. Any doubt
-   returns RW_NOT_FINITE and leaves the point to rw_locate, which needs no luck: a residual that is not zero up to rounding,
-   a curve that is not straight, an error bound that reaches an end of the bracket.
+/* The short way to the root, inside the operating range only: a first guess, RW_PACE, and the certificate
+   of the point that they lead to. Fills r but for the outputs, and known with what the derivatives share with it.
+   Any doubt is a negative status and leaves the point to the safeguarded solver, which needs no luck: a residual that is
+   not zero up to rounding, a curve that is not straight, an error bound that reaches an end of the bracket.
    That the residual's signs at the ends differ is RW_HOW. */
 static int rw_approach(const double p[], double start, double known[], rw_point *r)
 {
@@ -49,7 +49,9 @@ static int rw_approach(const double p[], double start, double known[], rw_point 
     x = 0.5 * end[0] + 0.5 * end[1];
     x = rw_inside(end, x, isnan(start) ? rw_guess(p) : start);
 #if RW_NEWTON || RW_HALLEY || RW_HOUSEHOLDER
-    for (k = 0; k < RW_STEPS; k++) {
+    for (k = isnan(start) ? 0 : RW_STEPS - 1; k < RW_STEPS; k++) { /* one step from a warm start, which is near */
+        r->iterations += 1;
+        r->evaluations += 1;
 #if RW_NEWTON
         g = rw_curve(p, known, x, &slope);
         x = rw_inside(end, x, x - g / slope);
@@ -67,8 +69,6 @@ static int rw_approach(const double p[], double start, double known[], rw_point 
         x = rw_inside(end, x, x - g * (6.0 * square - 3.0 * product) / (6.0 * slope * (square - product) + g * g * third));
 #endif
     }
-    r->iterations += RW_STEPS;
-    r->evaluations += RW_STEPS;
 #endif
     for (k = 0; k < RW_TRIALS; k++) {
 #if RW_CAREFUL

@@ -11,9 +11,9 @@ def _inside(lower, upper, last, following):
 def _approach(p, start, known, r):
     """The short way to the root, inside the operating range only. Fills r but for the outputs.
 
-    A first guess, STEPS of METHOD, and the certificate of the point that they lead to; known is filled with what the
-    derivatives share with it. Any doubt returns NOT_FINITE and leaves the point to _locate, which needs no luck: a residual
-    that is not zero up to rounding, a curve that is not straight, an error bound that reaches an end of the bracket.
+    A first guess, PACE, and the certificate of the point that they lead to; known is filled with what the derivatives
+    share with it. Any doubt is a negative status and leaves the point to the safeguarded solver, which needs no luck: a
+    residual that is not zero up to rounding, a curve that is not straight, an error bound that reaches an end of the bracket.
     That the residual's signs at the ends differ is HOW.
     """
     lower, upper, _, _ = _bracket(p)
@@ -32,7 +32,9 @@ def _approach(p, start, known, r):
     x = 0.5 * lower + 0.5 * upper
     x = _inside(lower, upper, x, _guess(p) if math.isnan(start) else start)
 #if NEWTON || HALLEY || HOUSEHOLDER
-    for _ in range(STEPS):
+    for _ in range(STEPS if math.isnan(start) else 1):  # one step from a warm start, which is near
+        r.iterations += 1
+        r.evaluations += 1
 #if NEWTON
         g, slope = _curve(p, known, x)
         x = _inside(lower, upper, x, x - _div(g, slope))
@@ -50,8 +52,6 @@ def _approach(p, start, known, r):
         x = _inside(lower, upper, x, x - _div(g * (6.0 * square - 3.0 * product),
                                               6.0 * slope * (square - product) + g * g * third))
 #endif
-    r.iterations += STEPS
-    r.evaluations += STEPS
 #endif
     for _ in range(TRIALS):
 #if CAREFUL

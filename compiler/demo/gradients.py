@@ -5,6 +5,7 @@ from dataclasses import dataclass
 from rootwright.demo.laws import compile_closures
 from rootwright.demo.network import solve
 from rootwright.demo.tape import Tape, follow
+from rootwright.plan.plan import PLAIN
 
 
 @dataclass
@@ -161,8 +162,8 @@ class Differences:
 
 
 def taped_closures():
-    """Emitted Python modules of their own, made to carry taped numbers."""
-    closures = compile_closures("python")
+    """Emitted Python modules of their own, with the safeguarded solver alone, made to carry taped numbers."""
+    closures = compile_closures("python", PLAIN)
     for name in ("friction", "gate", "pump"):
         follow(getattr(closures, name))
     return closures

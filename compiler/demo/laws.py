@@ -50,9 +50,9 @@ class Closures:
 SPECS = ("pipe_friction", "throttle_gate", "motor_pump")
 
 
-def compile_closures(target):
-    """Closures compiled from the shipped specs, for "c" or "python"."""
-    return Closures(*(pipeline.load(spec, target) for spec in SPECS))
+def compile_closures(target, plan=None):
+    """Closures compiled from the shipped specs, for "c" or "python", each with its own plan where none is given."""
+    return Closures(*(pipeline.load(spec, target, chosen=plan) for spec in SPECS))
 
 
 @dataclass(slots=True)

@@ -197,7 +197,7 @@ def _with_known(closure, text):
 
 def _plan_words(closure, plan):
     """What the text of the short way says of a plan."""
-    return {"TRIALS": TRIALS, "STEPS": plan.steps, "LEAST_RISE": _below(plan.least_rise), "METHOD": METHODS.get(plan.method, ""),
+    return {"TRIALS": TRIALS, "STEPS": plan.steps, "LEAST_RISE": _below(plan.least_rise), "PACE": plan.pace,
             "K": _known(closure), "STANDING": len(closure.kernels.get("still", ())),
             "HOW": {"proved": "proved for the whole operating range", "steep": "seen from the residual at the root",
                     "evaluated": "looked at first"}[plan.ends]}

@@ -81,7 +81,7 @@ _TARGETS = {
 }
 _RETURNED = {"residual": "g", "rounding": "rounding", "outside": "outside", "kink": "kink", "start": "start", "guess": "guess",
              "curve": "near_g", "trial": "g"}
-_FORMALS = ("p", "end", "rounding", "slope", "slope_rounding", "curvature", "third", "error_bound", "y", "jac", "hess", "known", "work")
+_FORMALS = ("p", "end", "rounding", "slope", "slope_rounding", "curvature", "third", "error_bound", "y", "jac", "hess", "known", "work", "parts", "part")
 _FUNCTIONS = {"jacobian": "partials", "hessian": "second_partials"}      # where the kernel's name is the interface's
 _FLAT = {"jacobian": "jac", "hessian": "hess", "still": "known"}                          # kernels whose results are one array
 
@@ -124,12 +124,13 @@ def _statements(statements, real):
 
 def _in_parts(model, laid, formals, read, spelling, function):
     """(lines of functions for the parts of a large kernel, lines that call them and fetch what the results need). read: the
-    formal arguments that are read besides the parameters."""
-    real, array = spelling.real, formals["work"]
+    formal arguments that are read besides the parameters. The parts are called through a table, or a compiler would put
+    them together again."""
+    real, (array, table, index) = spelling.real, (formals[ours] for ours in ("work", "parts", "part"))
     names = [formals[formal] for formal in ("p", *read)]
     inputs = [f"const {real} {name}[]" if formal in ("p", "known") else f"{real} {name}" for formal, name in zip(("p", *read), names)]
     (*groups, last), size = parts.in_parts(laid.statements, tuple(laid.results.values()))
-    before, calls = [f"/* {function}, below, in parts: compilers are slow with long functions. */"], []
+    before = [f"/* {function}, below, in parts: compilers are slow with long functions. */"]
 
     def body(part):
         lines = _unpack(model, [name for name in laid.inputs if spelling.name(name) in part.words], formals, spelling)
@@ -140,9 +141,14 @@ def _in_parts(model, laid, formals, read, spelling, function):
         return lines + _statements(part.statements, real) + [f"    {array}[{place}] = {step.name};" for step, place in part.keeps]
 
     for k, part in enumerate(groups, 1):
-        calls.append(f"    {function}_{k}({', '.join([*names, array])});")
         before += [f"static void {function}_{k}({', '.join([*inputs, f'{real} {array}[]'])})", "{", *body(part), "}", ""]
-    return before, [f"    {real} {array}[{max(1, size)}];", *calls, *body(last)]
+    kinds = ", ".join([*(re.sub(r"\w+(\[\])?$", r"\1", given).strip() for given in inputs), f"{real} []"])
+    listed = ", ".join(f"{function}_{k}" for k in range(1, len(groups) + 1))
+    return before, [*statement(f"static void (*const {table}[])({kinds}) = {{ {listed} }};", "    "),
+                    f"    {real} {array}[{max(1, size)}];", f"    int {index};",
+                    f"    for ({index} = 0; {index} < {len(groups)}; {index}++) {{",
+                    f"        {table}[{index}]({', '.join([*names, array])});", "    }",
+                    *body(last)]
 
 
 def _unpack(model, inputs, formals, spelling):

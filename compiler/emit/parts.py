@@ -10,7 +10,7 @@ from dataclasses import dataclass
 from rootwright.emit.layout import Statement
 
 WHOLE = 600                 # statements of a kernel that stays one function
-MOST = 100                  # statements of a part
+MOST = 80                   # statements of a part
 
 _WORD = re.compile(r"[A-Za-z_]\w*")
 

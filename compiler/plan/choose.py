@@ -70,10 +70,10 @@ def _choose(closure):
         if way.cost + 2.0 * effort(program.instructions, [program.results["g"]]) > worth:
             return _plain("the residual at both ends and a short way would take more than the safeguarded solver")
     missed = f", {100.0 * way.missed:.2g} % left to the plain solver" if way.missed else ""
-    steps = f"{way.steps} step{'s' if way.steps > 1 else ''} of {METHODS[way.method]}" if way.steps else "no step before the certificate"
-    why = (f"start: {way.start.name}; {steps}; {way.spent:.3g} evaluations in the mean of {measured.size} sampled points{missed}",
-           *known.why)
-    return Plan(forms.planned(way, known.sure), why, known.ends, way.method, way.steps, known.least_rise, known.sure)
+    plan = Plan(forms.planned(way, known.sure), (), known.ends, way.method, way.steps, known.least_rise, known.sure)
+    return replace(plan, why=(
+        f"start: {way.start.name}; {plan.pace}; {way.spent:.3g} evaluations in the mean of {measured.size} sampled points{missed}",
+        *known.why))
 
 
 def _plain(reason):

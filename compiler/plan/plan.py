@@ -20,6 +20,11 @@ class Plan:
     sure: bool = False              # proved over the operating range: no root is flat, the slope is right
 
     @property
+    def pace(self):
+        """The steps in words."""
+        return f"{self.steps} step{'s' if self.steps > 1 else ''} of {METHODS[self.method]}" if self.steps else "no step"
+
+    @property
     def extra(self):
         """Evaluations that may go before those of the plain solver: both ends, the steps, the certificates, one beside a root."""
         return 0 if self.closure is None else 2 * (self.ends == "evaluated") + self.steps + TRIALS + (not self.sure)

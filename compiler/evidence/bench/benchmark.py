@@ -56,7 +56,7 @@ def benchmark(closure, plan, crew, seconds=SECONDS[1], points=POINTS, checked=CH
     evaluations = judged[SOLVE].counts
     facts = {
         "name": closure.model.name, "title": closure.model.title, "digest": closure.model.digest,
-        "plan": {"option": plan.option if plan.closure else "plain", "why": list(plan.why)},
+        "plan": {"planned": plan.closure is not None, "why": list(plan.why)},
         "terms": TERMS, "environment": _environment(times, problem),
         "rows": [_row(row, judged[row.key], times) for row in ROWS],
         "evaluations": {"median": statistics.median(evaluations), "worst": max(evaluations)},

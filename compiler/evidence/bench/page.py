@@ -193,7 +193,7 @@ def _method(facts):
 
 def _settings(facts):
     lines = ["What each row is", ""]
-    lines += _wrapped(f"the module: as `compile` makes it ({facts['plan']['option']}). {'. '.join(facts['plan']['why'])}", "    ", " "*8)
+    lines += _wrapped(f"the module: as `compile` makes it. {'. '.join(facts['plan']['why'])}", "    ", " "*8)
     for term, meaning in facts["terms"].items():
         lines += _wrapped(f"{term}: {meaning}", "    ", " "*8)
     lines.append("")

@@ -21,7 +21,7 @@ def case(name, equation, bracket, parameters, *, spread=(), **more):
 
 
 def cases():
-    return (*_narrow(), *_second(), *_nowhere(), *_flat(), *_kinks(), *_jumps(), *_open(), *_edges(), *_in_doubles())
+    return (*_narrow(), *_slivers(), *_second(), *_nowhere(), *_flat(), *_kinks(), *_jumps(), *_open(), *_edges(), *_in_doubles())
 
 
 def _narrow():
@@ -58,6 +58,19 @@ def _narrow():
         case("log_lambert_miss", "x + log(x) = log(a)", ("0", "24.43500440393491313826"),
              {"a": (1e-12, 1000000000000.0)}, wrong=("exists",), unknown=NOWHERE, spread=("a",), ends="open-lower"),
         case("log_lambert", "x + log(x) = log(a)", ("0", "30"), {"a": (1e-12, 1000000000000.0)}, spread=("a",), ends="open-lower"),
+    )
+
+
+def _slivers():
+    """Faults in a millionth of the range of a parameter, that no sample meets."""
+    return (
+        case("sliver_of_a_bracket", "x = a + 3*exp(-((b - 0.123456)/2e-7)^2)", ("-1", "2"), {"a": (0, 1), "b": (0, 1)},
+             wrong=("exists",), unknown=NOWHERE),
+        case("sliver_of_a_switch", "x = where(abs(b - 0.123456) < 5e-7, 3, a)", ("-1", "2"), {"a": (0, 1), "b": (0, 1)},
+             wrong=("exists", "kink"), unknown=NOWHERE),
+        case("sliver_of_a_logarithm", "log(x + a + 1 - 5*exp(-((b - 0.7654321)/3e-7)^2)) = 0", ("0", "1.5"), {"a": (-0.5, -0.1), "b": (0, 1)},
+             wrong=("defined",), unknown=UNSAID),
+        case("sliver_of_a_flat", "x^3 + x*(b - 0.123456)^2 = a", ("-3", "3"), {"a": (-1, 1), "b": (0, 1)}, wrong=("slope",)),
     )
 
 

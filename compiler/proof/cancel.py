@@ -88,24 +88,37 @@ class Cancelling:
             if (op, inner.op) in (("cos", "asin"), ("sin", "acos")):
                 return graph.sqrt(self._rational(graph.sub(1, graph.mul(inner.args[0], inner.args[0]))))
         if op in ("sin", "cos", "tan"):
-            value = _at_turn(op, self._turns(args[0]))
-            if value is not None:
-                return graph.number(value)
+            turned = self._turned(op, args[0])
+            if turned is not None:
+                return turned
         if op == "pow" and graph.rational(args[0]) == 1:
             return graph.number(1)
         return graph.enter(op, args)
 
-    def _turns(self, node):
-        """The value as a multiple of pi, a Fraction; None where it is none."""
-        if not self.graph.is_constant(node):
-            return None
+    def _turned(self, op, node):
+        """sin, cos or tan of a sum with a whole number of quarter turns in it, without them; None where there are none."""
+        graph, pi = self.graph, self.graph.pi()
         try:
-            (numerator, denominator), (pi, _) = self.fraction(node), self._atom(self.graph.pi())
+            numerator, denominator = self.fraction(node)
+            if pi not in self.atoms or not denominator.is_constant():
+                return None
+            turn, _ = self._atom(pi)
+            (exponents, _), = turn.terms()
+            quarters = 2 * _exact(numerator.to_dict().get(exponents, 0)) / _exact(denominator.leading_coefficient())
+            if quarters.denominator != 1 or not quarters:
+                return None
+            rest = self._build(numerator - turn * numerator.to_dict()[exponents], denominator)
         except _Full:
             return None
-        if denominator.is_constant() and len(numerator) == 1 and (numerator / numerator.leading_coefficient()) == pi:
-            return _exact(numerator.leading_coefficient()) / _exact(denominator.leading_coefficient())
-        return None
+        if graph.rational(rest) == 0:
+            sine, cosine = graph.number(0), graph.number(1)
+        else:
+            sine, cosine = graph.sin(rest), graph.cos(rest)
+        for _ in range(int(quarters) % 4):
+            sine, cosine = cosine, graph.neg(sine)
+        if op == "tan":
+            return graph.tan(rest) if quarters % 2 == 0 and graph.rational(rest) != 0 else graph.div(sine, cosine)
+        return sine if op == "sin" else cosine
 
     # -- fractions of polynomials
 
@@ -304,15 +317,6 @@ class Cancelling:
                 rest[exponents] = value
         product = graph.mul(self._horner(inner, atoms), graph.power(atoms[best], graph.number(low)))
         return product if not rest else graph.add(product, self._horner(rest, atoms))
-
-
-def _at_turn(op, turns):
-    """sin, cos or tan of a whole multiple of pi/2, given in multiples of pi; None elsewhere, and at a pole."""
-    if turns is None or (2 * turns).denominator != 1:
-        return None
-    quarter = int(2 * turns) % 4
-    sine, cosine = (0, 1, 0, -1)[quarter], (1, 0, -1, 0)[quarter]
-    return {"sin": sine, "cos": cosine, "tan": 0 if sine == 0 else None}[op]
 
 
 def _exact(value):

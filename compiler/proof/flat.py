@@ -21,7 +21,8 @@ from rootwright.proof.witness import in_box, simplest
 
 _STEPS = 40
 _RADII = (Fraction(1, 10 ** 12), Fraction(1, 10 ** 16), Fraction(1, 10 ** 9))       # of the share, and of the parameter's range
-_STARTS = 5
+_STARTS = 8
+_FOLDS = 4              # folds that are worked out
 _CORNERS = 16
 
 
@@ -31,13 +32,13 @@ def refute_slope(examiner, starts):
     if witness:
         return witness, []
     chart = examiner.domain.lower
+    folds = []
     for values, share in starts[:_STARTS]:
         point = examiner.points.exact(values)
-        for name in chart.variables[:-1] if point else ():
-            found = _fold(examiner, point, share, name)
-            if found:
-                return found
-    return None, []
+        for name in chart.variables[:-1] if point and len(folds) < _FOLDS and not examiner.limit.late() else ():
+            fold = _fold(examiner, point, share, name)
+            folds += [fold] if fold else []
+    return (folds[0][0], [point for beside in zip(*(fold[1] for fold in folds)) for point in beside]) if folds else (None, [])
 
 
 # -- folds

@@ -55,13 +55,17 @@ class Points:
             yield {name: _between(pair, generator.random()) for name, pair in bounds.items()}
 
     def from_boxes(self, domain, low, high, count=8):
-        """Points in boxes of a domain, whose parameters may be relative to pivots: the roundest numbers first."""
+        """Points in boxes of a domain, whose parameters may be relative to pivots: the roundest numbers first, of all boxes together and of some."""
+        if len(low) and np.isfinite(low).all() and np.isfinite(high).all():
+            ends = zip(domain.ranges.names[:-1], low.min(axis=0).tolist(), high.max(axis=0).tolist())
+            yield self.absolute(domain, {name: simplest(a, b) for name, a, b in ends})
         order = np.linspace(0, len(low) - 1, min(count, len(low))).astype(int) if len(low) else []
-        for row in order:
-            for share in ("round", 0.5, 0.0, 1.0):
+        order = [row for row in order if np.isfinite(low[row]).all() and np.isfinite(high[row]).all()]
+        for share in ("round", 0.5, 0.0, 1.0):
+            for row in order:
                 values = {name: simplest(a, b) if share == "round" else _between((a, b), share)
                           for name, a, b in zip(domain.ranges.names[:-1], low[row].tolist(), high[row].tolist())}
-                yield self._absolute(domain, values)
+                yield self.absolute(domain, values)
 
     def from_turns(self, domain, outcome, count=12):
         """Points whose box holds a certain zero of the rarer sign of slope: where another zero must be."""
@@ -76,7 +80,7 @@ class Points:
                 signs.append(np.where(values.low > 0, 1, np.where(values.high < 0, -1, 0)))
             for row in np.nonzero(signs[0] * signs[1] < 0)[0][:count]:
                 values = dict(zip(domain.ranges.names[:-1], middle_low[row, :-1]))
-                yield self._absolute(domain, {name: float(value) for name, value in values.items()})
+                yield self.absolute(domain, {name: float(value) for name, value in values.items()})
 
     def edges(self, points, in_range, count=40):
         """Points just inside the requirements, on the way from a point that meets them to one that does not."""
@@ -96,7 +100,8 @@ class Points:
                 near, far = (middle, far) if in_range(middle) else (near, middle)
             yield near
 
-    def _absolute(self, domain, values):
+    def absolute(self, domain, values):
+        """A point of the range for values of the variables of a domain, which may be relative to pivots."""
         bounds = self.bounds
         middle = {name: _between(pair, 0.5) for name, pair in bounds.items()}
         if not domain.scaling:
@@ -140,6 +145,8 @@ def _decimal_inside(end, inward):
     with precision(BITS):
         exact = end.mid().fmpq()
         middle = Fraction(int(exact.p), int(exact.q))
+        if not middle:
+            return middle
         place = Fraction(10) ** (math.floor(math.log10(abs(float(middle)))) - _DIGITS)
         return (middle // place + (1 if inward > 0 else 0)) * place
 

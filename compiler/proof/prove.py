@@ -12,15 +12,17 @@ What is not proved is looked at point by point for a refutation. What is neither
 
 from dataclasses import replace
 from fractions import Fraction
-from itertools import islice
+from itertools import islice, zip_longest
 
 import numpy as np
 
 from rootwright.calculus.constants import NotReal
 from rootwright.proof.advice import brackets, cuts, relative_name
 from rootwright.proof.certificate import Certificate, Claim
+from rootwright.proof.chart import SHARE, Form
 from rootwright.proof.crew import Crew
 from rootwright.proof.crossings import refute_divisors, refute_parameter_switch
+from rootwright.proof.dive import wrong_sign
 from rootwright.proof.flat import refute_slope
 from rootwright.proof.numbers import doubles_are_finite, slope_bound, slope_is_sure
 from rootwright.proof.phantoms import drop_phantoms
@@ -35,9 +37,10 @@ from rootwright.proof.witness import middle
 BOXES = 60_000
 _ENDS, _INSIDE = 0.4, 0.9           # of the boxes that may be spent, by the end of each search
 _SMALL = 0.2                        # of the boxes: a search that leaves as many may be made twice
-_TRIAL = 12_000                     # boxes for trying a proposal
-_CUTS, _BRACKETS = 3, 3             # proposals that are tried
-_POINTS = 16                        # points whose zeros are looked for where only slope or kink is open
+_TRIAL = 5_000                     # boxes for trying a proposal
+_CUTS, _BRACKETS = 2, 2             # proposals that are tried
+_TURNS = 48                         # points beside zeros of two slopes that are looked at
+_POINTS = 24                        # points whose zeros are looked for where only slope or kink is open
 _NEEDS = {                          # what is asked of the boxes for each claim
     "defined": ("ordered", "defined"),
     "exists": ("ordered", "change", "continuous"),
@@ -130,30 +133,52 @@ class _Proof:
         return {claim: witness for claim, witness in examiner.found.items() if claim in open_claims}
 
     def _refute_between(self, examiner, places, open_claims):
-        """Refutations at points that no decimal names."""
+        """Refutations at points that no decimal names, or that lie in a sliver."""
         found = examiner.found
-        if "defined" in open_claims - found.keys():
+        self._dive(examiner, open_claims)
+        if "defined" in open_claims - found.keys() and not self.limit.late():
             witness = refute_divisors(examiner)
             if witness:
                 found["defined"] = witness
-        if "slope" in open_claims - found.keys() and not {"defined", "exists"} & found.keys():
-            witness, beside = refute_slope(examiner, [(values, share) for values, shares in places for share in shares])
+        if "slope" in open_claims - found.keys() and not {"defined", "exists"} & found.keys() and not self.limit.late():
+            witness, beside = refute_slope(examiner, [(values, shares[len(shares) // 2]) for values, shares in places if shares])
             if witness:
                 found["slope"] = witness
             examiner.waves = 0
             for values in beside if "unique" in open_claims - found.keys() else ():
                 examiner.examine(values, open_claims)
                 examiner.search(values, open_claims)
-        if "kink" in open_claims - found.keys() and self.plain.lower.switches:
+        if "kink" in open_claims - found.keys() and self.plain.lower.switches and not self.limit.late():
             witness = refute_kink(examiner) or (None if "exists" in open_claims else refute_parameter_switch(examiner))
             if witness:
                 found["kink"] = witness
 
+    def _dive(self, examiner, open_claims):
+        """Points in slivers of the range: of the wrong sign at an end of the bracket, or out of the domain of the residual."""
+        chart, unknown, left_open = self.domain.lower, self.model.unknown, self.outcome.open
+        searches = [("ordered", [(chart.width, 1)], False)]
+        right = None if unknown.open_lower or unknown.open_upper else examiner.usual_signs()
+        if right:
+            searches.append(("change", list(zip((chart.at_lower, chart.at_upper), right)), False))
+        domains = [(Form((node,), ()), 1) for kind, node in chart.residual.domain or () if kind in ("positive", "not negative")]
+        if domains and not (unknown.open_lower or unknown.open_upper):
+            searches.append(("defined", domains, True))
+        for need, targets, inside in searches:
+            for left in left_open.get(need, ()):
+                if self.limit.late():
+                    return
+                values = wrong_sign(self.domain, left.low, left.high, targets, inside) if left.chart == 0 else None
+                if values:
+                    share = Fraction(values.pop(SHARE))
+                    examiner.examine(examiner.points.absolute(self.domain, values), open_claims, (share,))
+
     def _places(self, points, open_claims):
-        """(point, shares of the bracket) that the searches point to."""
-        if "unique" in open_claims:
-            for values in points.from_turns(self.domain, self.outcome):
-                yield values, ()
+        """(point, shares of the bracket) that the searches point to: from zeros of two slopes and from what is left, in turn."""
+        turns = islice(points.from_turns(self.domain, self.outcome), _TURNS) if "unique" in open_claims else ()
+        for pair in zip_longest(((values, ()) for values in turns), self._left_open(points)):
+            yield from (place for place in pair if place)
+
+    def _left_open(self, points):
         lefts = [left for need, boxes in self.outcome.open.items() if need != "kink" for left in boxes]
         for left in lefts[:12]:
             shares = _shares(self.domain, left)

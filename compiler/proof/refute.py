@@ -133,6 +133,15 @@ class Examiner:
             self.refute("exists", at_point(point, f"the residual is {'positive' if signs[0] > 0 else 'negative'} {places} of the bracket"))
         return True
 
+    def usual_signs(self):
+        """Signs at the closed ends of the bracket at the first point of the range where they differ; None where there is none."""
+        for point in self.inside(16):
+            if self.seen.get(tuple(point.items())):
+                signs = self._sign_at(point, Fraction(0)), self._sign_at(point, Fraction(1))
+                if None not in signs and signs[0] * signs[1] < 0:
+                    return signs
+        return None
+
     def changes_sign(self, point):
         """True where the residual certainly has different signs at the closed ends of the bracket at a point, or is 0 at one."""
         unknown = self.model.unknown

@@ -179,6 +179,45 @@ class Cancelling:
             return []
         return [_exact(here[term] / there[term]) for term in here if term in there]
 
+    def terms(self, node):
+        """{term: factor} of a sum, as it is written."""
+        graph, total = self.graph, {}
+        pending = [(node, Fraction(1))]
+        while pending:
+            node, factor = pending.pop()
+            op, args = graph.instructions[node].op, graph.instructions[node].args
+            if op in ("add", "sub"):
+                pending += [(Node(args[0]), factor), (Node(args[1]), factor if op == "add" else -factor)]
+            elif op == "neg":
+                pending.append((Node(args[0]), -factor))
+            elif op == "mul" and graph.rational(args[0]) is not None:
+                pending.append((Node(args[1]), factor * graph.rational(args[0])))
+            elif op in ("div", "mul") and graph.rational(args[1]):
+                exact = graph.rational(args[1])
+                pending.append((Node(args[0]), factor / exact if op == "div" else factor * exact))
+            elif graph.rational(node) is not None:
+                one = graph.number(1)
+                total[one] = total.get(one, Fraction(0)) + factor * graph.rational(node)
+            else:
+                total[node] = total.get(node, Fraction(0)) + factor
+        return {term: factor for term, factor in sorted(total.items()) if factor}
+
+    def common(self, node, other):
+        """Factors m with which node - m*other loses a term, not a constant one."""
+        here, there = self.terms(node), self.terms(other)
+        return [here[term] / there[term] for term in here if term in there and not self.graph.is_constant(term)]
+
+    def combined(self, node, other, factor):
+        """node + factor*other, less the terms that cancel."""
+        graph, here, total = self.graph, self.terms(node), None
+        for term, value in self.terms(other).items():
+            here[term] = here.get(term, Fraction(0)) + factor * value
+        for term, value in here.items():
+            if value:
+                part = graph.mul(graph.number(value), term)
+                total = part if total is None else graph.add(total, part)
+        return graph.number(0) if total is None else total
+
     def _combined(self, op, a, b=None):
         if op == "neg":
             return -a[0], a[1]

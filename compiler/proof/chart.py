@@ -15,7 +15,7 @@ import numpy as np
 from rootwright.calculus.balls import Balls, precision
 from rootwright.calculus.differentiate import partials
 from rootwright.calculus.lower import Lowering
-from rootwright.calculus.program import Graph, evaluate, needed
+from rootwright.calculus.program import Graph, Node, evaluate, needed
 from rootwright.calculus.switches import switches
 from rootwright.proof.cancel import Cancelling, domain, factors, substituted
 from rootwright.proof.functions import ends
@@ -24,7 +24,9 @@ from rootwright.proof.intervals import Interval, Intervals
 SHARE = "_share"            # the input t: names of a spec begin with a letter
 _BITS = 200
 _LONGEST = 120              # operations of a relaxed form
+_LONGER = 10                # that a relaxed form may have more than the form itself
 _RATIOS = 3                 # multiples of a slack that are tried
+_SHORTER = 0.75             # of the operations of a derivative that an equal of it may have
 
 
 @dataclass(frozen=True)
@@ -41,7 +43,7 @@ class Form:
 class Factor:
     form: Form
     count: int
-    relaxed: tuple              # (sign, Form): see `Chart._relaxed`
+    relaxed: tuple              # (sign, Form, Form of the slack): see `Chart._relaxed`
 
 
 @dataclass(frozen=True)
@@ -79,7 +81,8 @@ class Chart:
             outputs.append(bound.lower(output.expression))
             bound.declare(output.name, outputs[-1])
         self.requirements = [bound.lower(condition) for condition in model.require]
-        self.slacks = [graph.sub(*reversed(pair)) for condition in self.requirements for pair in self._at_most(condition)]
+        self.slacks = [slack for condition in self.requirements for pair in self._at_most(condition)
+                       for slack in self._slacks(graph.sub(*reversed(pair)), 1)]
         passed = [(guard, graph.sub(left, right)) for guard, left, right in switches(graph, [residuals[0], *outputs])]
         roots = [*residuals, width, lower, upper, *self.slacks, *(node for _, node in passed)]
         roots.append(free.lower(model.residual))
@@ -94,6 +97,7 @@ class Chart:
         self.variables = [p.name for p in model.parameters if p.name in names and p.name not in fixed] + [SHARE]
         self.gradients = {}
         self.slope = self._slope(free.lower(model.residual), inside, -1 if from_upper else 1)
+        self.whole = Factor(self.residual, 1, self._relaxed(self.residual.nodes[-1]))
         self.products = {name: self._product(form) for name, form in
                          (("lower", self.at_lower), ("upper", self.at_upper), ("width", self.width))}
 
@@ -141,6 +145,18 @@ class Chart:
             return [instruction.args]
         return [instruction.args[::-1]] if instruction.op in ("ge", "gt") else []
 
+    def _slacks(self, node, sign):
+        """What is not negative (sign 1: not positive) where the node is not: each part of a max that pulls it down stands for the whole."""
+        graph = self.graph
+        op, args = graph.instructions[node].op, [Node(arg) for arg in graph.instructions[node].args]
+        if op == ("min" if sign > 0 else "max"):
+            return [part for arg in args for part in self._slacks(arg, sign)]
+        if op in ("add", "sub"):
+            return [graph.apply(op, a, b) for a in self._slacks(args[0], sign) for b in self._slacks(args[1], sign if op == "add" else -sign)]
+        if op == "neg":
+            return [graph.neg(part) for part in self._slacks(args[0], -sign)]
+        return [node]
+
     def _product(self, form):
         """(the form itself, its constant factor, the others)."""
         constant, counts = factors(self.graph, (self._expanded(form.nodes[-1]) or form.nodes)[-1])
@@ -148,17 +164,18 @@ class Chart:
         return whole, constant, [Factor(Form((node,), ()), count, ()) for node, count in counts.items()]
 
     def _relaxed(self, node):
-        """[(sign, form)]: the node less a multiple m of a slack. With slack >= 0 it bounds the node from below for m > 0, else from above."""
+        """[(sign, form, slack)]: the node less a multiple m of a slack. With slack >= 0 it bounds the node from below for m > 0, else from above."""
         graph, found = self.graph, []
         for slack in self.slack_forms:
-            ratios = self.expanding.ratios(node, slack.nodes[-1])
+            ratios = self.cancelling.common(node, slack.nodes[-1]) or self.expanding.ratios(node, slack.nodes[-1])
             for ratio in sorted(set(ratios), key=lambda ratio: (-ratios.count(ratio), ratio))[:_RATIOS]:
-                other = graph.sub(node, graph.mul(graph.number(ratio), slack.nodes[-1]))
+                other = self.cancelling.combined(node, slack.nodes[-1], -ratio)
                 nodes = dict.fromkeys([self.cancelling.of(other), *self._expanded(other)])
-                nodes = tuple(twin for twin in nodes if self._cost(twin) <= _LONGEST)
-                cancelled = min(map(self._cost, nodes), default=_LONGEST) < self._cost(node) + self._cost(slack.nodes[-1])
-                if cancelled and ratio:
-                    found.append((-1 if ratio > 0 else 1, Form(nodes, ())))
+                longest = max(_LONGEST, self._cost(node) + _LONGER)
+                nodes = tuple(twin for twin in nodes if self._cost(twin) <= longest)
+                cancelled = min(map(self._cost, nodes), default=longest) < self._cost(node) + self._cost(slack.nodes[-1])
+                if nodes and cancelled and ratio:
+                    found.append((-1 if ratio > 0 else 1, Form(nodes, ()), slack))
         return tuple(found)
 
     def _expanded(self, node):
@@ -172,8 +189,13 @@ class Chart:
     def _gradient(self, node):
         if node not in self.gradients:
             inputs = [self.graph.input(name) for name in self.variables]
-            self.gradients[node] = partials(self.graph, node, inputs)
+            self.gradients[node] = [self._shortest(part) for part in partials(self.graph, node, inputs)]
         return self.gradients[node]
+
+    def _shortest(self, node):
+        """A much shorter equal of a derivative where there is one: what cancels there encloses better, and faster."""
+        other = min(self._expanded(node), key=self._cost, default=node)
+        return other if self._cost(other) <= _SHORTER * self._cost(node) else node
 
     # -- evaluation
 
@@ -190,7 +212,10 @@ class Chart:
         """Constants among what the nodes depend on, from ball arithmetic."""
         graph = self.graph
         for node in needed(graph.instructions, nodes, self.constants):
-            if graph.is_constant(node):
+            exact = graph.rational(node)
+            if exact is not None:
+                self.constants[node] = self.arithmetic.number(exact)
+            elif graph.is_constant(node):
                 with precision(_BITS):
                     value = evaluate(graph.instructions, [node], Balls(), {})[node]
                     low, high = ends(value)
@@ -259,6 +284,10 @@ class Chart:
         above = np.stack([np.broadcast_to(values[node].high, size) for node in nodes], axis=1)
         return below, above
 
+    def moves(self, form):
+        """1 for the variables that a form depends on, else 0."""
+        return np.array([float(self.graph.literal(node) != 0) for node in self._gradient(form.nodes[-1])])
+
     def sharp(self, form, low, high, opened=False):
         """(low, high) of a form that is defined and continuous over the boxes, and the slopes used.
 
@@ -290,11 +319,13 @@ def _met(kind, low, high, nonzero):
 
 
 def normalised(below, above, low, high):
-    """Maximal smear (R. B. Kearfott, Rigorous Global Search, 1996): slope times width, each box's largest 1; ones where infinite."""
+    """Maximal smear (R. B. Kearfott, Rigorous Global Search, 1996): slope times width, each box's largest 1; only infinite ones count where
+    there are any, and all alike where there is nothing."""
     with np.errstate(all="ignore"):
         smear = np.maximum(np.abs(below), np.abs(above)) * (high - low)
+        smear = np.where(np.isnan(smear), 0.0, smear)
         total = smear.max(axis=1, keepdims=True)
-        return np.where(np.isfinite(total) & (total > 0), smear / total, 1.0)
+        return np.where(np.isinf(total), np.isinf(smear), np.where(total > 0, smear / total, 1.0))
 
 
 def mean_value(below, above, low, high, centre):

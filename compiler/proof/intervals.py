@@ -15,17 +15,20 @@ import math
 import flint
 import numpy as np
 
-from rootwright.calculus.balls import precision
+from rootwright.calculus.balls import ball, precision
 from rootwright.proof.functions import FUNCTIONS, down, ends, power, up
 
 
 class Interval:
-    """Arrays `low` and `high` of one shape; `undefined`, `jump` and `nonzero` are arrays, or False everywhere."""
+    """Arrays `low` and `high` of one shape; `undefined`, `jump` and `nonzero` are arrays, or False everywhere.
 
-    __slots__ = ("low", "high", "undefined", "jump", "nonzero")
+    `exact` is the rational number that it stands for, where it is one that the spec has.
+    """
 
-    def __init__(self, low, high, undefined=False, jump=False, nonzero=False):
-        self.low, self.high, self.undefined, self.jump, self.nonzero = low, high, undefined, jump, nonzero
+    __slots__ = ("low", "high", "undefined", "jump", "nonzero", "exact")
+
+    def __init__(self, low, high, undefined=False, jump=False, nonzero=False, exact=None):
+        self.low, self.high, self.undefined, self.jump, self.nonzero, self.exact = low, high, undefined, jump, nonzero, exact
 
     def flags(self, *others):
         """(undefined, jump) of a value made from this one and others."""
@@ -70,7 +73,7 @@ class Intervals:
     def number(self, value):
         with precision(200):
             low, high = ends(flint.arb(flint.fmpq(value.numerator, value.denominator)))
-        return Interval(np.array([low]), np.array([high]))
+        return Interval(np.array([low]), np.array([high]), exact=value)
 
     def pi(self):
         return Interval(np.array([float(down(math.pi))]), np.array([float(up(math.pi))]))
@@ -162,9 +165,9 @@ class Intervals:
         return Interval(low, value.high, undefined | a.undefined | b.undefined, a.jump | b.jump, a.apart())
 
     def _constant_power(self, a, b):
-        key = (float(b.low[0]), float(b.high[0]))
+        key = (float(b.low[0]), float(b.high[0]), b.exact)
         if key not in self.powers:
-            self.powers[key] = power(lambda: flint.arb(key[0]).union(flint.arb(key[1])))
+            self.powers[key] = power((lambda: ball(b.exact)) if b.exact is not None else lambda: flint.arb(key[0]).union(flint.arb(key[1])))
         function, positive = self.powers[key], key[0] > 0.0
         low, high = np.maximum(a.low, 0.0), np.maximum(a.high, 0.0)
         at_low, at_high = (_power_at(function, point, positive) for point in (low, high))

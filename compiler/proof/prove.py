@@ -29,6 +29,7 @@ from rootwright.proof.switches import refute_kink
 
 BOXES = 60_000
 _ENDS, _INSIDE = 0.4, 0.9           # of the boxes that may be spent, by the end of each search
+_STEEP = 0.25                       # of the boxes of a search inside, for the trial that cuts only what moves the slope
 _TRIAL = 20_000                     # boxes for trying a proposal
 _NEEDS = {                          # what is asked of the boxes for each claim
     "defined": ("ordered", "defined"),
@@ -66,7 +67,18 @@ class _Proof:
             for index in range(len(self.domain.charts)):
                 last = index == len(self.domain.charts) - 1
                 ceiling = (_INSIDE if last else 0.5 * (_ENDS + _INSIDE)) * boxes
-                search_inside(self.domain, index, crew, self.limit, ceiling, self.outcome, ("defined", "continuous", "unique", "kink"))
+                self._inside(crew, index, ceiling)
+
+    def _inside(self, crew, index, ceiling):
+        """First as if the slope had one sign all over the bracket, with a part of the boxes; what it leaves open is looked at afresh."""
+        wanted = ("defined", "continuous", "unique", "kink")
+        spent = self.limit.spent
+        trial = Outcome(inside_range=self.outcome.inside_range)
+        search_inside(self.domain, index, crew, self.limit, spent + _STEEP * (ceiling - spent), trial, wanted, name="slope")
+        if trial.open:
+            trial = Outcome()
+            search_inside(self.domain, index, crew, self.limit, ceiling, trial, wanted)
+        self.outcome.add(trial)
 
     def certificate(self, seen):
         self.search()

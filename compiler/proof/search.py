@@ -171,8 +171,8 @@ def _factor(chart, factor, low, high):
         bottom[left], top[left] = np.maximum(bottom[left], first), np.minimum(top[left], last)
         open_ = ~((bottom[left] > 0) | (top[left] <= 0))
         rest = left[open_]
-        for sign, relaxed in factor.relaxed if len(rest) else ():
-            _relax(chart, sign, relaxed, low, high, bottom, top, rest)
+        if len(rest):
+            _relaxations(chart, factor, low, high, bottom, top, smear, rest)
         keep = np.nonzero(open_ & ~((bottom[left] >= 0) | (top[left] <= 0)))[0]
         if len(keep) and chart.slack_forms:
             at = left[keep]
@@ -180,20 +180,52 @@ def _factor(chart, factor, low, high):
     return (bottom, top), smear
 
 
-def _relax(chart, sign, relaxed, low, high, bottom, top, at):
-    """Bounds from a form less a multiple of a slack, into `bottom` and `top` of the boxes `at`."""
-    part = chart.natural(relaxed, low[at], high[at])
-    first, last = part.low.copy(), part.high.copy()
-    open_ = np.nonzero(~((first >= 0) if sign < 0 else (last <= 0)) & part.regular)[0]
-    if len(open_):
-        first[open_], last[open_], _, _ = chart.sharp(relaxed, low[at[open_]], high[at[open_]])
-    if sign < 0:
-        bottom[at] = np.maximum(bottom[at], first)
-    else:
-        top[at] = np.minimum(top[at], last)
+def _in_range(chart, low, high, at, rows, first, last, below, above, smear, opened):
+    """Bounds of the residual over the part in the operating range of the boxes `at`, those that some requirement cuts, into `first` and
+    `last` at `rows`."""
+    bottom, top, part = first[rows], last[rows], smear[at]
+    _relaxations(chart, chart.whole, low[at], high[at], bottom, top, part, np.arange(len(at)), opened)
+    first[rows], last[rows], smear[at] = bottom, top, part
+    still = (bottom <= 0) & (top >= 0)
+    at, rows = at[still], rows[still]
+    if len(at):
+        first[rows], last[rows] = _within_range(chart, chart.residual, low[at], high[at], below[rows], above[rows], first[rows], last[rows], opened)
 
 
-def _within_range(chart, form, low, high, below, above, bottom, top):
+def _relaxations(chart, factor, low, high, bottom, top, smear, at, opened=False):
+    """Bounds from a form less multiples of a slack that cuts a box, into `bottom` and `top` of the boxes `at`.
+
+    `smear` becomes that of the form whose bound is best on the side that the box seems to lie: next to the edge of the range no cut of the
+    form itself helps.
+    """
+    best = np.full(len(low), -np.inf)
+    with np.errstate(all="ignore"):
+        positive = ~(bottom + top < 0)
+    for sign, relaxed, slack in factor.relaxed:
+        at = at[(bottom[at] <= 0) & (top[at] >= 0)]
+        here = at[chart.natural(slack, low[at], high[at], opened).low < 0] if len(at) else at
+        if not len(here):
+            continue
+        part = chart.natural(relaxed, low[here], high[here], opened)
+        first, last = part.low.copy(), part.high.copy()
+        open_ = ~((first > 0) if sign < 0 else (last < 0))
+        stuck = here[open_ & ~part.regular & (positive[here] == (sign < 0)) & (best[here] == -np.inf)]
+        smear[stuck] = chart.moves(relaxed)
+        open_ = np.nonzero(open_ & part.regular)[0]
+        if len(open_):
+            rows = here[open_]
+            first[open_], last[open_], below, above = chart.sharp(relaxed, low[rows], high[rows], opened)
+            bound = first[open_] if sign < 0 else -last[open_]
+            better = (positive[rows] == (sign < 0)) & (bound > best[rows])
+            best[rows[better]] = bound[better]
+            smear[rows[better]] = normalised(below, above, low[rows], high[rows])[better]
+        if sign < 0:
+            bottom[here] = np.maximum(bottom[here], first)
+        else:
+            top[here] = np.minimum(top[here], last)
+
+
+def _within_range(chart, form, low, high, below, above, bottom, top, opened=False):
     """Bounds of a form over the part of the boxes in the operating range, by Lagrange's multipliers.
 
     Where a slack c is not negative, g >= g - m*c for m >= 0 and g <= g - m*c for m <= 0. m is chosen to cancel the slope in the
@@ -201,13 +233,13 @@ def _within_range(chart, form, low, high, below, above, bottom, top):
     """
     centre = low + 0.5 * (high - low)
     centre = np.clip(centre, low, high)
-    at_centre = chart.natural(form, centre, centre)
+    at_centre = chart.natural(form, centre, centre, opened)
     reach = 0.5 * (high - low)
     for slack in chart.slack_forms:
-        whole = chart.natural(slack, low, high)
+        whole = chart.natural(slack, low, high, opened)
         usable = ~whole.undefined & ~whole.jump
-        c_below, c_above = chart.slopes(slack, low, high)
-        c_centre = chart.natural(slack, centre, centre)
+        c_below, c_above = chart.slopes(slack, low, high, opened)
+        c_centre = chart.natural(slack, centre, centre, opened)
         rows = np.arange(len(low))
         with np.errstate(all="ignore"):
             middle, c_middle = 0.5 * (below + above), 0.5 * (c_below + c_above)
@@ -248,8 +280,8 @@ def _next_to(chart, low, high):
     return (sign > 0, sign < 0), smear
 
 
-def judge_inside(chart, low, high, opened):
-    """`opened`: the boxes leave out t = 0."""
+def judge_inside(chart, low, high, opened, steep=False):
+    """`opened`: the boxes leave out t = 0. `steep`: what moves the slope alone is cut, as if it had one sign all over the bracket."""
     size = len(low)
     flags = [np.zeros(size, bool) for _ in range(4)]
     outcome = Inside(outside(chart, low, high), *flags, np.zeros(size, int), np.zeros(low.shape))
@@ -267,14 +299,17 @@ def judge_inside(chart, low, high, opened):
         smear[broken] = chart.trouble(chart.residual, low[broken], high[broken], opened)
     if len(smooth):
         first, last, below, above = chart.sharp(chart.residual, low[smooth], high[smooth], opened)
-        active[smooth] = ~((first > 0) | (last < 0))
         smear[smooth] = normalised(below, above, low[smooth], high[smooth])
+        open_ = np.nonzero((first <= 0) & (last >= 0))[0]
+        if len(open_) and chart.slack_forms:
+            _in_range(chart, low, high, smooth[open_], open_, first, last, below, above, smear, opened)
+        active[smooth] = ~((first > 0) | (last < 0))
     rise = np.zeros(len(at), int)
     left = smooth[active[smooth]]
     if len(left):
         inner = left
         rise[inner], part = _signed(chart, chart.slope, low[inner], high[inner], opened)
-        smear[inner] += part
+        smear[inner] = part if steep else smear[inner] + part
     switch = np.zeros(len(at), bool)
     left = np.nonzero(active)[0]
     if len(left) and chart.switches:

@@ -13,8 +13,8 @@ from rootwright.proof.functions import ends
 from rootwright.proof.ranges import as_ball, exact_ends, ranges
 from rootwright.proof.search import judge_ends, judge_inside, split, unjudged
 
-_FIRST, _FEWEST = 64, 8     # boxes of the first wave and of the shortest, where there is a time
-_SHORT = 0.3                # seconds that a wave should take then
+_FIRST, _FEWEST = 128, 128  # boxes of the first wave and of the shortest, where there is a time
+_SHORT = 0.5                # seconds that a wave should take then
 
 
 @dataclass
@@ -36,6 +36,13 @@ class Outcome:
     def leave(self, claim, need, low, high, index):
         if need.any():
             self.open.setdefault(claim, []).append(Left(low[need], high[need], index))
+
+    def add(self, other):
+        """Takes over what a search inside has found."""
+        for claim, lefts in other.open.items():
+            self.open.setdefault(claim, []).extend(lefts)
+        self.active += other.active
+        self.rises |= other.rises
 
     def keep(self, judged, done, low, high, index):
         """Notes the boxes that are done with and may hold a zero."""
@@ -104,8 +111,8 @@ class Domain:
 
     def judges(self):
         """{name: function of arrays (low, high)} for a Crew."""
-        inside = {f"inside {index}": partial(judge_inside, chart, opened=opened)
-                  for index, (chart, opened) in enumerate(zip(self.charts, self.opened))}
+        inside = {f"{name} {index}": partial(judge_inside, chart, opened=opened, steep=name == "slope")
+                  for index, (chart, opened) in enumerate(zip(self.charts, self.opened)) for name in ("inside", "slope")}
         return {"ends": partial(judge_ends, self.lower, self.upper, self.model)} | inside
 
 
@@ -125,10 +132,11 @@ def search_ends(domain, crew, limit, ceiling, outcome):
         outcome.leave(claim, ~left.judged.outside & ~getattr(left.judged, claim), left.low, left.high, 0)
 
 
-def search_inside(domain, index, crew, limit, ceiling, outcome, wanted, low=None, high=None, share_only=False):
+def search_inside(domain, index, crew, limit, ceiling, outcome, wanted, low=None, high=None, share_only=False, name="inside"):
     """Cuts boxes of parameters and share until nothing that the claims in `wanted` need is open; fills the outcome.
 
-    `share_only`: the boxes hold single points of the parameters, whose rounding is not worth a cut.
+    `share_only`: the boxes hold single points of the parameters, whose rounding is not worth a cut. `name` is that of the judge:
+    `slope` cuts what moves the slope alone.
     """
     if low is None:
         low, high = domain.whole()
@@ -142,7 +150,7 @@ def search_inside(domain, index, crew, limit, ceiling, outcome, wanted, low=None
         if share_only:
             judged.smear[:, :-1] = -1e9
 
-    left = _search(domain, crew, limit, ceiling, f"inside {index}", open_of, note, low, high, 2.0 ** (-48 if share_only else -160))
+    left = _search(domain, crew, limit, ceiling, f"{name} {index}", open_of, note, low, high, 2.0 ** (-48 if share_only else -160))
     for claim, need in needs_of(left.judged).items():
         outcome.leave(claim, need, left.low, left.high, index)
     outcome.keep(left.judged, np.ones(len(left.low), bool), left.low, left.high, index)

@@ -352,15 +352,12 @@ def factors(graph, node):
     return constant, dict(sorted(counts.items()))
 
 
-def substituted(graph, node, name, value):
-    """The node with another node in the place of an input."""
-    twins = {}
-    for step in needed(graph.instructions, [node]):
+def substituted(graph, node, values):
+    """The node with other nodes in the place of some: {node: node}."""
+    twins = dict(values)
+    for step in needed(graph.instructions, [node], twins):
         instruction = graph.instructions[step]
-        if instruction.op == "input" and instruction.value == name:
-            twins[step] = value
-        else:
-            twins[step] = graph.enter(instruction.op, [twins[arg] for arg in instruction.args], instruction.value)
+        twins[step] = graph.enter(instruction.op, [twins[arg] for arg in instruction.args], instruction.value)
     return twins[node]
 
 

@@ -8,6 +8,8 @@ what is left (A. Neumaier, Interval Methods for Systems of Equations, 1990, sect
 """
 
 from dataclasses import dataclass
+from functools import cached_property
+from fractions import Fraction
 
 import flint
 import numpy as np
@@ -19,13 +21,16 @@ from rootwright.calculus.program import Graph, Node, evaluate, needed
 from rootwright.calculus.switches import switches
 from rootwright.proof.cancel import Cancelling, domain, factors, substituted
 from rootwright.proof.functions import ends
+from rootwright.proof.groups import groups
 from rootwright.proof.intervals import Interval, Intervals
 
+_SWITCHING = ("where", "min", "max", "abs", "sign")
 SHARE = "_share"            # the input t: names of a spec begin with a letter
 _BITS = 200
 _LONGEST = 120              # operations of a relaxed form
 _LONGER = 10                # that a relaxed form may have more than the form itself
 _RATIOS = 3                 # multiples of a slack that are tried
+_CURVED = 3                 # variables of a form up to which its second derivatives are used
 _SHORTER = 0.75             # of the operations of a derivative that an equal of it may have
 
 
@@ -62,9 +67,12 @@ class Values:
 
 
 class Chart:
-    """`variables` are the names of the inputs in order, the share of the bracket last. `fixed` parameters are 1."""
+    """`variables` are the names of the inputs in order, the share of the bracket last. `fixed` parameters are 1.
 
-    def __init__(self, model, fixed=(), from_upper=False):
+    `grouped`: parameters that matter only together are one variable (`groups`); a requirement on them apart is left out.
+    """
+
+    def __init__(self, model, fixed=(), from_upper=False, grouped=False):
         self.model = model
         self.graph = graph = Graph()
         self.arithmetic = Intervals()
@@ -81,25 +89,74 @@ class Chart:
             outputs.append(bound.lower(output.expression))
             bound.declare(output.name, outputs[-1])
         self.requirements = [bound.lower(condition) for condition in model.require]
+        free_residual = free.lower(model.residual)
+        self.groups = ()
+        if grouped:
+            self.groups, replaced = self._grouped(free_residual, residuals[0], lower, upper, outputs, unknown)
+            residuals = [replaced(node) for node in residuals]
+            free_residual, lower, upper, width, inside = map(replaced, (free_residual, lower, upper, width, inside))
+            outputs = [replaced(node) for node in outputs]
+            self.every_requirement, kept = self.requirements, [replaced(node) for node in self.requirements]
+            self.requirements = [node for node in kept if not self._inputs([node]) & self.absorbed]
         self.slacks = [slack for condition in self.requirements for pair in self._at_most(condition)
                        for slack in self._slacks(graph.sub(*reversed(pair)), 1)]
         passed = [(guard, graph.sub(left, right)) for guard, left, right in switches(graph, [residuals[0], *outputs])]
         roots = [*residuals, width, lower, upper, *self.slacks, *(node for _, node in passed)]
-        roots.append(free.lower(model.residual))
+        roots.append(free_residual)
         self.cancelling, self.expanding = Cancelling(graph, roots), Cancelling(graph, roots, exponentials=True)
         self.residual = self._form(residuals[0])
         self.at_lower, self.at_upper, self.width = (self._form(node, True) for node in (*residuals[1:], width))
         self.bracket = [self._form(lower), self._form(upper)]
         self.slack_forms = [self._form(node) for node in self.slacks]
         self.switches = [(guard, self._form(node)) for guard, node in passed]
-        used = needed(graph.instructions, [*residuals, *self.requirements, lower, upper, *(node for _, node in passed)])
-        names = {graph.instructions[node].value for node in used if graph.instructions[node].op == "input"}
-        self.variables = [p.name for p in model.parameters if p.name in names and p.name not in fixed] + [SHARE]
-        self.gradients = {}
-        self.slope = self._slope(free.lower(model.residual), inside, -1 if from_upper else 1)
-        self.whole = Factor(self.residual, 1, self._relaxed(self.residual.nodes[-1]))
-        self.products = {name: self._product(form) for name, form in
-                         (("lower", self.at_lower), ("upper", self.at_upper), ("width", self.width))}
+        names = self._inputs([*residuals, *self.requirements, lower, upper, *(node for _, node in passed)])
+        self.variables = [name for name in (*(p.name for p in model.parameters), *(group.name for group in self.groups)) if name in names]
+        self.variables.append(SHARE)
+        self.gradients, self.hessians = {}, {}
+        self._along = free_residual, inside, -1 if from_upper else 1
+
+    @cached_property
+    def slope(self):
+        """g_x, all over the bracket."""
+        return self._slope(*self._along)
+
+    @cached_property
+    def whole(self):
+        """The residual inside the bracket, as a factor."""
+        return Factor(self.residual, 1, self._relaxed(self.residual.nodes[-1]))
+
+    @cached_property
+    def products(self):
+        """{"lower", "upper", "width": the residual at an end, the bracket's width, in factors}."""
+        return {name: self._product(form) for name, form in
+                (("lower", self.at_lower), ("upper", self.at_upper), ("width", self.width))}
+
+    def prepare(self):
+        """Works out, in an order that is always the same, what cancels: all processes that judge boxes then use the same forms."""
+        factors_ = [self.whole, *(factor for product in self.products.values() for factor in (product[0], *product[2]))]
+        forms = [self.slope, *(factor.form for factor in factors_), *(part[1] for factor in factors_ for part in factor.relaxed)]
+        for form in forms:
+            node = form.nodes[-1]
+            self.gradients[node] = [self._shortest(part) for part in self._gradient(node)]
+        return self
+
+    def _inputs(self, nodes):
+        """Names of the inputs that nodes depend on."""
+        instructions = self.graph.instructions
+        return {instructions[node].value for node in needed(instructions, nodes) if instructions[node].op == "input"}
+
+    def _grouped(self, free_residual, residual, lower, upper, outputs, unknown):
+        """(groups, function that puts them into a node). Only values without switches are taken, which are claimed about apart."""
+        graph, instructions = self.graph, self.graph.instructions
+        roots = [free_residual, lower, upper]
+        for guard, left, right in switches(graph, [residual, *outputs]):
+            roots += [left, right] + ([guard] if guard is not None else [])
+        names = {p.name for p in self.model.parameters}
+        found = [group for group in groups(graph, roots, names, {self.model.unknown.name, SHARE})
+                 if not any(instructions[node].op in _SWITCHING for node in needed(instructions, [group.node]))]
+        self.absorbed = {name for group in found for name in group.absorbed}
+        values = {Node(group.node): graph.input(group.name) for group in found}
+        return tuple(found), lambda node: substituted(graph, node, values)
 
     def _lowering(self, fixed, unknown):
         graph, model = self.graph, self.model
@@ -131,9 +188,11 @@ class Chart:
         (node,) = partials(graph, free, [graph.input(name)])
         along = self._gradient(self.residual.nodes[-1])[-1]
         forms = [node, self.cancelling.of(node), *self._expanded(node)]
-        forms = [substituted(graph, form, name, inside) for form in forms]
+        forms = [substituted(graph, form, {graph.input(name): inside}) for form in forms]
         forms += [self.cancelling.of(forms[0]), graph.div(along, graph.mul(direction, self.width.nodes[-1]))]
         others = sorted(dict.fromkeys(forms[1:]), key=lambda form: (-self._cost(form), form))
+        if self._cost(others[-1]) > _LONGEST:
+            others = others[-1:]
         return Form((forms[0], *(form for form in others if form != forms[0])), ())
 
     def _at_most(self, condition):
@@ -189,7 +248,7 @@ class Chart:
     def _gradient(self, node):
         if node not in self.gradients:
             inputs = [self.graph.input(name) for name in self.variables]
-            self.gradients[node] = [self._shortest(part) for part in partials(self.graph, node, inputs)]
+            self.gradients[node] = partials(self.graph, node, inputs)
         return self.gradients[node]
 
     def _shortest(self, node):
@@ -310,6 +369,65 @@ class Chart:
         first = np.where(np.isnan(first), values.low[:size], first)
         last = np.where(np.isnan(last), values.high[size:2 * size], last)
         return first, last, below, above
+
+
+    def sharper(self, form, low, high, opened=False):
+        """As `sharp`; where that leaves the sign open and the middle of the box has one, Taylor's form of second order as well."""
+        first, last, below, above = self.sharp(form, low, high, opened)
+        at = np.nonzero((first <= 0) & (last >= 0))[0]
+        moving = [k for k, moves in enumerate(self.moves(form)) if moves]
+        if not len(at) or not 0 < len(moving) <= _CURVED:
+            return first, last, below, above
+        rising, falling = below[at] >= 0, above[at] <= 0
+        if opened:
+            rising[:, -1] = falling[:, -1] = False
+        centre = _centres(low[at], high[at])
+        middle = self.natural(form, centre, centre, opened)
+        positive = middle.low > 0
+        some = positive | (middle.high < 0)
+        at, rising, falling, positive = at[some], rising[some], falling[some], positive[some, None]
+        if len(at):
+            to_low = np.where(positive, rising, falling)
+            to_high = np.where(positive, falling, rising) & ~to_low
+            a, b = np.where(to_high, high[at], low[at]), np.where(to_low, low[at], high[at])
+            bottom, top = self._taylor(form, moving, a, b, opened)
+            positive = positive[:, 0]
+            first[at] = np.where(positive, np.maximum(first[at], bottom), first[at])
+            last[at] = np.where(positive, last[at], np.minimum(last[at], top))
+        return first, last, below, above
+
+    def _taylor(self, form, moving, low, high, opened):
+        """(low, high) of a form over boxes by f(c) + f'(c) (x - c) + f''(box) (x - c)^2/2 (Neumaier, as above; Moore, section 3.4)."""
+        node, size, arithmetic = form.nodes[-1], len(low), self.arithmetic
+        gradient, hessian = self._gradient(node), self._hessian(node, moving)
+        centre = _centres(low, high)
+        at_centre = self.evaluate([gradient[k] for k in moving], centre, centre, opened)
+        over = self.evaluate([*(gradient[k] for k in moving), *hessian.values()], low, high, opened)
+        value = self.natural(form, centre, centre, opened)
+        with np.errstate(all="ignore"):
+            total = Interval(value.low, value.high)
+            smooth = ~value.undefined
+            step = {k: Interval(np.where(low[:, k] == centre[:, k], 0.0, np.nextafter(low[:, k] - centre[:, k], -np.inf)),
+                                np.where(high[:, k] == centre[:, k], 0.0, np.nextafter(high[:, k] - centre[:, k], np.inf))) for k in moving}
+            for k in moving:
+                total = arithmetic.add(total, arithmetic.mul(at_centre[gradient[k]], step[k]))
+                smooth = smooth & ~over[gradient[k]].undefined & ~over[gradient[k]].jump
+            for (i, k), second in hessian.items():
+                square = arithmetic.mul(step[i], step[k])
+                part = arithmetic.mul(over[second], square)
+                half = arithmetic.mul(part, arithmetic.number(Fraction(1, 2))) if i == k else part
+                total = arithmetic.add(total, half)
+                smooth = smooth & ~over[second].undefined & ~over[second].jump
+        smooth = np.broadcast_to(smooth, size)
+        return np.where(smooth, total.low, -np.inf), np.where(smooth, total.high, np.inf)
+
+    def _hessian(self, node, moving):
+        """{(i, k): second derivative by the variables i <= k}."""
+        if node not in self.hessians:
+            inputs = [self.graph.input(self.variables[k]) for k in moving]
+            self.hessians[node] = {(i, k): part for i in moving
+                                   for k, part in zip(moving, partials(self.graph, self._gradient(node)[i], inputs)) if i <= k}
+        return self.hessians[node]
 
 
 def _met(kind, low, high, nonzero):

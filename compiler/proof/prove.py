@@ -12,10 +12,13 @@ What is not proved is looked at point by point for a refutation. What is neither
 
 import json
 from dataclasses import replace
+from functools import cached_property
 
 import numpy as np
 
 from rootwright.calculus.lower import Lowering
+from rootwright.calculus.program import Graph, needed
+from rootwright.calculus.switches import switches
 from rootwright.proof.advice import proposals, relative_name, with_requirement
 from rootwright.proof.certificate import Certificate, Claim
 from rootwright.proof.crew import Crew
@@ -27,8 +30,9 @@ from rootwright.proof.sensitivities import sensitivity_bounds
 from rootwright.proof.settle import Domain, Limit, Outcome, search_ends, search_inside, share
 from rootwright.proof.switches import refute_kink
 
-BOXES = 60_000
+BOXES = 120_000
 _ENDS, _INSIDE = 0.4, 0.9           # of the boxes that may be spent, by the end of each search
+_GROUPED = 0.25                     # of all boxes, for the trial with groups of parameters
 _STEEP = 0.25                       # of the boxes of a search inside, for the trial that cuts only what moves the slope
 _TRIAL = 20_000                     # boxes for trying a proposal
 _NEEDS = {                          # what is asked of the boxes for each claim
@@ -54,26 +58,39 @@ def prove(closure, boxes=BOXES, seconds=None, workers=1, progress=None, seen=Non
 class _Proof:
     def __init__(self, closure, limit, workers):
         self.closure, self.model, self.limit, self.workers = closure, closure.model, limit, workers
-        self.plain = Domain(self.model)
-        scaling = relative(self.plain.lower)
-        self.domain = Domain(self.model, scaling) if scaling else self.plain
+        self.scaling = relative(self.model)
         self.outcome = Outcome()
 
+    @cached_property
+    def plain(self):
+        return Domain(self.model)
+
     def search(self):
-        """Both searches, as far as the limit goes."""
+        """Both searches, as far as the limit goes: with parameters that matter only together as one, and if that does not settle all, apart."""
         boxes = self.limit.boxes
+        self.domain = Domain(self.model, self.scaling, grouped=True)
+        if self.domain.charts:
+            self._search(_GROUPED * boxes)
+            if not self.outcome.open and len(self.outcome.rises) <= 1:
+                return
+        self.outcome = Outcome()
+        self.domain = Domain(self.model, self.scaling) if self.scaling else self.plain
+        self._search(boxes)
+
+    def _search(self, boxes):
+        before = self.limit.spent
+        boxes -= before
         with Crew(self.domain.judges(), self.workers) as crew:
-            search_ends(self.domain, crew, self.limit, _ENDS * boxes, self.outcome)
+            search_ends(self.domain, crew, self.limit, before + _ENDS * boxes, self.outcome)
             for index in range(len(self.domain.charts)):
                 last = index == len(self.domain.charts) - 1
-                ceiling = (_INSIDE if last else 0.5 * (_ENDS + _INSIDE)) * boxes
-                self._inside(crew, index, ceiling)
+                self._inside(crew, index, before + (_INSIDE if last else 0.5 * (_ENDS + _INSIDE)) * boxes)
 
     def _inside(self, crew, index, ceiling):
         """First as if the slope had one sign all over the bracket, with a part of the boxes; what it leaves open is looked at afresh."""
         wanted = ("defined", "continuous", "unique", "kink")
         spent = self.limit.spent
-        trial = Outcome(inside_range=self.outcome.inside_range)
+        trial = Outcome()
         search_inside(self.domain, index, crew, self.limit, spent + _STEEP * (ceiling - spent), trial, wanted, name="slope")
         if trial.open:
             trial = Outcome()
@@ -153,7 +170,9 @@ class _Proof:
                      for k, name in enumerate(self.domain.ranges.names[:-1]))
 
     def _relative(self):
-        """((parameter, what stands for it), ...): `sag/L` for `sag`."""
+        """((parameter, what stands for it), ...): `sag/L` for `sag`, one value for all parameters of a group."""
+        if self.domain.grouped:
+            return tuple((name, "one value of " + ", ".join(group.absorbed)) for group in self.domain.lower.groups for name in group.absorbed)
         names = ((name, relative_name(self.domain, name)) for name in self.domain.ranges.names[:-1])
         return tuple((name, text) for name, text in names if name != text)
 
@@ -173,19 +192,31 @@ class _Proof:
         return ()
 
 
-def relative(chart):
+def relative(model):
     """The scaling that leaves the fewest variables, or None."""
-    model, graph = chart.model, chart.graph
-    lowering = chart._lowering((), graph.input(model.unknown.name))
-    residual = lowering.lower(model.residual)
-    switches = [form.nodes[0] for _, form in chart.switches]
-    if switches:
+    graph = Graph()
+    lowering = Lowering(graph)
+    for constant in model.constants:
+        lowering.declare(constant.name, graph.named(constant.name, lowering.lower(constant.expression)))
+    names = [parameter.name for parameter in model.parameters]
+    for name in (*names, model.unknown.name):
+        lowering.declare(name, graph.input(name))
+    for definition in model.definitions:
+        lowering.declare(definition.name, lowering.lower(definition.expression))
+    residual, bracket = lowering.lower(model.residual), [lowering.lower(end) for end in (model.unknown.lower, model.unknown.upper)]
+    conditions = [lowering.lower(condition) for condition in model.require]
+    outputs = []
+    for output in model.outputs:
+        outputs.append(lowering.lower(output.expression))
+        lowering.declare(output.name, outputs[-1])
+    if switches(graph, [residual, *outputs]):
         return None
+    used = {graph.instructions[node].value for node in needed(graph.instructions, [residual, *bracket, *conditions])
+            if graph.instructions[node].op == "input"}
     exact = exact_ends(model)
-    positive = [name for name in chart.variables[:-1] if as_ball(exact[name][0]) > 0]
+    positive = [name for name in names if name in used and as_ball(exact[name][0]) > 0]
     positive.sort(key=lambda name: (float(as_ball(exact[name][1]) / as_ball(exact[name][0])), name))
-    scaling = symmetries(graph.instructions, [residual, *chart.requirements], [form.nodes[0] for form in chart.bracket],
-                         model.unknown.name, positive)
+    scaling = symmetries(graph.instructions, [residual, *conditions], bracket, model.unknown.name, positive)
     return scaling if scaling.pivots else None
 
 

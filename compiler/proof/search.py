@@ -90,7 +90,7 @@ def outside(chart, low, high):
         values = chart.natural(slack, low[at], high[at])
         at = at[(values.low < 0) & ~values.undefined & ~values.jump]
         if len(at):
-            result[at] = chart.sharp(slack, low[at], high[at])[1] < 0
+            result[at] = chart.sharper(slack, low[at], high[at])[1] < 0
     return result
 
 
@@ -107,7 +107,7 @@ def _signed(chart, form, low, high, opened=False):
             smear[broken] = chart.trouble(form, low[broken], high[broken], opened)
         at = at[values.regular[at]]
     if len(at):
-        first, last, below, above = chart.sharp(form, low[at], high[at], opened)
+        first, last, below, above = chart.sharper(form, low[at], high[at], opened)
         sign[at] = np.where(first > 0, 1, np.where(last < 0, -1, 0))
         smear[at] = normalised(below, above, low[at], high[at])
     return sign, smear
@@ -166,7 +166,7 @@ def _factor(chart, factor, low, high):
     left = np.nonzero(~((bottom > 0) | (top < 0)))[0]
     left = left[values.regular[left]]
     if len(left):
-        first, last, below, above = chart.sharp(factor.form, low[left], high[left])
+        first, last, below, above = chart.sharper(factor.form, low[left], high[left])
         smear[left] = normalised(below, above, low[left], high[left])
         bottom[left], top[left] = np.maximum(bottom[left], first), np.minimum(top[left], last)
         open_ = ~((bottom[left] > 0) | (top[left] <= 0))
@@ -180,16 +180,17 @@ def _factor(chart, factor, low, high):
     return (bottom, top), smear
 
 
-def _in_range(chart, low, high, at, rows, first, last, below, above, smear, opened):
-    """Bounds of the residual over the part in the operating range of the boxes `at`, those that some requirement cuts, into `first` and
-    `last` at `rows`."""
-    bottom, top, part = first[rows], last[rows], smear[at]
-    _relaxations(chart, chart.whole, low[at], high[at], bottom, top, part, np.arange(len(at)), opened)
-    first[rows], last[rows], smear[at] = bottom, top, part
-    still = (bottom <= 0) & (top >= 0)
-    at, rows = at[still], rows[still]
+def _in_range(chart, low, high, at, first, last, below, above, smear, opened):
+    """Bounds of the residual over the part in the operating range of the boxes `at`, those that some requirement cuts, into `first` and `last`."""
+    cut = np.zeros(len(at), bool)
+    for slack in chart.slack_forms:
+        cut |= chart.natural(slack, low[at], high[at], opened).low < 0
+    at = at[cut]
     if len(at):
-        first[rows], last[rows] = _within_range(chart, chart.residual, low[at], high[at], below[rows], above[rows], first[rows], last[rows], opened)
+        _relaxations(chart, chart.whole, low, high, first, last, smear, at, opened)
+        at = at[(first[at] <= 0) & (last[at] >= 0)]
+    if len(at) and not chart.whole.relaxed:
+        first[at], last[at] = _within_range(chart, chart.residual, low[at], high[at], below[at], above[at], first[at], last[at], opened)
 
 
 def _relaxations(chart, factor, low, high, bottom, top, smear, at, opened=False):
@@ -214,7 +215,7 @@ def _relaxations(chart, factor, low, high, bottom, top, smear, at, opened=False)
         open_ = np.nonzero(open_ & part.regular)[0]
         if len(open_):
             rows = here[open_]
-            first[open_], last[open_], below, above = chart.sharp(relaxed, low[rows], high[rows], opened)
+            first[open_], last[open_], below, above = chart.sharper(relaxed, low[rows], high[rows], opened)
             bound = first[open_] if sign < 0 else -last[open_]
             better = (positive[rows] == (sign < 0)) & (bound > best[rows])
             best[rows[better]] = bound[better]
@@ -297,19 +298,16 @@ def judge_inside(chart, low, high, opened, steep=False):
     broken = np.nonzero(values.undefined)[0]
     if len(broken):
         smear[broken] = chart.trouble(chart.residual, low[broken], high[broken], opened)
+    rise, part = np.zeros(len(at), int), np.zeros(low.shape)
+    if steep:
+        rise[smooth], part[smooth] = _signed(chart, chart.slope, low[smooth], high[smooth], opened)
+        smooth = smooth[rise[smooth] == 0]
     if len(smooth):
-        first, last, below, above = chart.sharp(chart.residual, low[smooth], high[smooth], opened)
-        smear[smooth] = normalised(below, above, low[smooth], high[smooth])
-        open_ = np.nonzero((first <= 0) & (last >= 0))[0]
-        if len(open_) and chart.slack_forms:
-            _in_range(chart, low, high, smooth[open_], open_, first, last, below, above, smear, opened)
-        active[smooth] = ~((first > 0) | (last < 0))
-    rise = np.zeros(len(at), int)
+        active[smooth], smear[smooth] = _active(chart, low[smooth], high[smooth], opened)
     left = smooth[active[smooth]]
-    if len(left):
-        inner = left
-        rise[inner], part = _signed(chart, chart.slope, low[inner], high[inner], opened)
-        smear[inner] = part if steep else smear[inner] + part
+    if not steep and len(left):
+        rise[left], part[left] = _signed(chart, chart.slope, low[left], high[left], opened)
+    smear[left] = part[left] if steep else smear[left] + part[left]
     switch = np.zeros(len(at), bool)
     left = np.nonzero(active)[0]
     if len(left) and chart.switches:
@@ -319,6 +317,16 @@ def judge_inside(chart, low, high, opened, steep=False):
     outcome.undefined[at], outcome.active[at], outcome.jump[at] = values.undefined, active, values.jump
     outcome.rise[at], outcome.switch[at], outcome.smear[at] = rise, switch, smear
     return outcome
+
+
+def _active(chart, low, high, opened):
+    """(where the residual may be 0 in the operating range, smear) of boxes over which it is defined and continuous."""
+    first, last, below, above = chart.sharper(chart.residual, low, high, opened)
+    smear = normalised(below, above, low, high)
+    open_ = np.nonzero((first <= 0) & (last >= 0))[0]
+    if len(open_) and chart.slack_forms:
+        _in_range(chart, low, high, open_, first, last, below, above, smear, opened)
+    return ~((first > 0) | (last < 0)), smear
 
 
 def _on_switch(chart, low, high, opened):
@@ -339,7 +347,9 @@ def split(low, high, smear, widths, logs, finest=2.0 ** -160):
     Returns (low, high) of twice as many boxes, and where a box is too thin to cut: its share of the bracket below `finest`, or its
     ends next to each other.
     """
-    choice = np.argmax(np.where(high > low, (smear + 1e-3) * np.sqrt(widths) + 0.05 * widths, -np.inf), axis=1)
+    score = (smear + 1e-3) * np.sqrt(widths) + 0.05 * widths
+    score = np.where(smear == 0.0, 1e-9 * widths, score)        # what does not move it is cut where nothing else can be
+    choice = np.argmax(np.where(high > low, score, -np.inf), axis=1)
     rows = np.arange(len(low))
     a, b = low[rows, choice], high[rows, choice]
     with np.errstate(all="ignore"):

@@ -11,11 +11,11 @@ SAMPLED = 100                       # solves that tell the most iterations seen
 _SHORT = {"proved": "proved", "refuted": "REFUTED"}
 
 
-def certify(closure, module, boxes=BOXES, seconds=None, progress=None):
+def certify(closure, module, boxes=BOXES, seconds=None, workers=1, progress=None):
     """Certificate of a Closure; `module` is its loaded module, which tells the most iterations of a sample."""
     solved = [module.solve(list(point.values())) for point in sample(closure, SAMPLED)]
     seen = max((point.iterations for point in solved if point.status >= 0), default=None)
-    return prove(closure, boxes=boxes, seconds=seconds, progress=progress, seen=seen)
+    return prove(closure, boxes=boxes, seconds=seconds, workers=workers, progress=progress, seen=seen)
 
 
 def in_processes(work, jobs, workers):

@@ -86,10 +86,22 @@ class Cancelling:
             if (op, inner.op) in _INVERSE:
                 return inner.args[0]
             if (op, inner.op) in (("cos", "asin"), ("sin", "acos")):
-                return graph.sqrt(self._rational(graph.sub(1, graph.mul(inner.args[0], inner.args[0]))))
+                return self._leg(inner.args[0])
+            if inner.op == "mul" and graph.rational(inner.args[0]) == 2:
+                angle = graph.instructions[inner.args[1]]
+                if op == "cos" and angle.op in ("asin", "acos"):
+                    twice = graph.mul(2, graph.mul(angle.args[0], angle.args[0]))
+                    return self._rational(graph.sub(1, twice) if angle.op == "asin" else graph.sub(twice, 1))
+                if op == "sin" and angle.op in ("asin", "acos"):
+                    return graph.mul(2, graph.mul(angle.args[0], self._leg(angle.args[0])))
         if op == "pow" and graph.rational(args[0]) == 1:
             return graph.number(1)
         return graph.enter(op, args)
+
+    def _leg(self, leg):
+        """The other leg of a right triangle of hypotenuse 1."""
+        graph = self.graph
+        return graph.sqrt(self._rational(graph.sub(1, graph.mul(leg, leg))))
 
     # -- fractions of polynomials
 
@@ -112,6 +124,9 @@ class Cancelling:
             elif graph.instructions[step].op in _RATIONAL:
                 parts = [self.fractions[arg] for arg in graph.instructions[step].args]
                 self.fractions[step] = self._combined(graph.instructions[step].op, *parts) or self._atom(step)
+            elif graph.instructions[step].op == "sqrt":
+                argument = self.fractions[graph.instructions[step].args[0]]
+                self.fractions[step] = self._atom(graph.sqrt(self._build(*argument)))
             else:
                 self.fractions[step] = self._atom(step)
         return self.fractions[node]
@@ -227,12 +242,12 @@ class Cancelling:
             op, b = "mul", (b[1], b[0])
         if len(a[0]) * len(b[1]) > 4 * _TERMS or len(a[1]) * len(b[0]) > 4 * _TERMS or len(a[0]) * len(b[0]) > 4 * _TERMS:
             return None
-        denominator = a[1] * b[1]
         if op == "mul":
-            numerator = a[0] * b[0]
-        else:
-            left, right = a[0] * b[1], b[0] * a[1]
-            numerator = left + right if op == "add" else left - right
+            return self._reduced(a[0] * b[0], a[1] * b[1])
+        common = a[1].gcd(b[1])             # taken out before squares of roots are replaced, which hides it
+        rest, other = b[1] / common, a[1] / common
+        left, right = a[0] * rest, b[0] * other
+        numerator, denominator = left + right if op == "add" else left - right, a[1] * rest
         return self._reduced(numerator, denominator)
 
     def _reduced(self, numerator, denominator):
@@ -244,8 +259,27 @@ class Cancelling:
         common = numerator.gcd(denominator)
         if not common.is_one():
             numerator, denominator = numerator / common, denominator / common
+        pair = self._roots_of(numerator), self._roots_of(denominator)
+        if all(pair):
+            return self._one_root(numerator, denominator, pair[0][0], pair[1][0])
         leading = denominator.leading_coefficient()
         return numerator / leading, denominator / leading
+
+    def _roots_of(self, polynomial):
+        """Indices of the square roots that divide every term."""
+        found = [index for index, degree in enumerate(polynomial.degrees()[:len(self.nodes)])
+                 if degree and self.graph.instructions[self.nodes[index]].op == "sqrt"]
+        return [index for index in found if all(exponents[index] for exponents, _ in polynomial.terms())]
+
+    def _one_root(self, numerator, denominator, over, under):
+        """sqrt(a)/sqrt(b) as sqrt(a/b): where the author's form has a value, a is not negative and b positive."""
+        graph = self.graph
+        parts = [self.fraction(graph.instructions[self.nodes[index]].args[0]) for index in (over, under)]
+        ratio = self._reduced(parts[0][0] * parts[1][1], parts[0][1] * parts[1][0])
+        if ratio is None:
+            return None
+        root, _ = self._atom(graph.sqrt(self._build(*ratio)))
+        return self._reduced(numerator / self.generators[over] * root, denominator / self.generators[under])
 
     def _without_roots(self, polynomial):
         """Squares of square roots replaced by their arguments: (polynomial, divisor)."""

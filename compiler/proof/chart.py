@@ -131,14 +131,20 @@ class Chart:
         return {name: self._product(form) for name, form in
                 (("lower", self.at_lower), ("upper", self.at_upper), ("width", self.width))}
 
-    def prepare(self):
-        """Works out, in an order that is always the same, what cancels: all processes that judge boxes then use the same forms."""
+    def prepare(self, limit=None):
+        """Works out, in an order that is always the same, what cancels: all processes that judge boxes then use the same forms.
+
+        Left where it is when the time of a `Limit` is over.
+        """
+        if limit and limit.reached(np.inf):
+            return
         factors_ = [self.whole, *(factor for product in self.products.values() for factor in (product[0], *product[2]))]
         forms = [self.slope, *(factor.form for factor in factors_), *(part[1] for factor in factors_ for part in factor.relaxed)]
         for form in forms:
+            if limit and limit.reached(np.inf):
+                return
             node = form.nodes[-1]
             self.gradients[node] = [self._shortest(part) for part in self._gradient(node)]
-        return self
 
     def _inputs(self, nodes):
         """Names of the inputs that nodes depend on."""

@@ -5,26 +5,67 @@ import numpy as np
 
 from rootwright.calculus.balls import ball, precision
 from rootwright.calculus.program import evaluate, needed
+from rootwright.proof.chart import normalised
 from rootwright.proof.crew import CHUNK
 from rootwright.proof.functions import ends
 from rootwright.proof.intervals import Interval
 from rootwright.proof.ranges import as_ball, exact_ends
-from rootwright.proof.search import outside, split
+from rootwright.proof.search import may_vanish, outside, split
 from rootwright.proof.sensitivities import program_inputs
 
 _LARGEST = 1e307                # a value below it in exact arithmetic is finite in doubles, rounding included
-_ROUNDS = 40
+_ROUNDS, _ROUND = 24, 64        # of cutting boxes for the least slope, and boxes cut in a round
+_WORTH = 1.05                   # what four rounds must gain
 
 
 def slope_bound(domain, outcome, limit):
-    """Lower bound of |g_x| over all zeros, from the boxes that may hold one; 0 where there is none that is positive."""
+    """Lower bound of |g_x| over all zeros, from the boxes that may hold one, the least bound cut first; 0 where there is none that is positive."""
     least = np.inf
-    for index, low, high, _ in outcome.active:
-        for start in range(0, len(low), CHUNK):
-            at = slice(start, start + CHUNK)
-            if len(low[at]):
-                least = min(least, float(_slopes(domain, index, low[at], high[at]).min()))
+    for index in range(len(domain.charts)):
+        parts = [(low, high) for chart, low, high, _ in outcome.active if chart == index]
+        if parts:
+            least = min(least, _least(domain, index, *(np.concatenate(ends_) for ends_ in zip(*parts)), limit))
     return _in_units(domain, least) if np.isfinite(least) else 0.0
+
+
+def _least(domain, index, low, high, limit):
+    chart, opened = domain.charts[index], domain.opened[index]
+    bounds = np.concatenate([_slopes(domain, index, low[start:start + CHUNK], high[start:start + CHUNK])[0]
+                             for start in range(0, len(low), CHUNK)])
+    stuck, before = np.zeros(len(low), bool), 0.0
+    for k in range(_ROUNDS):
+        if k % 4 == 3:
+            now = bounds.min(initial=np.inf)
+            if before > 0.0 and now < _WORTH * before:
+                break
+            before = now
+        order = np.argsort(np.where(stuck, np.inf, bounds), kind="stable")[:_ROUND]
+        if not len(order) or stuck[order[0]] or stuck.any() and bounds[stuck].min() <= bounds[order[0]] or limit.reached(np.inf):
+            break
+        rest = np.ones(len(low), bool)
+        rest[order] = False
+        a, b, worth = low[order], high[order], bounds[order]
+        values = chart.natural(chart.residual, a, b, opened)
+        alive = ~values.definite()
+        smear = np.ones(a.shape)
+        known = np.nonzero(alive & ~values.undefined & ~values.jump)[0]
+        if len(known):
+            alive[known], smear[known] = may_vanish(chart, a[known], b[known], opened)
+        a, b, worth, smear = a[alive], b[alive], worth[alive], smear[alive]
+        count = len(a)
+        if count:
+            smear = smear + _slopes(domain, index, a, b)[1]
+            first, last, thin = split(a, b, smear, domain.ranges.widths(a, b), domain.ranges.logs)
+            fresh = np.tile(~thin, 2)
+            parts = first[fresh], last[fresh]
+            limit.take(count, "least slope", len(low), lambda: 1.0)
+            new = np.maximum(np.tile(worth, 2)[fresh], _slopes(domain, index, *parts)[0]) if fresh.any() else np.zeros(0)
+        else:
+            thin, parts, new = np.zeros(0, bool), (a, b), np.zeros(0)
+        low, high = np.concatenate([low[rest], a[thin], parts[0]]), np.concatenate([high[rest], b[thin], parts[1]])
+        bounds = np.concatenate([bounds[rest], worth[thin], new])
+        stuck = np.concatenate([stuck[rest], np.ones(int(thin.sum()), bool), np.zeros(len(new), bool)])
+    return float(bounds.min(initial=np.inf))
 
 
 def _in_units(domain, least):
@@ -40,15 +81,16 @@ def _in_units(domain, least):
 
 
 def _slopes(domain, index, low, high):
-    """|g_x| from below, one a box, in the units of the spec."""
+    """(|g_x| from below, smear of it), one a box."""
     chart, opened = domain.charts[index], domain.opened[index]
     slope = chart.natural(chart.slope, low, high, opened)
-    first, last = slope.low.copy(), slope.high.copy()
-    at = np.nonzero((first <= 0.0) & (last >= 0.0) & slope.regular)[0]
+    first, last, smear = slope.low.copy(), slope.high.copy(), np.ones(low.shape)
+    at = np.nonzero(slope.regular)[0]
     if len(at):
-        first[at], last[at], _, _ = chart.sharp(chart.slope, low[at], high[at], opened)
-    below = np.maximum(np.maximum(first, -last), 0.0)
-    return below
+        bottom, top, below, above = chart.sharp(chart.slope, low[at], high[at], opened)
+        first[at], last[at] = np.maximum(first[at], bottom), np.minimum(last[at], top)
+        smear[at] = normalised(below, above, low[at], high[at])
+    return np.maximum(np.maximum(first, -last), 0.0), smear
 
 
 def doubles_are_finite(domain, closure, limit, boxes=4000):

@@ -34,6 +34,7 @@ BOXES = 120_000
 _ENDS, _INSIDE = 0.4, 0.9           # of the boxes that may be spent, by the end of each search
 _GROUPED = 0.25                     # of all boxes, for the trial with groups of parameters
 _STEEP = 0.25                       # of the boxes of a search inside, for the trial that cuts only what moves the slope
+_KINKS = 0.05                       # of all boxes, for the switches at a zero
 _TRIAL = 20_000                     # boxes for trying a proposal
 _NEEDS = {                          # what is asked of the boxes for each claim
     "defined": ("ordered", "defined"),
@@ -73,28 +74,37 @@ class _Proof:
             self._search(_GROUPED * boxes)
             if not self.outcome.open and len(self.outcome.rises) <= 1:
                 return
-        self.outcome = Outcome()
-        self.domain = Domain(self.model, self.scaling) if self.scaling else self.plain
-        self._search(boxes)
+        if not self.domain.charts or not self.limit.reached(boxes):
+            self.outcome = Outcome()
+            self.domain = Domain(self.model, self.scaling) if self.scaling else self.plain
+            self._search(boxes)
 
     def _search(self, boxes):
         before = self.limit.spent
         boxes -= before
-        with Crew(self.domain.judges(), self.workers) as crew:
+        with Crew(self.domain.judges(self.limit), self.workers) as crew:
             search_ends(self.domain, crew, self.limit, before + _ENDS * boxes, self.outcome)
             for index in range(len(self.domain.charts)):
                 last = index == len(self.domain.charts) - 1
                 self._inside(crew, index, before + (_INSIDE if last else 0.5 * (_ENDS + _INSIDE)) * boxes)
 
     def _inside(self, crew, index, ceiling):
-        """First as if the slope had one sign all over the bracket, with a part of the boxes; what it leaves open is looked at afresh."""
-        wanted = ("defined", "continuous", "unique", "kink")
+        """First as if the slope had one sign all over the bracket, with a part of the boxes; what it leaves open is looked at afresh. Then the
+        switches, where a zero may be."""
+        wanted = ("defined", "continuous", "unique")
         spent = self.limit.spent
         trial = Outcome()
         search_inside(self.domain, index, crew, self.limit, spent + _STEEP * (ceiling - spent), trial, wanted, name="slope")
-        if trial.open:
+        if trial.needs(wanted):
             trial = Outcome()
             search_inside(self.domain, index, crew, self.limit, ceiling, trial, wanted)
+        zeros = [(low, high) for _, low, high, _ in trial.active]
+        trial.open.pop("kink", None)
+        if zeros and self.domain.lower.switches:
+            kinks, more = Outcome(), self.limit.spent + _KINKS * self.limit.boxes
+            search_inside(self.domain, index, crew, self.limit, more, kinks, ("kink",), *(np.concatenate(ends_) for ends_ in zip(*zeros)))
+            if "kink" in kinks.open:
+                trial.open["kink"] = kinks.open["kink"]
         self.outcome.add(trial)
 
     def certificate(self, seen):
@@ -108,7 +118,7 @@ class _Proof:
             proved -= {"slope"}
         witnesses = self._refutations(set(_NEEDS) - proved)
         sensitivities = sensitivity_bounds(self.plain, self.closure, self.limit) if "slope" in proved else {}
-        finite = doubles_are_finite(self.plain, self.closure, self.limit)
+        finite = not self.limit.reached(np.inf) and doubles_are_finite(self.plain, self.closure, self.limit)
         claims = tuple(self._claim(name, proved, witnesses, slope, sensitivities, finite, seen) for name in _NEEDS)
         return Certificate(self.model.name, self.model.digest,
                            tuple((p.name, p.low.text, p.high.text) for p in self.model.parameters),
@@ -116,7 +126,7 @@ class _Proof:
                            self.limit.spent, claims, self._advice())
 
     def _refutations(self, open_claims):
-        if not open_claims:
+        if not open_claims or self.limit.reached(np.inf) or self.domain.grouped:
             return {}
         examiner = Examiner(self.plain, self.limit)
         for values in examiner.corners():
@@ -161,7 +171,7 @@ class _Proof:
 
     def _worst(self, lefts):
         """The largest box that is left, in the variables of the proof."""
-        if not lefts:
+        if not lefts or self.domain.grouped:
             return ()
         low, high = (np.concatenate([getattr(left, end) for left in lefts]) for end in ("low", "high"))
         row = int(np.argmax(self.domain.ranges.volume(low, high)))
@@ -178,7 +188,7 @@ class _Proof:
 
     def _advice(self):
         """The first proposal with which nothing is left open."""
-        for condition in proposals(self.domain, self.outcome)[:2]:
+        for condition in () if self.domain.grouped else proposals(self.domain, self.outcome)[:2]:
             if self.limit.reached(np.inf):
                 break
             model = with_requirement(self.model, condition)

@@ -101,7 +101,7 @@ def _signed(chart, form, low, high, opened=False):
     smear = np.zeros(low.shape)
     at = np.nonzero(sign == 0)[0]
     if len(at):
-        smear[at] = 1.0
+        smear[at] = chart.moves(form)
         broken = at[values.undefined[at]]
         if len(broken):
             smear[broken] = chart.trouble(form, low[broken], high[broken], opened)
@@ -303,7 +303,7 @@ def judge_inside(chart, low, high, opened, steep=False):
         rise[smooth], part[smooth] = _signed(chart, chart.slope, low[smooth], high[smooth], opened)
         smooth = smooth[rise[smooth] == 0]
     if len(smooth):
-        active[smooth], smear[smooth] = _active(chart, low[smooth], high[smooth], opened)
+        active[smooth], smear[smooth] = may_vanish(chart, low[smooth], high[smooth], opened)
     left = smooth[active[smooth]]
     if not steep and len(left):
         rise[left], part[left] = _signed(chart, chart.slope, low[left], high[left], opened)
@@ -319,7 +319,7 @@ def judge_inside(chart, low, high, opened, steep=False):
     return outcome
 
 
-def _active(chart, low, high, opened):
+def may_vanish(chart, low, high, opened):
     """(where the residual may be 0 in the operating range, smear) of boxes over which it is defined and continuous."""
     first, last, below, above = chart.sharper(chart.residual, low, high, opened)
     smear = normalised(below, above, low, high)

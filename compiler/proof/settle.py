@@ -41,6 +41,10 @@ class Outcome:
         if need.any():
             self.open.setdefault(claim, []).append(Left(low[need], high[need], index))
 
+    def needs(self, claims):
+        """True where something that one of the claims needs is open."""
+        return any(claim in self.open for claim in claims)
+
     def add(self, other):
         """Takes over what a search inside has found."""
         for claim, lefts in other.open.items():
@@ -150,10 +154,10 @@ class Domain:
         high[-1] = 1.0 if len(self.charts) == 1 else 0.5
         return self.ranges.low[None, :].copy(), high[None, :]
 
-    def judges(self):
-        """{name: function of arrays (low, high)} for a Crew."""
+    def judges(self, limit=None):
+        """{name: function of arrays (low, high)} for a Crew, made ready unless its time is over."""
         for chart in self.charts:
-            chart.prepare()
+            chart.prepare(limit)
         inside = {f"{name} {index}": partial(judge_inside, chart, opened=opened, steep=name == "slope")
                   for index, (chart, opened) in enumerate(zip(self.charts, self.opened)) for name in ("inside", "slope")}
         return {"ends": partial(judge_ends, self.lower, self.upper, self.model)} | inside

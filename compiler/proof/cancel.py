@@ -179,9 +179,40 @@ class Cancelling:
             fraction = self.fraction(node)
             if fraction == self._atom(node):
                 return []
-            return list(dict.fromkeys([self._build(*fraction), self._build(*fraction, self._paired)]))
+            gathered = self._gathered(*fraction) if len(fraction[1]) == 1 else []
+            return list(dict.fromkeys([self._build(*fraction), self._build(*fraction, self._paired), *gathered]))
         except _Full:
             return []
+
+    def _gathered(self, numerator, denominator):
+        """[the value as a sum of polynomials times one exponential each], whose exponents are whole again: exp(-(a + b)^2) for a product of three."""
+        graph, groups = self.graph, {}
+        count = len(self.nodes)
+        exponentials = [index for index in range(count) if graph.instructions[self.nodes[index]].op == "exp"]
+        (below, unit), = denominator.terms()
+        if not any(below[index] for index in exponentials):
+            return []
+        for exponents, value in numerator.terms():
+            key = tuple(int(exponents[index]) - int(below[index]) for index in exponentials)
+            rest = tuple(0 if index in exponentials else int(exponents[index]) for index in range(count))
+            terms = groups.setdefault(key, {})
+            terms[rest] = terms.get(rest, Fraction(0)) + _exact(value / unit)
+        total = None
+        for key, terms in sorted(groups.items()):
+            part = self._horner(terms, self.nodes)
+            exponent = self.one * 0, self.one
+            for power, index in zip(key, exponentials):
+                if power:
+                    above, under = self.fraction(graph.instructions[self.nodes[index]].args[0])
+                    exponent = exponent and self._combined("add", exponent, (above * power, under))
+            if exponent is None:
+                return []
+            if exponent[0] != 0:
+                part = graph.mul(part, graph.exp(self._squared(*exponent)))
+            total = part if total is None else graph.add(total, part)
+        divisor = self.context.from_dict({tuple(0 if index in exponentials else int(below[index]) for index in range(count))
+                                          + (0,) * (len(below) - count): 1})
+        return [graph.div(total, self._build(divisor, self.one))]
 
     def ratios(self, node, other):
         """Factors m, at most a few, with which node - m*other loses a term of its numerator."""
@@ -232,6 +263,25 @@ class Cancelling:
                 part = graph.mul(graph.number(value), term)
                 total = part if total is None else graph.add(total, part)
         return graph.number(0) if total is None else total
+
+    def _squared(self, numerator, denominator):
+        """A quotient whose numerator is quadratic in some atom, the square completed: what is squared then stands in one place."""
+        graph = self.graph
+        for index, degree in enumerate(numerator.degrees()[:len(self.nodes)]):
+            parts = {0: {}, 1: {}, 2: {}}
+            if degree == 2:
+                for exponents, value in numerator.terms():
+                    exponents = list(map(int, exponents))
+                    power, exponents[index] = exponents[index], 0
+                    parts[power][tuple(exponents)] = value
+                a, b, c = (self.context.from_dict(parts[power]) for power in (2, 1, 0))
+                if a.is_constant() and b != 0:
+                    half = b / (2 * a.leading_coefficient())
+                    inner = graph.add(self.nodes[index], self._build(half, self.one))
+                    square = graph.mul(graph.number(_exact(a.leading_coefficient())), graph.mul(inner, inner))
+                    rest = self._build(c - half * half * a.leading_coefficient(), self.one)
+                    return graph.div(graph.add(square, rest), self._build(denominator, self.one))
+        return self._build(numerator, denominator)
 
     def _combined(self, op, a, b=None):
         if op == "neg":

@@ -112,7 +112,7 @@ class Chart:
         names = self._inputs([*residuals, *self.requirements, lower, upper, *(node for _, node in passed)])
         self.variables = [name for name in (*(p.name for p in model.parameters), *(group.name for group in self.groups)) if name in names]
         self.variables.append(SHARE)
-        self.gradients, self.hessians = {}, {}
+        self.gradients, self.hessians, self.beside = {}, {}, {}
         self._along = free_residual, inside, -1 if from_upper else 1
 
     @cached_property
@@ -258,9 +258,16 @@ class Chart:
         return self.gradients[node]
 
     def _shortest(self, node):
-        """A much shorter equal of a derivative where there is one: what cancels there encloses better, and faster."""
+        """A much shorter equal of a derivative where there is one: what cancels there encloses better, and faster.
+
+        One that is hardly shorter stands beside it (`beside`).
+        """
         other = min(self._expanded(node), key=self._cost, default=node)
-        return other if self._cost(other) <= _SHORTER * self._cost(node) else node
+        if self._cost(other) <= _SHORTER * self._cost(node):
+            return other
+        if self._cost(other) <= self._cost(node) and other != node:
+            self.beside[node] = other
+        return node
 
     # -- evaluation
 
@@ -343,11 +350,13 @@ class Chart:
     def slopes(self, form, low, high, opened=False):
         """Enclosures (low, high) of the partial derivatives, arrays (boxes, variables)."""
         nodes = self._gradient(form.nodes[-1])
-        values = self.evaluate(nodes, low, high, opened)
+        beside = [self.beside.get(node, node) for node in nodes]
+        values = self.evaluate([*nodes, *beside], low, high, opened)
         size = len(low)
-        below = np.stack([np.broadcast_to(values[node].low, size) for node in nodes], axis=1)
-        above = np.stack([np.broadcast_to(values[node].high, size) for node in nodes], axis=1)
-        return below, above
+        with np.errstate(invalid="ignore"):
+            below = np.stack([np.broadcast_to(np.maximum(values[a].low, values[b].low), size) for a, b in zip(nodes, beside)], axis=1)
+            above = np.stack([np.broadcast_to(np.minimum(values[a].high, values[b].high), size) for a, b in zip(nodes, beside)], axis=1)
+        return np.minimum(below, above), np.maximum(below, above)
 
     def moves(self, form):
         """1 for the variables that a form depends on, else 0."""

@@ -10,7 +10,8 @@ from rootwright.proof.crew import CHUNK
 from rootwright.proof.functions import ends
 from rootwright.proof.intervals import Interval
 from rootwright.proof.ranges import as_ball, exact_ends
-from rootwright.proof.search import may_vanish, outside, split
+from rootwright.proof.narrowing import narrowed
+from rootwright.proof.search import outside, split
 from rootwright.proof.sensitivities import program_inputs
 
 _LARGEST = 1e307                # a value below it in exact arithmetic is finite in doubles, rounding included
@@ -22,19 +23,16 @@ def slope_bound(domain, outcome, limit):
     """Lower bound of |g_x| over all zeros, from the boxes that may hold one, the least bound cut first; 0 where there is none that is positive."""
     least = np.inf
     for index in range(len(domain.charts)):
-        parts = [(low, high) for chart, low, high, _ in outcome.active if chart == index]
+        parts = [(low, high, bounds) for (chart, low, high, _), bounds in zip(outcome.active, outcome.least) if chart == index]
         if parts:
             least = min(least, _least(domain, index, *(np.concatenate(ends_) for ends_ in zip(*parts)), limit))
     return _in_units(domain, least) if np.isfinite(least) else 0.0
 
 
-def _least(domain, index, low, high, limit):
-    chart, opened = domain.charts[index], domain.opened[index]
-    bounds = np.concatenate([_slopes(domain, index, low[start:start + CHUNK], high[start:start + CHUNK])[0]
-                             for start in range(0, len(low), CHUNK)])
+def _least(domain, index, low, high, bounds, limit):
     stuck, before = np.zeros(len(low), bool), 0.0
     for k in range(_ROUNDS):
-        if k % 4 == 3:
+        if k % 4 == 3 and k > 8:
             now = bounds.min(initial=np.inf)
             if before > 0.0 and now < _WORTH * before:
                 break
@@ -44,24 +42,12 @@ def _least(domain, index, low, high, limit):
             break
         rest = np.ones(len(low), bool)
         rest[order] = False
-        a, b, worth = low[order], high[order], bounds[order]
-        values = chart.natural(chart.residual, a, b, opened)
-        alive = ~values.definite()
-        smear = np.ones(a.shape)
-        known = np.nonzero(alive & ~values.undefined & ~values.jump)[0]
-        if len(known):
-            alive[known], smear[known] = may_vanish(chart, a[known], b[known], opened)
-        a, b, worth, smear = a[alive], b[alive], worth[alive], smear[alive]
-        count = len(a)
-        if count:
-            smear = smear + _slopes(domain, index, a, b)[1]
-            first, last, thin = split(a, b, smear, domain.ranges.widths(a, b), domain.ranges.logs)
-            fresh = np.tile(~thin, 2)
-            parts = first[fresh], last[fresh]
-            limit.take(count, "least slope", len(low), lambda: 1.0)
-            new = np.maximum(np.tile(worth, 2)[fresh], _slopes(domain, index, *parts)[0]) if fresh.any() else np.zeros(0)
-        else:
-            thin, parts, new = np.zeros(0, bool), (a, b), np.zeros(0)
+        a, b = low[order], high[order]
+        first, last, thin = split(a, b, _slopes(domain, index, a, b)[1] + 0.1, domain.ranges.widths(a, b), domain.ranges.logs)
+        fresh, worth = np.tile(~thin, 2), bounds[order]
+        parts = narrowed(domain, index, first[fresh], last[fresh])
+        new = np.maximum(worth[0], _slopes(domain, index, *parts)[0]) if len(parts[0]) else np.zeros(0)
+        limit.take(len(order), "least slope", len(low), lambda: 1.0)
         low, high = np.concatenate([low[rest], a[thin], parts[0]]), np.concatenate([high[rest], b[thin], parts[1]])
         bounds = np.concatenate([bounds[rest], worth[thin], new])
         stuck = np.concatenate([stuck[rest], np.ones(int(thin.sum()), bool), np.zeros(len(new), bool)])
@@ -87,7 +73,7 @@ def _slopes(domain, index, low, high):
     first, last, smear = slope.low.copy(), slope.high.copy(), np.ones(low.shape)
     at = np.nonzero(slope.regular)[0]
     if len(at):
-        bottom, top, below, above = chart.sharp(chart.slope, low[at], high[at], opened)
+        bottom, top, below, above = chart.sharper(chart.slope, low[at], high[at], opened)
         first[at], last[at] = np.maximum(first[at], bottom), np.minimum(last[at], top)
         smear[at] = normalised(below, above, low[at], high[at])
     return np.maximum(np.maximum(first, -last), 0.0), smear

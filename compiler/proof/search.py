@@ -33,6 +33,7 @@ class Inside:
     active: np.ndarray          # it may be 0
     jump: np.ndarray            # it may be discontinuous
     rise: np.ndarray            # sign of g_x: 1, -1, or 0 where it is not settled
+    least: np.ndarray           # lower bound of |g_x| where that sign is settled
     switch: np.ndarray          # a switch may be here
     smear: np.ndarray
 
@@ -43,7 +44,7 @@ def unjudged(name, low):
     no, yes = np.zeros(size, bool), np.ones(size, bool)
     if name == "ends":
         return Ends(no, no, no, np.ones(low.shape))
-    return Inside(no, yes, yes, yes, np.zeros(size, int), yes, np.ones(low.shape))
+    return Inside(no, yes, yes, yes, np.zeros(size, int), np.zeros(size), yes, np.ones(low.shape))
 
 
 def judge_ends(near_lower, near_upper, model, low, high):
@@ -95,9 +96,10 @@ def outside(chart, low, high):
 
 
 def _signed(chart, form, low, high, opened=False):
-    """Strict sign of a form over boxes (1, -1, 0: not settled), and the smear of it."""
+    """(strict sign of a form over boxes: 1, -1, or 0 where it is not settled; its least absolute value; the smear of it)."""
     values = chart.natural(form, low, high, opened)
     sign = _strict(values)
+    first, last = values.low.copy(), values.high.copy()
     smear = np.zeros(low.shape)
     at = np.nonzero(sign == 0)[0]
     if len(at):
@@ -107,10 +109,10 @@ def _signed(chart, form, low, high, opened=False):
             smear[broken] = chart.trouble(form, low[broken], high[broken], opened)
         at = at[values.regular[at]]
     if len(at):
-        first, last, below, above = chart.sharper(form, low[at], high[at], opened)
-        sign[at] = np.where(first > 0, 1, np.where(last < 0, -1, 0))
+        first[at], last[at], below, above = chart.sharper(form, low[at], high[at], opened)
+        sign[at] = np.where(first[at] > 0, 1, np.where(last[at] < 0, -1, 0))
         smear[at] = normalised(below, above, low[at], high[at])
-    return sign, smear
+    return sign, np.where(sign > 0, np.maximum(first, 0.0), np.where(sign < 0, np.maximum(-last, 0.0), 0.0)), smear
 
 
 def _strict(values):
@@ -276,7 +278,7 @@ def _next_to(chart, low, high):
         if len(left):
             inside_low, inside_high = low[left].copy(), high[left].copy()
             inside_low[:, -1], inside_high[:, -1] = 0.0, near
-            sign[left], smear[left] = _signed(chart, chart.residual, inside_low, inside_high, True)
+            sign[left], _, smear[left] = _signed(chart, chart.residual, inside_low, inside_high, True)
     smear[:, -1] = 0.0
     return (sign > 0, sign < 0), smear
 
@@ -285,8 +287,7 @@ def judge_inside(chart, low, high, opened, steep=False):
     """`opened`: the boxes leave out t = 0. `steep`: what moves the slope alone is cut, as if it had one sign all over the bracket."""
     size = len(low)
     flags = [np.zeros(size, bool) for _ in range(4)]
-    outcome = Inside(outside(chart, low, high), *flags, np.zeros(size, int), np.zeros(low.shape))
-    outcome.rise, outcome.switch = np.zeros(size, int), np.zeros(size, bool)
+    outcome = Inside(outside(chart, low, high), *flags[:3], np.zeros(size, int), np.zeros(size), flags[3], np.zeros(low.shape))
     at = np.nonzero(~outcome.outside)[0]
     if not len(at):
         return outcome
@@ -298,15 +299,15 @@ def judge_inside(chart, low, high, opened, steep=False):
     broken = np.nonzero(values.undefined)[0]
     if len(broken):
         smear[broken] = chart.trouble(chart.residual, low[broken], high[broken], opened)
-    rise, part = np.zeros(len(at), int), np.zeros(low.shape)
+    rise, least, part = np.zeros(len(at), int), np.zeros(len(at)), np.zeros(low.shape)
     if steep:
-        rise[smooth], part[smooth] = _signed(chart, chart.slope, low[smooth], high[smooth], opened)
+        rise[smooth], least[smooth], part[smooth] = _signed(chart, chart.slope, low[smooth], high[smooth], opened)
         smooth = smooth[rise[smooth] == 0]
     if len(smooth):
         active[smooth], smear[smooth] = may_vanish(chart, low[smooth], high[smooth], opened)
     left = smooth[active[smooth]]
     if not steep and len(left):
-        rise[left], part[left] = _signed(chart, chart.slope, low[left], high[left], opened)
+        rise[left], least[left], part[left] = _signed(chart, chart.slope, low[left], high[left], opened)
     smear[left] = part[left] if steep else smear[left] + part[left]
     switch = np.zeros(len(at), bool)
     left = np.nonzero(active)[0]
@@ -315,7 +316,7 @@ def judge_inside(chart, low, high, opened, steep=False):
         switch[left] = touched
         smear[left] += part
     outcome.undefined[at], outcome.active[at], outcome.jump[at] = values.undefined, active, values.jump
-    outcome.rise[at], outcome.switch[at], outcome.smear[at] = rise, switch, smear
+    outcome.rise[at], outcome.least[at], outcome.switch[at], outcome.smear[at] = rise, least, switch, smear
     return outcome
 
 
@@ -332,7 +333,7 @@ def may_vanish(chart, low, high, opened):
 def _on_switch(chart, low, high, opened):
     touched, smear = np.zeros(len(low), bool), np.zeros(low.shape)
     for guard, form in chart.switches:
-        sign, part = _signed(chart, form, low, high, opened)
+        sign, _, part = _signed(chart, form, low, high, opened)
         near = sign == 0
         if guard is not None:
             near &= np.broadcast_to(chart.evaluate([guard], low, high, opened)[guard].yes, near.shape)

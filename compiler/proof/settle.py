@@ -34,6 +34,7 @@ class Outcome:
     """`open` maps what is asked for (`needs_of`, and `ordered` and `change` of the bracket) to the boxes where it is not settled."""
     open: dict = field(default_factory=dict)
     active: list = field(default_factory=list)      # (chart, low, high, sign of slope): boxes that may hold a zero
+    least: list = field(default_factory=list)       # lower bounds of |g_x| in them
     rises: set = field(default_factory=set)         # signs of g_x in them
     inside_range: float = 1.0                       # share of the ranges that meets the requirements, from above
 
@@ -50,6 +51,7 @@ class Outcome:
         for claim, lefts in other.open.items():
             self.open.setdefault(claim, []).extend(lefts)
         self.active += other.active
+        self.least += other.least
         self.rises |= other.rises
 
     def keep(self, judged, done, low, high, index):
@@ -58,6 +60,7 @@ class Outcome:
         if active.any():
             self.rises |= set(judged.rise[active & (judged.rise != 0)].tolist())
             self.active.append((index, low[active], high[active], judged.rise[active]))
+            self.least.append(judged.least[active])
 
 
 class Limit:

@@ -121,6 +121,12 @@ class Chart:
         return self._slope(*self._along)
 
     @cached_property
+    def effort(self):
+        """Operations of g_x and its derivatives."""
+        node = self.slope.nodes[-1]
+        return len(needed(self.graph.instructions, [node, *self._gradient(node)]))
+
+    @cached_property
     def whole(self):
         """The residual inside the bracket, as a factor."""
         return Factor(self.residual, 1, self._relaxed(self.residual.nodes[-1]))

@@ -16,6 +16,7 @@ from rootwright.proof.sensitivities import program_inputs
 
 _LARGEST = 1e307                # a value below it in exact arithmetic is finite in doubles, rounding included
 _ROUNDS, _ROUND = 24, 64        # of cutting boxes for the least slope, and boxes cut in a round
+_WORK = 5000                    # operations of the slope and its derivatives, times rounds, where they are many
 _WORTH = 1.05                   # what four rounds must gain
 
 
@@ -29,9 +30,22 @@ def slope_bound(domain, outcome, limit):
     return _in_units(domain, least) if np.isfinite(least) else 0.0
 
 
+def slope_is_bounded(domain, outcome):
+    """True where |g_x| has a positive lower bound although none was found: g_x is not 0 and continuous over finitely many closed boxes."""
+    if domain.opened[0] or len(domain.charts) > 1:
+        return False
+    chart = domain.lower
+    for _, low, high, rise in outcome.active:
+        for start in range(0, len(low), CHUNK):
+            at = slice(start, start + CHUNK)
+            if np.any(rise[at] == 0) or not np.all(chart.natural(chart.slope, low[at], high[at]).regular):
+                return False
+    return True
+
+
 def _least(domain, index, low, high, bounds, limit):
     stuck, before = np.zeros(len(low), bool), 0.0
-    for k in range(_ROUNDS):
+    for k in range(max(4, min(_ROUNDS, _WORK // domain.charts[index].effort))):
         if k % 4 == 3 and k > 8:
             now = bounds.min(initial=np.inf)
             if before > 0.0 and now < _WORTH * before:

@@ -22,7 +22,7 @@ from rootwright.calculus.switches import switches
 from rootwright.proof.advice import proposals, relative_name, with_requirement
 from rootwright.proof.certificate import Certificate, Claim
 from rootwright.proof.crew import Crew
-from rootwright.proof.numbers import doubles_are_finite, slope_bound
+from rootwright.proof.numbers import doubles_are_finite, slope_bound, slope_is_bounded
 from rootwright.proof.ranges import as_ball, exact_ends
 from rootwright.proof.refute import Examiner
 from rootwright.proof.scaling import symmetries
@@ -114,7 +114,7 @@ class _Proof:
             if self.model.unknown.root == "only":
                 proved -= {"unique"}
         slope = slope_bound(self.domain, self.outcome, self.limit) if "slope" in proved else 0.0
-        if not slope > 0.0:
+        if not slope > 0.0 and not ("slope" in proved and slope_is_bounded(self.domain, self.outcome)):
             proved -= {"slope"}
         witnesses = self._refutations(set(_NEEDS) - proved)
         sensitivities = sensitivity_bounds(self.plain, self.closure, self.limit) if "slope" in proved else {}
@@ -159,7 +159,8 @@ class _Proof:
             elif name == "slope" and not lefts:
                 reason, left_open = "no positive bound was found", 1.0
         if name == "slope" and verdict == "proved":
-            numbers += [("least_slope", slope), *sensitivities.items()]
+            numbers += [*([("least_slope", slope)] if slope > 0.0 else []), *sensitivities.items()]
+            reason = "" if slope > 0.0 else "no bound in numbers was found; there is one, since the slope is continuous and nowhere 0"
         if name == "iterations":
             numbers.append(("limit", float(self.closure.limit)))
             if seen is not None:

@@ -10,6 +10,7 @@ from rootwright.proof.narrowing import narrowed
 from rootwright.proof.search import split
 
 _BOXES = 3000
+_WORK = 2_000_000           # operations of the Program, times boxes, where they are many
 _ROUND = 96                 # boxes cut in a round
 
 
@@ -25,8 +26,8 @@ def _tops(domain, closure, names, limit, index):
     """Bounds over the boxes that one chart looks after."""
     low, high = narrowed(domain, index, *domain.whole())
     bounds = _bounds(domain, closure, names, low, high, index)
-    spent = 1
-    while spent < _BOXES and len(low) and not limit.reached(np.inf):
+    spent, most = 1, max(_ROUND, min(_BOXES, _WORK // len(closure.program.instructions)))
+    while spent < most and len(low) and not limit.reached(np.inf):
         with np.errstate(all="ignore"):
             top = bounds.max(axis=0)
             score = np.where(np.isinf(bounds), 2.0, bounds / np.where(top > 0, top, 1.0)).max(axis=1)
@@ -42,7 +43,7 @@ def _tops(domain, closure, names, limit, index):
         rest = np.ones(len(low), bool)
         rest[chosen[~stuck]] = False
         spent += int(fresh.sum())
-        limit.take(int(fresh.sum()), "sensitivities", 0, lambda: spent / _BOXES)
+        limit.take(int(fresh.sum()), "sensitivities", 0, lambda: spent / most)
         fresh_bounds = _bounds(domain, closure, names, first, last, index)
         low, high = np.concatenate([low[rest], first]), np.concatenate([high[rest], last])
         bounds = np.concatenate([bounds[rest], fresh_bounds])

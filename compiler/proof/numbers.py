@@ -31,14 +31,19 @@ def slope_bound(domain, outcome, limit):
 
 
 def slope_is_bounded(domain, outcome):
-    """True where |g_x| has a positive lower bound although none was found: g_x is not 0 and continuous over finitely many closed boxes."""
+    """True where |g_x| has a positive lower bound although none was found: over finitely many closed boxes it is continuous and not 0.
+
+    Every form of it must be defined all over them: one that is not says nothing of the points it leaves out, where another may be 0.
+    """
     if domain.opened[0] or len(domain.charts) > 1:
         return False
     chart = domain.lower
     for _, low, high, rise in outcome.active:
         for start in range(0, len(low), CHUNK):
             at = slice(start, start + CHUNK)
-            if np.any(rise[at] == 0) or not np.all(chart.natural(chart.slope, low[at], high[at]).regular):
+            values = chart.evaluate(chart.slope.nodes, low[at], high[at])
+            parts = [values[node] for node in chart.slope.nodes]
+            if np.any(rise[at] == 0) or any(np.any(part.undefined) or np.any(part.jump) for part in parts):
                 return False
     return True
 

@@ -50,7 +50,7 @@ def prove(closure, boxes=BOXES, seconds=None, workers=1, progress=None, seen=Non
     """Certificate of a Closure.
 
     `boxes` limits the boxes looked at, the same way on every machine and for every number of `workers` (processes); `seconds` stops
-    after the wave at hand. `progress(stage, boxes, waiting)` is called after every wave. `seen` is the most iterations of a solve
+    after the wave at hand. `progress(stage, boxes, waiting, settled)` is called after every wave, `settled` the share of the stage that is. `seen` is the most iterations of a solve
     that the caller has seen.
     """
     return _Proof(closure, Limit(boxes, seconds, progress), workers).certificate(seen)

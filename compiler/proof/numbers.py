@@ -33,17 +33,21 @@ def slope_bound(domain, outcome, limit):
 def slope_is_bounded(domain, outcome):
     """True where |g_x| has a positive lower bound although none was found: over finitely many closed boxes it is continuous and not 0.
 
-    Every form of it must be defined all over them: one that is not says nothing of the points it leaves out, where another may be 0.
+    One form of it must be all of that at every point of a box: one that is undefined somewhere says nothing of the points it leaves out.
     """
     if domain.opened[0] or len(domain.charts) > 1:
         return False
     chart = domain.lower
-    for _, low, high, rise in outcome.active:
+    for _, low, high, _ in outcome.active:
         for start in range(0, len(low), CHUNK):
             at = slice(start, start + CHUNK)
             values = chart.evaluate(chart.slope.nodes, low[at], high[at])
             parts = [values[node] for node in chart.slope.nodes]
-            if np.any(rise[at] == 0) or any(np.any(part.undefined) or np.any(part.jump) for part in parts):
+            known = np.zeros(len(low[at]), bool)
+            for part in parts:
+                signed = (part.low > 0) | (part.high < 0) | part.nonzero & ((part.low >= 0) | (part.high <= 0))
+                known |= signed & ~np.asarray(part.undefined | part.jump)
+            if not known.all():
                 return False
     return True
 

@@ -2,6 +2,7 @@
 
 import argparse
 import contextlib
+import functools
 import io
 import json
 import os
@@ -236,7 +237,10 @@ def _prove(arguments):
     jobs = [(spec, arguments.boxes, arguments.seconds) for spec, closure, _ in closures if closure is not None]
     certificates, against, found, worst = {}, {}, [], OK
     with _progress() as progress:
-        for (spec, *_), (certificate, contradictions) in zip(jobs, in_processes(pipeline.prove, jobs, arguments.workers)):
+        work = pipeline.prove
+        if len(jobs) == 1 or arguments.workers == 1:        # then boxes are spread over the processes, and progress is seen
+            work = functools.partial(work, workers=arguments.workers, progress=progress)
+        for (spec, *_), (certificate, contradictions) in zip(jobs, in_processes(work, jobs, arguments.workers)):
             certificates[spec], against[spec] = certificate, contradictions
             if progress:
                 progress(f"{len(certificates)} of {len(jobs)} specs proved: {spec}")

@@ -107,14 +107,21 @@ def has_root_proved(closed):
     return closed.promise is not None and {"exists", "unique"} <= set(closed.promise.proved)
 
 
-def prove(job):
-    """(Certificate, contradictions) of a job (spec, boxes or None, seconds or None); a spec that is known to be valid."""
+def prove(job, workers=1, progress=None):
+    """(Certificate, contradictions) of a job (spec, boxes or None, seconds or None); a spec that is known to be valid.
+
+    `progress(text)` is told how far it is.
+    """
     from rootwright.evidence.proving import certify
 
     spec, boxes, seconds = job
     closed, _ = closure(*find(spec))
     limits = {name: value for name, value in (("boxes", boxes), ("seconds", seconds)) if value is not None}
-    return certify(closed, **limits)
+
+    def show(stage, boxes, waiting, settled):
+        progress(f"{spec}: {stage}, {boxes:,} boxes, {waiting:,} waiting, {100 * settled:.1f} % settled")
+
+    return certify(closed, workers=workers, progress=show if progress else None, **limits)
 
 
 def plan(closed):

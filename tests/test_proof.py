@@ -88,7 +88,7 @@ def test_an_enclosure_holds_the_exact_value(text, sample):
     low, high = (np.array([box[k] for box in sample]) for k in (0, 1))
     nodes = chart.residual.nodes
     natural = chart.natural(chart.residual, low, high)
-    sharp = chart.sharp(chart.residual, low, high)
+    sharp, sharper = (form(chart.residual, low, high) for form in (chart.sharp, chart.sharper))
     for row, (_, _, point) in enumerate(sample):
         with precision(400):
             values = evaluate(chart.graph.instructions, nodes, Balls(), dict(zip(chart.variables, map(ball, point))))
@@ -99,6 +99,7 @@ def test_an_enclosure_holds_the_exact_value(text, sample):
         _check_between(value, natural.low[row], natural.high[row])
         if not natural.undefined[row] and not natural.jump[row]:
             _check_between(value, sharp[0][row], sharp[1][row])
+            _check_between(value, sharper[0][row], sharper[1][row])
 
 
 def _check_between(value, low, high):

@@ -20,7 +20,7 @@ SAMPLED = 100                       # solves that tell the most iterations seen
 _SHORT = {"proved": "proved", "refuted": "REFUTED"}
 
 
-def certify(closure, boxes=BOXES, seconds=None, progress=None):
+def certify(closure, boxes=BOXES, seconds=None, workers=1, progress=None):
     """(Certificate of a Closure, contradictions of the module that would be emitted with it).
 
     The most iterations of a sample are those of the safeguarded solver alone: a plan rests on the certificate.
@@ -28,7 +28,7 @@ def certify(closure, boxes=BOXES, seconds=None, progress=None):
     plain = _built(closure, PLAIN)
     solved = [plain.solve(list(point.values())) for point in sample(closure, SAMPLED)]
     seen = max((point.iterations for point in solved if point.status >= 0), default=None)
-    certificate = prove(closure, boxes=boxes, seconds=seconds, progress=progress, seen=seen)
+    certificate = prove(closure, boxes=boxes, seconds=seconds, workers=workers, progress=progress, seen=seen)
     promised = replace(closure, promise=promise(dump(certificate), closure.model))
     return certificate, contradictions(closure, _built(promised, choose(promised)), certificate)
 

@@ -86,7 +86,14 @@ class Cancelling:
             if (op, inner.op) in _INVERSE:
                 return inner.args[0]
             if (op, inner.op) in (("cos", "asin"), ("sin", "acos")):
-                return graph.sqrt(self._rational(graph.sub(1, graph.mul(inner.args[0], inner.args[0]))))
+                return self._leg(inner.args[0])
+            if inner.op == "mul" and graph.rational(inner.args[0]) == 2:
+                angle = graph.instructions[inner.args[1]]
+                if op == "cos" and angle.op in ("asin", "acos"):
+                    twice = graph.mul(2, graph.mul(angle.args[0], angle.args[0]))
+                    return self._rational(graph.sub(1, twice) if angle.op == "asin" else graph.sub(twice, 1))
+                if op == "sin" and angle.op in ("asin", "acos"):
+                    return graph.mul(2, graph.mul(angle.args[0], self._leg(angle.args[0])))
         if op in ("sin", "cos", "tan"):
             turned = self._turned(op, args[0])
             if turned is not None:
@@ -120,6 +127,11 @@ class Cancelling:
             return graph.tan(rest) if quarters % 2 == 0 and graph.rational(rest) != 0 else graph.div(sine, cosine)
         return sine if op == "sin" else cosine
 
+    def _leg(self, leg):
+        """The other leg of a right triangle of hypotenuse 1."""
+        graph = self.graph
+        return graph.sqrt(self._rational(graph.sub(1, graph.mul(leg, leg))))
+
     # -- fractions of polynomials
 
     def fraction(self, node):
@@ -141,6 +153,9 @@ class Cancelling:
             elif graph.instructions[step].op in _RATIONAL:
                 parts = [self.fractions[arg] for arg in graph.instructions[step].args]
                 self.fractions[step] = self._combined(graph.instructions[step].op, *parts) or self._atom(step)
+            elif graph.instructions[step].op == "sqrt":
+                argument = self.fractions[graph.instructions[step].args[0]]
+                self.fractions[step] = self._atom(graph.sqrt(self._build(*argument)))
             else:
                 self.fractions[step] = self._atom(step)
         return self.fractions[node]
@@ -193,9 +208,40 @@ class Cancelling:
             fraction = self.fraction(node)
             if fraction == self._atom(node):
                 return []
-            return list(dict.fromkeys([self._build(*fraction), self._build(*fraction, self._paired)]))
+            gathered = self._gathered(*fraction) if len(fraction[1]) == 1 else []
+            return list(dict.fromkeys([self._build(*fraction), self._build(*fraction, self._paired), *gathered]))
         except _Full:
             return []
+
+    def _gathered(self, numerator, denominator):
+        """[the value as a sum of polynomials times one exponential each], whose exponents are whole again: exp(-(a + b)^2) for a product of three."""
+        graph, groups = self.graph, {}
+        count = len(self.nodes)
+        exponentials = [index for index in range(count) if graph.instructions[self.nodes[index]].op == "exp"]
+        (below, unit), = denominator.terms()
+        if not any(below[index] for index in exponentials):
+            return []
+        for exponents, value in numerator.terms():
+            key = tuple(int(exponents[index]) - int(below[index]) for index in exponentials)
+            rest = tuple(0 if index in exponentials else int(exponents[index]) for index in range(count))
+            terms = groups.setdefault(key, {})
+            terms[rest] = terms.get(rest, Fraction(0)) + _exact(value / unit)
+        total = None
+        for key, terms in sorted(groups.items()):
+            part = self._horner(terms, self.nodes)
+            exponent = self.one * 0, self.one
+            for power, index in zip(key, exponentials):
+                if power:
+                    above, under = self.fraction(graph.instructions[self.nodes[index]].args[0])
+                    exponent = exponent and self._combined("add", exponent, (above * power, under))
+            if exponent is None:
+                return []
+            if exponent[0] != 0:
+                part = graph.mul(part, graph.exp(self._squared(*exponent)))
+            total = part if total is None else graph.add(total, part)
+        divisor = self.context.from_dict({tuple(0 if index in exponentials else int(below[index]) for index in range(count))
+                                          + (0,) * (len(below) - count): 1})
+        return [graph.div(total, self._build(divisor, self.one))]
 
     def ratios(self, node, other):
         """Factors m, at most a few, with which node - m*other loses a term of its numerator."""
@@ -208,6 +254,64 @@ class Cancelling:
             return []
         return [_exact(here[term] / there[term]) for term in here if term in there]
 
+    def terms(self, node):
+        """{term: factor} of a sum, as it is written."""
+        graph, total = self.graph, {}
+        pending = [(node, Fraction(1))]
+        while pending:
+            node, factor = pending.pop()
+            op, args = graph.instructions[node].op, graph.instructions[node].args
+            if op in ("add", "sub"):
+                pending += [(Node(args[0]), factor), (Node(args[1]), factor if op == "add" else -factor)]
+            elif op == "neg":
+                pending.append((Node(args[0]), -factor))
+            elif op == "mul" and graph.rational(args[0]) is not None:
+                pending.append((Node(args[1]), factor * graph.rational(args[0])))
+            elif op in ("div", "mul") and graph.rational(args[1]):
+                exact = graph.rational(args[1])
+                pending.append((Node(args[0]), factor / exact if op == "div" else factor * exact))
+            elif graph.rational(node) is not None:
+                one = graph.number(1)
+                total[one] = total.get(one, Fraction(0)) + factor * graph.rational(node)
+            else:
+                total[node] = total.get(node, Fraction(0)) + factor
+        return {term: factor for term, factor in sorted(total.items()) if factor}
+
+    def common(self, node, other):
+        """Factors m with which node - m*other loses a term, not a constant one."""
+        here, there = self.terms(node), self.terms(other)
+        return [here[term] / there[term] for term in here if term in there and not self.graph.is_constant(term)]
+
+    def combined(self, node, other, factor):
+        """node + factor*other, less the terms that cancel."""
+        graph, here, total = self.graph, self.terms(node), None
+        for term, value in self.terms(other).items():
+            here[term] = here.get(term, Fraction(0)) + factor * value
+        for term, value in here.items():
+            if value:
+                part = graph.mul(graph.number(value), term)
+                total = part if total is None else graph.add(total, part)
+        return graph.number(0) if total is None else total
+
+    def _squared(self, numerator, denominator):
+        """A quotient whose numerator is quadratic in some atom, the square completed: what is squared then stands in one place."""
+        graph = self.graph
+        for index, degree in enumerate(numerator.degrees()[:len(self.nodes)]):
+            parts = {0: {}, 1: {}, 2: {}}
+            if degree == 2:
+                for exponents, value in numerator.terms():
+                    exponents = list(map(int, exponents))
+                    power, exponents[index] = exponents[index], 0
+                    parts[power][tuple(exponents)] = value
+                a, b, c = (self.context.from_dict(parts[power]) for power in (2, 1, 0))
+                if a.is_constant() and b != 0:
+                    half = b / (2 * a.leading_coefficient())
+                    inner = graph.add(self.nodes[index], self._build(half, self.one))
+                    square = graph.mul(graph.number(_exact(a.leading_coefficient())), graph.mul(inner, inner))
+                    rest = self._build(c - half * half * a.leading_coefficient(), self.one)
+                    return graph.div(graph.add(square, rest), self._build(denominator, self.one))
+        return self._build(numerator, denominator)
+
     def _combined(self, op, a, b=None):
         if op == "neg":
             return -a[0], a[1]
@@ -217,12 +321,12 @@ class Cancelling:
             op, b = "mul", (b[1], b[0])
         if len(a[0]) * len(b[1]) > 4 * _TERMS or len(a[1]) * len(b[0]) > 4 * _TERMS or len(a[0]) * len(b[0]) > 4 * _TERMS:
             return None
-        denominator = a[1] * b[1]
         if op == "mul":
-            numerator = a[0] * b[0]
-        else:
-            left, right = a[0] * b[1], b[0] * a[1]
-            numerator = left + right if op == "add" else left - right
+            return self._reduced(a[0] * b[0], a[1] * b[1])
+        common = a[1].gcd(b[1])             # taken out before squares of roots are replaced, which hides it
+        rest, other = b[1] / common, a[1] / common
+        left, right = a[0] * rest, b[0] * other
+        numerator, denominator = left + right if op == "add" else left - right, a[1] * rest
         return self._reduced(numerator, denominator)
 
     def _reduced(self, numerator, denominator):
@@ -234,8 +338,27 @@ class Cancelling:
         common = numerator.gcd(denominator)
         if not common.is_one():
             numerator, denominator = numerator / common, denominator / common
+        pair = self._roots_of(numerator), self._roots_of(denominator)
+        if all(pair):
+            return self._one_root(numerator, denominator, pair[0][0], pair[1][0])
         leading = denominator.leading_coefficient()
         return numerator / leading, denominator / leading
+
+    def _roots_of(self, polynomial):
+        """Indices of the square roots that divide every term."""
+        found = [index for index, degree in enumerate(polynomial.degrees()[:len(self.nodes)])
+                 if degree and self.graph.instructions[self.nodes[index]].op == "sqrt"]
+        return [index for index in found if all(exponents[index] for exponents, _ in polynomial.terms())]
+
+    def _one_root(self, numerator, denominator, over, under):
+        """sqrt(a)/sqrt(b) as sqrt(a/b): where the author's form has a value, a is not negative and b positive."""
+        graph = self.graph
+        parts = [self.fraction(graph.instructions[self.nodes[index]].args[0]) for index in (over, under)]
+        ratio = self._reduced(parts[0][0] * parts[1][1], parts[0][1] * parts[1][0])
+        if ratio is None:
+            return None
+        root, _ = self._atom(graph.sqrt(self._build(*ratio)))
+        return self._reduced(numerator / self.generators[over] * root, denominator / self.generators[under])
 
     def _without_roots(self, polynomial):
         """Squares of square roots replaced by their arguments: (polynomial, divisor)."""
@@ -342,16 +465,18 @@ def factors(graph, node):
     return constant, dict(sorted(counts.items()))
 
 
-def substituted(graph, node, inputs):
-    """The node with other nodes in the place of some inputs, {name: node}."""
-    twins = {}
-    for step in needed(graph.instructions, [node]):
+def substituted(graph, node, values):
+    """The node with other nodes in the place of some: {node: node}."""
+    twins = dict(values)
+    for step in needed(graph.instructions, [node], twins):
         instruction = graph.instructions[step]
-        if instruction.op == "input" and instruction.value in inputs:
-            twins[step] = inputs[instruction.value]
-        else:
-            twins[step] = graph.enter(instruction.op, [twins[arg] for arg in instruction.args], instruction.value)
+        twins[step] = graph.enter(instruction.op, [twins[arg] for arg in instruction.args], instruction.value)
     return twins[node]
+
+
+def with_inputs(graph, node, inputs):
+    """The node with other nodes in the place of some inputs, {name: node}."""
+    return substituted(graph, node, {graph.input(name): value for name, value in inputs.items()})
 
 
 def domain(graph, node):

@@ -9,6 +9,7 @@ what is left (A. Neumaier, Interval Methods for Systems of Equations, 1990, sect
 
 from dataclasses import dataclass
 from fractions import Fraction
+from functools import cached_property
 
 import flint
 import numpy as np
@@ -16,17 +17,22 @@ import numpy as np
 from rootwright.calculus.balls import Balls, precision
 from rootwright.calculus.differentiate import partials
 from rootwright.calculus.lower import Lowering
-from rootwright.calculus.program import Graph, evaluate, needed
+from rootwright.calculus.program import Graph, Node, evaluate, needed
 from rootwright.calculus.switches import switches
-from rootwright.proof.cancel import Cancelling, domain, factors, substituted
-from rootwright.proof.functions import around, ends
-from rootwright.proof.limits import Limits
+from rootwright.proof.cancel import Cancelling, domain, factors, substituted, with_inputs
+from rootwright.proof.functions import ends
+from rootwright.proof.groups import groups
 from rootwright.proof.intervals import Interval, Intervals
+from rootwright.proof.limits import Limits
 
+_SWITCHING = ("where", "min", "max", "abs", "sign")
 SHARE = "_share"            # the input t: names of a spec begin with a letter
 _BITS = 200
 _LONGEST = 120              # operations of a relaxed form
+_LONGER = 10                # that a relaxed form may have more than the form itself
 _RATIOS = 3                 # multiples of a slack that are tried
+_CURVED = 3                 # variables of a form up to which its second derivatives are used
+_SHORTER = 0.75             # of the operations of a derivative that an equal of it may have
 
 
 @dataclass(frozen=True)
@@ -43,7 +49,7 @@ class Form:
 class Factor:
     form: Form
     count: int
-    relaxed: tuple              # (sign, Form): see `Chart._relaxed`
+    relaxed: tuple              # (sign, Form, Form of the slack): see `Chart._relaxed`
 
 
 @dataclass(frozen=True)
@@ -64,10 +70,11 @@ class Values:
 class Chart:
     """`variables` are the names of the inputs in order, the share of the bracket last. `fixed` parameters are 1.
 
-    With `edges` a range ends where its decimals say, not at the next double: its ends are requirements as well.
+    With `edges` a range ends where its decimals say, not at the next double: its ends are requirements as well. `grouped`: parameters
+    that matter only together are one variable (`groups`); a requirement on them apart is left out.
     """
 
-    def __init__(self, model, fixed=(), from_upper=False, edges=False):
+    def __init__(self, model, fixed=(), from_upper=False, edges=False, grouped=False):
         self.model = model
         self.graph = graph = Graph()
         self.arithmetic = Intervals()
@@ -84,11 +91,21 @@ class Chart:
             outputs.append(bound.lower(output.expression))
             bound.declare(output.name, outputs[-1])
         self.requirements = [bound.lower(condition) for condition in model.require]
-        self.slacks = [graph.sub(*reversed(pair)) for condition in self.requirements for pair in self._at_most(condition)]
+        free_residual = free.lower(model.residual)
+        self.groups = ()
+        if grouped:
+            self.groups, replaced = self._grouped(free_residual, residuals[0], lower, upper, outputs, unknown)
+            residuals = [replaced(node) for node in residuals]
+            free_residual, lower, upper, width, inside = map(replaced, (free_residual, lower, upper, width, inside))
+            outputs = [replaced(node) for node in outputs]
+            self.every_requirement, kept = self.requirements, [replaced(node) for node in self.requirements]
+            self.requirements = [node for node in kept if not self._inputs([node]) & self.absorbed]
+        self.slacks = [slack for condition in self.requirements for pair in self._at_most(condition)
+                       for slack in self._slacks(graph.sub(*reversed(pair)), 1)]
         self.slacks += self._edges(free) if edges else []
         passed = [(guard, graph.sub(left, right)) for guard, left, right in switches(graph, [residuals[0], *outputs])]
         roots = [*residuals, width, lower, upper, *self.slacks, *(node for _, node in passed)]
-        roots.append(free.lower(model.residual))
+        roots.append(free_residual)
         self.cancelling, self.expanding = Cancelling(graph, roots), Cancelling(graph, roots, exponentials=True)
         self.residual = self._form(residuals[0])
         self.limits, self.limit_names = None, ()
@@ -102,14 +119,67 @@ class Chart:
         self.bracket = [self._form(lower), self._form(upper)]
         self.slack_forms = [self._form(node) for node in self.slacks]
         self.switches = [(guard, self._form(node)) for guard, node in passed]
-        used = needed(graph.instructions, [*residuals, *self.requirements, lower, upper, *(node for _, node in passed)])
-        names = {graph.instructions[node].value for node in used if graph.instructions[node].op == "input"}
-        self.variables = [p.name for p in model.parameters if p.name in names and p.name not in fixed] + [SHARE]
+        names = self._inputs([*residuals, *self.requirements, lower, upper, *(node for _, node in passed)])
+        self.variables = [name for name in (*(p.name for p in model.parameters), *(group.name for group in self.groups)) if name in names]
+        self.variables.append(SHARE)
         self.steps_along = self._steps_along(self.residual.nodes[0], share)
-        self.gradients = {}
-        self.slope = self._slope(free.lower(model.residual), inside, -1 if from_upper else 1)
-        self.products = {name: self._product(form) for name, form in
-                         (("lower", self.at_lower), ("upper", self.at_upper), ("width", self.width))}
+        self.gradients, self.hessians, self.beside = {}, {}, {}
+        self._along = free_residual, inside, -1 if from_upper else 1
+
+    @cached_property
+    def slope(self):
+        """g_x, all over the bracket."""
+        return self._slope(*self._along)
+
+    @cached_property
+    def effort(self):
+        """Operations of g_x and its derivatives."""
+        node = self.slope.nodes[-1]
+        return len(needed(self.graph.instructions, [node, *self._gradient(node)]))
+
+    @cached_property
+    def whole(self):
+        """The residual inside the bracket, as a factor."""
+        return Factor(self.residual, 1, self._relaxed(self.residual.nodes[-1]))
+
+    @cached_property
+    def products(self):
+        """{"lower", "upper", "width": the residual at an end, the bracket's width, in factors}."""
+        return {name: self._product(form) for name, form in
+                (("lower", self.at_lower), ("upper", self.at_upper), ("width", self.width))}
+
+    def prepare(self, limit=None):
+        """Works out, in an order that is always the same, what cancels: all processes that judge boxes then use the same forms.
+
+        Left where it is when the time of a `Limit` is over.
+        """
+        if limit and limit.reached(np.inf):
+            return
+        factors_ = [self.whole, *(factor for product in self.products.values() for factor in (product[0], *product[2]))]
+        forms = [self.slope, *(factor.form for factor in factors_), *(part[1] for factor in factors_ for part in factor.relaxed)]
+        for form in forms:
+            if limit and limit.reached(np.inf):
+                return
+            node = form.nodes[-1]
+            self.gradients[node] = [self._shortest(part) for part in self._gradient(node)]
+
+    def _inputs(self, nodes):
+        """Names of the inputs that nodes depend on."""
+        instructions = self.graph.instructions
+        return {instructions[node].value for node in needed(instructions, nodes) if instructions[node].op == "input"}
+
+    def _grouped(self, free_residual, residual, lower, upper, outputs, unknown):
+        """(groups, function that puts them into a node). Only values without switches are taken, which are claimed about apart."""
+        graph, instructions = self.graph, self.graph.instructions
+        roots = [free_residual, lower, upper]
+        for guard, left, right in switches(graph, [residual, *outputs]):
+            roots += [left, right] + ([guard] if guard is not None else [])
+        names = {p.name for p in self.model.parameters}
+        found = [group for group in groups(graph, roots, names, {self.model.unknown.name, SHARE})
+                 if not any(instructions[node].op in _SWITCHING for node in needed(instructions, [group.node]))]
+        self.absorbed = {name for group in found for name in group.absorbed}
+        values = {Node(group.node): graph.input(group.name) for group in found}
+        return tuple(found), lambda node: substituted(graph, node, values)
 
     def _lowering(self, fixed, unknown):
         graph, model = self.graph, self.model
@@ -153,9 +223,11 @@ class Chart:
         (node,) = partials(graph, free, [graph.input(name)])
         along = self._gradient(self.residual.nodes[-1])[-1]
         forms = [node, self.cancelling.of(node), *self._expanded(node)]
-        forms = [substituted(graph, form, {name: inside}) for form in forms]
+        forms = [substituted(graph, form, {graph.input(name): inside}) for form in forms]
         forms += [self.cancelling.of(forms[0]), graph.div(along, graph.mul(direction, self.width.nodes[-1]))]
         others = sorted(dict.fromkeys(forms[1:]), key=lambda form: (-self._cost(form), form))
+        if self._cost(others[-1]) > _LONGEST:
+            others = others[-1:]
         return Form((forms[0], *(form for form in others if form != forms[0])), ())
 
     def _at_most(self, condition):
@@ -180,6 +252,18 @@ class Chart:
                 return True
         return False
 
+    def _slacks(self, node, sign):
+        """What is not negative (sign 1: not positive) where the node is not: each part of a max that pulls it down stands for the whole."""
+        graph = self.graph
+        op, args = graph.instructions[node].op, [Node(arg) for arg in graph.instructions[node].args]
+        if op == ("min" if sign > 0 else "max"):
+            return [part for arg in args for part in self._slacks(arg, sign)]
+        if op in ("add", "sub"):
+            return [graph.apply(op, a, b) for a in self._slacks(args[0], sign) for b in self._slacks(args[1], sign if op == "add" else -sign)]
+        if op == "neg":
+            return [graph.neg(part) for part in self._slacks(args[0], -sign)]
+        return [node]
+
     def _product(self, form):
         """(the form itself, its constant factor, the others)."""
         constant, counts = factors(self.graph, (self._expanded(form.nodes[-1]) or form.nodes)[-1])
@@ -187,17 +271,18 @@ class Chart:
         return whole, constant, [Factor(Form((node,), ()), count, ()) for node, count in counts.items()]
 
     def _relaxed(self, node):
-        """[(sign, form)]: the node less a multiple m of a slack. With slack >= 0 it bounds the node from below for m > 0, else from above."""
+        """[(sign, form, slack)]: the node less a multiple m of a slack. With slack >= 0 it bounds the node from below for m > 0, else from above."""
         graph, found = self.graph, []
         for slack in self.slack_forms:
-            ratios = self.expanding.ratios(node, slack.nodes[-1])
+            ratios = self.cancelling.common(node, slack.nodes[-1]) or self.expanding.ratios(node, slack.nodes[-1])
             for ratio in sorted(set(ratios), key=lambda ratio: (-ratios.count(ratio), ratio))[:_RATIOS]:
-                other = graph.sub(node, graph.mul(graph.number(ratio), slack.nodes[-1]))
+                other = self.cancelling.combined(node, slack.nodes[-1], -ratio)
                 nodes = dict.fromkeys([self.cancelling.of(other), *self._expanded(other)])
-                nodes = tuple(twin for twin in nodes if self._cost(twin) <= _LONGEST)
-                cancelled = min(map(self._cost, nodes), default=_LONGEST) < self._cost(node) + self._cost(slack.nodes[-1])
-                if cancelled and ratio:
-                    found.append((-1 if ratio > 0 else 1, Form(nodes, ())))
+                longest = max(_LONGEST, self._cost(node) + _LONGER)
+                nodes = tuple(twin for twin in nodes if self._cost(twin) <= longest)
+                cancelled = min(map(self._cost, nodes), default=longest) < self._cost(node) + self._cost(slack.nodes[-1])
+                if nodes and cancelled and ratio:
+                    found.append((-1 if ratio > 0 else 1, Form(nodes, ()), slack))
         return tuple(found)
 
     def _expanded(self, node):
@@ -218,13 +303,25 @@ class Chart:
         """The form at exact parameters {name: Fraction}, written anew, so that what they cancel is gone."""
         graph = self.graph
         numbers = {name: graph.number(value) for name, value in point.items()}
-        node = substituted(graph, form.nodes[0], numbers)
+        node = with_inputs(graph, form.nodes[0], numbers)
         return Form((node, *self._expanded(node), self.cancelling.of(node)), None)
 
     def corners(self):
         """{parameter: (low, high)} as nodes, of all that are inputs of the chart."""
         lowering = self._lowering((), self.graph.input(self.model.unknown.name))
         return {p.name: (lowering.lower(p.low), lowering.lower(p.high)) for p in self.model.parameters}
+
+    def _shortest(self, node):
+        """A much shorter equal of a derivative where there is one: what cancels there encloses better, and faster.
+
+        One that is hardly shorter stands beside it (`beside`).
+        """
+        other = min(self._expanded(node), key=self._cost, default=node)
+        if self._cost(other) <= _SHORTER * self._cost(node):
+            return other
+        if self._cost(other) <= self._cost(node) and other != node:
+            self.beside[node] = other
+        return node
 
     # -- evaluation
 
@@ -243,11 +340,13 @@ class Chart:
         """Constants among what the nodes depend on, from ball arithmetic."""
         graph = self.graph
         for node in needed(graph.instructions, nodes, self.constants):
-            if graph.is_constant(node):
+            exact = graph.rational(node)
+            if exact is not None:
+                self.constants[node] = self.arithmetic.number(exact)
+            elif graph.is_constant(node):
                 with precision(_BITS):
                     value = evaluate(graph.instructions, [node], Balls(), {})[node]
-                    exact = graph.rational(node)
-                    low, high = ends(value) if exact is None else around(exact)
+                    low, high = ends(value)
                 undefined = False if value.is_finite() else np.array([True])
                 self.constants[node] = Interval(np.array([low]), np.array([high]), undefined)
 
@@ -307,11 +406,17 @@ class Chart:
     def slopes(self, form, low, high, opened=False):
         """Enclosures (low, high) of the partial derivatives, arrays (boxes, variables)."""
         nodes = self._gradient(form.nodes[-1])
-        values = self.evaluate(nodes, low, high, opened)
+        beside = [self.beside.get(node, node) for node in nodes]
+        values = self.evaluate([*nodes, *beside], low, high, opened)
         size = len(low)
-        below = np.stack([np.broadcast_to(values[node].low, size) for node in nodes], axis=1)
-        above = np.stack([np.broadcast_to(values[node].high, size) for node in nodes], axis=1)
-        return below, above
+        with np.errstate(invalid="ignore"):
+            below = np.stack([np.broadcast_to(np.maximum(values[a].low, values[b].low), size) for a, b in zip(nodes, beside)], axis=1)
+            above = np.stack([np.broadcast_to(np.minimum(values[a].high, values[b].high), size) for a, b in zip(nodes, beside)], axis=1)
+        return np.minimum(below, above), np.maximum(below, above)
+
+    def moves(self, form):
+        """1 for the variables that a form depends on, else 0."""
+        return np.array([float(self.graph.literal(node) != 0) for node in self._gradient(form.nodes[-1])])
 
     def sharp(self, form, low, high, opened=False):
         """(low, high) of a form that is defined and continuous over the boxes, and the slopes used.
@@ -337,6 +442,65 @@ class Chart:
         return first, last, below, above
 
 
+    def sharper(self, form, low, high, opened=False):
+        """As `sharp`; where that leaves the sign open and the middle of the box has one, Taylor's form of second order as well."""
+        first, last, below, above = self.sharp(form, low, high, opened)
+        at = np.nonzero((first <= 0) & (last >= 0))[0]
+        moving = [k for k, moves in enumerate(self.moves(form)) if moves]
+        if not len(at) or not 0 < len(moving) <= _CURVED:
+            return first, last, below, above
+        rising, falling = below[at] >= 0, above[at] <= 0
+        if opened:
+            rising[:, -1] = falling[:, -1] = False
+        centre = _centres(low[at], high[at])
+        middle = self.natural(form, centre, centre, opened)
+        positive = middle.low > 0
+        some = positive | (middle.high < 0)
+        at, rising, falling, positive = at[some], rising[some], falling[some], positive[some, None]
+        if len(at):
+            to_low = np.where(positive, rising, falling)
+            to_high = np.where(positive, falling, rising) & ~to_low
+            a, b = np.where(to_high, high[at], low[at]), np.where(to_low, low[at], high[at])
+            bottom, top = self._taylor(form, moving, a, b, opened)
+            positive = positive[:, 0]
+            first[at] = np.where(positive, np.maximum(first[at], bottom), first[at])
+            last[at] = np.where(positive, last[at], np.minimum(last[at], top))
+        return first, last, below, above
+
+    def _taylor(self, form, moving, low, high, opened):
+        """(low, high) of a form over boxes by f(c) + f'(c) (x - c) + f''(box) (x - c)^2/2 (Neumaier, as above; Moore, section 3.4)."""
+        node, size, arithmetic = form.nodes[-1], len(low), self.arithmetic
+        gradient, hessian = self._gradient(node), self._hessian(node, moving)
+        centre = _centres(low, high)
+        at_centre = self.evaluate([gradient[k] for k in moving], centre, centre, opened)
+        over = self.evaluate([*(gradient[k] for k in moving), *hessian.values()], low, high, opened)
+        value = self.natural(form, centre, centre, opened)
+        with np.errstate(all="ignore"):
+            total = Interval(value.low, value.high)
+            smooth = ~value.undefined
+            step = {k: Interval(np.where(low[:, k] == centre[:, k], 0.0, np.nextafter(low[:, k] - centre[:, k], -np.inf)),
+                                np.where(high[:, k] == centre[:, k], 0.0, np.nextafter(high[:, k] - centre[:, k], np.inf))) for k in moving}
+            for k in moving:
+                total = arithmetic.add(total, arithmetic.mul(at_centre[gradient[k]], step[k]))
+                smooth = smooth & ~over[gradient[k]].undefined & ~over[gradient[k]].jump
+            for (i, k), second in hessian.items():
+                square = arithmetic.mul(step[i], step[k])
+                part = arithmetic.mul(over[second], square)
+                half = arithmetic.mul(part, arithmetic.number(Fraction(1, 2))) if i == k else part
+                total = arithmetic.add(total, half)
+                smooth = smooth & ~over[second].undefined & ~over[second].jump
+        smooth = np.broadcast_to(smooth, size)
+        return np.where(smooth, total.low, -np.inf), np.where(smooth, total.high, np.inf)
+
+    def _hessian(self, node, moving):
+        """{(i, k): second derivative by the variables i <= k}."""
+        if node not in self.hessians:
+            inputs = [self.graph.input(self.variables[k]) for k in moving]
+            self.hessians[node] = {(i, k): part for i in moving
+                                   for k, part in zip(moving, partials(self.graph, self._gradient(node)[i], inputs)) if i <= k}
+        return self.hessians[node]
+
+
 def _met(kind, low, high, nonzero):
     if kind == "nonzero":
         return nonzero | (low > 0) | (high < 0)
@@ -344,11 +508,13 @@ def _met(kind, low, high, nonzero):
 
 
 def normalised(below, above, low, high):
-    """Maximal smear (R. B. Kearfott, Rigorous Global Search, 1996): slope times width, each box's largest 1; ones where infinite."""
+    """Maximal smear (R. B. Kearfott, Rigorous Global Search, 1996): slope times width, each box's largest 1; only infinite ones count where
+    there are any, and all alike where there is nothing."""
     with np.errstate(all="ignore"):
         smear = np.maximum(np.abs(below), np.abs(above)) * (high - low)
+        smear = np.where(np.isnan(smear), 0.0, smear)
         total = smear.max(axis=1, keepdims=True)
-        return np.where(np.isfinite(total) & (total > 0), smear / total, 1.0)
+        return np.where(np.isinf(total), np.isinf(smear), np.where(total > 0, smear / total, 1.0))
 
 
 def mean_value(below, above, low, high, centre):

@@ -17,7 +17,6 @@ class Crew:
     def __init__(self, judges, workers=1):
         _judges.clear()
         _judges.update(judges)
-        self.workers = workers
         self.pool = multiprocessing.get_context("fork").Pool(workers) if workers > 1 else None
 
     def __enter__(self):
@@ -30,8 +29,7 @@ class Crew:
 
     def judge(self, name, low, high):
         """The outcome of all boxes, chunk after chunk."""
-        chunk = min(CHUNK, -(-len(low) // self.workers))
-        tasks = [(name, low[start:start + chunk], high[start:start + chunk]) for start in range(0, len(low), chunk)]
+        tasks = [(name, low[start:start + CHUNK], high[start:start + CHUNK]) for start in range(0, len(low), CHUNK)]
         outcomes = self.pool.map(_judge, tasks, chunksize=1) if self.pool else list(map(_judge, tasks))
         kind = type(outcomes[0])
         return kind(*(np.concatenate([getattr(outcome, field.name) for outcome in outcomes]) for field in fields(kind)))

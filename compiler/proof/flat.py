@@ -12,7 +12,7 @@ import flint
 
 from rootwright.calculus.balls import ball, precision
 from rootwright.calculus.differentiate import partials
-from rootwright.proof.cancel import substituted
+from rootwright.proof.cancel import with_inputs
 from rootwright.proof.chart import SHARE
 from rootwright.proof.crossings import crossing
 from rootwright.proof.exact import BITS, UNDEFINED, sign, value_at
@@ -174,7 +174,7 @@ def _inflection(examiner, starts):
         for place in sorted(place for place in places if 0 < place < 1):
             for name in chart.variables[:-1]:
                 fixed = {key: graph.number(value) for key, value in point.items() if key != name} | {SHARE: graph.number(place)}
-                if graph.rational(chart.cancelling.of(substituted(graph, chart.slope.nodes[0], fixed))) != 0:
+                if graph.rational(chart.cancelling.of(with_inputs(graph, chart.slope.nodes[0], fixed))) != 0:
                     continue
                 line = [point | {name: value} for value in _line(examiner, name)]
                 box = crossing(examiner, chart.residual.nodes[0], place, [other for other in line if examiner.in_range(other)])
@@ -211,7 +211,7 @@ def _at_irrational_corner(examiner):
             if opened:
                 continue
             at = inputs | {SHARE: graph.number(share)}
-            nodes = [substituted(graph, node, at) for node in (chart.residual.nodes[0], chart.slope.nodes[0])]
+            nodes = [with_inputs(graph, node, at) for node in (chart.residual.nodes[0], chart.slope.nodes[0])]
             if all(graph.rational(chart.cancelling.of(node)) == 0 for node in nodes):
                 box = {name: _around(examiner.points.ends[name][side]) for name, side in zip(corners, sides)}
                 if not _has_slope(examiner, box, Fraction(share)):

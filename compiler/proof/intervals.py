@@ -15,16 +15,20 @@ import math
 import flint
 import numpy as np
 
-from rootwright.proof.functions import FUNCTIONS, around, down, power, up
+from rootwright.calculus.balls import ball, precision
+from rootwright.proof.functions import FUNCTIONS, around, down, ends, power, up
 
 
 class Interval:
-    """Arrays `low` and `high` of one shape; `undefined`, `jump` and `nonzero` are arrays, or False everywhere."""
+    """Arrays `low` and `high` of one shape; `undefined`, `jump` and `nonzero` are arrays, or False everywhere.
 
-    __slots__ = ("low", "high", "undefined", "jump", "nonzero")
+    `exact` is the rational number that it stands for, where it is one that the spec has.
+    """
 
-    def __init__(self, low, high, undefined=False, jump=False, nonzero=False):
-        self.low, self.high, self.undefined, self.jump, self.nonzero = low, high, undefined, jump, nonzero
+    __slots__ = ("low", "high", "undefined", "jump", "nonzero", "exact")
+
+    def __init__(self, low, high, undefined=False, jump=False, nonzero=False, exact=None):
+        self.low, self.high, self.undefined, self.jump, self.nonzero, self.exact = low, high, undefined, jump, nonzero, exact
 
     def flags(self, *others):
         """(undefined, jump) of a value made from this one and others."""
@@ -68,7 +72,7 @@ class Intervals:
 
     def number(self, value):
         low, high = around(value)
-        return Interval(np.array([low]), np.array([high]))
+        return Interval(np.array([low]), np.array([high]), exact=value)
 
     def pi(self):
         return Interval(np.array([float(down(math.pi))]), np.array([float(up(math.pi))]))
@@ -80,8 +84,9 @@ class Intervals:
     # -- arithmetic
 
     def add(self, a, b):
-        both = ((a.low >= 0.0) & (b.low >= 0.0)) | ((a.high <= 0.0) & (b.high <= 0.0))
-        nonzero = False if a.nonzero is False and b.nonzero is False else both & (a.apart() | b.apart())
+        nonzero = False
+        if a.nonzero is not False or b.nonzero is not False:
+            nonzero = (((a.low >= 0.0) & (b.low >= 0.0)) | ((a.high <= 0.0) & (b.high <= 0.0))) & (a.apart() | b.apart())
         return Interval(_sum(a.low, b.low, down, -np.inf), _sum(a.high, b.high, up, np.inf), *a.flags(b), nonzero)
 
     def sub(self, a, b):
@@ -99,15 +104,17 @@ class Intervals:
     def mul(self, a, b):
         if a is b:
             return self._square(a)
-        products = [np.where(np.isnan(p), 0.0, p) for p in (a.low * b.low, a.low * b.high, a.high * b.low, a.high * b.high)]
-        low = np.minimum(np.minimum(products[0], products[1]), np.minimum(products[2], products[3]))
-        high = np.maximum(np.maximum(products[0], products[1]), np.maximum(products[2], products[3]))
-        low, high = self._outward(low, high, a, b)
-        positive = (a.low >= 0.0) & (b.low >= 0.0) | (a.high <= 0.0) & (b.high <= 0.0)
-        negative = (a.low >= 0.0) & (b.high <= 0.0) | (a.high <= 0.0) & (b.low >= 0.0)
-        nothing = (a.low == 0.0) & (a.high == 0.0) | (b.low == 0.0) & (b.high == 0.0)
-        low = np.where(nothing | positive & (low < 0.0), 0.0, low)
-        high = np.where(nothing | negative & (high > 0.0), 0.0, high)
+        side, other = _side(a), _side(b)
+        low, high = self._outward(*_products(a, b, side, other), a, b)
+        if side and other:              # the sign of the product is known, and it is 0 where the smaller ends say so
+            nothing = ((a.high if side > 0 else a.low) == 0.0) | ((b.high if other > 0 else b.low) == 0.0)
+            low, high = (np.maximum(low, 0.0), high) if side == other else (low, np.minimum(high, 0.0))
+        else:
+            positive = (a.low >= 0.0) & (b.low >= 0.0) | (a.high <= 0.0) & (b.high <= 0.0)
+            negative = (a.low >= 0.0) & (b.high <= 0.0) | (a.high <= 0.0) & (b.low >= 0.0)
+            nothing = (a.low == 0.0) & (a.high == 0.0) | (b.low == 0.0) & (b.high == 0.0)
+            low, high = np.where(positive, np.maximum(low, 0.0), low), np.where(negative, np.minimum(high, 0.0), high)
+        low, high = np.where(nothing, 0.0, low), np.where(nothing, 0.0, high)
         nonzero = False if a.nonzero is False and b.nonzero is False else a.apart() & b.apart()
         return Interval(low, high, *a.flags(b), nonzero)
 
@@ -118,6 +125,8 @@ class Intervals:
                 exact_low, exact_high = (np.isfinite(end) & (np.abs(end) > 1e-290) for end in (low, high))
                 return np.where(exact_low, low, down(low)), np.where(exact_high, high, up(high))
         exact = _short(a.low) & _short(a.high) & _short(b.low) & _short(b.high)
+        if not exact.any():
+            return down(low), up(high)
         return np.where(exact, low, down(low)), np.where(exact, high, up(high))
 
     def _square(self, a):
@@ -139,7 +148,9 @@ class Intervals:
         high = np.where(above | across, np.inf, high)
         low = np.where((b.low >= 0.0) & ~across, np.maximum(low, 0.0), low)
         high = np.where((b.high <= 0.0) & ~across, np.minimum(high, 0.0), high)
-        return Interval(low, high, b.undefined | ~b.apart(), b.jump, True)
+        apart = b.apart()
+        plain = bool(np.all(apart & (low != 0.0) & (high != 0.0)))      # then the ends say that it is not 0
+        return Interval(low, high, b.undefined | ~apart, b.jump, not plain)
 
     def div(self, a, b):
         if a is b:
@@ -160,9 +171,9 @@ class Intervals:
         return Interval(low, value.high, undefined | a.undefined | b.undefined, a.jump | b.jump, a.apart())
 
     def _constant_power(self, a, b):
-        key = (float(b.low[0]), float(b.high[0]))
+        key = (float(b.low[0]), float(b.high[0]), b.exact)
         if key not in self.powers:
-            self.powers[key] = power(lambda: flint.arb(key[0]).union(flint.arb(key[1])))
+            self.powers[key] = power((lambda: ball(b.exact)) if b.exact is not None else lambda: flint.arb(key[0]).union(flint.arb(key[1])))
         function, positive = self.powers[key], key[0] > 0.0
         low, high = np.maximum(a.low, 0.0), np.maximum(a.high, 0.0)
         at_low, at_high = (_power_at(function, point, positive) for point in (low, high))
@@ -368,6 +379,29 @@ class Intervals:
 def _short(value):
     """True where a double has no more than 24 bits and a moderate size, so that products of two are exact."""
     return value == value.astype(np.float32)
+
+
+def _side(a):
+    """1 where no interval goes below 0, -1 where none goes above, else 0."""
+    return 1 if a.low.min(initial=0.0) >= 0.0 else -1 if a.high.max(initial=0.0) <= 0.0 else 0
+
+
+def _products(a, b, side, other):
+    """Smallest and largest product of the ends, by their signs; 0 times infinity is 0."""
+    if side and other:
+        low = (a.low if other > 0 else a.high) * (b.low if side > 0 else b.high)
+        high = (a.high if other > 0 else a.low) * (b.high if side > 0 else b.low)
+        return np.where(np.isnan(low), 0.0, low), np.where(np.isnan(high), 0.0, high)
+    if other:
+        a, b, side = b, a, other
+    if side:
+        first, last = (b.low, b.high) if side > 0 else (b.high, b.low)
+        ends = [a.low * first, a.high * first, a.low * last, a.high * last]
+        ends = [np.where(np.isnan(end), 0.0, end) for end in ends]
+        return np.minimum(ends[0], ends[1]), np.maximum(ends[2], ends[3])
+    ends = [np.where(np.isnan(end), 0.0, end) for end in (a.low * b.low, a.low * b.high, a.high * b.low, a.high * b.high)]
+    return np.minimum(np.minimum(ends[0], ends[1]), np.minimum(ends[2], ends[3])), \
+        np.maximum(np.maximum(ends[0], ends[1]), np.maximum(ends[2], ends[3]))
 
 
 def _magnitudes(a):

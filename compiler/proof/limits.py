@@ -8,7 +8,7 @@ import numpy as np
 
 from rootwright.calculus.differentiate import partials
 from rootwright.calculus.program import LEAVES, Node, needed
-from rootwright.proof.cancel import substituted
+from rootwright.proof.cancel import with_inputs
 from rootwright.proof.intervals import Interval
 
 
@@ -23,7 +23,7 @@ class Limits:
             instruction = graph.instructions[step]
             args = [twins[arg] for arg in instruction.args]
             twin = Node(step) if instruction.op in LEAVES and not args else graph.enter(instruction.op, args, instruction.value)
-            if instruction.op == "div" and all(graph.rational(cancelling.of(substituted(graph, arg, {name: zero}))) == 0
+            if instruction.op == "div" and all(graph.rational(cancelling.of(with_inputs(graph, arg, {name: zero}))) == 0
                                                for arg in instruction.args):
                 twin = graph.input(f"_limit{len(self.quotients)}")
                 slopes = [partials(graph, cancelling.of(arg), [share])[0] for arg in instruction.args]

@@ -18,6 +18,7 @@ def drop_phantoms(domain, crew, limit, outcome):
         if not _vanish(domain, crew, limit, index, low[rise == rarer], high[rise == rarer]):
             return
     outcome.rises.discard(rarer)
+    outcome.least = [least[rise != rarer] for least, (*_, rise) in zip(outcome.least, outcome.active)]
     outcome.active = [(index, low[rise != rarer], high[rise != rarer], rise[rise != rarer]) for index, low, high, rise in outcome.active]
 
 

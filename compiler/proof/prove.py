@@ -12,11 +12,15 @@ What is not proved is looked at point by point for a refutation. What is neither
 
 from dataclasses import replace
 from fractions import Fraction
+from functools import cached_property
 from itertools import islice, zip_longest
 
 import numpy as np
 
 from rootwright.calculus.constants import NotReal
+from rootwright.calculus.lower import Lowering
+from rootwright.calculus.program import Graph, needed
+from rootwright.calculus.switches import switches
 from rootwright.proof.advice import brackets, cuts, relative_name
 from rootwright.proof.certificate import Certificate, Claim
 from rootwright.proof.chart import SHARE, Form
@@ -24,7 +28,7 @@ from rootwright.proof.crew import Crew
 from rootwright.proof.crossings import refute_divisors, refute_parameter_switch
 from rootwright.proof.dive import wrong_sign
 from rootwright.proof.flat import refute_slope
-from rootwright.proof.numbers import doubles_are_finite, slope_bound, slope_is_sure
+from rootwright.proof.numbers import doubles_are_finite, slope_bound, slope_is_bounded, slope_is_sure
 from rootwright.proof.phantoms import drop_phantoms
 from rootwright.proof.ranges import as_ball, exact_ends
 from rootwright.proof.refute import Examiner
@@ -34,8 +38,11 @@ from rootwright.proof.settle import Domain, Limit, Outcome, search_ends, search_
 from rootwright.proof.switches import refute_kink
 from rootwright.proof.witness import middle
 
-BOXES = 60_000
+BOXES = 120_000
 _ENDS, _INSIDE = 0.4, 0.9           # of the boxes that may be spent, by the end of each search
+_GROUPED = 0.25                     # of all boxes, for the trial with groups of parameters
+_STEEP = 0.25                       # of the boxes of a search inside, for the trial that cuts only what moves the slope
+_KINKS = 0.05                       # of all boxes, for the switches at a zero
 _SMALL = 0.2                        # of the boxes: a search that leaves as many may be made twice
 _TRIAL = 5_000                     # boxes for trying a proposal
 _CUTS, _BRACKETS = 2, 2             # proposals that are tried
@@ -55,7 +62,7 @@ def prove(closure, boxes=BOXES, seconds=None, workers=1, progress=None, seen=Non
     """Certificate of a Closure.
 
     `boxes` limits the boxes looked at, the same way on every machine and for every number of `workers` (processes); `seconds` stops
-    after the wave at hand. `progress(stage, boxes, waiting)` is called after every wave. `seen` is the most iterations of a solve
+    after the wave at hand. `progress(stage, boxes, waiting, settled)` is called after every wave, `settled` the share of the stage that is. `seen` is the most iterations of a solve
     that the caller has seen.
     """
     return _Proof(closure, Limit(boxes, seconds, progress), workers).certificate(seen)
@@ -64,32 +71,63 @@ def prove(closure, boxes=BOXES, seconds=None, workers=1, progress=None, seen=Non
 class _Proof:
     def __init__(self, closure, limit, workers):
         self.closure, self.model, self.limit, self.workers = closure, closure.model, limit, workers
-        self.plain = Domain(self.model)
-        scaling = relative(self.plain.lower)
-        self.domain = Domain(self.model, scaling) if scaling else self.plain
+        self.scaling = relative(self.model)
         self.outcome = Outcome()
         self.exact = False          # the proof needs the ends of ranges that no double is
 
+    @cached_property
+    def plain(self):
+        return Domain(self.model)
+
     def search(self):
-        """Both searches, as far as the limit goes; once more with the exact ends of the ranges where that may be what is missing."""
-        self._search()
-        if {"ordered", "change"} & self.outcome.open.keys() and self.limit.spent < _SMALL * self.limit.boxes and not _are_doubles(self.model):
+        """Both searches, as far as the limit goes: with parameters that matter only together as one, and if that does not settle all, apart;
+        once more with the exact ends of the ranges where that may be what is missing."""
+        boxes = self.limit.boxes
+        self.domain = Domain(self.model, self.scaling, grouped=True)
+        if self.domain.charts:
+            self._search(_GROUPED * boxes)
+            if not self.outcome.open and len(self.outcome.rises) <= 1 or self.limit.reached(boxes):
+                return
+        self.outcome = Outcome()
+        self.domain = Domain(self.model, self.scaling) if self.scaling else self.plain
+        self._search(boxes)
+        if {"ordered", "change"} & self.outcome.open.keys() and self.limit.spent < _SMALL * boxes and not _are_doubles(self.model):
             before = self.domain, self.outcome
             self.domain, self.outcome = Domain(self.model, edges=True), Outcome()
-            self._search()
+            self._search(boxes)
             self.exact = not {"ordered", "change"} & self.outcome.open.keys()
             if not self.exact:
                 self.domain, self.outcome = before
 
-    def _search(self):
-        boxes = self.limit.boxes
-        with Crew(self.domain.judges(), self.workers) as crew:
-            search_ends(self.domain, crew, self.limit, _ENDS * boxes, self.outcome)
+    def _search(self, boxes):
+        before = self.limit.spent
+        boxes -= before
+        with Crew(self.domain.judges(self.limit), self.workers) as crew:
+            search_ends(self.domain, crew, self.limit, before + _ENDS * boxes, self.outcome)
             for index in range(len(self.domain.charts)):
                 last = index == len(self.domain.charts) - 1
-                ceiling = (_INSIDE if last else 0.5 * (_ENDS + _INSIDE)) * boxes
-                search_inside(self.domain, index, crew, self.limit, ceiling, self.outcome, ("defined", "continuous", "unique", "kink"))
-            drop_phantoms(self.domain, crew, self.limit, self.outcome)
+                self._inside(crew, index, before + (_INSIDE if last else 0.5 * (_ENDS + _INSIDE)) * boxes)
+            if not self.domain.grouped:
+                drop_phantoms(self.domain, crew, self.limit, self.outcome)
+
+    def _inside(self, crew, index, ceiling):
+        """First as if the slope had one sign all over the bracket, with a part of the boxes; what it leaves open is looked at afresh. Then the
+        switches, where a zero may be."""
+        wanted = ("defined", "continuous", "unique")
+        spent = self.limit.spent
+        trial = Outcome()
+        search_inside(self.domain, index, crew, self.limit, spent + _STEEP * (ceiling - spent), trial, wanted, name="slope")
+        if trial.needs(wanted):
+            trial = Outcome()
+            search_inside(self.domain, index, crew, self.limit, ceiling, trial, wanted)
+        zeros = [(low, high) for _, low, high, _ in trial.active]
+        trial.open.pop("kink", None)
+        if zeros and self.domain.lower.switches:
+            kinks, more = Outcome(), self.limit.spent + _KINKS * self.limit.boxes
+            search_inside(self.domain, index, crew, self.limit, more, kinks, ("kink",), *(np.concatenate(ends_) for ends_ in zip(*zeros)))
+            if "kink" in kinks.open:
+                trial.open["kink"] = kinks.open["kink"]
+        self.outcome.add(trial)
 
     def certificate(self, seen):
         self.search()
@@ -102,11 +140,11 @@ class _Proof:
         if self.nowhere:
             proved = set()
         slope = slope_bound(self.domain, self.outcome, self.limit) if "slope" in proved else 0.0
-        if not slope > 0.0:
+        if not slope > 0.0 and not ("slope" in proved and slope_is_bounded(self.domain, self.outcome)):
             proved -= {"slope"}
         witnesses = {} if self.nowhere else self._refutations(set(_NEEDS) - proved)
         sensitivities = sensitivity_bounds(self.plain, self.closure, self.limit) if "slope" in proved else {}
-        finite = not self.exact and doubles_are_finite(self.plain, self.closure, self.limit)
+        finite = not self.exact and not self.limit.reached(np.inf) and doubles_are_finite(self.plain, self.closure, self.limit)
         computed = {"defined", "exists", "iterations"} if finite else set()
         if finite and "slope" in proved and slope_is_sure(self.plain, self.closure, self.limit):
             computed.add("slope")
@@ -117,7 +155,7 @@ class _Proof:
                            self.limit.spent, claims, self._advice(witnesses))
 
     def _refutations(self, open_claims):
-        if not open_claims:
+        if not open_claims or self.limit.reached(np.inf) or self.domain.grouped:
             return {}
         examiner = Examiner(self.plain, self.limit)
         points = examiner.points
@@ -201,7 +239,8 @@ class _Proof:
             elif name == "slope" and not lefts:
                 reason, left_open = "no positive bound was found", 1.0
         if name == "slope" and verdict == "proved":
-            numbers += [("least_slope", slope), *sensitivities.items()]
+            numbers += [*([("least_slope", slope)] if slope > 0.0 else []), *sensitivities.items()]
+            reason = "" if slope > 0.0 else "no bound in numbers was found; there is one, since the slope is continuous and nowhere 0"
         if name == "iterations":
             numbers.append(("limit", float(self.closure.limit)))
             if seen is not None:
@@ -213,7 +252,7 @@ class _Proof:
 
     def _worst(self, lefts):
         """The largest box that is left, in the variables of the proof."""
-        if not lefts:
+        if not lefts or self.domain.grouped:
             return ()
         low, high = (np.concatenate([getattr(left, end) for left in lefts]) for end in ("low", "high"))
         row = int(np.argmax(self.domain.ranges.volume(low, high)))
@@ -222,12 +261,16 @@ class _Proof:
                      for k, name in enumerate(self.domain.ranges.names[:-1]))
 
     def _relative(self):
-        """((parameter, what stands for it), ...): `sag/L` for `sag`."""
+        """((parameter, what stands for it), ...): `sag/L` for `sag`, one value for all parameters of a group."""
+        if self.domain.grouped:
+            return tuple((name, "one value of " + ", ".join(group.absorbed)) for group in self.domain.lower.groups for name in group.absorbed)
         names = ((name, relative_name(self.domain, name)) for name in self.domain.ranges.names[:-1])
         return tuple((name, text) for name, text in names if name != text)
 
     def _advice(self, witnesses):
         """The lines of the first proposals with which nothing is left open; of a bracket, with which there is a root."""
+        if self.domain.grouped:
+            return ()
         if {"exists", "defined"} & witnesses.keys() and {"ordered", "change"} & self.outcome.open.keys():
             wanted = ("ordered", "defined", "change", "continuous")
             points = [{name: Fraction(middle(text)) for name, text in witness.point} for witness in witnesses.values()]
@@ -267,19 +310,31 @@ def _are_doubles(model):
     return all(isinstance(end, Fraction) and Fraction(float(end)) == end for pair in exact_ends(model).values() for end in pair)
 
 
-def relative(chart):
+def relative(model):
     """The scaling that leaves the fewest variables, or None."""
-    model, graph = chart.model, chart.graph
-    lowering = chart._lowering((), graph.input(model.unknown.name))
-    residual = lowering.lower(model.residual)
-    switches = [form.nodes[0] for _, form in chart.switches]
-    if switches:
+    graph = Graph()
+    lowering = Lowering(graph)
+    for constant in model.constants:
+        lowering.declare(constant.name, graph.named(constant.name, lowering.lower(constant.expression)))
+    names = [parameter.name for parameter in model.parameters]
+    for name in (*names, model.unknown.name):
+        lowering.declare(name, graph.input(name))
+    for definition in model.definitions:
+        lowering.declare(definition.name, lowering.lower(definition.expression))
+    residual, bracket = lowering.lower(model.residual), [lowering.lower(end) for end in (model.unknown.lower, model.unknown.upper)]
+    conditions = [lowering.lower(condition) for condition in model.require]
+    outputs = []
+    for output in model.outputs:
+        outputs.append(lowering.lower(output.expression))
+        lowering.declare(output.name, outputs[-1])
+    if switches(graph, [residual, *outputs]):
         return None
+    used = {graph.instructions[node].value for node in needed(graph.instructions, [residual, *bracket, *conditions])
+            if graph.instructions[node].op == "input"}
     exact = exact_ends(model)
-    positive = [name for name in chart.variables[:-1] if as_ball(exact[name][0]) > 0]
+    positive = [name for name in names if name in used and as_ball(exact[name][0]) > 0]
     positive.sort(key=lambda name: (float(as_ball(exact[name][1]) / as_ball(exact[name][0])), name))
-    scaling = symmetries(graph.instructions, [residual, *chart.requirements], [form.nodes[0] for form in chart.bracket],
-                         model.unknown.name, positive)
+    scaling = symmetries(graph.instructions, [residual, *conditions], bracket, model.unknown.name, positive)
     return scaling if scaling.pivots else None
 
 

@@ -12,7 +12,7 @@ from rootwright.calculus.program import Graph, evaluate
 from rootwright.proof.functions import ends
 
 _BITS = 200
-_WIDE = 50.0            # positive ranges of a larger ratio are cut at the geometric mean
+WIDE = 50.0            # positive ranges of a larger ratio are cut at the geometric mean
 
 
 @dataclass(frozen=True)
@@ -82,5 +82,5 @@ def ranges(model, variables, scaling=None):
             last = top * (most if top >= 0 else least)
             low.append(ends(first)[0])
             high.append(ends(last)[1])
-            logs.append(low[-1] > 0 and (spread[name] == "log" or high[-1] / low[-1] > _WIDE))
+            logs.append(low[-1] > 0 and (spread[name] == "log" or high[-1] / low[-1] > WIDE))
     return Ranges(tuple(variables), np.array([*low, 0.0]), np.array([*high, 1.0]), np.array([*logs, False]))

@@ -34,6 +34,7 @@ class Inside:
     active: np.ndarray          # it may be 0
     jump: np.ndarray            # it may be discontinuous along the bracket
     rise: np.ndarray            # sign of g_x: 1, -1, or 0 where it is not settled
+    least: np.ndarray           # lower bound of |g_x| where that sign is settled
     switch: np.ndarray          # a switch may be here
     smear: np.ndarray
 
@@ -44,7 +45,7 @@ def unjudged(name, low):
     no, yes = np.zeros(size, bool), np.ones(size, bool)
     if name == "ends":
         return Ends(no, no, no, np.ones(low.shape))
-    return Inside(no, yes, yes, yes, np.zeros(size, int), yes, np.ones(low.shape))
+    return Inside(no, yes, yes, yes, np.zeros(size, int), np.zeros(size), yes, np.ones(low.shape))
 
 
 def judge_ends(near_lower, near_upper, model, low, high):
@@ -91,27 +92,28 @@ def outside(chart, low, high):
         values = chart.natural(slack, low[at], high[at])
         at = at[(values.low < 0) & ~values.undefined & ~values.jump]
         if len(at):
-            result[at] = chart.sharp(slack, low[at], high[at])[1] < 0
+            result[at] = chart.sharper(slack, low[at], high[at])[1] < 0
     return result
 
 
 def _signed(chart, form, low, high, opened=False):
-    """Strict sign of a form over boxes (1, -1, 0: not settled), and the smear of it."""
+    """(strict sign of a form over boxes: 1, -1, or 0 where it is not settled; its least absolute value; the smear of it)."""
     values = chart.natural(form, low, high, opened)
     sign = _strict(values)
+    first, last = values.low.copy(), values.high.copy()
     smear = np.zeros(low.shape)
     at = np.nonzero(sign == 0)[0]
     if len(at):
-        smear[at] = 1.0
+        smear[at] = chart.moves(form)
         broken = at[values.undefined[at]]
         if len(broken):
             smear[broken] = chart.trouble(form, low[broken], high[broken], opened)
         at = at[values.regular[at]]
     if len(at):
-        first, last, below, above = chart.sharp(form, low[at], high[at], opened)
-        sign[at] = np.where(first > 0, 1, np.where(last < 0, -1, 0))
+        first[at], last[at], below, above = chart.sharper(form, low[at], high[at], opened)
+        sign[at] = np.where(first[at] > 0, 1, np.where(last[at] < 0, -1, 0))
         smear[at] = normalised(below, above, low[at], high[at])
-    return sign, smear
+    return sign, np.where(sign > 0, np.maximum(first, 0.0), np.where(sign < 0, np.maximum(-last, 0.0), 0.0)), smear
 
 
 def _strict(values):
@@ -167,13 +169,13 @@ def _factor(chart, factor, low, high):
     left = np.nonzero(~((bottom > 0) | (top < 0)))[0]
     left = left[values.regular[left]]
     if len(left):
-        first, last, below, above = chart.sharp(factor.form, low[left], high[left])
+        first, last, below, above = chart.sharper(factor.form, low[left], high[left])
         smear[left] = normalised(below, above, low[left], high[left])
         bottom[left], top[left] = np.maximum(bottom[left], first), np.minimum(top[left], last)
         open_ = ~((bottom[left] > 0) | (top[left] <= 0))
         rest = left[open_]
-        for sign, relaxed in factor.relaxed if len(rest) else ():
-            _relax(chart, sign, relaxed, low, high, bottom, top, rest)
+        if len(rest):
+            _relaxations(chart, factor, low, high, bottom, top, smear, rest)
         keep = np.nonzero(open_ & ~((bottom[left] >= 0) | (top[left] <= 0)))[0]
         if len(keep) and chart.slack_forms:
             at = left[keep]
@@ -181,20 +183,53 @@ def _factor(chart, factor, low, high):
     return (bottom, top), smear
 
 
-def _relax(chart, sign, relaxed, low, high, bottom, top, at):
-    """Bounds from a form less a multiple of a slack, into `bottom` and `top` of the boxes `at`."""
-    part = chart.natural(relaxed, low[at], high[at])
-    first, last = part.low.copy(), part.high.copy()
-    open_ = np.nonzero(~((first >= 0) if sign < 0 else (last <= 0)) & part.regular)[0]
-    if len(open_):
-        first[open_], last[open_], _, _ = chart.sharp(relaxed, low[at[open_]], high[at[open_]])
-    if sign < 0:
-        bottom[at] = np.maximum(bottom[at], first)
-    else:
-        top[at] = np.minimum(top[at], last)
+def _in_range(chart, low, high, at, first, last, below, above, smear, opened):
+    """Bounds of the residual over the part in the operating range of the boxes `at`, those that some requirement cuts, into `first` and `last`."""
+    cut = np.zeros(len(at), bool)
+    for slack in chart.slack_forms:
+        cut |= chart.natural(slack, low[at], high[at], opened).low < 0
+    at = at[cut]
+    if len(at):
+        _relaxations(chart, chart.whole, low, high, first, last, smear, at, opened)
+        at = at[(first[at] <= 0) & (last[at] >= 0)]
+    if len(at) and not chart.whole.relaxed:
+        first[at], last[at] = _within_range(chart, chart.residual, low[at], high[at], below[at], above[at], first[at], last[at], opened)
 
 
-def _within_range(chart, form, low, high, below, above, bottom, top):
+def _relaxations(chart, factor, low, high, bottom, top, smear, at, opened=False):
+    """Bounds from a form less multiples of a slack that cuts a box, into `bottom` and `top` of the boxes `at`.
+
+    `smear` becomes that of the form whose bound is best on the side that the box seems to lie: next to the edge of the range no cut of the
+    form itself helps.
+    """
+    best = np.full(len(low), -np.inf)
+    with np.errstate(all="ignore"):
+        positive = ~(bottom + top < 0)
+    for sign, relaxed, slack in factor.relaxed:
+        at = at[(bottom[at] <= 0) & (top[at] >= 0)]
+        here = at[chart.natural(slack, low[at], high[at], opened).low < 0] if len(at) else at
+        if not len(here):
+            continue
+        part = chart.natural(relaxed, low[here], high[here], opened)
+        first, last = part.low.copy(), part.high.copy()
+        open_ = ~((first > 0) if sign < 0 else (last < 0))
+        stuck = here[open_ & ~part.regular & (positive[here] == (sign < 0)) & (best[here] == -np.inf)]
+        smear[stuck] = chart.moves(relaxed)
+        open_ = np.nonzero(open_ & part.regular)[0]
+        if len(open_):
+            rows = here[open_]
+            first[open_], last[open_], below, above = chart.sharper(relaxed, low[rows], high[rows], opened)
+            bound = first[open_] if sign < 0 else -last[open_]
+            better = (positive[rows] == (sign < 0)) & (bound > best[rows])
+            best[rows[better]] = bound[better]
+            smear[rows[better]] = normalised(below, above, low[rows], high[rows])[better]
+        if sign < 0:
+            bottom[here] = np.maximum(bottom[here], first)
+        else:
+            top[here] = np.minimum(top[here], last)
+
+
+def _within_range(chart, form, low, high, below, above, bottom, top, opened=False):
     """Bounds of a form over the part of the boxes in the operating range, by Lagrange's multipliers.
 
     Where a slack c is not negative, g >= g - m*c for m >= 0 and g <= g - m*c for m <= 0. m is chosen to cancel the slope in the
@@ -202,13 +237,13 @@ def _within_range(chart, form, low, high, below, above, bottom, top):
     """
     centre = low + 0.5 * (high - low)
     centre = np.clip(centre, low, high)
-    at_centre = chart.natural(form, centre, centre)
+    at_centre = chart.natural(form, centre, centre, opened)
     reach = 0.5 * (high - low)
     for slack in chart.slack_forms:
-        whole = chart.natural(slack, low, high)
+        whole = chart.natural(slack, low, high, opened)
         usable = ~whole.undefined & ~whole.jump
-        c_below, c_above = chart.slopes(slack, low, high)
-        c_centre = chart.natural(slack, centre, centre)
+        c_below, c_above = chart.slopes(slack, low, high, opened)
+        c_centre = chart.natural(slack, centre, centre, opened)
         rows = np.arange(len(low))
         with np.errstate(all="ignore"):
             middle, c_middle = 0.5 * (below + above), 0.5 * (c_below + c_above)
@@ -244,52 +279,64 @@ def next_to(chart, low, high, form=None):
         if len(left):
             inside_low, inside_high = low[left].copy(), high[left].copy()
             inside_low[:, -1], inside_high[:, -1] = 0.0, near
-            sign[left], smear[left] = _signed(chart, form or chart.residual, inside_low, inside_high, True)
+            sign[left], _, smear[left] = _signed(chart, form or chart.residual, inside_low, inside_high, True)
     smear[:, -1] = 0.0
     return (sign > 0, sign < 0), smear
 
 
-def judge_inside(chart, low, high, opened):
-    """`opened`: the boxes leave out t = 0."""
+def judge_inside(chart, low, high, opened, steep=False):
+    """`opened`: the boxes leave out t = 0. `steep`: what moves the slope alone is cut, as if it had one sign all over the bracket."""
     size = len(low)
     flags = [np.zeros(size, bool) for _ in range(4)]
-    outcome = Inside(outside(chart, low, high), *flags, np.zeros(size, int), np.zeros(low.shape))
-    outcome.rise, outcome.switch = np.zeros(size, int), np.zeros(size, bool)
+    outcome = Inside(outside(chart, low, high), *flags[:3], np.zeros(size, int), np.zeros(size), flags[3], np.zeros(low.shape))
     at = np.nonzero(~outcome.outside)[0]
     if not len(at):
         return outcome
     low, high = low[at], high[at]
     values = chart.natural(chart.residual, low, high, opened)
     active, smear = ~values.definite(), np.zeros(low.shape)
-    smooth = np.nonzero(active & ~values.undefined & ~values.jump)[0]
+    jump = values.jump & chart.steps_along          # a choice on parameters alone is made once, on the way along the bracket
+    calm = np.nonzero(active & ~values.undefined & ~jump)[0]
+    smooth = calm[~values.jump[calm]]
     smear[active] = 1.0
     broken = np.nonzero(values.undefined)[0]
     if len(broken):
         smear[broken] = chart.trouble(chart.residual, low[broken], high[broken], opened)
+    rise, least, part = np.zeros(len(at), int), np.zeros(len(at)), np.zeros(low.shape)
+    if steep:
+        rise[calm], least[calm], part[calm] = _signed(chart, chart.slope, low[calm], high[calm], opened)
+        smooth = smooth[rise[smooth] == 0]
     if len(smooth):
-        first, last, below, above = chart.sharp(chart.residual, low[smooth], high[smooth], opened)
-        active[smooth] = ~((first > 0) | (last < 0))
-        smear[smooth] = normalised(below, above, low[smooth], high[smooth])
-    rise = np.zeros(len(at), int)
-    left = np.nonzero(active & ~values.undefined & ~(values.jump & chart.steps_along))[0]
-    if len(left):
-        rise[left], part = _signed(chart, chart.slope, low[left], high[left], opened)
-        smear[left] += part
+        active[smooth], smear[smooth] = may_vanish(chart, low[smooth], high[smooth], opened)
+    left = calm[active[calm] & ((rise[calm] == 0) | (not steep))]
+    if not steep and len(left):
+        rise[left], least[left], part[left] = _signed(chart, chart.slope, low[left], high[left], opened)
+    smear[left] = part[left] if steep else smear[left] + part[left]
     switch = np.zeros(len(at), bool)
     left = np.nonzero(active)[0]
     if len(left) and chart.switches:
         touched, part = _on_switch(chart, low[left], high[left], opened)
         switch[left] = touched
         smear[left] += part
-    outcome.undefined[at], outcome.active[at], outcome.jump[at] = values.undefined, active, values.jump & chart.steps_along
-    outcome.rise[at], outcome.switch[at], outcome.smear[at] = rise, switch, smear
+    outcome.undefined[at], outcome.active[at], outcome.jump[at] = values.undefined, active, jump
+    outcome.rise[at], outcome.least[at], outcome.switch[at], outcome.smear[at] = rise, least, switch, smear
     return outcome
+
+
+def may_vanish(chart, low, high, opened):
+    """(where the residual may be 0 in the operating range, smear) of boxes over which it is defined and continuous."""
+    first, last, below, above = chart.sharper(chart.residual, low, high, opened)
+    smear = normalised(below, above, low, high)
+    open_ = np.nonzero((first <= 0) & (last >= 0))[0]
+    if len(open_) and chart.slack_forms:
+        _in_range(chart, low, high, open_, first, last, below, above, smear, opened)
+    return ~((first > 0) | (last < 0)), smear
 
 
 def _on_switch(chart, low, high, opened):
     touched, smear = np.zeros(len(low), bool), np.zeros(low.shape)
     for guard, form in chart.switches:
-        sign, part = _signed(chart, form, low, high, opened)
+        sign, _, part = _signed(chart, form, low, high, opened)
         near = sign == 0
         if guard is not None:
             near &= np.broadcast_to(chart.evaluate([guard], low, high, opened)[guard].yes, near.shape)
@@ -306,7 +353,9 @@ def split(low, high, smear, widths, logs, finest=_THIN):
     """
     room = (high > np.nextafter(low, np.inf)) & (widths > _THIN)
     room[:, -1] &= high[:, -1] - low[:, -1] >= finest
-    choice = np.argmax(np.where(room, (smear + 1e-3) * np.sqrt(widths) + 0.05 * widths, -np.inf), axis=1)
+    score = (smear + 1e-3) * np.sqrt(widths) + 0.05 * widths
+    score = np.where(smear == 0.0, 1e-9 * widths, score)        # what does not move it is cut where nothing else can be
+    choice = np.argmax(np.where(room, score, -np.inf), axis=1)
     rows = np.arange(len(low))
     a, b = low[rows, choice], high[rows, choice]
     with np.errstate(all="ignore"):

@@ -7,14 +7,18 @@ from functools import partial
 
 import numpy as np
 
+from rootwright.calculus.program import evaluate
 from rootwright.proof.chart import Chart
 from rootwright.proof.crew import WAVE
 from rootwright.proof.functions import ends
-from rootwright.proof.ranges import as_ball, exact_ends, ranges
-from rootwright.proof.search import judge_ends, judge_inside, split, unjudged
+from rootwright.proof.groups import shaved
+from rootwright.proof.intervals import Interval
+from rootwright.proof.ranges import WIDE, Ranges, as_ball, exact_ends, ranges
+from rootwright.proof.search import judge_ends, judge_inside, outside as judge_outside, split, unjudged
 
-_FIRST, _FEWEST = 64, 8     # boxes of the first wave and of the shortest, where there is a time
-_SHORT = 0.3                # seconds that a wave should take then
+_PIECES = 4096              # of a box over which the range of a group's values is found
+_FIRST, _FEWEST = 128, 128  # boxes of the first wave and of the shortest, where there is a time
+_SHORT = 0.5                # seconds that a wave should take then
 
 
 @dataclass
@@ -30,6 +34,7 @@ class Outcome:
     """`open` maps what is asked for (`needs_of`, and `ordered` and `change` of the bracket) to the boxes where it is not settled."""
     open: dict = field(default_factory=dict)
     active: list = field(default_factory=list)      # (chart, low, high, sign of slope): boxes that may hold a zero
+    least: list = field(default_factory=list)       # lower bounds of |g_x| in them
     rises: set = field(default_factory=set)         # signs of g_x in them
     inside_range: float = 1.0                       # share of the ranges that meets the requirements, from above
 
@@ -37,12 +42,25 @@ class Outcome:
         if need.any():
             self.open.setdefault(claim, []).append(Left(low[need], high[need], index))
 
+    def needs(self, claims):
+        """True where something that one of the claims needs is open."""
+        return any(claim in self.open for claim in claims)
+
+    def add(self, other):
+        """Takes over what a search inside has found."""
+        for claim, lefts in other.open.items():
+            self.open.setdefault(claim, []).extend(lefts)
+        self.active += other.active
+        self.least += other.least
+        self.rises |= other.rises
+
     def keep(self, judged, done, low, high, index):
         """Notes the boxes that are done with and may hold a zero."""
         active = judged.active & ~judged.outside & done
         if active.any():
             self.rises |= set(judged.rise[active & (judged.rise != 0)].tolist())
             self.active.append((index, low[active], high[active], judged.rise[active]))
+            self.least.append(judged.least[active])
 
 
 class Limit:
@@ -85,19 +103,57 @@ class Limit:
 
 
 class Domain:
-    """Charts of one model, plain or relative to the pivots of a scaling, with their ranges."""
+    """Charts of one model, plain or relative to the pivots of a scaling, with their ranges.
 
-    def __init__(self, model, scaling=None, edges=False):
-        self.model, self.scaling = model, scaling
+    `edges` and `grouped`: as of `Chart`; `charts` is empty where there is no group whose value is known to exist all over the range.
+    """
+
+    def __init__(self, model, scaling=None, edges=False, grouped=False):
+        self.model, self.scaling, self.grouped = model, scaling, grouped
         fixed = scaling.pivots if scaling else ()
-        self.lower = Chart(model, fixed, edges=edges)
-        self.charts = [self.lower]
-        if model.unknown.open_upper:
-            self.charts.append(Chart(model, fixed, from_upper=True, edges=edges))
-        self.upper = self.charts[-1]
-        self.ranges = ranges(model, self.lower.variables, scaling)
+        self.lower = Chart(model, fixed, edges=edges, grouped=grouped)
+        self.ranges = self._ranges()
+        self.charts = [self.lower] if self.ranges else []
+        if self.charts and model.unknown.open_upper:
+            self.charts.append(Chart(model, fixed, from_upper=True, edges=edges, grouped=grouped))
+        self.upper = (self.charts or [self.lower])[-1]
         self.opened = [model.unknown.open_lower, True]
         self.bounds = [(ends(as_ball(low))[0], ends(as_ball(high))[1]) for low, high in exact_ends(model).values()]
+
+    def _ranges(self):
+        if not self.grouped:
+            return ranges(self.model, self.lower.variables, self.scaling)
+        chart = self.lower
+        if not chart.groups:
+            return None
+        names = [p.name for p in self.model.parameters if not self.scaling or p.name not in self.scaling.pivots]
+        plain = ranges(self.model, [*names, None], self.scaling)
+
+        def outside(low, high):
+            return _failing(self._values(chart, chart.every_requirement, names, low, high), chart.every_requirement, len(low))
+
+        low, high = shaved(outside, plain.low, plain.high)
+        at = {name: (low[k], high[k], plain.logs[k]) for k, name in enumerate(names)} | {chart.variables[-1]: (0.0, 1.0, False)}
+        nodes = [group.node for group in chart.groups]
+        for group, node in zip(chart.groups, nodes):
+            pieces = _pieces(low[:-1], high[:-1], [k for k, name in enumerate(names) if name in chart._inputs([node])])
+            inside = ~outside(*pieces)
+            value = self._values(chart, [node], names, *pieces)[node]
+            bottom, top = (np.broadcast_to(end, len(inside))[inside] for end in (value.low, value.high))
+            undefined = np.any(np.broadcast_to(value.undefined, len(inside))[inside])
+            bottom, top = float(bottom.min(initial=np.inf)), float(top.max(initial=-np.inf))
+            if undefined or not (math.isfinite(bottom) and math.isfinite(top)):
+                return None
+            at[group.name] = bottom, top, bottom > 0 and top / bottom > WIDE
+        low, high, logs = (np.array(column) for column in zip(*(at[name] for name in chart.variables)))
+        low, high = shaved(lambda low, high: judge_outside(chart, low, high), low, high)
+        return Ranges(tuple(chart.variables), low, high, np.array([bool(log or a > 0 and b / a > WIDE) for log, a, b in zip(logs, low, high)]))
+
+    @staticmethod
+    def _values(chart, nodes, names, low, high):
+        inputs = {name: Interval(low[:, k], high[:, k]) for k, name in enumerate(names)}
+        with np.errstate(all="ignore"):
+            return evaluate(chart.graph.instructions, nodes, chart.arithmetic, inputs)
 
     def whole(self):
         """The box of everything that each chart has to look after."""
@@ -105,12 +161,34 @@ class Domain:
         high[-1] = 1.0 if len(self.charts) == 1 else 0.5
         return self.ranges.low[None, :].copy(), high[None, :]
 
-
-    def judges(self):
-        """{name: function of arrays (low, high)} for a Crew."""
-        inside = {f"inside {index}": partial(judge_inside, chart, opened=opened)
-                  for index, (chart, opened) in enumerate(zip(self.charts, self.opened))}
+    def judges(self, limit=None):
+        """{name: function of arrays (low, high)} for a Crew, made ready unless its time is over."""
+        for chart in self.charts:
+            chart.prepare(limit)
+        inside = {f"{name} {index}": partial(judge_inside, chart, opened=opened, steep=name == "slope")
+                  for index, (chart, opened) in enumerate(zip(self.charts, self.opened)) for name in ("inside", "slope")}
         return {"ends": partial(judge_ends, self.lower, self.upper, self.model)} | inside
+
+
+def _failing(values, conditions, size):
+    """True where some condition fails all over a box."""
+    result = np.zeros(size, bool)
+    for node in conditions:
+        result |= ~np.broadcast_to(values[node].yes, size)
+    return result
+
+
+def _pieces(low, high, places):
+    """A box cut evenly in some of its variables: (low, high), one row a piece, at most `_PIECES` of them."""
+    a, b = low[None].copy(), high[None].copy()
+    count = int(_PIECES ** (1.0 / max(len(places), 1)))
+    for k in places:
+        cuts = np.linspace(low[k], high[k], count + 1)
+        cuts[0], cuts[-1] = low[k], high[k]
+        rows = len(a)
+        a, b = np.repeat(a, count, 0), np.repeat(b, count, 0)
+        a[:, k], b[:, k] = np.tile(cuts[:-1], rows), np.tile(cuts[1:], rows)
+    return a, b
 
 
 def search_ends(domain, crew, limit, ceiling, outcome):
@@ -129,8 +207,13 @@ def search_ends(domain, crew, limit, ceiling, outcome):
         outcome.leave(claim, ~left.judged.outside & ~getattr(left.judged, claim), left.low, left.high, 0)
 
 
-def search_inside(domain, index, crew, limit, ceiling, outcome, wanted):
-    """Cuts boxes of parameters and share until nothing that the claims in `wanted` need is open; fills the outcome."""
+def search_inside(domain, index, crew, limit, ceiling, outcome, wanted, low=None, high=None, name="inside"):
+    """Cuts boxes of parameters and share until nothing that the claims in `wanted` need is open; fills the outcome.
+
+    `name` is that of the judge: `slope` cuts what moves the slope alone.
+    """
+    if low is None:
+        low, high = domain.whole()
 
     def open_of(judged):
         needs = needs_of(judged)
@@ -139,7 +222,7 @@ def search_inside(domain, index, crew, limit, ceiling, outcome, wanted):
     def note(judged, done, low, high):
         outcome.keep(judged, done, low, high, index)
 
-    left = _search(domain, crew, limit, ceiling, f"inside {index}", open_of, note, *domain.whole(), 2.0 ** -160)
+    left = _search(domain, crew, limit, ceiling, f"{name} {index}", open_of, note, low, high, 2.0 ** -160)
     for claim, need in needs_of(left.judged).items():
         outcome.leave(claim, need, left.low, left.high, index)
     outcome.keep(left.judged, np.ones(len(left.low), bool), left.low, left.high, index)

@@ -11,7 +11,6 @@ from dataclasses import dataclass
 from fractions import Fraction
 from functools import cached_property
 
-import flint
 import numpy as np
 
 from rootwright.calculus.balls import Balls, precision
@@ -272,7 +271,7 @@ class Chart:
 
     def _relaxed(self, node):
         """[(sign, form, slack)]: the node less a multiple m of a slack. With slack >= 0 it bounds the node from below for m > 0, else from above."""
-        graph, found = self.graph, []
+        found = []
         for slack in self.slack_forms:
             ratios = self.cancelling.common(node, slack.nodes[-1]) or self.expanding.ratios(node, slack.nodes[-1])
             for ratio in sorted(set(ratios), key=lambda ratio: (-ratios.count(ratio), ratio))[:_RATIOS]:

@@ -9,7 +9,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from rootwright.calculus.program import Node, needed
+from rootwright.calculus.program import needed
 
 NAME = "_group"             # names of a spec begin with a letter
 _BITS_OF_A_DOUBLE = 63

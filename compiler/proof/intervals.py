@@ -15,8 +15,8 @@ import math
 import flint
 import numpy as np
 
-from rootwright.calculus.balls import ball, precision
-from rootwright.proof.functions import FUNCTIONS, around, down, ends, power, up
+from rootwright.calculus.balls import ball
+from rootwright.proof.functions import FUNCTIONS, around, down, power, up
 
 
 class Interval:

@@ -18,6 +18,7 @@ _LARGEST = 1e307                # a value below it in exact arithmetic is finite
 _SMALLEST = 2.3e-308            # a value above it in exact arithmetic keeps its digits
 _NOTABLE, _FACTOR = 1e-100, 1e20
 _ROUNDS, _ROUND = 24, 64        # of cutting boxes for the least slope, and boxes cut in a round
+_WORK = 5000                    # operations of the slope and its derivatives, times rounds, where they are many
 _WORTH = 1.05                   # what four rounds must gain
 
 

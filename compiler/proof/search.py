@@ -238,7 +238,6 @@ def _within_range(chart, form, low, high, below, above, bottom, top, opened=Fals
     centre = low + 0.5 * (high - low)
     centre = np.clip(centre, low, high)
     at_centre = chart.natural(form, centre, centre, opened)
-    reach = 0.5 * (high - low)
     for slack in chart.slack_forms:
         whole = chart.natural(slack, low, high, opened)
         usable = ~whole.undefined & ~whole.jump

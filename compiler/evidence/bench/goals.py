@@ -2,7 +2,7 @@
 
 import math
 
-from rootwright.evidence.bench.rows import ADOLC, BASE, BRENT_PYTHON, PLAIN, SOLVE, TAPE, TAPE_LEAN
+from rootwright.evidence.bench.rows import BASE, BRENT_PYTHON, PLAIN, SOLVE, TAPE, TAPE_LEAN
 
 OFF = 1e-6                       # a derivative with a larger error is wrong: beside a flat root, 1e-8 may be its own rounding
 LIMITS = {                       # at most, by name of the spec: solve with jacobian, of one evaluation

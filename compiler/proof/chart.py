@@ -361,7 +361,7 @@ class Chart:
         jump, nonzero = np.ones(size, bool), np.zeros(size, bool)
         for part in parts:
             bottom, top = np.maximum(bottom, part.low), np.minimum(top, part.high)
-            jump, nonzero = jump & part.jump, nonzero | part.nonzero
+            jump, nonzero = jump & part.jump, nonzero | part.nonzero & ~np.asarray(part.undefined)     # a form says nothing where it has no value
         undefined = np.broadcast_to(parts[0].undefined | np.zeros(size, bool), (size,)).copy()
         if form.domain is not None and undefined.any():
             at = np.nonzero(undefined)[0]

@@ -284,7 +284,9 @@ class Intervals:
         return value
 
     def exp(self, a):
-        return self._rising("exp", a)
+        value = self._rising("exp", a)
+        value.nonzero = np.array([True])        # also where it is smaller than any double
+        return value
 
     def expm1(self, a):
         return self._through_zero("expm1", a)

@@ -102,6 +102,11 @@ def promised(closed, spec):
         return closed, str(error)
 
 
+def promising(spec, order=1):
+    """Closure of a spec (a file, or a shipped spec's name) with what the certificate beside it proves. Raises SpecError."""
+    return promised(closure(*find(spec), order)[0], spec)[0]
+
+
 def has_root_proved(closed):
     """True where the certificate that came along proves that there is a root, and only one."""
     return closed.promise is not None and {"exists", "unique"} <= set(closed.promise.proved)
@@ -146,8 +151,7 @@ def load(spec, target="c", order=1, chosen=None):
     as in `emit`."""
     from rootwright.binding.module import load as load_module
 
-    closed, _ = closure(*find(str(spec)), order)
-    closed, _ = promised(closed, str(spec))
+    closed = promising(str(spec), order)
     return load_module(closed, emit(closed, target, chosen), target)
 
 

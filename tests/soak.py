@@ -21,7 +21,7 @@ SEED = 20
 
 def soak(spec, points, progress=None):
     """Report on one spec: the C module, or the Python one without a compiler."""
-    closure, _ = pipeline.closure(*pipeline.find(spec))
+    closure = pipeline.promising(spec)
     built, notes = modules(closure)
     target = next(iter(built))
     return hold(closure, {target: built[target]}, points, SEED, progress, notes)

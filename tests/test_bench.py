@@ -31,7 +31,7 @@ DIFFERENCES = {"one_sided": (1e-5, 0.1), "central": (1e-7, 1e-3)}      # median,
 
 
 def closed(name):
-    return pipeline.closure(*pipeline.find(name))[0]
+    return pipeline.promising(name)
 
 
 @pytest.fixture(scope="module")

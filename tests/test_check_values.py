@@ -50,7 +50,7 @@ def test_a_shipped_spec_has_checked_dimensions_or_says_that_units_are_labels(nam
 
 @pytest.mark.parametrize("name", SPECS)
 def test_every_published_value_is_met_inside_the_operating_range(name):
-    closed, _ = pipeline.closure(*pipeline.find(name))
+    closed = pipeline.promising(name)
     module = pipeline.load(name, "python")
     for published in closed.model.published:
         given = {parameter: _double(value) for parameter, value in published.given}

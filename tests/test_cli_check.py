@@ -122,7 +122,7 @@ def test_an_encoding_without_a_letter_of_the_spec_escapes_it(tmp_path):
 
 @pytest.fixture(scope="module", params=pipeline.shipped())
 def shipped(request):
-    closure, _ = pipeline.closure(*pipeline.find(request.param))
+    closure = pipeline.promising(request.param)
     return closure, load(closure, pipeline.emit(closure, "python"), "python")
 
 

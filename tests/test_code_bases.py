@@ -7,8 +7,8 @@ import pytest
 from test_emission import (EVERYTHING, INTERFACE, NEGATIVE, SUBNORMAL, SWITCH, WARNINGS, awkward_specs, random_problems,  # noqa: F401
                            run, sources, together, write)
 
-from rootwright import cli
-from rootwright.pipeline import closure, emit, find
+from rootwright import cli, pipeline
+from rootwright.pipeline import emit
 
 SHIPPED = ("pipe_friction", "if97_temperature", "plastic_multiplier", "implied_volatility", "platinum_thermometer",
            "wien_peak")
@@ -30,7 +30,7 @@ CLANG = pytest.mark.skipif(shutil.which("clang++") is None, reason="clang++ is n
 
 def shipped(name, order=1, **options):
     """Files of the module of a shipped spec."""
-    return emit(closure(*find(name), order)[0], **options)
+    return emit(pipeline.promising(name, order), **options)
 
 
 @pytest.fixture(scope="module")

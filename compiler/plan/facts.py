@@ -5,13 +5,11 @@ from dataclasses import dataclass
 import numpy as np
 
 from rootwright.calculus.program import needed
-from rootwright.proof.crew import Crew
-from rootwright.proof.numbers import doubles_are_finite, slope_is_sure
+from rootwright.proof.numbers import doubles_are_finite, holds_everywhere, slope_is_sure
 from rootwright.proof.search import outside
-from rootwright.proof.settle import Domain, Limit, Outcome, search_ends
+from rootwright.proof.settle import Domain, Limit
 
-BOXES = 200                 # that a proof may take, and one wave more
-FEW = 50                    # the same of the costly one of the signs at the ends
+BOXES = 64                  # that a proof may take, and one wave more: more is for `prove`, whose certificate tells
 LARGEST = 600               # operations of a residual beyond which neither is tried
 
 
@@ -65,11 +63,18 @@ def computed_finite(charts, closure):
 
 
 def ends_differ(charts):
-    """True if the residual has different signs at (next to open) ends, or is 0 at a closed one, everywhere in the range."""
-    outcome = Outcome()
-    with Crew(charts.judges()) as crew:
-        search_ends(charts, crew, Limit(FEW), FEW, outcome)
-    return not outcome.open
+    """True if the residual has different signs at both ends of the bracket, or is 0 at one, everywhere in the range; by plain enclosures."""
+    unknown, chart = charts.model.unknown, charts.lower
+    if unknown.open_lower or unknown.open_upper:
+        return False
+
+    def holds(low, high):
+        first, last = (chart.natural(form, low, high) for form in (chart.at_lower, chart.at_upper))
+        rises = (first.high <= 0.0) & (last.low >= 0.0)
+        falls = (first.low >= 0.0) & (last.high <= 0.0)
+        return ~first.undefined & ~last.undefined & (rises | falls)
+
+    return holds_everywhere(charts, holds, Limit(BOXES), BOXES, inside=False)
 
 
 def least_rise(charts):

@@ -148,9 +148,11 @@ def slope_is_sure(domain, closure, limit, boxes=4000):
     return holds_everywhere(domain, holds, limit, boxes)
 
 
-def holds_everywhere(domain, holds, limit, boxes):
-    """True where holds(low, high), one truth value a box, is true all over the brackets of the operating range, by subdivision."""
+def holds_everywhere(domain, holds, limit, boxes, inside=True):
+    """True where holds(low, high), one truth value a box, is true all over the operating range and, `inside`, the brackets; by subdivision."""
     low, high = domain.ranges.low[None, :].copy(), domain.ranges.high[None, :].copy()
+    if not inside:
+        high[:, -1] = low[:, -1]
     spent = 0
     while len(low) and spent < boxes:
         count = min(limit.wave(np.inf), CHUNK, boxes - spent)

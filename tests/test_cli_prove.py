@@ -85,3 +85,4 @@ def test_several_specs_make_a_table_whatever_the_number_of_workers(spec, capsys)
     assert main(["prove", *paths, "--json", "--boxes", "2000"]) == 1
     data = json.loads(capsys.readouterr().out)
     assert [entry["claims"]["exists"]["verdict"] for entry in data["specs"]] == ["proved", "refuted"]
+    assert [entry["spec"] for entry in data["specs"]] == paths and all(len(entry["digest"]) == 64 for entry in data["specs"])

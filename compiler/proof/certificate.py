@@ -92,7 +92,7 @@ def to_json(certificate):
         if claim.worst:
             entry["worst"] = {name: [low, high] for name, low, high in claim.worst}
         claims[claim.name] = entry | {name: value for name, value in claim.numbers}
-    return {"name": certificate.name, "spec": certificate.digest, "boxes": certificate.boxes, "claims": claims,
+    return {"name": certificate.name, "digest": certificate.digest, "boxes": certificate.boxes, "claims": claims,
             "advice": list(certificate.advice)}
 
 

@@ -111,7 +111,6 @@ def test_the_same_spec_gives_the_same_plan_and_the_same_bytes(name):
 
 
 def test_four_in_five_shipped_specs_have_a_short_way_that_takes_fewer_evaluations():
-    """But for one, two evaluations go to the ends where no proof shows that their signs differ."""
     planned = fewer = 0
     for name in SHIPPED:
         closure, plan, short, plain = shipped(name)

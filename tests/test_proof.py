@@ -148,7 +148,7 @@ def test_a_planted_fault_is_refuted_with_a_witness(case):
     assert claim.verdict == "refuted" and claim.witness.point and claim.witness.reason
 
 
-@pytest.mark.parametrize("name", ("weak_acid", "plane_wall"))
+@pytest.mark.parametrize("name", ("kepler", "pipe_friction", "weak_acid", "wien_peak", "redlich_kwong", "plane_wall"))
 def test_a_shipped_spec_is_proved(name):
     closed, _ = pipeline.closure(*pipeline.find(name))
     assert set(prove(closed, boxes=FEW).verdicts.values()) == {"proved"}
